@@ -1,0 +1,1 @@
+"""The pages, read from the record."""

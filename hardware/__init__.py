@@ -1,0 +1,1 @@
+"""Front ends: one wire each, turned into readings."""

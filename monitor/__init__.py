@@ -1,0 +1,1 @@
+"""The daemon: acquire, average, judge, alarm, record."""

@@ -1,0 +1,71 @@
+"""What a front end gives: readings with their own time stamps, and the state of the device."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from typing import Protocol
+
+import numpy as np
+from numpy.typing import NDArray
+
+MISSING = -(2**31)
+"""Raw count of a channel that gave nothing at that time."""
+
+NS_PER_S = 1_000_000_000
+
+
+@dataclass(frozen=True, slots=True)
+class Batch:
+    """Readings of one front end, in the order of their times.
+
+    times_ns: int64 (n,), boot time, strictly increasing. counts: int32 (n, c), raw.
+    flags: int32 (n,), Flag bits that the front end knows of. now_ns: boot time up to which
+    the front end vouches that nothing else came; at or after the last reading.
+    """
+
+    times_ns: NDArray[np.int64]
+    counts: NDArray[np.int32]
+    flags: NDArray[np.int32]
+    now_ns: int
+
+    @property
+    def n(self) -> int:
+        """Number of readings; 0 is a valid batch that only says that time has passed."""
+        return int(self.times_ns.size)
+
+
+def empty_batch(channels: int, now_ns: int) -> Batch:
+    """A batch that says only that nothing came until now_ns (ns, boot time)."""
+    return Batch(
+        np.empty(0, np.int64), np.empty((0, channels), np.int32), np.empty(0, np.int32), now_ns
+    )
+
+
+@dataclass(frozen=True, slots=True)
+class DeviceStatus:
+    """State of the device behind a front end, for pages and events."""
+
+    connected: bool
+    text: str = ""
+    temperature_c: float | None = None
+    supply_v: float | None = None
+    counters: Mapping[str, int] = field(default_factory=dict)
+    ended: bool = False
+
+
+class FrontEnd(Protocol):
+    """One wire turned into readings, and nothing else: no filling, no averaging, no deriving."""
+
+    owns_clock: bool
+    clock_fix: tuple[int, int] | None
+    """(boot_ns, utc_ns) of a front end that owns its clock, else None."""
+
+    def read(self, timeout_s: float) -> Batch:
+        """Readings since the last call; waits at most timeout_s; never raises for device trouble."""
+
+    def status(self) -> DeviceStatus:
+        """The device's state now."""
+
+    def close(self) -> None:
+        """Let the device go."""

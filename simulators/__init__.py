@@ -1,0 +1,1 @@
+"""The other end of each wire, for rehearsal and tests."""
