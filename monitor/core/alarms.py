@@ -1,0 +1,22 @@
+"""Alert levels with raise and return levels and delays: a small state machine, no clock of its own."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+
+@dataclass(frozen=True, slots=True)
+class AlertRule:
+    """A threshold on one scope's exposure ratio; all scopes of a kind where a field is empty.
+
+    ratio: raised at or above; returns_at: below it the alarm returns; delays in seconds.
+    """
+
+    name: str
+    set_id: str
+    population: str
+    scope: str
+    ratio: float
+    returns_at: float
+    delay_s: float
+    return_delay_s: float
