@@ -1,0 +1,1 @@
+"""The calibration file: certificates, tables and the uncertainty budget, read into a Chain."""
