@@ -3,15 +3,24 @@
 from __future__ import annotations
 
 import os
-import tomllib
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 
+from monitor import tomlfile
 from monitor.core.alarms import AlertRule
-from monitor.core.errors import ConfigError, DeviceError
+from monitor.core.errors import ConfigError
 from monitor.core.keys import Table
 from monitor.core.quantities import frequency_hz
+from monitor.tomlfile import TopTable
+
+OCCUPANCIES = ("public", "controlled")
+FIELD_REGIONS = ("far", "radiating_near", "reactive_near", "undeclared")
+AXES = ("x", "y", "z", "")
+POPULATIONS = ("general_public", "occupational")
+SCOPES = ("whole_body", "local", "brief", "instantaneous")
+MAX_CHANNELS = 64
+DAY_S = 86_400.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -60,3 +69,190 @@ class Site:
     def control_path(self) -> Path:
         """The control socket, beside the record."""
         return self.record_path.with_suffix(".sock")
+
+
+def default_site_path(explicit: Path | str | None = None) -> Path:
+    """The site file to use: the one asked for, $FIELDSILL_SITE, ./site.toml, /etc/fieldsill's.
+
+    ConfigError where there is none.
+    """
+    named = explicit or os.environ.get("FIELDSILL_SITE")
+    if named:
+        return Path(named)
+    places = (Path("site.toml"), Path("/etc/fieldsill/site.toml"))
+    for place in places:
+        if place.is_file():
+            return place
+    looked = ", ".join(["$FIELDSILL_SITE", *(f"{place}" for place in places)])
+    raise ConfigError(
+        f"no site file; looked in {looked}; write one from hardware/examples or run "
+        "fieldsill rehearse"
+    )
+
+
+def load_site(path: Path | str) -> Site:
+    """Read and check a site file; the first mistake is one line 'site.toml: table.key: what'."""
+    path = Path(path).absolute()
+    if not path.is_file():
+        raise ConfigError(f"no site file {path}; write one from hardware/examples")
+    top, _ = tomlfile.read(path, "site file")
+    values: dict[str, object] = {"path": path}
+    values |= _site(top.table("site")) | _record(top.table("record"), path.parent)
+    values |= _sensor(top, path.parent) | _pages(top.table("pages", {}))
+    bands = _bands(top)
+    sets = _limit_sets(top)
+    silence = top.table("silence", {})
+    values |= {
+        "channels": _channels(top, bands),
+        "bands": bands,
+        "limit_sets": sets,
+        "alerts": _alerts(top, sets),
+        "silence_after_s": silence.number("after_s", 60.0, 1.0, DAY_S),
+    }
+    silence.finish()
+    top.finish()
+    return Site(**values)  # type: ignore[arg-type]
+
+
+def _site(table: Table) -> dict[str, object]:
+    values: dict[str, object] = {
+        "name": _named(table, "name"),
+        "place": table.text("place", ""),
+        "simulated": table.flag("simulated"),
+        "occupancy": table.text("occupancy", choices=OCCUPANCIES),
+        "field_region": table.text("field_region", "undeclared", FIELD_REGIONS),
+    }
+    table.finish()
+    return values
+
+
+def _record(table: Table, folder: Path) -> dict[str, object]:
+    values: dict[str, object] = {
+        "record_path": folder / _named(table, "path"),
+        "commit_s": table.number("commit_s", 10.0, 1.0, 3600.0),
+    }
+    table.finish()
+    return values
+
+
+def _sensor(top: TopTable, folder: Path) -> dict[str, object]:
+    table = top.table("sensor")
+    values: dict[str, object] = {
+        "sensor_kind": _named(table, "kind"),
+        "hold_s": table.number("hold_s", low=0.001, high=DAY_S),
+        "calibration": folder / _named(table, "calibration"),
+    }
+    options = dict(top.any("sensor"))
+    for key in ("kind", "hold_s", "calibration"):
+        del options[key]
+    return values | {"sensor_options": options}
+
+
+def _pages(table: Table) -> dict[str, object]:
+    values: dict[str, object] = {
+        "host": table.text("host", "127.0.0.1"),
+        "port": table.whole("port", 8080, 0, 65535),
+    }
+    table.finish()
+    return values
+
+
+def _bands(top: TopTable) -> dict[str, Band]:
+    bands: dict[str, Band] = {}
+    for table in top.tables("band"):
+        band = Band(_named(table, "name"), frequency(table, "low"), frequency(table, "high"))
+        table.finish()
+        if band.low_hz >= band.high_hz:
+            raise table.error("high", "must be above low")
+        if band.name in bands:
+            raise table.error("name", f"{band.name!r} is there already")
+        for other in bands.values():
+            if band.low_hz < other.high_hz and other.low_hz < band.high_hz:
+                raise table.error(
+                    "low", f"overlaps band {other.name!r}; a signal would count twice"
+                )
+        bands[band.name] = band
+    if not bands:
+        raise top.error("band", "none given; add [[band]] with name, low and high")
+    return bands
+
+
+def _channels(top: TopTable, bands: Mapping[str, Band]) -> tuple[Channel, ...]:
+    tables = top.tables("channel")
+    if not 0 < len(tables) <= MAX_CHANNELS:
+        raise top.error("channel", f"{len(tables)} channels; 1 to {MAX_CHANNELS} are possible")
+    channels: list[Channel] = []
+    for table in tables:
+        channel = Channel(
+            _named(table, "name"),
+            table.text("axis", "", AXES),
+            table.text("band", choices=[*bands]),
+        )
+        table.finish()
+        _distinct(table, channel, channels)
+        channels.append(channel)
+    unused = [name for name in bands if name not in {channel.band for channel in channels}]
+    if unused:
+        raise top.error("band", f"{unused[0]!r} has no channel; add one or take the band out")
+    return tuple(channels)
+
+
+def _distinct(table: Table, channel: Channel, others: Sequence[Channel]) -> None:
+    if channel.name in {other.name for other in others}:
+        raise table.error("name", f"{channel.name!r} is there already")
+    axes = [other.axis for other in others if other.band == channel.band]
+    if channel.axis in axes or (axes and "" in (channel.axis, *axes)):
+        raise table.error(
+            "axis", f"band {channel.band!r} has several channels; each needs an axis of its own"
+        )
+
+
+def _limit_sets(top: TopTable) -> tuple[str, ...]:
+    table = top.table("limits")
+    sets = table.any("sets")
+    table.finish()
+    if not isinstance(sets, list) or not sets or not all(isinstance(s, str) for s in sets):
+        raise table.error("sets", "must be a list of set ids, for example ['icnirp-2020']")
+    if len(set(sets)) != len(sets):
+        raise table.error("sets", "names a set twice")
+    return tuple(sets)
+
+
+def _alerts(top: TopTable, sets: Sequence[str]) -> tuple[AlertRule, ...]:
+    rules: list[AlertRule] = []
+    for table in top.tables("alert", []):
+        rule = AlertRule(
+            name=_named(table, "name"),
+            set_id=table.text("set", "", sets),
+            population=table.text("population", "", POPULATIONS),
+            scope=table.text("scope", "", SCOPES),
+            ratio=table.number("ratio", low=1e-9, high=1e9),
+            returns_at=table.number("returns_at", low=0.0, high=1e9),
+            delay_s=table.number("delay_s", 0.0, 0.0, DAY_S),
+            return_delay_s=table.number("return_delay_s", 0.0, 0.0, DAY_S),
+        )
+        table.finish()
+        if rule.returns_at >= rule.ratio:
+            raise table.error("returns_at", f"{rule.returns_at:g} must be below ratio")
+        if rule.name in {other.name for other in rules}:
+            raise table.error("name", f"{rule.name!r} is there already")
+        rules.append(rule)
+    return tuple(rules)
+
+
+def _named(table: Table, key: str) -> str:
+    text: str = table.text(key)
+    if not text.strip():
+        raise table.error(key, "is empty")
+    return text
+
+
+def frequency(table: Table, key: str) -> float:
+    """A frequency in Hz from a text with a unit or a bare number of Hz."""
+    value = table.any(key)
+    if isinstance(value, bool) or not isinstance(value, (str, int, float)):
+        raise table.error(key, f"{value!r} is not a frequency; write for example '900MHz'")
+    try:
+        return frequency_hz(value)
+    except ConfigError as error:
+        raise table.error(key, str(error)) from None
