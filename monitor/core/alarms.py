@@ -1,4 +1,4 @@
-"""Alert levels with raise and return levels and delays: a small state machine, no clock of its own."""
+"""Alert levels with raise and return levels and delays: a state machine with no clock."""
 
 from __future__ import annotations
 

@@ -62,7 +62,7 @@ class FrontEnd(Protocol):
     """(boot_ns, utc_ns) of a front end that owns its clock, else None."""
 
     def read(self, timeout_s: float) -> Batch:
-        """Readings since the last call; waits at most timeout_s; never raises for device trouble."""
+        """Readings since the last call; waits timeout_s at most; device trouble raises nothing."""
 
     def status(self) -> DeviceStatus:
         """The device's state now."""
