@@ -13,10 +13,9 @@ from numpy.typing import NDArray
 
 from monitor.core.errors import CalibrationError
 from monitor.core.flags import Flag
-from monitor.core.quantities import PORT_OHM, w_from_dbm
-from monitor.core.uncertainty import Contribution
+from monitor.core.quantities import PORT_OHM
+from monitor.core.uncertainty import Contribution, Real
 
-Real = NDArray[np.float64]
 Bits = NDArray[np.int32]
 
 MAX_TABLE = 2**18
@@ -54,9 +53,10 @@ class CountTable:
         return power_w, flags.astype(np.int32)
 
     def to_bytes(self) -> bytes:
-        """Exact image: magic FSCOUNT1, first count and n (i8), powers (f8), flags (i4), little end."""
+        """Exact image, little end first: FSCOUNT1, first count, n (i8), powers (f8), flags (i4)."""
         head = _HEAD.pack(_MAGIC, self.first_count, self.power_w.size)
-        return head + self.power_w.astype("<f8").tobytes() + self.flags.astype("<i4").tobytes()
+        powers, flags = self.power_w.astype("<f8"), self.flags.astype("<i4")
+        return b"".join((head, powers.tobytes(), flags.tobytes()))
 
     @classmethod
     def from_bytes(cls, body: bytes) -> CountTable:
@@ -83,7 +83,9 @@ class Chain:
     frequencies_hz, k: f8 (m,) per channel: E squared per watt at the port, V2/m2 per W, on a grid
     over the channel's band (ends, knots and points between). k_mid: f8 (c,), root of smallest times
     largest k; the spread over the band is among the contributions. flags: bits that hold for every
-    figure. document: the calibration file as read; identity: its sha256, hex.
+    figure. due_utc_ns: from here on the calibration is overdue. resolution: what one raw count
+    stands for, where the front end rounds to it; None for converter counts. document: the
+    calibration file as read; identity: its sha256, hex.
     """
 
     tables: tuple[CountTable, ...]
@@ -94,5 +96,90 @@ class Chain:
     flags: int
     valid_temperature_c: tuple[float, float]
     due_utc_ns: int | None
+    resolution: float | None
     identity: str
     document: bytes = field(repr=False)
+
+
+GRID_STEP = 1.005
+"""Largest ratio of neighbouring frequencies of a grid over a band, up to MAX_GRID points."""
+MAX_GRID = 4001
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class FrequencyTable:
+    """dB over frequency: f8 (n,) each; frequencies strictly rising. Linear in dB over log f."""
+
+    frequencies_hz: Real
+    db: Real
+
+    def __post_init__(self) -> None:
+        """CalibrationError for fewer than two rows and for frequencies that do not rise."""
+        if self.frequencies_hz.size < 2 or self.frequencies_hz.size != self.db.size:
+            raise CalibrationError("needs at least two rows [frequency, dB]")
+        falls = np.flatnonzero(np.diff(self.frequencies_hz) <= 0)
+        if falls.size:
+            f = float(self.frequencies_hz[falls[0] + 1])
+            word = "twice" if f == self.frequencies_hz[falls[0]] else "out of order"
+            raise CalibrationError(f"{_frequency(f)} stands {word}; frequencies must rise")
+
+    def at(self, frequencies_hz: Real) -> Real:
+        """dB (m,) at frequencies (m,); CalibrationError outside the table: nothing extrapolated."""
+        low, high = self.frequencies_hz[0], self.frequencies_hz[-1]
+        if frequencies_hz.min() < low or frequencies_hz.max() > high:
+            raise CalibrationError(
+                f"covers {_frequency(low)} to {_frequency(high)}, but "
+                f"{_frequency(frequencies_hz.min())} to {_frequency(frequencies_hz.max())} is "
+                "measured; narrow the band or have it calibrated further"
+            )
+        return np.interp(np.log(frequencies_hz), np.log(self.frequencies_hz), self.db)
+
+
+def band_grid(low_hz: float, high_hz: float, tables: Sequence[FrequencyTable]) -> Real:
+    """Frequencies (m,) over a band: both ends, every knot of the tables, points between."""
+    n = min(MAX_GRID, 2 + math.ceil(math.log(high_hz / low_hz) / math.log(GRID_STEP)))
+    points = np.geomspace(low_hz, high_hz, n)
+    points[0], points[-1] = low_hz, high_hz
+    knots = np.concatenate([points[:0], *(table.frequencies_hz for table in tables)])
+    inside = knots[(knots > low_hz) & (knots < high_hz)]
+    return np.unique(np.concatenate([points, inside]))
+
+
+def e2_per_w(
+    frequencies_hz: Real, antenna: FrequencyTable, losses: Sequence[FrequencyTable]
+) -> Real:
+    """E squared per watt at the port (m,), V2/m2 per W: 50 ohm times antenna factor and losses.
+
+    E = V * AF * sqrt(loss), V2 = 50 P; antenna factor in 20 log (1/m), losses in 10 log.
+    """
+    db = antenna.at(frequencies_hz)
+    for loss in losses:
+        db = db + loss.at(frequencies_hz)
+    return np.asarray(PORT_OHM * 10.0 ** (db / 10.0))
+
+
+def middle(k: Real) -> float:
+    """Root of smallest times largest: the figure with the smallest worst error in dB."""
+    return math.sqrt(float(k.min()) * float(k.max()))
+
+
+def spread(k: Real, band: str) -> tuple[Contribution, ...]:
+    """The budget line for a signal anywhere in the band: rectangular, half the range of k in dB.
+
+    Shared by the axes of a band, which hear the same signals.
+    """
+    half_db = 5.0 * math.log10(float(k.max()) / float(k.min()))
+    if half_db == 0.0:
+        return ()
+    return (
+        Contribution(
+            f"response over band {band}", half_db, "rectangular", shared=True, kind="antenna"
+        ),
+    )
+
+
+def _frequency(f_hz: float) -> str:
+    for unit, size in (("GHz", 1e9), ("MHz", 1e6), ("kHz", 1e3)):
+        if f_hz >= size:
+            return f"{f_hz / size:.6g} {unit}"
+    return f"{f_hz:.6g} Hz"

@@ -1,0 +1,166 @@
+"""Count tables of detectors: from the curve that a laboratory measured, or from a plain scale."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from monitor.core.calibration import MAX_TABLE, Bits, CountTable
+from monitor.core.errors import CalibrationError
+from monitor.core.flags import Flag
+from monitor.core.quantities import w_from_dbm
+from monitor.core.uncertainty import Contribution, Real
+
+NOTABLE_DB = 0.01
+"""A rounding step whose half is larger than this enters the uncertainty budget."""
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Curve:
+    """Detector voltage against power: both f8 (n,), strictly monotonic; voltage of either slope.
+
+    linear_in: 'dbm' (log detector: volts follow dBm) or 'amplitude' (rms detector: volts follow the
+    root of power); the curve is a straight line between points in that figure.
+    """
+
+    dbm: Real
+    volts: Real
+    linear_in: str
+
+    def __post_init__(self) -> None:
+        """CalibrationError where the curve cannot be inverted."""
+        if self.dbm.size < 2 or self.dbm.size != self.volts.size:
+            raise CalibrationError("needs at least two points [dBm, volts]")
+        for values, word in ((self.dbm, "dBm"), (self.volts, "volts")):
+            steps = np.diff(values)
+            if not (np.all(steps > 0) or np.all(steps < 0)):
+                wrong = int(np.flatnonzero(steps * steps[0] <= 0)[0]) if steps[0] else 0
+                raise CalibrationError(
+                    f"not monotonic: {word} {values[wrong]:g} then {values[wrong + 1]:g} at points "
+                    f"{wrong + 1} and {wrong + 2}; a voltage must belong to one power"
+                )
+
+    @property
+    def rising(self) -> bool:
+        """Whether more power gives more volts."""
+        return bool((self.volts[-1] > self.volts[0]) == (self.dbm[-1] > self.dbm[0]))
+
+    def dbm_at(self, volts: Real) -> Real:
+        """Power (n,), dBm, at volts (n,); the end of the curve beyond its ends."""
+        order = np.argsort(self.volts)
+        knots, dbm = self.volts[order], self.dbm[order]
+        if self.linear_in == "dbm":
+            return np.interp(volts, knots, dbm)
+        return 20.0 * np.log10(np.interp(volts, knots, 10.0 ** (dbm / 20.0)))
+
+    def volts_at(self, dbm: float) -> float:
+        """Volts at a power within the curve, dBm."""
+        order = np.argsort(self.dbm)
+        knots, volts = self.dbm[order], self.volts[order]
+        if self.linear_in == "dbm":
+            return float(np.interp(dbm, knots, volts))
+        return float(np.interp(10.0 ** (dbm / 20.0), 10.0 ** (knots / 20.0), volts))
+
+
+@dataclass(frozen=True, slots=True)
+class Converter:
+    """Counts first to last, volts_per_count each at the detector; rails: first and last are."""
+
+    volts_per_count: float
+    first: int
+    last: int
+    rails: bool
+
+
+def curve_table(
+    curve: Curve,
+    converter: Converter,
+    valid_v: tuple[float, float],
+    range_dbm: tuple[float, float],
+) -> CountTable:
+    """Counts to volts to power. Outside valid_v a count is no reading: an open wire has a voltage.
+
+    Inside it but beyond range_dbm (within the curve): the end of the range, flagged. A count at the
+    converter's rail on the strong side is flagged as clipped, on the weak side as below range.
+    """
+    volts = _volts(converter.first, converter.last, converter)
+    dbm = curve.dbm_at(volts)
+    weak, strong = (volts < curve.volts.min(), volts > curve.volts.max())
+    if not curve.rising:
+        weak, strong = strong, weak
+    below, above = weak | (dbm < range_dbm[0]), strong | (dbm > range_dbm[1])
+    if converter.rails:
+        top = -1 if curve.rising else 0
+        below[-1 - top] = True
+    flags = _range_flags(below, above)
+    if converter.rails:
+        flags[top] |= np.int32(Flag.CLIPPED)
+    power_w = w_from_dbm(np.clip(dbm, *range_dbm))
+    return _without(converter.first, power_w, flags, (volts < valid_v[0]) | (volts > valid_v[1]))
+
+
+def scale_table(
+    resolution: float,
+    offset_db: float,
+    valid_dbm: tuple[float, float],
+    range_dbm: tuple[float, float],
+) -> CountTable:
+    """Counts times resolution, plus offset_db, is power in dBm; no reading outside valid_dbm.
+
+    Inside it but beyond range_dbm: the end of the range, flagged.
+    """
+    first = math.ceil(round((valid_dbm[0] - offset_db) / resolution, 6))
+    last = math.floor(round((valid_dbm[1] - offset_db) / resolution, 6))
+    dbm = (np.arange(_size(first, last)) + first) * resolution + offset_db
+    # A little grace: a range of -90 dBm must hold the count that stands for -90 dBm.
+    grace = 1e-6 * resolution
+    flags = _range_flags(dbm < range_dbm[0] - grace, dbm > range_dbm[1] + grace)
+    return CountTable(first, w_from_dbm(np.clip(dbm, *range_dbm)), flags)
+
+
+def rounding(half_step_db: float) -> tuple[Contribution, ...]:
+    """The budget line of a rounding step, where it is notable; none else."""
+    if half_step_db < NOTABLE_DB:
+        return ()
+    return (Contribution("converter resolution", half_step_db, "rectangular", kind="detector"),)
+
+
+def half_step_db(curve: Curve, converter: Converter, range_dbm: tuple[float, float]) -> float:
+    """Half a count in dB where the curve is flattest within the range: the worst case."""
+    ends = sorted(curve.volts_at(dbm) for dbm in range_dbm)
+    first = max(converter.first, math.ceil(ends[0] / converter.volts_per_count))
+    last = min(converter.last, math.floor(ends[1] / converter.volts_per_count))
+    dbm = curve.dbm_at(_volts(first, last, converter))
+    return float(np.abs(np.diff(dbm)).max()) / 2.0
+
+
+def _volts(first: int, last: int, converter: Converter) -> Real:
+    counts = np.arange(_size(first, last), dtype=np.float64) + first
+    return np.asarray(counts * converter.volts_per_count)
+
+
+def _size(first: int, last: int) -> int:
+    n = last - first + 1
+    if not 1 < n <= MAX_TABLE:
+        raise CalibrationError(
+            f"{n} counts within the range; 2 to {MAX_TABLE} (18 bits) are possible; check the step"
+        )
+    return n
+
+
+def _range_flags(below: NDArray[np.bool_], above: NDArray[np.bool_]) -> Bits:
+    flags = np.where(below, np.int32(Flag.BELOW_RANGE), np.int32(0))
+    return np.asarray(flags | np.where(above, np.int32(Flag.ABOVE_RANGE), np.int32(0)), np.int32)
+
+
+def _without(first: int, power_w: Real, flags: Bits, invalid: NDArray[np.bool_]) -> CountTable:
+    """The table with the invalid counts struck out; CalibrationError where none is left."""
+    if invalid.all():
+        raise CalibrationError("no count of the converter is within the valid voltages")
+    power_w = np.where(invalid, np.nan, power_w)
+    return CountTable(
+        first, power_w, np.where(invalid, np.int32(Flag.NO_SIGNAL_WIRE), flags).astype(np.int32)
+    )
