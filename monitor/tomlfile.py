@@ -2,14 +2,20 @@
 
 from __future__ import annotations
 
+import math
 import tomllib
 from pathlib import Path
 from typing import Any
 
+import numpy as np
+from numpy.typing import NDArray
+
 from monitor.core.errors import ConfigError, DeviceError
 from monitor.core.keys import REQUIRED, Table
+from monitor.core.quantities import frequency_hz
 
 MAX_BYTES = 4_000_000
+MAX_ROWS = 10_000
 
 
 class TopTable(Table):
@@ -49,3 +55,43 @@ def read(path: Path, what: str) -> tuple[TopTable, bytes]:
     except tomllib.TOMLDecodeError as error:
         raise ConfigError(f"{path.name}: not valid TOML: {error}") from None
     return TopTable(values, path.name), body
+
+
+def pair(table: Table, key: str, default: Any = REQUIRED) -> tuple[float, float]:
+    """Two finite numbers [low, high], low below high."""
+    value = table.any(key, default)
+    if value is default and default is not REQUIRED:
+        return value  # type: ignore[no-any-return]
+    if not _numbers(value, 2) or not value[0] < value[1]:
+        raise table.error(key, "must be two numbers [low, high], low below high")
+    return float(value[0]), float(value[1])
+
+
+def rows(table: Table, key: str, form: str, frequency: bool = False) -> NDArray[np.float64]:
+    """A list of at least two pairs of finite numbers, f8 (n, 2).
+
+    form: '[dBm, volts]', for messages. frequency: the first of each is a frequency, '700MHz' or Hz.
+    """
+    value = table.any(key)
+    if not isinstance(value, list) or not 2 <= len(value) <= MAX_ROWS:
+        raise table.error(key, f"must be a list of 2 to {MAX_ROWS} rows {form}")
+    plain = []
+    for i, row in enumerate(value, 1):
+        try:
+            if frequency and isinstance(row, list) and row and isinstance(row[0], str):
+                row = [frequency_hz(row[0]), *row[1:]]
+        except ConfigError as error:
+            raise table.error(key, f"row {i}: {error}") from None
+        if not _numbers(row, 2) or (frequency and row[0] <= 0):
+            raise table.error(key, f"row {i}: {row!r} is not {form}")
+        plain.append(row)
+    return np.array(plain, np.float64)
+
+
+def _numbers(value: object, n: int) -> bool:
+    return (
+        isinstance(value, (list, tuple))
+        and len(value) == n
+        and all(isinstance(v, (int, float)) and not isinstance(v, bool) for v in value)
+        and all(math.isfinite(v) for v in value)
+    )

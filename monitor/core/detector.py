@@ -75,6 +75,12 @@ class Converter:
     rails: bool
 
 
+def stepped(step_v: float, valid_v: tuple[float, float]) -> Converter:
+    """Volts that were rounded to steps of step_v: counts over the valid voltages, no rails."""
+    first, last = math.ceil(valid_v[0] / step_v), math.floor(valid_v[1] / step_v)
+    return Converter(step_v, first, last, rails=False)
+
+
 def curve_table(
     curve: Curve,
     converter: Converter,
