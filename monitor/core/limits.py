@@ -123,7 +123,7 @@ class Scope:
 def _decides_for_e(row: LimitRow) -> bool:
     """Whether a field strength over a fixed averaging time can be held against the row."""
     return (
-        row.use != "reference"
+        row.use in ("both", "level")
         and row.quantity in ("E", "S")
         and row.measure == "rms"
         and row.scope in ("whole_body", "local")

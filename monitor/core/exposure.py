@@ -1,0 +1,187 @@
+"""Exposure ratios and what may be said of them: exceeds, conforms, or cannot be decided."""
+
+from __future__ import annotations
+
+import math
+from enum import IntEnum
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from monitor.core.flags import LOWER_BOUND, UPPER_BOUND, Flag, words
+
+Real = NDArray[np.float64]
+
+GUARD = 1.64
+"""One-sided 95 % quantile of a normal distribution (1.645, cut to the two digits in use)."""
+CAP_DB = 4.0
+"""Largest expanded uncertainty with which anything may conform (common practice, no source)."""
+LEAST_VALID_SHARE = 0.75
+E_ALONE_FROM_HZ = 30e6
+"""Below it E and H must both be known (ICNIRP 2020, notes to the reference levels)."""
+FIELD_REGIONS = ("far", "radiating_near", "reactive_near", "undeclared")
+
+OUTSIDE_BUDGET = (
+    Flag.OUT_OF_TEMPERATURE | Flag.CALIBRATION_OVERDUE | Flag.OUT_OF_BAND | Flag.SUPPLY_OUT_OF_RANGE
+)
+"""Conditions that the stated uncertainty does not cover."""
+
+
+class Verdict(IntEnum):
+    """What a window says about a scope; the record keeps the number."""
+
+    UNDECIDED = 0
+    CONFORMS = 1
+    EXCEEDS = 2
+
+
+def scope_coefficients(k: Real, ratio_per_e2: Real) -> float:
+    """Exposure ratio per watt at the port of a channel that cannot tell frequencies apart.
+
+    k: E squared per watt, V2/m2/W, float64 (m,). ratio_per_e2: 1/(V2/m2), (m,), on the same
+    frequencies. The largest product over the band: both vary, and the signal may sit anywhere.
+    """
+    return float(np.max(np.asarray(k, np.float64) * np.asarray(ratio_per_e2, np.float64)))
+
+
+def verdicts(
+    ratio_low: ArrayLike,
+    ratio_mean: ArrayLike,
+    ratio_high: ArrayLike,
+    u_db: ArrayLike,
+    k: ArrayLike,
+    valid_share: ArrayLike,
+    flags: ArrayLike,
+    *,
+    verified: bool,
+    field_region: str,
+    cap_db: float = CAP_DB,
+    lowest_hz: float = math.inf,
+) -> NDArray[np.int8]:
+    """Verdict of every window, int8 (n,).
+
+    ratio_low, ratio_mean, ratio_high: exposure ratio with gaps as zero, of the valid part, with
+    gaps at the period's maximum. u_db: STANDARD uncertainty of the ratio in dB (10 log), that is
+    the expanded one divided by its coverage factor k. cap_db: cap on k * u. flags: Flag bits. lowest_hz: lower end of
+    what the channels receive, where E alone is measured. Decisions are taken in dB with a
+    one-sided 95 % guard of 1.64 u. An exceedance stands at any valid share and with any U, for
+    the guard counts it; what forbids "conforms" is listed in reasons().
+    """
+    low_db, high_db = _db(ratio_low), _db(ratio_high)
+    u = np.asarray(u_db, np.float64)
+    bits = np.asarray(flags, np.int64)
+    share = np.asarray(valid_share, np.float64)
+    guard_db = GUARD * u
+    exceeds = (low_db - guard_db > 0.0) & ((bits & int(UPPER_BOUND)) == 0)
+    conforms = (
+        (high_db + guard_db < 0.0)
+        & (np.asarray(k, np.float64) * u <= cap_db)
+        & (share >= LEAST_VALID_SHARE)
+        & ((bits & int(LOWER_BOUND | OUTSIDE_BUDGET)) == 0)
+        & np.isfinite(np.asarray(ratio_mean, np.float64))
+    )
+    if not verified or field_region not in ("far", "radiating_near"):
+        conforms = np.zeros_like(conforms)
+    if not _e_alone_decides(field_region, lowest_hz):
+        exceeds, conforms = np.zeros_like(exceeds), np.zeros_like(conforms)
+    found = np.where(exceeds, Verdict.EXCEEDS, np.where(conforms, Verdict.CONFORMS, 0))
+    return np.atleast_1d(found).astype(np.int8)
+
+
+def reasons(
+    ratio_low: float,
+    ratio_mean: float,
+    ratio_high: float,
+    u_db: float,
+    k: float,
+    valid_share: float,
+    flags: int,
+    *,
+    verified: bool,
+    field_region: str,
+    cap_db: float = CAP_DB,
+    lowest_hz: float = math.inf,
+) -> list[str]:
+    """Plain words for one window: the figures behind the verdict, then all that forbids one.
+
+    Arguments as for verdicts(), scalars. The first entry always states what was compared.
+    """
+    verdict = verdicts(
+        ratio_low, ratio_mean, ratio_high, u_db, k, valid_share, flags,
+        verified=verified, field_region=field_region, cap_db=cap_db, lowest_hz=lowest_hz,
+    )[0]  # fmt: skip
+    said = [_comparison(int(verdict), ratio_low, ratio_mean, ratio_high, GUARD * u_db)]
+    said += _no_verdict(field_region, lowest_hz)
+    if verdict == Verdict.EXCEEDS:
+        return said
+    if flags & UPPER_BOUND and _above(ratio_low, GUARD * u_db):
+        said.append(_because(flags & int(UPPER_BOUND), "the figure is an upper bound"))
+    if field_region == "undeclared":
+        said.append("the field region is not declared")
+    if not verified:
+        said.append("the limit is from memory, not confirmed against the published text")
+    if not valid_share >= LEAST_VALID_SHARE:
+        said.append(
+            f"valid for {_percent(valid_share)} of the time; {LEAST_VALID_SHARE:.0%} is needed"
+        )
+    if not k * u_db <= cap_db:
+        said.append(
+            f"the expanded uncertainty of {_number(k * u_db)} dB is above the cap of {cap_db:g} dB"
+        )
+    if flags & LOWER_BOUND:
+        said.append(_because(flags & int(LOWER_BOUND), "the figure is a lower bound"))
+    if flags & OUTSIDE_BUDGET:
+        said.append(
+            _because(flags & int(OUTSIDE_BUDGET), "the stated uncertainty does not cover this")
+        )
+    return said
+
+
+def _e_alone_decides(field_region: str, lowest_hz: float) -> bool:
+    return field_region != "reactive_near" and lowest_hz >= E_ALONE_FROM_HZ
+
+
+def _no_verdict(field_region: str, lowest_hz: float) -> list[str]:
+    said = []
+    if field_region == "reactive_near":
+        said.append("in the reactive near field E alone decides nothing")
+    if lowest_hz < E_ALONE_FROM_HZ:
+        said.append("below 30 MHz E alone decides nothing; H must be known as well")
+    return said
+
+
+def _comparison(verdict: int, low: float, mean: float, high: float, guard_db: float) -> str:
+    guard = f"guard {_number(guard_db)} dB"
+    if verdict == Verdict.EXCEEDS:
+        return f"with gaps counted as zero the ratio is {low:.3g}, above 1 by more than the {guard}"
+    if not math.isfinite(mean):
+        return "no valid part in the averaging time"
+    if verdict == Verdict.CONFORMS:
+        return (
+            f"with gaps at the period's maximum the ratio is {high:.3g},"
+            f" below 1 by more than the {guard}"
+        )
+    return f"ratio {mean:.3g}; {low:.3g} with gaps as zero, {_number(high)} at worst; {guard}"
+
+
+def _above(ratio: float, guard_db: float) -> bool:
+    return ratio > 0.0 and 10.0 * math.log10(ratio) - guard_db > 0.0
+
+
+def _because(bits: int, what: str) -> str:
+    return f"{what}: {', '.join(words(bits))}"
+
+
+def _number(value: float) -> str:
+    return f"{value:.3g}" if math.isfinite(value) else "unknown"
+
+
+def _percent(share: float) -> str:
+    return f"{share:.0%}" if math.isfinite(share) else "an unknown part"
+
+
+def _db(ratio: ArrayLike) -> Real:
+    """10 log; a ratio of 0 is minus infinity, nan stays nan and decides nothing."""
+    with np.errstate(divide="ignore", invalid="ignore"):
+        db: Real = 10.0 * np.log10(np.asarray(ratio, np.float64))
+    return db
