@@ -1,1 +1,5 @@
-"""Front ends: one wire each, turned into readings."""
+"""Front ends: each turns one wire into readings and device status, and nothing else."""
+
+from hardware.registry import KINDS, Settings, open_front_end, settings_for
+
+__all__ = ["KINDS", "Settings", "open_front_end", "settings_for"]

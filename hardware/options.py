@@ -1,0 +1,55 @@
+"""Options that several kinds of front end share."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from datetime import UTC, datetime
+from pathlib import Path
+
+from monitor.core.errors import DeviceError
+from monitor.core.keys import Table
+
+_EPOCH = datetime(1970, 1, 1, tzinfo=UTC)
+
+
+def sensor_table(options: Mapping[str, object]) -> Table:
+    """The rest of a site's [sensor] table."""
+    return Table(options, "sensor")
+
+
+def utc_ns(when: datetime) -> int:
+    """UTC in ns since 1970 of an aware time."""
+    since = when - _EPOCH
+    return (since.days * 86_400 + since.seconds) * 1_000_000_000 + since.microseconds * 1_000
+
+
+def clock_start_ns(table: Table, required: bool = False) -> int | None:
+    """UTC (ns) of the option clock_start, RFC 3339 with its offset; None where it is absent."""
+    key = "clock_start"
+    value = table.any(key) if required else table.any(key, None)
+    if value is None:
+        return None
+    when = value if isinstance(value, datetime) else _parsed(value)
+    if when is None or when.tzinfo is None:
+        raise table.error(key, f'{value!r} is not a time with its offset; "2026-03-01T00:00:00Z"')
+    return utc_ns(when)
+
+
+def _parsed(value: object) -> datetime | None:
+    try:
+        return datetime.fromisoformat(value) if isinstance(value, str) else None
+    except ValueError:
+        return None
+
+
+def existing_file(table: Table, key: str, folder: Path) -> Path:
+    """The file named by key, relative to folder; DeviceError where it cannot be read."""
+    path = folder / table.text(key)
+    if not path.is_file():
+        raise DeviceError(f"{table.where}.{key}: {path} does not exist; correct the path")
+    return path
+
+
+def pace(table: Table) -> bool:
+    """Whether a recorded series plays in real time; the option pace."""
+    return table.text("pace", "full", ("full", "real")) == "real"
