@@ -2,7 +2,19 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from monitor.core.limits import Scope
+
+F = NDArray[np.float64]
+I = NDArray[np.int64]  # noqa: E741
+
+ENOUGH_SHARE = 0.75
+"""Valid share from which the mean of the valid part speaks for the window (design: verdicts)."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -20,3 +32,116 @@ class AlertRule:
     returns_at: float
     delay_s: float
     return_delay_s: float
+
+
+@dataclass(frozen=True, slots=True)
+class Watch:
+    """One alert rule on one scope (its index in the station); key names it in events."""
+
+    rule: AlertRule
+    scope: int
+    key: str
+
+
+def watches(rules: Sequence[AlertRule], scopes: Sequence[Scope]) -> tuple[Watch, ...]:
+    """Every rule on every scope that it means; the key tells them apart."""
+    found = []
+    for rule in rules:
+        for index, scope in enumerate(scopes):
+            wanted = (rule.set_id, rule.population, rule.scope)
+            given = (scope.set_id, scope.population, scope.scope)
+            if all(not want or want == have for want, have in zip(wanted, given)):
+                key = f"{rule.name} | {scope.set_id} {scope.population} {scope.scope}"
+                found.append(Watch(rule, index, f"{key} {scope.averaging_s:g} s"))
+    return tuple(found)
+
+
+@dataclass(frozen=True, slots=True)
+class Side:
+    """Where a watched ratio stands. code: 1 at or above the level, -1 below the return level, 0
+    between or unknown; since_ns: start of that; above: on which side it was last seen."""
+
+    code: int = 0
+    since_ns: int = 0
+    above: bool = False
+    raised: bool = False
+
+
+def codes(ratio_low: F, ratio_mean: F, valid_share: F, rule: AlertRule) -> NDArray[np.int8]:
+    """Code of each point (p,). What is unknown neither raises an alarm nor returns one.
+
+    The mean of the valid part counts from a valid share of 0.75; gaps as zero count always.
+    """
+    enough = valid_share >= ENOUGH_SHARE
+    over = (ratio_low >= rule.ratio) | (enough & (ratio_mean >= rule.ratio))
+    under = enough & (ratio_mean < rule.returns_at)
+    return np.where(over, 1, np.where(under, -1, 0)).astype(np.int8)
+
+
+@dataclass(frozen=True, slots=True)
+class Followed:
+    """New side; positions of points where the level was crossed; changes (position, raised)."""
+
+    side: Side
+    crossed: list[int]
+    changes: list[tuple[int, bool]]
+
+
+def follow(side: Side, times_ns: I, code: NDArray[np.int8], rule: AlertRule) -> Followed:
+    """Follow a ratio over points in time order; many small calls equal one large one."""
+    crossed: list[int] = []
+    changes: list[tuple[int, bool]] = []
+    starts = np.concatenate([[0], np.flatnonzero(code[1:] != code[:-1]) + 1])
+    ends = np.concatenate([starts[1:], [code.size]])
+    for start, end in zip(starts.tolist(), ends.tolist()):
+        if start == end:
+            continue
+        now = int(code[start])
+        since = side.since_ns if now == side.code else int(times_ns[start])
+        above, raised = side.above, side.raised
+        if now != 0 and above != (now > 0):
+            above = now > 0
+            crossed.append(start)
+        if now != 0 and raised != (now > 0):
+            delay_s = rule.delay_s if now > 0 else rule.return_delay_s
+            at = start + int(np.searchsorted(times_ns[start:end], since + round(delay_s * 1e9)))
+            if at < end:
+                raised = now > 0
+                changes.append((at, raised))
+        side = Side(now, since, above, raised)
+    return Followed(side, crossed, changes)
+
+
+@dataclass(frozen=True, slots=True)
+class Alarm:
+    """An alarm as people meet it; state words after IEC 62682 / ISA-18.2 (names from memory)."""
+
+    key: str
+    raised: bool = False
+    confirmed: bool = True
+    since_ns: int = 0
+    muted_until_ns: int | None = None
+
+    def state(self, now_ns: int) -> str:
+        """normal, unacknowledged, acknowledged, returned_unacknowledged or shelved."""
+        if self.muted_until_ns is not None and now_ns < self.muted_until_ns:
+            return "shelved"
+        if self.raised:
+            return "acknowledged" if self.confirmed else "unacknowledged"
+        return "normal" if self.confirmed else "returned_unacknowledged"
+
+
+def changed(alarm: Alarm, raised: bool, at_ns: int) -> Alarm:
+    """The alarm after it was raised (to be confirmed anew) or has returned."""
+    confirmed = alarm.confirmed and not raised
+    return Alarm(alarm.key, raised, confirmed, at_ns, alarm.muted_until_ns)
+
+
+def confirmed(alarm: Alarm) -> Alarm:
+    """The alarm after a person has confirmed it."""
+    return Alarm(alarm.key, alarm.raised, True, alarm.since_ns, alarm.muted_until_ns)
+
+
+def muted(alarm: Alarm, until_ns: int | None) -> Alarm:
+    """The alarm muted until a time, or no longer muted."""
+    return Alarm(alarm.key, alarm.raised, alarm.confirmed, alarm.since_ns, until_ns)

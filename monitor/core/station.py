@@ -1,0 +1,76 @@
+"""What stays fixed while a station measures: chain, limits, alert levels, times."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from monitor.core.alarms import Watch
+from monitor.core.calibration import Chain, CountTable
+from monitor.core.flags import Flag
+from monitor.core.limits import Scope
+from monitor.core.readings import NS_PER_S
+from monitor.core.uncertainty import coverage_factor
+
+F = NDArray[np.float64]
+
+
+@dataclass(frozen=True, slots=True)
+class Station:
+    """All that judging needs to know, fixed while the daemon runs.
+
+    coefficients: f8 (c, s), exposure ratio per W at the port, channel by scope. averagings_s:
+    every averaging time kept, whole multiples of a block. floor_w: f8 (c,), what a reading below
+    the range counts as. lowest_hz: lower end of what the channels receive.
+    """
+
+    chain: Chain
+    scopes: tuple[Scope, ...]
+    coefficients: F
+    averagings_s: tuple[int, ...]
+    watches: tuple[Watch, ...]
+    hold_ns: int
+    silence_ns: int
+    field_region: str
+    k: float
+    floor_w: F
+    lowest_hz: float
+
+    @property
+    def channels(self) -> int:
+        """Number of channels."""
+        return len(self.chain.tables)
+
+
+def station(
+    chain: Chain,
+    scopes: tuple[Scope, ...],
+    coefficients: F,
+    watches: tuple[Watch, ...],
+    *,
+    hold_s: float,
+    silence_s: float,
+    field_region: str,
+) -> Station:
+    """A station that keeps 360 s and 1800 s and whatever else its scopes ask for."""
+    averagings = {360, 1800, *(round(scope.averaging_s) for scope in scopes)}
+    return Station(
+        chain,
+        scopes,
+        coefficients,
+        tuple(sorted(averagings)),
+        watches,
+        round(hold_s * NS_PER_S),
+        round(silence_s * NS_PER_S),
+        field_region,
+        coverage_factor(chain.contributions),
+        np.array([_floor_w(table) for table in chain.tables]),
+        min(float(grid.min()) for grid in chain.frequencies_hz),
+    )
+
+
+def _floor_w(table: CountTable) -> float:
+    below = (table.flags & int(Flag.BELOW_RANGE)) != 0
+    return float(np.nanmax(np.where(below, table.power_w, 0.0), initial=0.0))

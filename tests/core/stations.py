@@ -1,0 +1,65 @@
+"""Stations made by hand for tests: a count is a milli-dBm, E squared per watt is given."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from monitor.core.alarms import AlertRule, watches
+from monitor.core.calibration import Chain, CountTable
+from monitor.core.flags import Flag
+from monitor.core.limits import Scope
+from monitor.core.station import Station, station
+from monitor.core.uncertainty import Contribution
+
+FIRST, LAST = -80_000, 10_000
+
+
+def chain(channels: int = 3, e2_per_w: float = 1e5) -> Chain:
+    """A chain at 900 MHz whose counts are milli-dBm from -80 to +10 dBm."""
+    counts = np.arange(FIRST, LAST + 1)
+    flags = np.where(counts < FIRST + 1000, int(Flag.BELOW_RANGE), 0).astype(np.int32)
+    table = CountTable(FIRST, 1e-3 * 10.0 ** (counts / 10_000), flags)
+    budget = (Contribution("certificate", 1.0, "normal", shared=True),)
+    return Chain(
+        tables=(table,) * channels,
+        frequencies_hz=(np.array([9e8]),) * channels,
+        k=(np.array([e2_per_w]),) * channels,
+        k_mid=np.full(channels, e2_per_w),
+        contributions=(budget,) * channels,
+        flags=0,
+        valid_temperature_c=(-40.0, 85.0),
+        due_utc_ns=None,
+        identity="0" * 64,
+        document=b"",
+        resolution=0.001,
+    )
+
+
+SCOPES = (
+    Scope("made-up", "1", "general_public", "local", 360.0, True, "test"),
+    Scope("made-up", "1", "general_public", "whole_body", 1800.0, True, "test"),
+)
+
+
+def made(
+    channels: int = 3, *, ratio_per_e2: float = 1e-3, rules: tuple[AlertRule, ...] = ()
+) -> Station:
+    """A station of two scopes with the same limit; E squared of 1 / ratio_per_e2 is the limit."""
+    here = chain(channels)
+    per_watt = np.full((channels, 2), float(here.k_mid[0]) * ratio_per_e2)
+    return station(
+        here,
+        SCOPES,
+        per_watt,
+        watches(rules, SCOPES),
+        hold_s=3.0,
+        silence_s=30.0,
+        field_region="far",
+    )
+
+
+def counts_of(e2: np.ndarray, channels: int = 1, e2_per_w: float = 1e5) -> np.ndarray:
+    """Counts whose E squared, added over the channels, is e2 to the step of a count."""
+    dbm = 10 * np.log10(e2 / channels / e2_per_w / 1e-3)
+    column = np.rint(dbm * 1000).astype(np.int32)
+    return np.repeat(column[:, None], channels, axis=1)
