@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import tomllib
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 
 import numpy as np
@@ -136,3 +136,8 @@ def counts(
     volts = volts + board.noise_v * draws.normals(seed, draws.NOISE, first_index, n, channels)
     top = (1 << board.bits) - 1
     return np.clip(np.rint(volts / board.volts_per_count), 0, top).astype(np.int32)
+
+
+def with_converter(board: Board, bits: int, volts_per_count: float) -> Board:
+    """The same detector behind another converter."""
+    return replace(board, bits=bits, volts_per_count=volts_per_count)

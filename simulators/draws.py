@@ -38,9 +38,9 @@ def _cell(seed: int, stream: int, cell: int, width: int, normal: bool) -> NDArra
     return drawn
 
 
-def _rows(seed: int, stream: int, first: int, n: int, width: int, normal: bool) -> Iterator[
-    NDArray[np.float64]
-]:
+def _rows(
+    seed: int, stream: int, first: int, n: int, width: int, normal: bool
+) -> Iterator[NDArray[np.float64]]:
     at, end = first, first + n
     while at < end:
         cell, row = divmod(at, CELL)

@@ -220,9 +220,7 @@ def _cell_e2(scene: Scene, seed: int, cell: int, rate_hz: float, midnight_s: flo
         used = _traffic(source, times_s + midnight_s) * np.exp(source.spread * swing[:, i])
         level = np.where(luck[:, 2 * i] < used, 1.0, source.idle_share)
         off = 10.0 ** (source.tdd_off_db / 10.0)
-        e2[:, i] = source.e2_full * np.where(
-            luck[:, 2 * i + 1] < source.tdd_duty, level, off
-        )
+        e2[:, i] = source.e2_full * np.where(luck[:, 2 * i + 1] < source.tdd_duty, level, off)
     for i, burst in enumerate(scene.bursts):
         e2[:, count + i] = burst.e2_full * _on(burst, seed, i, times_s)
     e2.setflags(write=False)

@@ -1,0 +1,145 @@
+"""python -m simulators: the simulated detector board, and faults on command."""
+
+from __future__ import annotations
+
+import argparse
+import json
+import signal
+import sys
+import time
+from collections.abc import Sequence
+from contextlib import ExitStack, closing
+from datetime import UTC, datetime, timedelta
+from pathlib import Path
+from types import FrameType
+
+from simulators import control, scenario
+from simulators.board import Board
+from simulators.faults import KINDS, Faults, scheduled
+from simulators.line import Line
+from simulators.source import Setup, Source
+
+
+def main(argv: Sequence[str] | None = None) -> int:
+    """Run one command; 0 done, 2 wrong input, 3 a device or file cannot be reached."""
+    options = _parser().parse_args(argv)
+    try:
+        if options.command == "fault":
+            return _fault(options)
+        if options.command == "scenes":
+            print("\n".join(scenario.available()))
+            return 0
+        return _board(options)
+    except ValueError as error:
+        print(f"simulators: {error}", file=sys.stderr)
+        return 2
+    except OSError as error:
+        print(f"simulators: {error.filename or ''} {error.strerror or error}", file=sys.stderr)
+        return 3
+
+
+def _parser() -> argparse.ArgumentParser:
+    parser = argparse.ArgumentParser(
+        prog="python -m simulators", description="Simulated hardware; all of its data are invented."
+    )
+    commands = parser.add_subparsers(dest="command", required=True)
+    commands.add_parser("scenes", help="names of the scenes that are shipped")
+    board = commands.add_parser("board", help="a detector board on a pseudo-terminal")
+    board.add_argument("--scenario", default="busy-day", metavar="NAME|FILE.toml")
+    board.add_argument("--seed", type=int, default=1)
+    board.add_argument("--link", type=Path, required=True, help="link to the device")
+    board.add_argument("--rate", type=float, default=1.0, metavar="HZ", help="readings a second")
+    board.add_argument("--channels", type=int, default=3, choices=(1, 2, 3))
+    board.add_argument("--bits", type=int, default=12, help="of the converter; 12: as calibrated")
+    board.add_argument(
+        "--start-utc", metavar="RFC3339", help="board time 0; default: now - history"
+    )
+    board.add_argument("--history", type=float, default=0.0, metavar="SECONDS")
+    end = board.add_mutually_exclusive_group()
+    end.add_argument("--until-exit", action="store_true", help="until killed (the rule)")
+    end.add_argument("--exit-after-history", action="store_true")
+    board.add_argument("--with-parent", action="store_true", help="end when the starter does")
+    board.add_argument("--truth", type=Path, metavar="FILE.csv")
+    board.add_argument("--control", type=Path, metavar="SOCKET")
+    board.add_argument("--errors", type=int, metavar="SEED", help="draw the instrument's errors")
+    board.add_argument(
+        "--fault",
+        action="append",
+        default=[],
+        metavar="SECONDS:KIND[:AMOUNT]",
+        help=f"at that board time; kinds: {', '.join(KINDS)}",
+    )
+    fault = commands.add_parser("fault", help="a fault on command")
+    fault.add_argument("--control", type=Path, required=True, metavar="SOCKET")
+    fault.add_argument("kind", choices=KINDS)
+    amount = fault.add_mutually_exclusive_group()
+    amount.add_argument("--count", type=float, metavar="FRAMES")
+    amount.add_argument("--seconds", type=float, metavar="S")
+    return parser
+
+
+def _fault(options: argparse.Namespace) -> int:
+    amount = options.count if options.count is not None else options.seconds
+    reply = control.ask(options.control, {"fault": options.kind, "amount": amount})
+    print(json.dumps(reply))
+    return 0 if reply.get("ok") else 2
+
+
+def _board(options: argparse.Namespace) -> int:
+    started_s = time.monotonic()
+    setup = Setup(
+        scene=scenario.load(options.scenario),
+        seed=options.seed,
+        rate_hz=options.rate,
+        channels=options.channels,
+        bits=options.bits,
+        start_utc=_start_utc(options.start_utc, options.history),
+        history_s=options.history,
+        errors=options.errors,
+    )
+    faults = Faults(scheduled(text) for text in options.fault)
+    signal.signal(signal.SIGTERM, _leave)
+    signal.signal(signal.SIGINT, _leave)
+    with ExitStack() as opened:
+        source = opened.enter_context(closing(Source(setup, options.truth)))
+        listening = None
+        if options.control:
+            listening = opened.enter_context(closing(control.Control(options.control)))
+        line = opened.enter_context(closing(Line(options.link)))
+        line.open()
+        board = Board(source, line, listening, faults, options.with_parent)
+        _say(
+            event="ready",
+            device=options.link,
+            truth=options.truth,
+            control=options.control,
+            start_utc=setup.start_utc.isoformat(),
+            scene=setup.scene.name,
+        )
+        readings = board.history()
+        _say(event="history", readings=readings, took_s=round(time.monotonic() - started_s, 3))
+        if not options.exit_after_history:
+            board.live(started_s)
+    return 0
+
+
+def _start_utc(text: str | None, history_s: float) -> datetime:
+    if text is None:
+        return datetime.now(UTC) - timedelta(seconds=history_s)
+    start = datetime.fromisoformat(text)
+    if start.tzinfo is None:
+        raise ValueError(f"--start-utc {text}: give the zone, for example 2026-03-01T00:00:00Z")
+    return start.astimezone(UTC)
+
+
+def _say(**facts: object) -> None:
+    """One line of JSON on standard output, for whoever started the board."""
+    print(json.dumps({**facts, "simulated": True}, default=str), flush=True)
+
+
+def _leave(_number: int, _frame: FrameType | None) -> None:
+    raise SystemExit(0)
+
+
+if __name__ == "__main__":
+    sys.exit(main())
