@@ -62,10 +62,10 @@ def verdicts(
 
     ratio_low, ratio_mean, ratio_high: exposure ratio with gaps as zero, of the valid part, with
     gaps at the period's maximum. u_db: STANDARD uncertainty of the ratio in dB (10 log), that is
-    the expanded one divided by its coverage factor k. cap_db: cap on k * u. flags: Flag bits. lowest_hz: lower end of
-    what the channels receive, where E alone is measured. Decisions are taken in dB with a
-    one-sided 95 % guard of 1.64 u. An exceedance stands at any valid share and with any U, for
-    the guard counts it; what forbids "conforms" is listed in reasons().
+    the expanded one divided by its coverage factor k; cap_db holds for k * u. flags: Flag bits.
+    lowest_hz: lower end of what the channels receive, where E alone is measured. Decisions are
+    taken in dB with a one-sided 95 % guard of 1.64 u. An exceedance stands at any valid share and
+    with any U, for the guard counts it; what forbids "conforms" is listed in reasons().
     """
     low_db, high_db = _db(ratio_low), _db(ratio_high)
     u = np.asarray(u_db, np.float64)

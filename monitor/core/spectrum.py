@@ -16,8 +16,9 @@ from monitor.core.errors import ConfigError
 Samples = NDArray[np.complex64]
 Real = NDArray[np.float64]
 
-BATCH = 64
-"""Segments transformed at once; sums always run in these groups, whatever the chunks added."""
+MAX_FFT = 1 << 22
+BATCH_SAMPLES = 65_536
+"""Samples transformed at once; sums always run in these groups, whatever the chunks added."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -115,14 +116,15 @@ class BandAccumulator:
         fft: int = 1024,
         overlap: float = 0.5,
     ) -> None:
-        if fft < 2:
-            raise ConfigError(f"fft {fft}: must be at least 2")
+        if not 2 <= fft <= MAX_FFT:
+            raise ConfigError(f"fft {fft}: must be from 2 to {MAX_FFT}")
         if not 0.0 <= overlap < 1.0:
             raise ConfigError(f"overlap {overlap:g}: must be at least 0 and below 1")
         if not rate_hz > 0.0:
             raise ConfigError(f"rate {rate_hz:g} Hz: must be above 0")
         self._fft = fft
         self._hop = fft - int(overlap * fft)
+        self._batch = max(1, BATCH_SAMPLES // fft)
         self._window = 0.5 - 0.5 * np.cos(2.0 * np.pi * np.arange(fft) / fft)
         self._scale = 1.0 / (fft * float(np.sum(self._window**2)))
         self._masks = _band_masks(rate_hz, bands, fft)
@@ -136,7 +138,7 @@ class BandAccumulator:
     def add(self, samples: Samples) -> None:
         """Take complex64 (n,) samples that follow those already added."""
         self._pending = np.concatenate([self._pending, samples])
-        step = BATCH * self._hop
+        step = self._batch * self._hop
         need = step - self._hop + self._fft
         start = 0
         while self._pending.size - start >= need:

@@ -59,7 +59,8 @@ def totals(limit_set: LimitSet, population: str, levels: Sequence[Level]) -> tup
     """A total per scope that has a level for any of the frequencies.
 
     E and H count squared, S as it is; the sum over stimulation levels (instantaneous) is linear.
-    E and H given for one frequency count as one: the larger of the two. LimitError where the set
+    E and H given for one frequency count as one: the larger of the two, so that the total is
+    never below that of E alone or of H alone. LimitError where the set
     says nothing at a frequency. Sums after ICNIRP 2020 and 47 CFR 1.1310; the linear sum from
     memory.
     """

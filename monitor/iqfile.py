@@ -1,0 +1,58 @@
+"""Files of complex samples: which format they are in, and their bytes in pieces."""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Iterator
+from pathlib import Path
+
+from monitor.core.errors import ConfigError, DeviceError
+from monitor.core.sigmf import DATA, META, IqFormat, datatype_by_extension, format_from_sigmf
+from monitor.core.spectrum import bytes_per_sample
+
+CHUNK_SAMPLES = 1 << 18
+
+
+def open_format(path: Path, datatype: str | None) -> tuple[Path, IqFormat]:
+    """The file of samples and its format: SigMF metadata beside it, the extension, or datatype.
+
+    A datatype given goes before the others. ConfigError where none is known; DeviceError where a
+    file is missing.
+    """
+    meta = path.with_suffix(META) if path.suffix in (META, DATA) else Path(f"{path}{META}")
+    data = path.with_suffix(DATA) if path.suffix == META else path
+    if not data.is_file():
+        raise DeviceError(f"{data}: no such file")
+    if meta.is_file():
+        found = _read_meta(meta)
+        if datatype:
+            found = IqFormat(datatype, found.rate_hz, found.centre_hz, found.header_bytes)
+        return data, found
+    name = datatype or datatype_by_extension(data.name)
+    if name is None:
+        raise ConfigError(
+            f"{data}: the name does not tell the datatype; give --datatype cu8, cs8, cs16 or cf32"
+        )
+    return data, IqFormat(name)
+
+
+def _read_meta(meta: Path) -> IqFormat:
+    try:
+        document = json.loads(meta.read_text("utf-8"))
+    except OSError as error:
+        raise DeviceError(f"{meta}: {error.strerror}") from error
+    except ValueError as error:
+        raise ConfigError(f"{meta}: not a JSON text: {error}") from error
+    return format_from_sigmf(document, str(meta))
+
+
+def pieces(path: Path, form: IqFormat) -> Iterator[bytes]:
+    """The bytes of the samples, whole samples in every piece but perhaps the last."""
+    size = CHUNK_SAMPLES * bytes_per_sample(form.datatype)
+    try:
+        with path.open("rb") as file:
+            file.seek(form.header_bytes)
+            while piece := file.read(size):
+                yield piece
+    except OSError as error:
+        raise DeviceError(f"{path}: {error.strerror}") from error
