@@ -51,12 +51,16 @@ install_packages() {
             stop "missing; install as root, then repeat: apt-get install $missing"
     fi
     echo "fieldsill: installing Debian packages (minutes on a slow line): $missing"
+    log="$(mktemp)"
     # An unreachable source of somebody else's must not stop us: the install below decides.
-    $as_root apt-get -qq update || true
+    $as_root apt-get -qq update >"$log" 2>&1 || true
     # shellcheck disable=SC2086 # a list of words
     $as_root env DEBIAN_FRONTEND=noninteractive \
-        apt-get -qq -y --no-install-recommends -o Dpkg::Use-Pty=0 install $missing >/dev/null ||
+        apt-get -qq -y --no-install-recommends install $missing >>"$log" 2>&1 || {
+        tail -n 5 "$log" >&2
         stop "could not install; install as root, then repeat: apt-get install $missing"
+    }
+    rm -f "$log"
     look "$1"
     [ -z "$missing" ] || stop "installed, but still not found: $missing"
 }
