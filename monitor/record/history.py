@@ -1,0 +1,157 @@
+"""Averages over a span of UTC, reduced for a picture so that no peak and no gap is lost."""
+
+from __future__ import annotations
+
+import sqlite3
+from collections.abc import Mapping, Sequence
+from contextlib import closing
+
+import numpy as np
+from numpy.typing import NDArray
+
+from monitor.record.fetch import columns
+from monitor.record.hours import HOUR_NS
+from monitor.record.types import WINDOW_EVERY_NS, Boot, F, History, I
+
+_HOURS_FROM_NS = 2 * HOUR_NS  # bins at least this wide are drawn from the hourly extremes
+_E2 = ("e2_low", "e2_mean", "e2_high", "e2_max")
+_VALUES = "e2_low, e2_mean, e2_high, e2_max, u_db, valid_share, flags"
+_MINUTE_FIELDS = (
+    "SELECT end_ns, end_ns, iif(valid_share > 0, end_ns, -1), iif(valid_share > 0, end_ns, -1), "
+    f"{_VALUES} FROM fields WHERE derivation = 0 AND boot = ? AND end_ns > ? AND end_ns <= ? "  # noqa: S608
+    "AND averaging_s = ?"
+)
+_HOUR_FIELDS = (
+    "SELECT hour, end_ns, coalesce(first_ns, -1), coalesce(last_ns, -1), "
+    f"{_VALUES} FROM field_hours WHERE derivation = 0 AND boot = ? AND hour >= ? AND hour <= ? "  # noqa: S608
+    "AND averaging_s = ?"
+)
+_MINUTE_RATIOS = (
+    "SELECT end_ns, end_ns, scope, ratio_low, ratio_mean, ratio_high FROM exposures "
+    "WHERE derivation = 0 AND boot = ? AND end_ns > ? AND end_ns <= ? "
+    "AND scope IN (SELECT scope FROM scopes WHERE averaging_s = ?)"
+)
+_HOUR_RATIOS = (
+    "SELECT hour, end_ns, scope, ratio_low, ratio_mean, ratio_high FROM exposure_hours "
+    "WHERE derivation = 0 AND boot = ? AND hour >= ? AND hour <= ? "
+    "AND scope IN (SELECT scope FROM scopes WHERE averaging_s = ?)"
+)
+_SMALLEST = ("e2_low", "valid_share", "ratio_low")
+
+Table = dict[str, NDArray[np.generic]]
+
+
+def history(
+    db: sqlite3.Connection, boots: Sequence[Boot], span: tuple[int, int], averaging_s: int,
+    at_most: int,
+) -> History:  # fmt: skip
+    """See Record.history; span: (start, end] in UTC ns. Boots without a clock fix are left out.
+
+    Where a bin is two hours or wider the hours that touch the span are used whole.
+    """
+    width = -(-(span[1] - span[0]) // at_most)
+    hourly = width >= _HOURS_FROM_NS
+    tables = [
+        _of_boot(db, boot, boot.utc_offset_ns, span, averaging_s, hourly)
+        for boot in boots
+        if boot.utc_offset_ns is not None
+    ]
+    names = list(dict.fromkeys(name for table in tables for name in table)) or ["utc_ns"]
+    merged = {name: _joined(tables, name) for name in names}
+    order = np.argsort(merged["utc_ns"], kind="stable")
+    merged = {name: column[order] for name, column in merged.items()}
+    gaps = _gaps(merged, span) if tables else [span]
+    reduced = merged["utc_ns"].size > at_most
+    if reduced:
+        merged = _in_bins(merged, (merged["utc_ns"] - span[0] - 1) // width)
+    bin_ns = width if reduced else HOUR_NS if hourly else 0
+    return _as_history(merged, averaging_s, gaps, bin_ns)
+
+
+def _of_boot(
+    db: sqlite3.Connection, boot: Boot, offset: int, span: tuple[int, int], averaging_s: int,
+    hourly: bool,
+) -> Table:  # fmt: skip
+    """One row for each window end (or hour) that has a field or a ratio."""
+    start, end = (limit - offset for limit in span)
+    if hourly:
+        start, end = start // HOUR_NS, (end - 1) // HOUR_NS
+    values = (boot.boot, start, end, averaging_s)
+    with closing(db.execute(_HOUR_FIELDS if hourly else _MINUTE_FIELDS, values)) as cursor:
+        key, ends, first, last, *fields, flags = columns(cursor, "iiiiffffffi")
+    with closing(db.execute(_HOUR_RATIOS if hourly else _MINUTE_RATIOS, values)) as cursor:
+        judged, judged_ends, scope, *ratios = columns(cursor, "iiifff")
+    keys = np.union1d(key, judged)
+    utc = np.zeros(keys.size, np.int64)
+    utc[np.searchsorted(keys, judged)] = judged_ends
+    utc[np.searchsorted(keys, key)] = ends
+    table: Table = {"utc_ns": np.clip(utc + offset, span[0] + 1, span[1])}
+    place = np.searchsorted(keys, key)
+    for name, column in zip((*_E2, "u_db", "valid_share"), fields):
+        table[name] = _placed(keys.size, place, column)
+    table["flags"] = _placed(keys.size, place, flags, 0)
+    for name, column in (("first_ns", first), ("last_ns", last)):
+        table[name] = _placed(keys.size, place, np.where(column < 0, -1, column + offset), -1)
+    for number in np.unique(scope).tolist():
+        rows = scope == number
+        place = np.searchsorted(keys, judged[rows])
+        for name, column in zip(("ratio_low", "ratio_mean", "ratio_high"), ratios):
+            table[f"{name} {number}"] = _placed(keys.size, place, column[rows])
+    return table
+
+
+def _placed(
+    size: int, place: NDArray[np.intp], column: NDArray[np.generic], empty: float = np.nan
+) -> NDArray[np.generic]:
+    out = np.full(size, empty, column.dtype)
+    out[place] = column
+    return out
+
+
+def _joined(tables: Sequence[Table], name: str) -> NDArray[np.generic]:
+    """One column of all boots; a scope that a boot did not judge is nan there."""
+    parts = [table.get(name, np.full(table["utc_ns"].size, np.nan)) for table in tables]
+    return np.concatenate(parts) if parts else np.empty(0, np.int64)
+
+
+def _in_bins(table: Table, bins: I) -> Table:
+    """The extremes in each bin that has rows; the bin's time is that of its last row."""
+    starts = np.flatnonzero(np.r_[True, np.diff(bins) != 0])
+    out: Table = {}
+    for name, column in table.items():
+        if name == "flags":
+            out[name] = np.bitwise_or.reduceat(column, starts)
+        else:
+            smallest = name.split()[0] in _SMALLEST
+            out[name] = (np.fmin if smallest else np.fmax).reduceat(column, starts)
+    return out
+
+
+def _gaps(table: Table, span: tuple[int, int]) -> list[tuple[int, int]]:
+    """Where no window with a valid part speaks for the minute before its end."""
+    good = table["first_ns"] >= 0
+    first, last = table["first_ns"][good], table["last_ns"][good]
+    free_from = np.r_[span[0], np.maximum.accumulate(last)]
+    until = np.r_[first - WINDOW_EVERY_NS, span[1]]
+    length = until - free_from
+    is_gap = length > 0
+    is_gap[-1] = length[-1] > WINDOW_EVERY_NS or not first.size  # the next row may be due still
+    return list(zip(free_from[is_gap].tolist(), until[is_gap].tolist()))
+
+
+def _as_history(
+    table: Mapping[str, NDArray[np.generic]], averaging_s: int, gaps: list[tuple[int, int]],
+    bin_ns: int,
+) -> History:  # fmt: skip
+    nothing = np.empty(0)
+    e: list[F] = [np.sqrt(table.get(name, nothing)) for name in _E2]
+    numbers = sorted(int(name.split()[1]) for name in table if name.startswith("ratio_low"))
+    ratios = {
+        number: tuple(table[f"ratio_{part} {number}"] for part in ("low", "mean", "high"))
+        for number in numbers
+    }
+    return History(
+        averaging_s, table["utc_ns"], *e, table.get("valid_share", nothing),
+        table.get("u_db", nothing), table.get("flags", np.empty(0, np.int64)), ratios, gaps,
+        bin_ns,
+    )  # fmt: skip

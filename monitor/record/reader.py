@@ -1,0 +1,231 @@
+"""Read the record: the only SQL that pages, reports and a restarting daemon need."""
+
+from __future__ import annotations
+
+import json
+import sqlite3
+from collections.abc import Iterator
+from contextlib import closing
+from pathlib import Path
+from types import TracebackType
+from typing import Any
+
+import numpy as np
+
+from monitor.core.errors import RecordError
+from monitor.core.limits import Scope
+from monitor.core.readings import Batch
+from monitor.core.rows import BlockRows, ExposureRows, FieldRows, WindowRows
+from monitor.record import connect
+from monitor.record.fetch import Rows, columns, kinds_of
+from monitor.record.history import history
+from monitor.record.packing import unpack
+from monitor.record.types import (
+    Boot,
+    ChannelRow,
+    EventRow,
+    History,
+    Latest,
+    LatestExposure,
+    LatestField,
+)
+
+FIRST_NS, LAST_NS = -(2**63), 2**63 - 1
+_TABLES: dict[type, tuple[str, str]] = {
+    BlockRows: ("blocks", "start_ns, channel"),
+    WindowRows: ("windows", "end_ns, averaging_s, channel"),
+    FieldRows: ("fields", "end_ns, averaging_s"),
+    ExposureRows: ("exposures", "end_ns, scope"),
+}
+
+
+class Record:
+    """A record opened for reading; open one for each page, and close it."""
+
+    def __init__(self, path: Path, db: sqlite3.Connection, simulated: bool) -> None:
+        self.path = path
+        self.simulated = simulated
+        self._db = db
+
+    @classmethod
+    def open(cls, path: Path | str) -> Record:
+        """Open read only. RecordError where it is missing, is no record, or is newer."""
+        path = Path(path)
+        found = connect.identify(path)
+        return cls(path, connect.read_only(path), found.simulated)
+
+    def close(self) -> None:
+        """Let the file go."""
+        self._db.close()
+
+    def __enter__(self) -> Record:
+        return self
+
+    def __exit__(
+        self, kind: type[BaseException] | None, error: BaseException | None,
+        trace: TracebackType | None,
+    ) -> None:  # fmt: skip
+        self.close()
+
+    def boots(self) -> list[Boot]:
+        """Every boot, with its UTC offset by the rule of view boot_utc."""
+        query = (
+            "SELECT boot, boot_id, kind, offset_ns, uncertainty_ns "
+            "FROM boots LEFT JOIN boot_utc USING (boot) ORDER BY boot"
+        )
+        return [Boot(*row) for row in self._all(query)]
+
+    def channels(self) -> list[ChannelRow]:
+        """The channels in the order of the raw counts' columns."""
+        return [ChannelRow(*row) for row in self._all("SELECT * FROM channels ORDER BY channel")]
+
+    def scopes(self) -> dict[int, Scope]:
+        """Every scope that was ever judged, by the record's number."""
+        return {
+            row[0]: Scope(*row[1:6], bool(row[6]), row[7])
+            for row in self._all("SELECT * FROM scopes ORDER BY scope")
+        }
+
+    def document(self, digest: str) -> tuple[str, bytes] | None:
+        """(kind, body) of the document with that SHA-256."""
+        rows = self._all("SELECT kind, body FROM documents WHERE hash = ?", digest)
+        return rows[0] if rows else None
+
+    def resume(self, boot: int, since_ns: int) -> tuple[BlockRows, list[Batch]]:
+        """What a daemon needs to go on within a boot: blocks from since_ns and raw from there.
+
+        Both are equal to the bit to what was committed.
+        """
+        return self.blocks(boot, since_ns), list(self.raw_batches(boot, since_ns))
+
+    def raw_batches(
+        self, boot: int, start_ns: int | None = None, end_ns: int | None = None
+    ) -> Iterator[Batch]:
+        """Raw counts with start_ns <= time < end_ns, in the order of time, cut to the span."""
+        start = FIRST_NS if start_ns is None else start_ns
+        end = LAST_NS if end_ns is None else end_ns
+        query = (
+            "SELECT body, end_ns FROM raw WHERE boot = ? AND end_ns >= ? AND start_ns < ? "
+            "ORDER BY end_ns, seq"
+        )
+        for body, now_ns in self._rows(query, boot, start, end):
+            batch = unpack(body, now_ns)
+            first, last = np.searchsorted(batch.times_ns, (start, end))
+            if first > 0 or last < batch.n:
+                batch = Batch(
+                    batch.times_ns[first:last], batch.counts[first:last],
+                    batch.flags[first:last], min(now_ns, end),
+                )  # fmt: skip
+            yield batch
+
+    def blocks(self, boot: int, start_ns: int = FIRST_NS, end_ns: int = LAST_NS) -> BlockRows:
+        """Blocks with start_ns <= start < end_ns as judged live (derivation 0)."""
+        return self._read(BlockRows, boot, start_ns, end_ns)
+
+    def windows(self, boot: int, start_ns: int = FIRST_NS, end_ns: int = LAST_NS) -> WindowRows:
+        """Windows whose end is in [start_ns, end_ns)."""
+        return self._read(WindowRows, boot, start_ns, end_ns)
+
+    def fields(self, boot: int, start_ns: int = FIRST_NS, end_ns: int = LAST_NS) -> FieldRows:
+        """Fields whose window's end is in [start_ns, end_ns)."""
+        return self._read(FieldRows, boot, start_ns, end_ns)
+
+    def exposures(self, boot: int, start_ns: int = FIRST_NS, end_ns: int = LAST_NS) -> ExposureRows:
+        """Exposure ratios whose window's end is in [start_ns, end_ns); scope as in scopes()."""
+        return self._read(ExposureRows, boot, start_ns, end_ns)
+
+    def latest(self) -> Latest | None:
+        """The newest windows: of the boot that was written last, else of the latest in UTC."""
+        current = self._all("SELECT value FROM meta WHERE key = 'current_boot'")
+        ends = []
+        for boot in self.boots():
+            query = "SELECT max(end_ns) FROM fields WHERE derivation = 0 AND boot = ?"
+            ((end_ns,),) = self._all(query, boot.boot)
+            if end_ns is not None:
+                is_current = bool(current) and int(current[0][0]) == boot.boot
+                utc_ns = _utc(boot.utc_offset_ns, end_ns)
+                ends.append(((is_current, utc_ns or 0, boot.boot), boot, end_ns))
+        return self._latest(*max(ends, key=lambda item: item[0])[1:]) if ends else None
+
+    def history(
+        self, start_utc_ns: int, end_utc_ns: int, averaging_s: int, at_most: int = 1000
+    ) -> History:
+        """Averages whose windows end in (start, end] of UTC, reduced to at_most points.
+
+        ValueError unless start < end and at_most > 0.
+        """
+        if not start_utc_ns < end_utc_ns or at_most < 1:
+            raise ValueError("a history needs start < end and at_most > 0")
+        return history(self._db, self.boots(), (start_utc_ns, end_utc_ns), averaging_s, at_most)
+
+    def events(
+        self, start_utc_ns: int | None = None, end_utc_ns: int | None = None, limit: int = 1000
+    ) -> list[EventRow]:
+        """The newest events in [start, end) of UTC, oldest first.
+
+        Events of a boot without a clock fix are given only where no span is asked for.
+        """
+        query = (
+            "SELECT boot_ns + offset_ns, boot, boot_ns, kind, name, body "
+            "FROM events LEFT JOIN boot_utc USING (boot) "
+            "WHERE (?1 IS NULL OR boot_ns + offset_ns >= ?1) "
+            "AND (?2 IS NULL OR boot_ns + offset_ns < ?2) ORDER BY event DESC LIMIT ?3"
+        )
+        rows = self._all(query, start_utc_ns, end_utc_ns, limit)
+        return [EventRow(*row[:5], json.loads(row[5])) for row in reversed(rows)]
+
+    def _latest(self, boot: Boot, end_ns: int) -> Latest:
+        fields, exposures, scopes = [], [], self.scopes()
+        rows = self.fields(boot.boot, end_ns, end_ns + 1)
+        for i in range(rows.end_ns.size):
+            e = np.sqrt([rows.e2_low[i], rows.e2_mean[i], rows.e2_high[i], rows.e2_max[i]])
+            more = (rows.u_db, rows.k, rows.valid_share, rows.observed_share)
+            fields.append(LatestField(
+                int(rows.averaging_s[i]), *e.tolist(), *(float(c[i]) for c in more),
+                int(rows.flags[i]),
+            ))  # fmt: skip
+        judged = self.exposures(boot.boot, end_ns, end_ns + 1)
+        for i, number in enumerate(judged.scope.tolist()):
+            ratios = (judged.ratio_low, judged.ratio_mean, judged.ratio_high)
+            exposures.append(LatestExposure(
+                number, scopes[number], *(float(c[i]) for c in ratios), int(judged.verdict[i])
+            ))  # fmt: skip
+        reading = self._last_reading(boot.boot)
+        offset = boot.utc_offset_ns
+        return Latest(
+            boot.boot, boot.kind, end_ns, _utc(offset, end_ns), reading, _utc(offset, reading),
+            tuple(fields), tuple(exposures), int(np.bitwise_or.reduce(rows.flags)),
+        )  # fmt: skip
+
+    def _last_reading(self, boot: int) -> int | None:
+        query = "SELECT body, end_ns FROM raw WHERE boot = ? AND n > 0 ORDER BY end_ns DESC LIMIT 1"
+        rows = self._all(query, boot)
+        return int(unpack(*rows[0]).times_ns[-1]) if rows else None
+
+    def _read(self, shape: type[Rows], boot: int, start_ns: int, end_ns: int) -> Rows:
+        table, order = _TABLES[shape]
+        time = order.split(",")[0]
+        query = (
+            f"SELECT {', '.join(shape.__slots__)} FROM {table} WHERE derivation = 0 "  # noqa: S608
+            f"AND boot = ? AND {time} >= ? AND {time} < ? ORDER BY {order}"
+        )
+        with closing(self._execute(query, boot, start_ns, end_ns)) as cursor:
+            return shape(*columns(cursor, kinds_of(shape)))
+
+    def _execute(self, query: str, *values: object) -> sqlite3.Cursor:
+        try:
+            return self._db.execute(query, values)
+        except sqlite3.DatabaseError as error:
+            raise RecordError(f"{self.path}: cannot be read: {error}; restore a copy") from error
+
+    def _rows(self, query: str, *values: object) -> Iterator[tuple[Any, ...]]:
+        with closing(self._execute(query, *values)) as cursor:
+            yield from cursor
+
+    def _all(self, query: str, *values: object) -> list[tuple[Any, ...]]:
+        with closing(self._execute(query, *values)) as cursor:
+            return cursor.fetchall()
+
+
+def _utc(offset_ns: int | None, boot_ns: int | None) -> int | None:
+    return None if offset_ns is None or boot_ns is None else boot_ns + offset_ns
