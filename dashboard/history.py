@@ -1,0 +1,261 @@
+"""The past over a calendar span: from a request and the record to what a template draws."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator, Mapping
+from contextlib import contextmanager
+from dataclasses import dataclass
+from datetime import date
+from typing import Any
+
+import numpy as np
+
+from dashboard import chart, past, span, words
+from dashboard.models import Doors, RecordLike, Station, levels_for, levels_of
+from dashboard.span import Span
+from monitor.core import flags
+from monitor.core.errors import ConfigError, RecordError
+from monitor.record.types import EventRow, History
+
+AVERAGES = (360, 1800)
+WIDE = chart.Frame(1080, 400)
+NARROW = chart.Frame(358, 320, left=46, right=8)
+AT_MOST = 720
+MAX_API_POINTS = 20_000
+MAX_EVENTS = 40
+POWER = {"e": 0.5, "ratio": 1.0}
+
+
+@dataclass(frozen=True, slots=True)
+class Wish:
+    """What a request asks for. scope: index of the limit whose ledge is drawn, None: the first."""
+
+    span: Span
+    averaging_s: int
+    show: str
+    scope: int | None
+    logarithmic: bool
+
+    def keys(self, **other: object) -> dict[str, str]:
+        """Everything but the span, as an address writes it."""
+        keys: dict[str, object] = {
+            "averaging": self.averaging_s,
+            "show": self.show,
+            "scale": "log" if self.logarithmic else "straight",
+            "scope": self.scope,
+            **other,
+        }
+        return {key: str(value) for key, value in keys.items() if value is not None}
+
+
+def _choice(args: Mapping[str, str], key: str, choices: tuple[str, ...]) -> str:
+    text = args.get(key) or choices[0]
+    if text not in choices:
+        raise ConfigError(f"{key}: {text!r} is not one of {', '.join(choices)}")
+    return text
+
+
+def read_wish(args: Mapping[str, str], fallback: date) -> Wish:
+    """The wish of a request; ConfigError names the key that is wrong."""
+    scope = args.get("scope") or ""
+    if scope and not scope.isdecimal():
+        raise ConfigError(f"scope: {scope!r} is not the number of a limit")
+    return Wish(
+        span=span.read(args.get("from") or "", args.get("to") or "", fallback),
+        averaging_s=int(_choice(args, "averaging", tuple(str(a) for a in AVERAGES))),
+        show=_choice(args, "show", ("e", "ratio")),
+        scope=int(scope) if scope else None,
+        logarithmic=_choice(args, "scale", ("log", "straight")) == "log",
+    )
+
+
+@contextmanager
+def opened(station: Station, doors: Doors) -> Iterator[RecordLike]:
+    """The record, closed again in any case; RecordError where there is none yet."""
+    if not station.record_path.exists():
+        raise RecordError(
+            f"no record yet at {station.record_path.name}; start the monitor (fieldsill run)"
+        )
+    record = doors.open_record(station.record_path)
+    try:
+        yield record
+    finally:
+        record.close()
+
+
+def _fallback_day(record: RecordLike, now_ns: int) -> date:
+    latest = record.latest()
+    known = latest.utc_ns if latest is not None else None
+    return words.utc_of(now_ns if known is None else max(0, known - 1)).date()
+
+
+def page(station: Station, doors: Doors, args: Mapping[str, str]) -> dict[str, Any]:
+    """Everything that the history page shows."""
+    now_ns = doors.utc_ns()
+    with opened(station, doors) as record:
+        wish = read_wish(args, _fallback_day(record, now_ns))
+        scopes = dict(record.scopes())
+        found = record.history(wish.span.start_ns, wish.span.end_ns, wish.averaging_s, AT_MOST)
+        events = record.events(wish.span.start_ns, wish.span.end_ns, MAX_EVENTS)
+        simulated = record.simulated
+    scope = _scope(wish, scopes)
+    series = past.series_of(found, scope if wish.show == "ratio" else None)
+    marks = _marks(wish, found, scopes, scope, station)
+    summary = past.summary(series, wish.span, now_ns)
+    return {
+        "simulated": simulated,
+        "name": station.name,
+        "place": station.place,
+        "wish": wish,
+        "average": words.average(wish.averaging_s),
+        "unit": "V/m" if wish.show == "e" else "of the limit",
+        "scope_title": _title(scopes[scope]) if scope is not None else "",
+        "scope_links": _scope_links(wish, scopes, scope),
+        "charts": [
+            (css, chart.draw(series, wish.span, marks, frame, logarithmic=wish.logarithmic))
+            for css, frame in (("wide", WIDE), ("narrow", NARROW))
+        ],
+        "bin_words": words.duration(found.bin_ns / 1e9) if found.bin_ns else "",
+        "summary": summary,
+        "summary_words": _summary_words(summary, wish, found),
+        "marks": marks,
+        "gaps": past.gap_words(series.gaps, wish.span),
+        "rows": past.rows(series, wish.span, now_ns),
+        "flags": flags.words(int(np.bitwise_or.reduce(found.flags)) if found.flags.size else 0),
+        "events": [_event(event) for event in events],
+        "more_events": len(events) >= MAX_EVENTS,
+        "links": _links(wish, now_ns),
+    }
+
+
+def _title(scope: Any) -> str:
+    return words.scope_title(scope.set_id, scope.population, scope.scope, scope.averaging_s)
+
+
+def _scope(wish: Wish, scopes: Mapping[int, Any]) -> int | None:
+    """The limit whose ledge is drawn: the wished one if it has this averaging time."""
+    fitting = [i for i, s in scopes.items() if int(s.averaging_s) == wish.averaging_s]
+    if wish.scope in fitting:
+        return wish.scope
+    return fitting[0] if fitting else None
+
+
+def _scope_links(
+    wish: Wish, scopes: Mapping[int, Any], scope: int | None
+) -> list[tuple[str, str, bool]]:
+    return [
+        (_title(s), wish.span.link("/history", **wish.keys(scope=i)), i == scope)
+        for i, s in scopes.items()
+        if int(s.averaging_s) == wish.averaging_s
+    ]
+
+
+def _marks(
+    wish: Wish, found: History, scopes: Mapping[int, Any], scope: int | None, station: Station
+) -> list[chart.Mark]:
+    if scope is None:
+        return []
+    limit = 1.0 if wish.show == "ratio" else past.equivalent_limit(found, scope)
+    one = scopes[scope]
+    described = {"set": one.set_id, "population": one.population, "scope": one.scope}
+    label = "limit" if wish.show == "ratio" else f"limit {words.figure(limit, 3)} V/m"
+    levels = levels_for(levels_of(station.alerts), described)
+    return past.marks(levels, limit, label, POWER[wish.show])
+
+
+def _summary_words(summary: past.Summary, wish: Wish, found: History) -> list[str]:
+    name = words.average(wish.averaging_s)
+    if summary.most is None or summary.at_ns is None or summary.index is None:
+        return [f"No {name} in this span: no measurement, which {words.NOTHING}."]
+    when = words.moment(words.utc_of(summary.at_ns))
+    if wish.show == "ratio":
+        figure = words.of_limit(summary.most)
+    else:
+        figure = f"{words.figure(summary.most)} V/m"
+    lines = [f"Largest {name}: {figure}, ending {when}."]
+    u_db = float(found.u_db[summary.index])
+    if math.isfinite(u_db):
+        lines.append(f"Expanded uncertainty there: {words.figure(u_db)} dB.")
+    share = words.share(summary.measured_share)
+    if summary.gap_count:
+        lines.append(
+            f"Measured for {share} of the span so far; {summary.gap_count} "
+            f"gap{'s' if summary.gap_count > 1 else ''}, {words.duration(summary.gap_s)} in all, "
+            f"{'say' if summary.gap_count > 1 else 'says'} nothing about the field."
+        )
+    else:
+        lines.append(f"Measured for {share} of the span so far, without a gap.")
+    return lines
+
+
+def _event(event: EventRow) -> tuple[str, str, str]:
+    when = words.moment(words.utc_of(event.utc_ns)) if event.utc_ns is not None else "not known"
+    text = event.body.get("text") or event.body.get("words") or ""
+    return when, f"{event.kind}: {event.name}".replace("_", " "), str(text)
+
+
+def _links(wish: Wish, now_ns: int) -> dict[str, str]:
+    """Addresses of the neighbouring spans and of the usual lengths round this one."""
+    last = words.utc_of(max(wish.span.start_ns, min(wish.span.end_ns - 1, now_ns)))
+    keys = wish.keys()
+    following = wish.span.moved(1)
+    links = {
+        "previous": wish.span.moved(-1).link("/history", **keys),
+        "day": span.day(last).link("/history", **keys),
+        "week": span.week(last).link("/history", **keys),
+        "month": span.month(last).link("/history", **keys),
+        "year": span.year(last).link("/history", **keys),
+        "scale": wish.span.link(
+            "/history", **wish.keys(scale="straight" if wish.logarithmic else "log")
+        ),
+    }
+    if following.start_ns < now_ns:
+        links["next"] = following.link("/history", **keys)
+    return links
+
+
+def document(station: Station, doors: Doors, args: Mapping[str, str]) -> dict[str, Any]:
+    """History as JSON; a figure that is not there is null."""
+    text = args.get("at_most") or str(AT_MOST)
+    if not text.isdecimal() or not 1 <= int(text) <= MAX_API_POINTS:
+        raise ConfigError(f"at_most: {text!r} is not a whole number from 1 to {MAX_API_POINTS}")
+    with opened(station, doors) as record:
+        wish = read_wish(args, _fallback_day(record, doors.utc_ns()))
+        found = record.history(wish.span.start_ns, wish.span.end_ns, wish.averaging_s, int(text))
+        scopes = dict(record.scopes())
+        simulated = record.simulated
+    return {
+        "from_utc": words.rfc3339(wish.span.start_ns),
+        "to_utc": words.rfc3339(wish.span.end_ns),
+        "averaging_s": found.averaging_s,
+        "simulated": simulated,
+        "bin_s": found.bin_ns / 1e9,
+        "end_utc": [words.rfc3339(int(t)) for t in found.utc_ns],
+        "e_low_v_per_m": _numbers(found.e_low),
+        "e_mean_v_per_m": _numbers(found.e_mean),
+        "e_high_v_per_m": _numbers(found.e_high),
+        "e_max_v_per_m": _numbers(found.e_max),
+        "valid_share": _numbers(found.valid_share),
+        "expanded_uncertainty_db": _numbers(found.u_db),
+        "flags": [flags.words(int(bits)) for bits in found.flags],
+        "exposure_ratios": [
+            {
+                "set": scopes[index].set_id,
+                "edition": scopes[index].edition,
+                "population": scopes[index].population,
+                "scope": scopes[index].scope,
+                "low": _numbers(low),
+                "mean": _numbers(mean),
+                "high": _numbers(high),
+            }
+            for index, (low, mean, high) in found.ratios.items()
+        ],
+        "gaps": [
+            {"start_utc": words.rfc3339(a), "end_utc": words.rfc3339(b)} for a, b in found.gaps
+        ],
+    }
+
+
+def _numbers(values: Any) -> list[float | None]:
+    return [float(v) if math.isfinite(v) else None for v in values]

@@ -1,0 +1,186 @@
+"""What the pages know at the moment: from the daemon, else from the record, else nothing."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass, field
+from datetime import datetime
+from enum import StrEnum
+from pathlib import Path
+from typing import Any, Protocol
+
+from dashboard import words
+from monitor.core.alarms import AlertRule
+from monitor.core.errors import FieldsillError
+from monitor.core.limits import Scope
+from monitor.record.types import EventRow, History, Latest
+
+Snapshot = Mapping[str, Any]
+Ask = Callable[[Path, Mapping[str, object], float], Mapping[str, Any]]
+ASK_TIMEOUT_S = 1.5
+UNREACHABLE = (FieldsillError, OSError, ValueError)
+"""What asking a daemon that is not there, hangs or answers nonsense can raise."""
+
+
+class RecordLike(Protocol):
+    """The read model of a record, as far as the pages use it."""
+
+    @property
+    def simulated(self) -> bool:
+        """Whether its data are invented."""
+
+    def latest(self) -> Latest | None:
+        """The newest windows."""
+
+    def scopes(self) -> Mapping[int, Scope]:
+        """Every scope that was ever judged, by the record's number."""
+
+    def history(
+        self, start_utc_ns: int, end_utc_ns: int, averaging_s: int, at_most: int
+    ) -> History:
+        """Averages over a span."""
+
+    def events(self, start_utc_ns: int, end_utc_ns: int, limit: int) -> Sequence[EventRow]:
+        """What happened in a span."""
+
+    def close(self) -> None:
+        """Let the file go."""
+
+
+@dataclass(frozen=True, slots=True)
+class Station:
+    """What the pages are told about the box at start; a running daemon says the same itself."""
+
+    record_path: Path
+    control_path: Path
+    name: str = ""
+    place: str = ""
+    occupancy: str = "public"
+    silence_after_s: float = 30.0
+    alerts: tuple[AlertRule, ...] = ()
+
+
+@dataclass(frozen=True, slots=True)
+class Doors:
+    """How the pages reach the daemon, the record and the time; tests put their own in."""
+
+    ask: Ask
+    open_record: Callable[[Path], RecordLike]
+    utc_ns: Callable[[], int]
+
+
+class State(StrEnum):
+    """What the newest figures are worth."""
+
+    MEASURING = "measuring"
+    STARTING = "starting"
+    SILENT = "silent"
+    STOPPED = "stopped"
+    NO_RECORD = "no_record"
+
+
+@dataclass(frozen=True, slots=True)
+class Live:
+    """The moment as a page tells it. snapshot: only where the daemon answered."""
+
+    state: State
+    drawn: datetime
+    simulated: bool
+    snapshot: Snapshot = field(default_factory=dict)
+    since: datetime | None = None
+    age_s: float | None = None
+    trouble: str = ""
+
+    @property
+    def current(self) -> bool:
+        """Whether the figures of the snapshot describe the present."""
+        return self.state is State.MEASURING
+
+    @property
+    def exposures(self) -> list[Snapshot]:
+        """Exposure ratios of every scope; empty where nothing is measured."""
+        return list(self.snapshot.get("exposures") or []) if self.current else []
+
+    @property
+    def fields(self) -> list[Snapshot]:
+        """Averages of E; empty where nothing is measured."""
+        return list(self.snapshot.get("fields") or []) if self.current else []
+
+    @property
+    def levels(self) -> list[Snapshot]:
+        """The alert levels."""
+        return list(self.snapshot.get("levels") or [])
+
+    @property
+    def alarms(self) -> list[Snapshot]:
+        """The alarms that are not in their normal state."""
+        return [a for a in self.snapshot.get("alarms") or [] if a.get("state") != "normal"]
+
+
+def read_live(station: Station, doors: Doors) -> Live:
+    """Ask the daemon; where it does not answer, say since when there is no measurement."""
+    drawn = words.utc_of(doors.utc_ns())
+    try:
+        answer = doors.ask(station.control_path, {"do": "now"}, ASK_TIMEOUT_S)
+        snapshot = answer.get("now")
+    except UNREACHABLE as error:
+        return _from_record(station, doors, drawn, str(error))
+    if not isinstance(snapshot, Mapping):
+        trouble = str(answer.get("error", "the daemon gave no figures"))
+        return _from_record(station, doors, drawn, trouble)
+    age = snapshot.get("last_reading_age_s")
+    device = snapshot.get("device") or {}
+    state = State.MEASURING
+    if age is None:
+        state = State.STARTING
+    elif age > station.silence_after_s or (not device.get("connected", True) and age > 5):
+        state = State.SILENT
+    return Live(
+        state=state,
+        drawn=drawn,
+        simulated=bool(snapshot.get("simulated")),
+        snapshot=snapshot,
+        since=words.parse_utc(snapshot.get("last_reading_utc")),
+        age_s=age,
+    )
+
+
+def _from_record(station: Station, doors: Doors, drawn: datetime, trouble: str) -> Live:
+    """The daemon does not answer: the record knows the last reading, and nothing of the present."""
+    if not station.record_path.exists():
+        return Live(State.NO_RECORD, drawn, False, trouble=trouble)
+    try:
+        record = doors.open_record(station.record_path)
+    except UNREACHABLE as error:
+        return Live(State.STOPPED, drawn, False, trouble=f"{trouble}; {error}")
+    try:
+        latest = record.latest()
+        simulated = record.simulated
+    finally:
+        record.close()
+    last_ns = None if latest is None else latest.last_reading_utc_ns or latest.utc_ns
+    since = None if last_ns is None else words.utc_of(last_ns)
+    return Live(State.STOPPED, drawn, simulated, since=since, trouble=trouble)
+
+
+def levels_of(alerts: Sequence[AlertRule]) -> list[dict[str, object]]:
+    """Alert rules of the site file in the form of a snapshot's levels."""
+    return [
+        {
+            "name": rule.name,
+            "set": rule.set_id,
+            "population": rule.population,
+            "scope": rule.scope,
+            "ratio": rule.ratio,
+            "returns_at": rule.returns_at,
+        }
+        for rule in alerts
+    ]
+
+
+def levels_for(levels: Sequence[Snapshot], scope: Snapshot) -> list[Snapshot]:
+    """The levels that watch a scope; an empty field of a level means every one."""
+    keys = ("set", "population", "scope")
+    return [
+        level for level in levels if all(level.get(k) in ("", None, scope.get(k)) for k in keys)
+    ]

@@ -1,0 +1,148 @@
+"""What the history page says: summary, table rows and levels of a span. Pure."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from datetime import timedelta
+
+import numpy as np
+from numpy.typing import NDArray
+
+from dashboard.chart import Mark, Series
+from dashboard.span import Span
+from dashboard.words import utc_of
+from monitor.record.types import History
+
+F = NDArray[np.float64]
+NS = 1_000_000_000
+_ROW_MINUTES = (10, 30, 60, 180, 360, 1440, 7 * 1440, 28 * 1440, 91 * 1440, 365 * 1440)
+MAX_ROWS = 36
+
+
+@dataclass(frozen=True, slots=True)
+class Row:
+    """A line of the table: a part of the span; figures are None where there is no measurement."""
+
+    part: Span
+    least: float | None
+    most: float | None
+    most_at_ns: int | None
+    valid_share: float
+    gap_s: float
+
+
+@dataclass(frozen=True, slots=True)
+class Summary:
+    """The span in a few figures: the largest average, when, and how much was measured."""
+
+    most: float | None
+    at_ns: int | None
+    index: int | None
+    measured_share: float
+    gap_s: float
+    gap_count: int
+
+
+def series_of(history: History, scope: int | None) -> Series:
+    """The field in V/m (scope None), or the exposure ratio of a scope, as a series."""
+    low, mean, high = (
+        (history.e_low, history.e_mean, history.e_high)
+        if scope is None
+        else history.ratios.get(scope, (np.full(history.utc_ns.size, np.nan),) * 3)
+    )
+    return Series(
+        history.utc_ns, low, mean, high, history.valid_share, history.gaps, history.bin_ns
+    )
+
+
+def gap_seconds(gaps: Sequence[tuple[int, int]], start_ns: int, end_ns: int) -> float:
+    """Seconds of [start, end) that lie in gaps."""
+    return sum(max(0, min(end, end_ns) - max(start, start_ns)) for start, end in gaps) / NS
+
+
+def summary(series: Series, span: Span, now_ns: int) -> Summary:
+    """Summary of a series over the part of the span that has passed."""
+    end_ns = max(span.start_ns + NS, min(span.end_ns, now_ns))
+    gap_s = gap_seconds(series.gaps, span.start_ns, end_ns)
+    length_s = (end_ns - span.start_ns) / NS
+    inside = sum(1 for a, b in series.gaps if a < end_ns and b > span.start_ns)
+    share = max(0.0, 1.0 - gap_s / length_s)
+    if not np.isfinite(series.mean).any():
+        return Summary(None, None, None, 0.0, length_s, inside)
+    index = int(np.nanargmax(series.mean))
+    return Summary(
+        float(series.mean[index]), int(series.utc_ns[index]), index, share, gap_s, inside
+    )
+
+
+def rows(series: Series, span: Span, now_ns: int) -> list[Row]:
+    """At most MAX_ROWS equal parts of the span that has begun, each with its figures."""
+    step = next(
+        (timedelta(minutes=m) for m in _ROW_MINUTES if span.seconds / 60 / m <= MAX_ROWS),
+        timedelta(seconds=math.ceil(span.seconds / MAX_ROWS)),
+    )
+    found: list[Row] = []
+    start = span.start
+    while start < span.end:
+        part = Span(start, min(start + step, span.end))
+        if part.start_ns >= now_ns:
+            break
+        found.append(_row(series, part, now_ns))
+        start += step
+    return found
+
+
+def _row(series: Series, part: Span, now_ns: int) -> Row:
+    end_ns = min(part.end_ns, now_ns)
+    inside = (series.utc_ns > part.start_ns) & (series.utc_ns <= part.end_ns)
+    inside &= np.isfinite(series.mean)
+    gap_s = gap_seconds(series.gaps, part.start_ns, end_ns)
+    measured = max(0.0, 1.0 - gap_s / max(1e-9, (end_ns - part.start_ns) / NS))
+    if not inside.any():
+        return Row(part, None, None, None, 0.0 if gap_s else measured, gap_s)
+    means = series.mean[inside]
+    at = int(np.argmax(means))
+    return Row(
+        part, float(means.min()), float(means[at]), int(series.utc_ns[inside][at]), measured, gap_s
+    )
+
+
+def equivalent_limit(history: History, scope: int, spread: float = 0.05) -> float | None:
+    """E in V/m at which the mixture as measured would reach the scope's limit.
+
+    None where there is no figure, or where it varies over the span by more than spread, because
+    the limit then depends on which frequencies were on the air.
+    """
+    if scope not in history.ratios:
+        return None
+    ratio = history.ratios[scope][1]
+    usable = np.isfinite(ratio) & np.isfinite(history.e_mean) & (ratio > 0) & (history.e_mean > 0)
+    if not usable.any():
+        return None
+    limits = history.e_mean[usable] / np.sqrt(ratio[usable])
+    low, high = float(limits.min()), float(limits.max())
+    return low if high <= low * (1 + spread) else None
+
+
+def marks(
+    levels: Sequence[Mapping[str, object]], limit: float | None, label: str, power: float
+) -> list[Mark]:
+    """The limit and the alert levels of a scope as marks; power 1 for ratios, 0.5 for E."""
+    if limit is None:
+        return []
+    found = [Mark(limit, label, "limit")]
+    for level in levels:
+        ratio = float(str(level["ratio"]))
+        found.append(Mark(limit * ratio**power, f"alert level: {level['name']}", "alert"))
+    return found
+
+
+def gap_words(gaps: Sequence[tuple[int, int]], span: Span, at_most: int = 12) -> list[str]:
+    """The longest gaps within the span in words, in the order of time."""
+    cut = [(max(a, span.start_ns), min(b, span.end_ns)) for a, b in gaps]
+    longest = sorted((g for g in cut if g[1] > g[0]), key=lambda g: g[0] - g[1])[:at_most]
+    return [
+        f"{utc_of(a):%Y-%m-%d %H:%M} to {utc_of(b):%Y-%m-%d %H:%M} UTC" for a, b in sorted(longest)
+    ]

@@ -1,0 +1,158 @@
+"""The routes: read the moment or the past, hand it to a template; what a person does is sent on."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Any
+
+from flask import Blueprint, current_app, redirect, render_template, request, url_for
+from flask.typing import ResponseReturnValue
+
+from dashboard import history, now, words
+from dashboard.models import ASK_TIMEOUT_S, UNREACHABLE, Doors, Live, State, Station, read_live
+from monitor.core.errors import ConfigError, DeviceError
+
+pages = Blueprint("pages", __name__)
+MUTE_MINUTES = (15, 60, 240, 720)
+
+
+@dataclass(frozen=True, slots=True)
+class Context:
+    """What every route needs. token: proves that a form came from our own page."""
+
+    station: Station
+    doors: Doors
+    token: str
+    may_act: bool
+
+
+def _context() -> Context:
+    context: Context = current_app.extensions["fieldsill"]
+    return context
+
+
+def _live() -> Live:
+    context = _context()
+    return read_live(context.station, context.doors)
+
+
+def _wanted_scope() -> int | None:
+    text = request.args.get("scope", "")
+    if not text:
+        return None
+    if not text.isdecimal():
+        raise ConfigError(f"scope: {text!r} is not the number of a limit; follow a link instead")
+    return int(text)
+
+
+def _now_values(live: Live) -> dict[str, Any]:
+    context = _context()
+    wanted = _wanted_scope()
+    chosen = now.governing(live, context.station, wanted)
+    site = live.snapshot.get("site") or {}
+    return {
+        "live": live,
+        "simulated": live.simulated,
+        "name": site.get("name") or context.station.name,
+        "place": site.get("place") or context.station.place,
+        "controlled": now.occupancy(live, context.station) == "controlled",
+        "headline": now.headline(live, context.station),
+        "chosen": chosen and now.scope_line(chosen, live, context.station),
+        "chosen_ratio": chosen and chosen.get("ratio_mean"),
+        "picture": now.drawn(chosen, live, context.station),
+        "wanted": wanted,
+        "groups": now.scope_lines(live, context.station),
+        "alarms": now.alarm_lines(live),
+        "device": live.snapshot.get("device") or {},
+        "token": context.token,
+        "may_act": context.may_act,
+        "mute_minutes": MUTE_MINUTES,
+        "cautions": words.CAUTIONS,
+        "part_url": url_for("pages.part", scope=wanted),
+    }
+
+
+@pages.get("/")
+def present() -> ResponseReturnValue:
+    """The page of the present."""
+    return render_template("now.html", **_now_values(_live()))
+
+
+@pages.get("/part")
+def part() -> ResponseReturnValue:
+    """The changing parts of the page of the present, for the script that renews them."""
+    return render_template("now_parts.html", **_now_values(_live()))
+
+
+@pages.post("/alarms")
+def alarms() -> ResponseReturnValue:
+    """Send what a person did about an alarm to the daemon; only it decides and logs."""
+    action, key = request.form.get("do", ""), request.form.get("key", "")
+    wish: dict[str, object] = {"do": action, "key": key}
+    if action not in ("acknowledge", "shelve", "unshelve") or not key:
+        raise ConfigError("do: must be acknowledge, shelve or unshelve, with the key of an alarm")
+    if action == "shelve":
+        minutes = request.form.get("minutes", "")
+        if minutes not in {str(m) for m in MUTE_MINUTES}:
+            raise ConfigError(f"minutes: {minutes!r} is not one of {MUTE_MINUTES}")
+        wish["for_s"] = int(minutes) * 60
+    _send(wish)
+    return redirect(url_for("pages.present") + "#alarms", 303)
+
+
+def _send(wish: Mapping[str, object]) -> None:
+    context = _context()
+    try:
+        answer = context.doors.ask(context.station.control_path, wish, ASK_TIMEOUT_S)
+    except UNREACHABLE as error:
+        raise DeviceError(f"not done: the monitor does not answer ({error}); try again") from error
+    if not answer.get("ok"):
+        raise ConfigError(f"not done: {answer.get('error', 'the monitor refused')}")
+
+
+@pages.get("/history")
+def past() -> ResponseReturnValue:
+    """The page of the past."""
+    context = _context()
+    values = history.page(context.station, context.doors, request.args)
+    return render_template("history.html", **values)
+
+
+@pages.get("/api/now")
+def api_now() -> ResponseReturnValue:
+    """The moment as JSON; `now` is the daemon's own snapshot, null where it does not answer."""
+    live = _live()
+    return {
+        "state": str(live.state),
+        "drawn_utc": _iso(live.drawn),
+        "last_reading_utc": _iso(live.since),
+        "last_reading_age_s": live.age_s,
+        "simulated": live.simulated,
+        "words": now.headline(live, _context().station).text,
+        "now": dict(live.snapshot) if live.snapshot else None,
+    }
+
+
+@pages.get("/api/history")
+def api_history() -> ResponseReturnValue:
+    """Averages over a span as JSON."""
+    context = _context()
+    return history.document(context.station, context.doors, request.args)
+
+
+@pages.get("/health")
+def health() -> ResponseReturnValue:
+    """200 while readings arrive, else 503."""
+    live = _live()
+    body = {
+        "state": str(live.state),
+        "last_reading_utc": _iso(live.since),
+        "last_reading_age_s": live.age_s,
+        "simulated": live.simulated,
+    }
+    return body, 200 if live.state is State.MEASURING else 503
+
+
+def _iso(moment: Any) -> str | None:
+    return None if moment is None else moment.isoformat().replace("+00:00", "Z")
