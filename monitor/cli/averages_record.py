@@ -1,0 +1,106 @@
+"""The averages that a record holds, as fieldsill averages prints them."""
+
+from __future__ import annotations
+
+import math
+import re
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+import click
+
+from monitor.cli.output import print_json
+from monitor.core import flags
+from monitor.core.errors import ConfigError
+from monitor.seriesfile import text_from_utc_ns, utc_ns_from_text
+
+if TYPE_CHECKING:
+    from monitor.record.types import History
+
+FIRST_NS, LAST_NS = 0, 1 << 62
+MOST_POINTS = 1 << 40
+"""More points than any record holds: every window comes by itself, none is merged."""
+
+
+def show(
+    record: Path | None, averaging_s: float, start: str | None, end: str | None, as_json: bool
+) -> None:
+    """Print the windows of that averaging time that end in (start, end] of UTC."""
+    from monitor.record.reader import Record
+
+    first, last = _utc_ns(start, "--from", FIRST_NS), _utc_ns(end, "--to", LAST_NS)
+    if not first < last:
+        raise ConfigError("--from must be before --to")
+    if averaging_s != int(averaging_s):
+        raise ConfigError(
+            f"--averaging {averaging_s:g}: a record holds whole seconds, 360 and 1800"
+        )
+    with Record.open(record or _site_record()) as held:
+        history = held.history(first, last, int(averaging_s), MOST_POINTS)
+        simulated = held.simulated
+    rows = _entries(history)
+    if as_json:
+        print_json({"simulated": simulated, "averaging_s": averaging_s, "averages": rows})
+        return
+    if simulated:
+        click.echo("SIMULATED: these figures are invented")
+    click.echo(
+        f"{'end':>24} {'E low':>9} {'E rms':>9} {'E high':>9} {'E max':>9} V/m  {'U dB':>6}"
+        f" {'valid':>7}  notes"
+    )
+    for row in rows:
+        click.echo(_line(row))
+    if not rows:
+        click.echo(f"no window of {averaging_s:g} s ends in that span")
+
+
+def _site_record() -> Path:
+    from monitor.config import default_site_path, load_site
+
+    return load_site(default_site_path(None)).record_path
+
+
+def _utc_ns(text: str | None, option: str, default: int) -> int:
+    if text is None:
+        return default
+    if re.fullmatch(r"\d{4}-\d\d-\d\d", text, re.ASCII):
+        text += "T00:00:00Z"
+    try:
+        return utc_ns_from_text(text)
+    except ValueError as error:
+        raise ConfigError(f"{option}: {error}") from error
+
+
+def _entries(history: History) -> list[dict[str, object]]:
+    columns = {
+        "e_rms_v_per_m": history.e_mean,
+        "valid_share": history.valid_share,
+        "e_max_v_per_m": history.e_max,
+        "e_low_v_per_m": history.e_low,
+        "e_high_v_per_m": history.e_high,
+        "expanded_uncertainty_db": history.u_db,
+    }
+    rows = zip(history.utc_ns.tolist(), *(column.tolist() for column in columns.values()))
+    return [
+        {
+            "end": text_from_utc_ns(end_ns),
+            **dict(zip(columns, values)),
+            "flags": flags.words(bits),
+        }
+        for (end_ns, *values), bits in zip(rows, history.flags.tolist())
+    ]
+
+
+def _line(row: dict[str, object]) -> str:
+    names = ("e_low_v_per_m", "e_rms_v_per_m", "e_high_v_per_m", "e_max_v_per_m")
+    figures = " ".join(f"{_figure(row[name]):>9}" for name in names)
+    words: list[str] = row["flags"]  # type: ignore[assignment]
+    return (
+        f"{row['end']!s:>24} {figures}      {_figure(row['expanded_uncertainty_db']):>6}"
+        f" {row['valid_share']:>7.1%}  {', '.join(words)}"
+    )
+
+
+def _figure(value: object) -> str:
+    number = float(value)  # type: ignore[arg-type]
+    return f"{number:.4g}" if math.isfinite(number) else "-"
