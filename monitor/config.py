@@ -10,15 +10,14 @@ from pathlib import Path
 from monitor import tomlfile
 from monitor.core.alarms import AlertRule
 from monitor.core.errors import ConfigError
+from monitor.core.exposure import FIELD_REGIONS
 from monitor.core.keys import Table
+from monitor.core.limits import POPULATIONS, SCOPES
 from monitor.core.quantities import frequency_hz
 from monitor.tomlfile import TopTable
 
 OCCUPANCIES = ("public", "controlled")
-FIELD_REGIONS = ("far", "radiating_near", "reactive_near", "undeclared")
 AXES = ("x", "y", "z", "")
-POPULATIONS = ("general_public", "occupational")
-SCOPES = ("whole_body", "local", "brief", "instantaneous")
 MAX_CHANNELS = 64
 DAY_S = 86_400.0
 

@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 
 from monitor.core.errors import CalibrationError
 from monitor.core.flags import Flag
+from monitor.core.limits import frequency_text
 from monitor.core.quantities import PORT_OHM
 from monitor.core.uncertainty import Contribution, Real
 
@@ -121,16 +122,16 @@ class FrequencyTable:
         if falls.size:
             f = float(self.frequencies_hz[falls[0] + 1])
             word = "twice" if f == self.frequencies_hz[falls[0]] else "out of order"
-            raise CalibrationError(f"{_frequency(f)} stands {word}; frequencies must rise")
+            raise CalibrationError(f"{frequency_text(f)} stands {word}; frequencies must rise")
 
     def at(self, frequencies_hz: Real) -> Real:
         """dB (m,) at frequencies (m,); CalibrationError outside the table: nothing extrapolated."""
-        low, high = self.frequencies_hz[0], self.frequencies_hz[-1]
-        if frequencies_hz.min() < low or frequencies_hz.max() > high:
+        low, high = float(self.frequencies_hz[0]), float(self.frequencies_hz[-1])
+        wanted = float(frequencies_hz.min()), float(frequencies_hz.max())
+        if wanted[0] < low or wanted[1] > high:
+            has, asked = (" to ".join(map(frequency_text, ends)) for ends in ((low, high), wanted))
             raise CalibrationError(
-                f"covers {_frequency(low)} to {_frequency(high)}, but "
-                f"{_frequency(frequencies_hz.min())} to {_frequency(frequencies_hz.max())} is "
-                "measured; narrow the band or have it calibrated further"
+                f"covers {has}, but {asked} is measured; narrow the band or calibrate further"
             )
         return np.interp(np.log(frequencies_hz), np.log(self.frequencies_hz), self.db)
 
@@ -176,10 +177,3 @@ def spread(k: Real, band: str) -> tuple[Contribution, ...]:
             f"response over band {band}", half_db, "rectangular", shared=True, kind="antenna"
         ),
     )
-
-
-def _frequency(f_hz: float) -> str:
-    for unit, size in (("GHz", 1e9), ("MHz", 1e6), ("kHz", 1e3)):
-        if f_hz >= size:
-            return f"{f_hz / size:.6g} {unit}"
-    return f"{f_hz:.6g} Hz"

@@ -1,0 +1,176 @@
+"""Whether everything that a site file names fits together; nothing is opened for writing."""
+
+from __future__ import annotations
+
+from collections import Counter
+from collections.abc import Callable, Iterable, Iterator
+from dataclasses import dataclass
+from datetime import UTC, datetime, timedelta
+from typing import Protocol
+
+import numpy as np
+
+from monitor import limitsets
+from monitor.calfile import load_chain
+from monitor.config import Site
+from monitor.core.alarms import watches
+from monitor.core.calibration import Chain, CountTable
+from monitor.core.errors import ConfigError, LimitError
+from monitor.core.exposure import CAP_DB, E_ALONE_FROM_HZ, scope_coefficients
+from monitor.core.flags import Flag
+from monitor.core.limits import Scope, frequency_text, ratio_per_e2, scopes
+from monitor.core.quantities import dbm_from_w
+from monitor.core.uncertainty import coverage_factor, standard_db
+
+DUE_SOON_DAYS = 60
+_EPOCH = datetime(1970, 1, 1, tzinfo=UTC)
+
+
+@dataclass(frozen=True, slots=True)
+class Finding:
+    """One thing that was looked at. ok False: the site runs, but something cannot be judged."""
+
+    where: str
+    text: str
+    ok: bool = True
+
+
+class FindingLike(Protocol):
+    """What the check of a front end gives."""
+
+    @property
+    def where(self) -> str:
+        """The table of the site file."""
+
+    @property
+    def text(self) -> str:
+        """What was found."""
+
+    @property
+    def ok(self) -> bool:
+        """False for a note."""
+
+
+def findings(
+    site: Site, now_utc_ns: int, front_end: Callable[[Site], Iterable[FindingLike]]
+) -> Iterator[FindingLike]:
+    """What fits and what does not, in the order of the site file.
+
+    front_end: the check of the sensor's own settings. Raises what makes the site unable to run:
+    ConfigError, CalibrationError, LimitError (2) or DeviceError (3), one line each.
+    """
+    chain = load_chain(site.calibration, site.channels, site.bands)
+    yield from _site(site)
+    yield from front_end(site)
+    yield from _calibration(chain, now_utc_ns)
+    yield from _channels(site, chain)
+    judged = [scope for set_id in site.limit_sets for scope in _scopes(site, set_id)]
+    for scope in judged:
+        yield _limit(site, chain, scope)
+    for rule in site.alerts:
+        n = len(watches([rule], judged))
+        level = f"raised at an exposure ratio of {rule.ratio:g}, in {n} scopes"
+        text = level if n else "matches no scope that is judged; it will never be raised"
+        yield Finding("alert", f"{rule.name}: {text}", n > 0)
+
+
+def _site(site: Site) -> Iterator[Finding]:
+    kind = "simulated" if site.simulated else "real"
+    yield Finding("site", f"{site.name}, {site.occupancy}; readings are {kind}")
+    if site.field_region == "undeclared":
+        yield Finding("site.field_region", "undeclared: nothing will ever conform", ok=False)
+    elif site.field_region == "reactive_near":
+        yield Finding("site.field_region", "reactive near field: no verdict from E alone", ok=False)
+    else:
+        yield Finding("site.field_region", site.field_region.replace("_", " ") + " field")
+
+
+def _calibration(chain: Chain, now_utc_ns: int) -> Iterator[Finding]:
+    if chain.due_utc_ns is not None:
+        days = (chain.due_utc_ns - now_utc_ns) / 86_400e9
+        last = _EPOCH + timedelta(microseconds=chain.due_utc_ns // 1000 - 1)
+        text = f"due {last.date()}"
+        if days <= 0:
+            yield Finding("calibration", f"overdue, was {text}: nothing will conform", ok=False)
+        elif days < DUE_SOON_DAYS:
+            yield Finding("calibration", f"{text}, in {int(days)} days", ok=False)
+        else:
+            yield Finding("calibration", text)
+    if chain.flags & Flag.LOG_AVERAGED:
+        yield Finding(
+            "calibration", "the board averages logs: every figure is a lower bound", ok=False
+        )
+    u_db, k = _expanded(chain)
+    over = u_db > CAP_DB
+    yield Finding(
+        "calibration",
+        f"expanded uncertainty {u_db:.2f} dB (95 %, k = {k:.2f}), equal shares of the channels"
+        + (f"; above {CAP_DB:g} dB nothing will conform" if over else ""),
+        not over,
+    )
+
+
+def _expanded(chain: Chain) -> tuple[float, float]:
+    channels = len(chain.tables)
+    k = coverage_factor(chain.contributions)
+    return k * float(standard_db(chain.contributions, np.full((1, channels), 1 / channels))[0]), k
+
+
+def _channels(site: Site, chain: Chain) -> Iterator[Finding]:
+    axes = Counter(channel.band for channel in site.channels)
+    for name, band in site.bands.items():
+        few = axes[name] < 3
+        text = f"{name}: {frequency_text(band.low_hz)} to {frequency_text(band.high_hz)}"
+        yield Finding(
+            "band",
+            f"{text}, {axes[name]} of 3 axes"
+            + ("; a component only, a lower bound: nothing will conform" if few else ""),
+            not few,
+        )
+        if band.low_hz < E_ALONE_FROM_HZ:
+            yield Finding("band", f"{name}: no verdict from E alone below 30 MHz", ok=False)
+    for channel, table, k_mid in zip(site.channels, chain.tables, chain.k_mid):
+        low_w, high_w = _range_w(table)
+        low, high = ((p_w * float(k_mid)) ** 0.5 for p_w in (low_w, high_w))
+        levels = f"{dbm_from_w(low_w):.1f} to {dbm_from_w(high_w):.1f} dBm"
+        yield Finding("channel", f"{channel.name}: {levels}, {low:.3g} to {high:.3g} V/m")
+
+
+def _range_w(table: CountTable) -> tuple[float, float]:
+    """Smallest and largest power that carry no flag, W; ConfigError where there is none."""
+    good = table.power_w[(table.flags == 0) & np.isfinite(table.power_w)]
+    if not good.size:
+        raise ConfigError("detector: no count lies within the range; correct bits and curve")
+    return float(good.min()), float(good.max())
+
+
+def _scopes(site: Site, set_id: str) -> tuple[Scope, ...]:
+    """The scopes of a set in the site's bands; LimitError where there is none."""
+    low_hz = min(band.low_hz for band in site.bands.values())
+    high_hz = max(band.high_hz for band in site.bands.values())
+    found = scopes(limitsets.load(set_id), low_hz, high_hz)
+    if not found:
+        raise LimitError(
+            f"{site.path.name}: limits.sets: {set_id} has no limit for a field strength at "
+            f"{frequency_text(low_hz)} to {frequency_text(high_hz)}; take it out or change the band"
+        )
+    return found
+
+
+def _limit(site: Site, chain: Chain, scope: Scope) -> Finding:
+    """What a scope can be judged by; LimitError where its table does not hold a whole band."""
+    limit_set = limitsets.load(scope.set_id)
+    tops = []
+    for table, frequencies_hz, k in zip(chain.tables, chain.frequencies_hz, chain.k):
+        try:
+            per_e2 = ratio_per_e2(limit_set, scope, frequencies_hz)
+        except LimitError as error:
+            raise LimitError(f"{site.path.name}: limits.sets: {error}") from None
+        tops.append(_range_w(table)[1] * scope_coefficients(k, per_e2))
+    text = f"{scope.set_id}: {scope.population}, {scope.scope}, {scope.averaging_s:g} s"
+    notes = []
+    if not scope.verified:
+        notes.append("from memory: will not conform until confirmed")
+    if min(tops) < 1.0:
+        notes.append(f"the range ends at {min(tops):.2g} times the limit")
+    return Finding("limits", "; ".join([text, *notes]), not notes)

@@ -1,0 +1,33 @@
+"""fieldsill check: does everything that a site file names fit together? Nothing is written."""
+
+from __future__ import annotations
+
+import click
+
+from monitor.checks import findings
+from monitor.cli.output import print_json
+from monitor.clock import SystemClock
+from monitor.config import default_site_path, load_site
+
+
+@click.command("check")
+@click.option("--site", "site_file", help="Site file; else $FIELDSILL_SITE, ./site.toml, /etc.")
+@click.option("--json", "as_json", is_flag=True, help="One JSON document.")
+def command(site_file: str | None, as_json: bool) -> None:
+    """Read the site file and all that it names; say what fits and what cannot be judged.
+
+    Ends with 0 where the site can run, with 2 or 3 and one line where it cannot.
+    """
+    site = load_site(default_site_path(site_file))
+    # Late: a wrong site file needs no front end to say so.
+    from monitor import wiring
+
+    found = list(findings(site, SystemClock().utc_ns(), wiring.check))
+    if as_json:
+        rows = [{"where": f.where, "text": f.text, "ok": f.ok} for f in found]
+        judged = all(f.ok for f in found)
+        print_json({"site": str(site.path), "runs": True, "ok": judged, "findings": rows})
+        return
+    width = max(len(finding.where) for finding in found)
+    for finding in found:
+        click.echo(f"{'ok  ' if finding.ok else 'note'}  {finding.where:{width}}  {finding.text}")
