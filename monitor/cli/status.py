@@ -1,0 +1,245 @@
+"""fieldsill status: how one box is, or every box of a folder, worst first."""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass
+from datetime import UTC, datetime, timedelta
+from pathlib import Path
+
+import click
+
+from monitor.cli.output import print_json
+from monitor.control import ask
+from monitor.core.errors import ConfigError, DeviceError, FieldsillError
+from monitor.core.exposure import Verdict
+from monitor.core.flags import words
+from monitor.record.reader import Record
+from monitor.record.types import Latest
+
+Row = Mapping[str, object]
+STATES = ("exceeds", "alarm", "unreadable", "stopped", "silent", "undecided", "conforms")
+"""Worst first. A box that does not measure stands before one that measures and cannot decide."""
+SILENT_AFTER_S = 30.0
+_NOTHING_SINCE = "no measurement since {}; this says nothing about the field"
+
+
+@dataclass(frozen=True, slots=True)
+class Standing:
+    """How one box is. now: the daemon's document, or the same keys as the record knows them."""
+
+    record: Path
+    state: str
+    text: str
+    live: bool
+    simulated: bool | None
+    now: Row
+
+    @property
+    def name(self) -> str:
+        """The site's name where the daemon says it, else the record's."""
+        site = self.now.get("site")
+        named = site.get("name") if isinstance(site, Mapping) else None
+        return str(named or self.record.stem)
+
+    @property
+    def ratio(self) -> float | None:
+        """The largest exposure ratio that is not a bound of what was missed."""
+        return max((v for row in _rows(self.now, "exposures") if (v := _mean(row)) is not None),
+                   default=None)  # fmt: skip
+
+    def document(self) -> dict[str, object]:
+        """As JSON."""
+        return {
+            "record": str(self.record),
+            "name": self.name,
+            "state": self.state,
+            "text": self.text,
+            "answering": self.live,
+            "simulated": self.simulated,
+            "largest_exposure_ratio": self.ratio,
+            "now": dict(self.now),
+        }
+
+
+@click.command(name="status")
+@click.argument("folder", required=False, type=click.Path(path_type=Path))
+@click.option("--record", type=click.Path(path_type=Path), help="The record to look at.")
+@click.option("--site", type=click.Path(path_type=Path), help="The site file that names it.")
+@click.option("--json", "as_json", is_flag=True, help="One JSON document.")
+def command(folder: Path | None, record: Path | None, site: Path | None, as_json: bool) -> None:
+    """How the monitor is now; with FOLDER, one line for each record in it, worst first."""
+    if sum(given is not None for given in (folder, record, site)) > 1:
+        raise ConfigError("status: give a folder, or --record, or --site; not several")
+    utc_ns = time.time_ns()
+    if folder is None:
+        box = standing_of(_chosen(record, site), utc_ns)
+        print_json(box.document()) if as_json else click.echo("\n".join(_in_full(box)))
+        return
+    boxes = worst_first(_of_folder(path, utc_ns) for path in _records(folder))
+    if as_json:
+        print_json({"boxes": [box.document() for box in boxes]})
+    else:
+        click.echo("\n".join(_one_line(box) for box in boxes))
+
+
+def standing_of(path: Path, utc_ns: int) -> Standing:
+    """Ask the daemon beside the record, else read the record. RecordError where it is none."""
+    try:
+        now = ask(path.with_suffix(".sock"), {"do": "now"}).get("now")
+    except DeviceError:
+        now = None
+    if isinstance(now, Mapping):
+        state, text = _judged(now)
+        return Standing(path, state, text, True, bool(now.get("simulated")), now)
+    with Record.open(path) as record:
+        latest = record.latest()
+        simulated = record.simulated
+    if latest is None:
+        return Standing(path, "stopped", "no measurement yet", False, simulated, {})
+    text = _NOTHING_SINCE.format(_utc(_last_ns(latest)) or "a time that no clock tells")
+    return Standing(path, "stopped", text, False, simulated, _as_now(latest, simulated, utc_ns))
+
+
+def worst_first(boxes: Iterable[Standing]) -> list[Standing]:
+    """By state as in STATES, then by exposure ratio, then by name."""
+    return sorted(boxes, key=lambda b: (STATES.index(b.state), -(b.ratio or 0.0), b.name))
+
+
+def _of_folder(path: Path, utc_ns: int) -> Standing:
+    try:
+        return standing_of(path, utc_ns)
+    except FieldsillError as error:
+        return Standing(path, "unreadable", str(error), False, None, {})
+
+
+def _judged(now: Row) -> tuple[str, str]:
+    """State and words of a box whose daemon answers."""
+    age_s = now.get("last_reading_age_s")
+    if not isinstance(age_s, (int, float)):
+        return "silent", "no reading yet"
+    if age_s > SILENT_AFTER_S:
+        since = now.get("last_reading_utc") or f"{age_s:.0f} s ago"
+        return "silent", _NOTHING_SINCE.format(since)
+    verdicts = {str(row.get("verdict")) for row in _rows(now, "exposures")}
+    alarms = [str(row.get("text")) for row in _rows(now, "alarms") if row.get("state") != "normal"]
+    heard = f"last reading {age_s:.0f} s ago"
+    if "exceeds" in verdicts:
+        return "exceeds", f"a limit is exceeded, {heard}"
+    if alarms:
+        return "alarm", f"{', '.join(alarms)}, {heard}"
+    if verdicts == {"conforms"}:
+        return "conforms", f"below every limit that is set, at the antenna, {heard}"
+    return "undecided", f"no limit known to be exceeded, not all can be decided, {heard}"
+
+
+def _as_now(latest: Latest, simulated: bool, utc_ns: int) -> Row:
+    last_ns = _last_ns(latest)
+    age_s = None if last_ns is None else (utc_ns - last_ns) / 1e9
+    fields = [
+        {
+            "averaging_s": f.averaging_s, "e_low": f.e_low, "e_mean": f.e_mean,
+            "e_high": f.e_high, "e_max": f.e_max, "u_db": f.u_db, "k": f.k,
+            "valid_share": f.valid_share, "observed_share": f.observed_share,
+            "flags": words(f.flags),
+        }
+        for f in latest.fields
+    ]  # fmt: skip
+    exposures = [
+        {
+            "index": x.index, "set": x.scope.set_id, "edition": x.scope.edition,
+            "population": x.scope.population, "scope": x.scope.scope,
+            "averaging_s": x.scope.averaging_s, "clause": x.scope.clause,
+            "verified": x.scope.verified, "ratio_low": x.ratio_low, "ratio_mean": x.ratio_mean,
+            "ratio_high": x.ratio_high, "verdict": Verdict(x.verdict).name.lower(),
+        }
+        for x in latest.exposures
+    ]  # fmt: skip
+    return {
+        "utc": _utc(latest.utc_ns), "boot": latest.boot, "boot_ns": latest.end_ns,
+        "last_reading_utc": _utc(latest.last_reading_utc_ns), "last_reading_age_s": age_s,
+        "simulated": simulated, "fields": fields, "exposures": exposures,
+        "flags": words(latest.flags),
+    }  # fmt: skip
+
+
+def _chosen(record: Path | None, site: Path | None) -> Path:
+    if record is not None:
+        return record
+    from monitor.config import default_site_path, load_site  # only where a site is needed
+
+    return load_site(default_site_path(site)).record_path
+
+
+def _records(folder: Path) -> list[Path]:
+    if not folder.is_dir():
+        raise ConfigError(f"{folder}: no such folder; name the one that holds the records")
+    found = sorted([*folder.glob("*.db"), *folder.glob("*/*.db")])
+    if not found:
+        raise ConfigError(f"{folder}: no record (*.db) in it or one folder down; name another")
+    return found
+
+
+def _one_line(box: Standing) -> str:
+    ratio = "ratio -" if box.ratio is None else f"ratio {box.ratio:.3g}"
+    mark = "  SIMULATED" if box.simulated else ""
+    return f"{box.state:<10} {box.name:<24} {ratio:<14} {box.text}{mark}"
+
+
+def _in_full(box: Standing) -> list[str]:
+    lines = [box.name + ("  SIMULATED: the data are invented" if box.simulated else "")]
+    lines += [f"  record   {box.record}", f"  state    {box.state}: {box.text}"]
+    if not box.live and box.now:
+        lines.append("  the last figures in the record:")
+    for row in _rows(box.now, "fields"):
+        lines.append(
+            f"  {_minutes(row)}   E {_figure(row, 'e_mean')} V/m "
+            f"({_figure(row, 'e_low')} to {_figure(row, 'e_high')}), "
+            f"largest {_figure(row, 'e_max')}, U {_figure(row, 'u_db')} dB, "
+            f"valid share {_figure(row, 'valid_share')}"
+        )
+    for row in _rows(box.now, "exposures"):
+        verdict = {"undecided": "cannot be decided"}.get(str(row["verdict"]), row["verdict"])
+        lines.append(
+            f"  {_minutes(row)}   {row.get('set')} {row.get('population')} {row.get('scope')}: "
+            f"exposure ratio {_figure(row, 'ratio_mean')} "
+            f"({_figure(row, 'ratio_low')} to {_figure(row, 'ratio_high')}), {verdict}"
+        )
+    lines += [
+        f"  alarm    {row.get('text')}: {str(row.get('state')).replace('_', ' ')}"
+        for row in _rows(box.now, "alarms")
+    ]
+    return lines
+
+
+def _rows(now: Row, key: str) -> list[Row]:
+    found = now.get(key)
+    return [row for row in found if isinstance(row, Mapping)] if isinstance(found, list) else []
+
+
+def _mean(row: Row) -> float | None:
+    value = row.get("ratio_mean")
+    known = isinstance(value, (int, float)) and value == value  # nan: nothing was valid
+    return float(value) if known else None  # type: ignore[arg-type]
+
+
+def _figure(row: Row, key: str) -> str:
+    value = row.get(key)
+    return f"{value:.3g}" if isinstance(value, (int, float)) and value == value else "-"
+
+
+def _minutes(row: Row) -> str:
+    value = row.get("averaging_s")
+    return f"{value / 60:>2.0f} min" if isinstance(value, (int, float)) else "  -   "
+
+
+def _last_ns(latest: Latest) -> int | None:
+    return latest.last_reading_utc_ns or latest.utc_ns
+
+
+def _utc(utc_ns: int | None) -> str | None:
+    if utc_ns is None:
+        return None
+    moment = datetime(1970, 1, 1, tzinfo=UTC) + timedelta(microseconds=utc_ns // 1000)
+    return moment.isoformat(timespec="milliseconds").replace("+00:00", "Z")
