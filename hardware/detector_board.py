@@ -22,6 +22,7 @@ SILENT_S = 3.0
 _GIVE_UP = 10
 """The port is opened anew after this many times the silence that counts as a hang."""
 _GATHER_S = 0.02
+_UNKNOWN_REACH_NS = 2 * NS_PER_S
 
 
 @dataclass(frozen=True, slots=True)
@@ -98,6 +99,7 @@ class DetectorBoard:
         self._generation = 0
         self._heard_ns = self._since_ns = self._asked_ns = boot_ns()
         self._interval_ns = 0
+        self._reach_ns = _UNKNOWN_REACH_NS
         self._hangs = 0
         self._hung = False
         self._temperature_c: float | None = None
@@ -113,7 +115,7 @@ class DetectorBoard:
         taken = self._reception.feed(data) if data else []
         self._watch(now_ns, self._reception.frames_seen > seen)
         if not taken:
-            return empty_batch(self._channels, self._clock.vouch(now_ns))
+            return empty_batch(self._channels, self._clock.vouch(now_ns, self._reach_ns))
         return self._batch(taken, now_ns)
 
     def status(self) -> DeviceStatus:
@@ -203,6 +205,7 @@ class DetectorBoard:
         self._supply_v = None if frame.supply == b"-" else int(frame.supply) / 1000
         if last.since_ms is not None:
             self._interval_ns = (frame.tick_ms - last.since_ms) * NS_PER_MS
+            self._reach_ns = self._interval_ns - self._interval_ns // frame.samples
 
     def _flags(self, n: int) -> NDArray[np.int32]:
         bits = Flag.SIMULATED if self._simulated else Flag(0)

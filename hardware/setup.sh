@@ -75,13 +75,14 @@ install_lock() {
     { [ "$have" = "test $sum" ] || [ "$have" = "$1 $sum" ]; } && return
     echo "fieldsill: installing Python packages into .venv from $lock"
     [ "$have" = nothing ] && "$python" -m venv --clear .venv
-    in_venv --require-hashes -r "$lock" && in_venv --no-deps --no-build-isolation --editable . ||
-        stop "could not install the Python packages of $lock into .venv: see above"
+    in_venv --require-hashes -r "$lock"
+    in_venv --no-deps --no-build-isolation --editable .
     echo "$1 $sum" >.venv/installed
 }
 
 in_venv() {
-    .venv/bin/python -m pip install --quiet --disable-pip-version-check "$@"
+    PYTHONWARNINGS=ignore .venv/bin/python -m pip install --quiet --disable-pip-version-check "$@" ||
+        stop "could not install into .venv: see above"
 }
 
 ready() {

@@ -69,9 +69,12 @@ class ArrivalClock:
             self._learn_since_ns = now_ns
             self._least_ns = delay_ns
 
-    def vouch(self, now_ns: int) -> int:
-        """Boot time (ns) up to which nothing else can come, when nothing came until now_ns."""
-        self._vouched_ns = max(self._vouched_ns, now_ns - LATENESS_NS)
+    def vouch(self, now_ns: int, reach_ns: int) -> int:
+        """Boot time (ns) up to which nothing else can come, when nothing came until now_ns.
+
+        reach_ns: how much older than its frame the first sample of a frame is.
+        """
+        self._vouched_ns = max(self._vouched_ns, now_ns - LATENESS_NS - reach_ns)
         return self._vouched_ns
 
 
@@ -102,7 +105,7 @@ class TickClock:
         self._heard_ns = now_ns
         return times_ns
 
-    def vouch(self, now_ns: int) -> int:
+    def vouch(self, now_ns: int, reach_ns: int) -> int:
         """Time (ns) up to which nothing else can come, when nothing came until real now_ns."""
         idle_ns = now_ns - self._heard_ns - _IDLE_NS
         if idle_ns > 0:

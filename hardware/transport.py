@@ -6,6 +6,7 @@ import os
 import select
 import stat
 from collections.abc import Callable
+from io import UnsupportedOperation
 from pathlib import Path
 
 import serial
@@ -18,6 +19,7 @@ LONGEST_BACK_OFF_S = 4.0
 _PIECE = 1 << 16
 _MOST = 1 << 18
 _SLICE_S = 0.02
+_WRITE_S = 0.2
 _SCHEMES = ("alt", "cp2110", "hwgrep", "loop", "rfc2217", "socket", "spy")
 
 
@@ -67,6 +69,7 @@ class Port:
         self._baud = baud
         self._now_ns = now_ns
         self._port: serial.SerialBase | None = None
+        self._fd = -1
         self._closed = False
         self._wake_r, self._wake_w = os.pipe()
         self._back_off_s = BACK_OFF_S
@@ -105,10 +108,12 @@ class Port:
         port = self._port
         if port is None:
             return
-        if hasattr(port, "fileno") and not select.select([], [port.fileno()], [], 0)[1]:
+        if self._fd >= 0 and not select.select([], [self._fd], [], 0)[1]:
             return
         try:
             port.write(data)
+        except serial.SerialTimeoutException:
+            return
         except OSError as error:
             self._lose(str(error))
 
@@ -140,8 +145,8 @@ class Port:
         """Whether bytes may be there; handlers without a descriptor are asked in short slices."""
         if self._closed:
             return False
-        if hasattr(port, "fileno"):
-            ready = select.select([port.fileno(), self._wake_r], [], [], timeout_s)[0]
+        if self._fd >= 0:
+            ready = select.select([self._fd, self._wake_r], [], [], timeout_s)[0]
             return bool(ready) and self._wake_r not in ready
         for _ in range(max(1, round(timeout_s / _SLICE_S))):
             if self._waiting(port) or select.select([self._wake_r], [], [], _SLICE_S)[0]:
@@ -167,13 +172,14 @@ class Port:
                 self._device,
                 baudrate=self._baud,
                 timeout=0,
-                write_timeout=0,
+                write_timeout=_WRITE_S,
                 exclusive=None if is_url(self._device) else True,
             )
         except (OSError, ValueError) as error:
             self.counters["open_failures"] += 1
             self._later(_in_words(self._device, error))
             return False
+        self._fd = _descriptor(self._port)
         self.counters["reopened"] += self.generation > 0
         self.generation += 1
         self.problem = ""
@@ -200,6 +206,14 @@ class Port:
                 port.close()
             except OSError as error:
                 self.problem = str(error)
+
+
+def _descriptor(port: serial.SerialBase) -> int:
+    """What select() can wait on; -1 where a handler of the library has no such thing."""
+    try:
+        return port.fileno()
+    except UnsupportedOperation:
+        return -1
 
 
 def _in_words(device: str, error: Exception) -> str:
