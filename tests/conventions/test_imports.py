@@ -11,8 +11,8 @@ from tests.conventions import tree
 
 CORE_MAY_IMPORT = {
     "__future__", "abc", "base64", "binascii", "bisect", "collections", "collections.abc",
-    "dataclasses", "difflib", "enum", "fractions", "functools", "hashlib", "heapq", "itertools", "json",
-    "math", "operator", "re", "statistics", "struct", "types", "typing", "zlib",
+    "dataclasses", "difflib", "enum", "fractions", "functools", "hashlib", "heapq", "itertools",
+    "json", "math", "operator", "re", "statistics", "struct", "types", "typing", "zlib",
 }  # fmt: skip
 """The pure part of the standard library; numpy and the core itself come on top."""
 
