@@ -13,11 +13,11 @@ import selectors
 import socket
 import stat
 import threading
-import time
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
 
+from monitor.clock import SystemClock
 from monitor.core.errors import ConfigError, DeviceError, FieldsillError
 
 MAX_REQUEST_BYTES = 64 * 1024
@@ -38,7 +38,7 @@ def ask(path: Path, request: Mapping[str, object], timeout_s: float = 2.0) -> di
     DeviceError where no whole reply comes within timeout_s.
     """
     _refuse_long(path)
-    until = time.monotonic() + timeout_s
+    until = _now_s() + timeout_s
     try:
         with socket.socket(socket.AF_UNIX, socket.SOCK_STREAM) as connection:
             connection.settimeout(timeout_s)
@@ -114,7 +114,7 @@ class Server:
                     self._accept()
                 else:
                     self._serve(self._peers[key.fd], events)
-            for peer in [p for p in self._peers.values() if p.until <= time.monotonic()]:
+            for peer in [p for p in self._peers.values() if p.until <= _now_s()]:
                 self._drop(peer)
         for peer in list(self._peers.values()):
             self._drop(peer)
@@ -125,7 +125,7 @@ class Server:
     def _patience_s(self) -> float | None:
         if not self._peers:
             return None
-        return max(0.0, min(peer.until for peer in self._peers.values()) - time.monotonic())
+        return max(0.0, min(peer.until for peer in self._peers.values()) - _now_s())
 
     def _accept(self) -> None:
         try:
@@ -136,7 +136,7 @@ class Server:
             connection.close()
             return
         connection.setblocking(False)
-        self._peers[connection.fileno()] = _Peer(connection, time.monotonic() + PATIENCE_S)
+        self._peers[connection.fileno()] = _Peer(connection, _now_s() + PATIENCE_S)
         self._selector.register(connection, selectors.EVENT_READ)
 
     def _serve(self, peer: _Peer, events: int) -> None:
@@ -165,7 +165,7 @@ class Server:
             if end > MAX_REQUEST_BYTES:
                 break
             peer.to_send += _line(self._answer(bytes(peer.taken[:end])))
-            peer.until = time.monotonic() + PATIENCE_S
+            peer.until = _now_s() + PATIENCE_S
             del peer.taken[: end + 1]
         if len(peer.taken) > MAX_REQUEST_BYTES:
             peer.taken.clear()
@@ -232,6 +232,10 @@ def _refuse_long(path: Path) -> None:
         )
 
 
+def _now_s() -> float:
+    return SystemClock().boot_ns() / 1e9
+
+
 def _line(document: Mapping[str, object]) -> bytes:
     return json.dumps(plain(document), allow_nan=False, ensure_ascii=False).encode() + b"\n"
 
@@ -244,7 +248,7 @@ def _received(connection: socket.socket, until: float) -> bytes:
     """One line; ValueError where it does not end, is too long, or takes too long."""
     data = bytearray()
     while not data.endswith(b"\n"):
-        left_s = until - time.monotonic()
+        left_s = until - _now_s()
         if left_s <= 0 or len(data) > MAX_REPLY_BYTES:
             raise ValueError("no whole reply")
         connection.settimeout(left_s)

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import time
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from datetime import UTC, datetime, timedelta
@@ -11,6 +10,7 @@ from pathlib import Path
 import click
 
 from monitor.cli.output import print_json
+from monitor.clock import SystemClock
 from monitor.control import ask
 from monitor.core.errors import ConfigError, DeviceError, FieldsillError
 from monitor.core.exposure import Verdict
@@ -72,7 +72,7 @@ def command(folder: Path | None, record: Path | None, site: Path | None, as_json
     """How the monitor is now; with FOLDER, one line for each record in it, worst first."""
     if sum(given is not None for given in (folder, record, site)) > 1:
         raise ConfigError("status: give a folder, or --record, or --site; not several")
-    utc_ns = time.time_ns()
+    utc_ns = SystemClock().utc_ns()
     if folder is None:
         box = standing_of(_chosen(record, site), utc_ns)
         print_json(box.document()) if as_json else click.echo("\n".join(_in_full(box)))

@@ -5,13 +5,14 @@ from __future__ import annotations
 import sqlite3
 from collections.abc import Mapping, Sequence
 from contextlib import closing
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from monitor.record.fetch import columns
 from monitor.record.hours import HOUR_NS
-from monitor.record.types import WINDOW_EVERY_NS, Boot, F, History, I
+from monitor.record.types import WINDOW_EVERY_NS, Boot, History, I
 
 _HOURS_FROM_NS = 2 * HOUR_NS  # bins at least this wide are drawn from the hourly extremes
 _E2 = ("e2_low", "e2_mean", "e2_high", "e2_max")
@@ -38,7 +39,8 @@ _HOUR_RATIOS = (
 )
 _SMALLEST = ("e2_low", "valid_share", "ratio_low")
 
-Table = dict[str, NDArray[np.generic]]
+Column = NDArray[Any]
+Table = dict[str, Column]
 
 
 def history(
@@ -100,15 +102,13 @@ def _of_boot(
     return table
 
 
-def _placed(
-    size: int, place: NDArray[np.intp], column: NDArray[np.generic], empty: float = np.nan
-) -> NDArray[np.generic]:
+def _placed(size: int, place: NDArray[np.intp], column: Column, empty: float = np.nan) -> Column:
     out = np.full(size, empty, column.dtype)
     out[place] = column
     return out
 
 
-def _joined(tables: Sequence[Table], name: str) -> NDArray[np.generic]:
+def _joined(tables: Sequence[Table], name: str) -> Column:
     """One column of all boots; a scope that a boot did not judge is nan there."""
     parts = [table.get(name, np.full(table["utc_ns"].size, np.nan)) for table in tables]
     return np.concatenate(parts) if parts else np.empty(0, np.int64)
@@ -140,18 +140,28 @@ def _gaps(table: Table, span: tuple[int, int]) -> list[tuple[int, int]]:
 
 
 def _as_history(
-    table: Mapping[str, NDArray[np.generic]], averaging_s: int, gaps: list[tuple[int, int]],
+    table: Mapping[str, Column], averaging_s: int, gaps: list[tuple[int, int]],
     bin_ns: int,
 ) -> History:  # fmt: skip
-    nothing = np.empty(0)
-    e: list[F] = [np.sqrt(table.get(name, nothing)) for name in _E2]
+    def column(name: str) -> Column:
+        return table.get(name, np.empty(0))
+
+    e_low, e_mean, e_high, e_max = (np.sqrt(column(name)) for name in _E2)
     numbers = sorted(int(name.split()[1]) for name in table if name.startswith("ratio_low"))
-    ratios = {
-        number: tuple(table[f"ratio_{part} {number}"] for part in ("low", "mean", "high"))
-        for number in numbers
-    }
     return History(
-        averaging_s, table["utc_ns"], *e, table.get("valid_share", nothing),
-        table.get("u_db", nothing), table.get("flags", np.empty(0, np.int64)), ratios, gaps,
-        bin_ns,
-    )  # fmt: skip
+        averaging_s=averaging_s,
+        utc_ns=table["utc_ns"],
+        e_low=e_low,
+        e_mean=e_mean,
+        e_high=e_high,
+        e_max=e_max,
+        valid_share=column("valid_share"),
+        u_db=column("u_db"),
+        flags=table.get("flags", np.empty(0, np.int64)),
+        ratios={
+            n: (column(f"ratio_low {n}"), column(f"ratio_mean {n}"), column(f"ratio_high {n}"))
+            for n in numbers
+        },
+        gaps=gaps,
+        bin_ns=bin_ns,
+    )

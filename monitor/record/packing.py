@@ -66,7 +66,8 @@ def _packed(values: NDArray[np.signedinteger]) -> bytes:
     above = steps - least
     width = (int(above.max()).bit_length() + 7) // 8
     planes = above.astype("<u8").view(np.uint8).reshape(-1, 8)[:, :width]
-    return _COLUMN.pack(int(x[0]), int(least), width) + planes.T.tobytes()
+    body: bytes = planes.T.tobytes()
+    return _COLUMN.pack(int(x[0]), int(least), width) + body
 
 
 def _unpacked(data: bytes, at: int, n: int) -> tuple[U64, int]:

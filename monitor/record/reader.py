@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import math
 import sqlite3
 from collections.abc import Iterator
 from contextlib import closing
@@ -37,6 +38,14 @@ _TABLES: dict[type, tuple[str, str]] = {
     FieldRows: ("fields", "end_ns, averaging_s"),
     ExposureRows: ("exposures", "end_ns, scope"),
 }
+_LATEST_FIELDS = (
+    "SELECT averaging_s, e2_low, e2_mean, e2_high, e2_max, u_db, k, valid_share, observed_share, "
+    "flags FROM fields WHERE derivation = 0 AND boot = ? AND end_ns = ?"
+)
+_LATEST_EXPOSURES = (
+    "SELECT scope, ratio_low, ratio_mean, ratio_high, verdict FROM exposures "
+    "WHERE derivation = 0 AND boot = ? AND end_ns = ?"
+)
 
 
 class Record:
@@ -82,8 +91,10 @@ class Record:
     def scopes(self) -> dict[int, Scope]:
         """Every scope that was ever judged, by the record's number."""
         return {
-            row[0]: Scope(*row[1:6], bool(row[6]), row[7])
-            for row in self._all("SELECT * FROM scopes ORDER BY scope")
+            number: Scope(set_id, edition, population, kind, averaging_s, bool(verified), clause)
+            for number, set_id, edition, population, kind, averaging_s, verified, clause in (
+                self._all("SELECT * FROM scopes ORDER BY scope")
+            )
         }
 
     def document(self, digest: str) -> tuple[str, bytes] | None:
@@ -172,35 +183,32 @@ class Record:
             "AND (?2 IS NULL OR boot_ns + offset_ns < ?2) ORDER BY event DESC LIMIT ?3"
         )
         rows = self._all(query, start_utc_ns, end_utc_ns, limit)
-        return [EventRow(*row[:5], json.loads(row[5])) for row in reversed(rows)]
+        return [
+            EventRow(utc_ns, boot, boot_ns, kind, name, json.loads(body))
+            for utc_ns, boot, boot_ns, kind, name, body in reversed(rows)
+        ]
 
-    def _latest(self, boot: Boot, end_ns: int) -> Latest:
-        fields, exposures, scopes = [], [], self.scopes()
-        rows = self.fields(boot.boot, end_ns, end_ns + 1)
-        for i in range(rows.end_ns.size):
-            e = np.sqrt([rows.e2_low[i], rows.e2_mean[i], rows.e2_high[i], rows.e2_max[i]])
-            more = (rows.u_db, rows.k, rows.valid_share, rows.observed_share)
-            fields.append(LatestField(
-                int(rows.averaging_s[i]), *e.tolist(), *(float(c[i]) for c in more),
-                int(rows.flags[i]),
-            ))  # fmt: skip
-        judged = self.exposures(boot.boot, end_ns, end_ns + 1)
-        for i, number in enumerate(judged.scope.tolist()):
-            ratios = (judged.ratio_low, judged.ratio_mean, judged.ratio_high)
-            exposures.append(LatestExposure(
-                number, scopes[number], *(float(c[i]) for c in ratios), int(judged.verdict[i])
-            ))  # fmt: skip
-        reading = self._last_reading(boot.boot)
-        offset = boot.utc_offset_ns
-        return Latest(
-            boot.boot, boot.kind, end_ns, _utc(offset, end_ns), reading, _utc(offset, reading),
-            tuple(fields), tuple(exposures), int(np.bitwise_or.reduce(rows.flags)),
-        )  # fmt: skip
-
-    def _last_reading(self, boot: int) -> int | None:
+    def last_reading_ns(self, boot: int) -> int | None:
+        """Boot time of the last raw reading; None before the first."""
         query = "SELECT body, end_ns FROM raw WHERE boot = ? AND n > 0 ORDER BY end_ns DESC LIMIT 1"
         rows = self._all(query, boot)
         return int(unpack(*rows[0]).times_ns[-1]) if rows else None
+
+    def _latest(self, boot: Boot, end_ns: int) -> Latest:
+        fields = self._all(_LATEST_FIELDS, boot.boot, end_ns)
+        exposures = self._all(_LATEST_EXPOSURES, boot.boot, end_ns)
+        scopes = self.scopes()
+        reading = self.last_reading_ns(boot.boot)
+        offset = boot.utc_offset_ns
+        flags = 0
+        for row in fields:
+            flags |= row[-1]
+        return Latest(
+            boot.boot, boot.kind, end_ns, _utc(offset, end_ns), reading, _utc(offset, reading),
+            tuple(_latest_field(*row) for row in fields),
+            tuple(_latest_exposure(scopes, *row) for row in exposures),
+            flags,
+        )  # fmt: skip
 
     def _read(self, shape: type[Rows], boot: int, start_ns: int, end_ns: int) -> Rows:
         table, order = _TABLES[shape]
@@ -229,3 +237,26 @@ class Record:
 
 def _utc(offset_ns: int | None, boot_ns: int | None) -> int | None:
     return None if offset_ns is None or boot_ns is None else boot_ns + offset_ns
+
+
+def _number(value: float | None) -> float:
+    return math.nan if value is None else value
+
+
+def _latest_field(
+    averaging_s: int, low: float | None, mean: float | None, high: float | None,
+    largest: float | None, u_db: float | None, k: float | None, valid: float, observed: float,
+    flags: int,
+) -> LatestField:  # fmt: skip
+    e_low, e_mean, e_high, e_max = (math.sqrt(_number(e2)) for e2 in (low, mean, high, largest))
+    return LatestField(
+        averaging_s, e_low, e_mean, e_high, e_max, _number(u_db), _number(k), valid, observed, flags
+    )
+
+
+def _latest_exposure(
+    scopes: dict[int, Scope], number: int, low: float | None, mean: float | None,
+    high: float | None, verdict: int,
+) -> LatestExposure:  # fmt: skip
+    ratios = (_number(low), _number(mean), _number(high))
+    return LatestExposure(number, scopes[number], *ratios, verdict)

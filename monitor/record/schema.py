@@ -32,13 +32,15 @@ def _v1(db: Database) -> None:
             db.execute(statement)
     for name, select in tables.V1_VIEWS.items():
         db.create_view(name, select)
-    db["flag_words"].insert_all({"bit": int(bit), "meaning": word} for bit, word in WORDS.items())
-    db["verdict_words"].insert_all(
+    db.table("flag_words").insert_all(
+        {"bit": int(bit), "meaning": word} for bit, word in WORDS.items()
+    )
+    db.table("verdict_words").insert_all(
         {"verdict": i, "meaning": word} for i, word in enumerate(VERDICT_WORDS)
     )
     body = files("monitor.record").joinpath("FORMAT.md").read_bytes()
     digest = hashlib.sha256(body).hexdigest()
-    db["documents"].insert({"hash": digest, "kind": "format", "body": body})
+    db.table("documents").insert({"hash": digest, "kind": "format", "body": body})
     db.execute("PRAGMA user_version = 1")
 
 
@@ -75,7 +77,7 @@ def create(path: Path, simulated: bool) -> None:
 def _mark(db: Database, simulated: bool) -> None:
     rows = {"simulated": "1" if simulated else "0", "made_by": f"fieldsill {version('fieldsill')}"}
     with db.atomic():
-        db["meta"].insert_all({"key": key, "value": value} for key, value in rows.items())
+        db.table("meta").insert_all({"key": key, "value": value} for key, value in rows.items())
 
 
 def _migrate(path: Path) -> None:
