@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from monitor.core.limits import Scope
+from monitor.core.rows import Event
 
 F = NDArray[np.float64]
 I = NDArray[np.int64]  # noqa: E741
@@ -114,12 +115,17 @@ def follow(side: Side, times_ns: I, code: NDArray[np.int8], rule: AlertRule) -> 
 
 @dataclass(frozen=True, slots=True)
 class Alarm:
-    """An alarm as people meet it; state words after IEC 62682 / ISA-18.2 (names from memory)."""
+    """An alarm as people meet it; state words after IEC 62682 / ISA-18.2 (names from memory).
+
+    level, ratio: as of the last change, None for an alarm that is not about a ratio.
+    """
 
     key: str
     raised: bool = False
     confirmed: bool = True
     since_ns: int = 0
+    level: float | None = None
+    ratio: float | None = None
     muted_until_ns: int | None = None
 
     def state(self, now_ns: int) -> str:
@@ -131,17 +137,24 @@ class Alarm:
         return "normal" if self.confirmed else "returned_unacknowledged"
 
 
-def changed(alarm: Alarm, raised: bool, at_ns: int) -> Alarm:
-    """The alarm after it was raised (to be confirmed anew) or has returned."""
-    confirmed = alarm.confirmed and not raised
-    return Alarm(alarm.key, raised, confirmed, at_ns, alarm.muted_until_ns)
+def after(alarm: Alarm, event: Event) -> Alarm:
+    """The alarm after an event about it: raised or returned, confirmed, muted or no longer."""
+    body = event.body
+    if event.kind == "confirmed":
+        return replace(alarm, confirmed=True)
+    if event.kind == "muted":
+        until = body.get("until_ns")
+        return replace(alarm, muted_until_ns=until if isinstance(until, int) else None)
+    raised = bool(body.get("raised"))
+    return replace(
+        alarm,
+        raised=raised,
+        confirmed=alarm.confirmed and not raised,
+        since_ns=event.boot_ns,
+        level=_figure(body.get("level")),
+        ratio=_figure(body.get("exposure_ratio")),
+    )
 
 
-def confirmed(alarm: Alarm) -> Alarm:
-    """The alarm after a person has confirmed it."""
-    return Alarm(alarm.key, alarm.raised, True, alarm.since_ns, alarm.muted_until_ns)
-
-
-def muted(alarm: Alarm, until_ns: int | None) -> Alarm:
-    """The alarm muted until a time, or no longer muted."""
-    return Alarm(alarm.key, alarm.raised, alarm.confirmed, alarm.since_ns, until_ns)
+def _figure(value: object) -> float | None:
+    return float(value) if isinstance(value, (int, float)) else None

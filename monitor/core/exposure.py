@@ -120,13 +120,20 @@ def reasons(
         said.append("the field region is not declared")
     if not verified:
         said.append("the limit is from memory, not confirmed against the published text")
+    return said + _weak(k * u_db, cap_db, valid_share, flags)
+
+
+def _weak(expanded_db: float, cap_db: float, valid_share: float, flags: int) -> list[str]:
+    """What in the data forbids "conforms"."""
+    said = []
     if not valid_share >= LEAST_VALID_SHARE:
         said.append(
             f"valid for {_percent(valid_share)} of the time; {LEAST_VALID_SHARE:.0%} is needed"
         )
-    if not k * u_db <= cap_db:
+    if not expanded_db <= cap_db:
         said.append(
-            f"the expanded uncertainty of {_number(k * u_db)} dB is above the cap of {cap_db:g} dB"
+            f"the expanded uncertainty of {_number(expanded_db)} dB is above the cap of"
+            f" {cap_db:g} dB"
         )
     if flags & LOWER_BOUND:
         said.append(_because(flags & int(LOWER_BOUND), "the figure is a lower bound"))

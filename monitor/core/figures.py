@@ -119,13 +119,27 @@ def fields(sums: Sums, averaging_s: int, here: Station) -> FieldRows:
     )
 
 
+@dataclass(frozen=True, slots=True)
+class VerdictInputs:
+    """What every verdict on these windows takes, one per window (p,). u_db: standard, in dB."""
+
+    u_db: F
+    share: F
+    flags: I
+
+
+def verdict_inputs(sums: Sums, averaging_s: int, here: Station) -> VerdictInputs:
+    """Uncertainty, valid share and flags. The low figure has left readings below the range out,
+    so they no longer forbid "exceeds"."""
+    bits = window_flags(sums, averaging_s) & ~int(Flag.BELOW_RANGE)
+    mean_w = powers(sums, averaging_s, here).mean
+    return VerdictInputs(u_standard_db(mean_w, here), valid_share(sums, averaging_s), bits)
+
+
 def exposures(sums: Sums, averaging_s: int, here: Station) -> ExposureRows:
     """Ratios and verdicts of every scope that has this averaging time, scope after scope."""
     power = powers(sums, averaging_s, here)
-    u_db = u_standard_db(power.mean, here)
-    share = valid_share(sums, averaging_s)
-    # the low figure has left readings below the range out: they no longer forbid "exceeds"
-    bits = window_flags(sums, averaging_s) & ~int(Flag.BELOW_RANGE)
+    inputs = verdict_inputs(sums, averaging_s, here)
     columns: list[tuple[I, I, F, F, F, I]] = []
     for index, scope in enumerate(here.scopes):
         if round(scope.averaging_s) != averaging_s:
@@ -138,10 +152,10 @@ def exposures(sums: Sums, averaging_s: int, here: Station) -> ExposureRows:
             low,
             mean,
             high,
-            u_db,
+            inputs.u_db,
             here.k,
-            share,
-            bits,
+            inputs.share,
+            inputs.flags,
             verified=scope.verified,
             field_region=here.field_region,
             lowest_hz=here.lowest_hz,

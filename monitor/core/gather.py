@@ -44,6 +44,7 @@ def stack(rows: Sequence[Rows]) -> Rows | None:
     columns: dict[str, Any] = {
         name: np.concatenate([getattr(table, name) for table in kept]) for name in names
     }
-    minor: list[Any] = [columns[name] for name in ("channel", "averaging_s", "scope") if name in columns]
-    order = np.lexsort([*minor, columns[names[0]]])
+    minor = ("channel", "averaging_s", "scope")
+    keys: list[Any] = [columns[name] for name in minor if name in columns]
+    order = np.lexsort([*keys, columns[names[0]]])
     return kind(**{name: column[order] for name, column in columns.items()})

@@ -9,13 +9,14 @@ import numpy as np
 from numpy.typing import NDArray
 
 from monitor.core.alarms import Side
-from monitor.core.blocks import BLOCK_NS, Blocks, accumulate, empty_blocks, join, to_rows
+from monitor.core.blocks import BLOCK_NS, Blocks, Trace, accumulate, empty_blocks, join, to_rows
 from monitor.core.gather import Gathered, nothing
 from monitor.core.hold import Pieces, Segments, complete, cut, no_segments
 from monitor.core.judgement import judge
 from monitor.core.readings import NS_PER_S, Batch
 from monitor.core.silence import Hearing, listen
 from monitor.core.station import Station
+from monitor.core.windows import Sums, at_block_ends, inside_blocks
 
 F = NDArray[np.float64]
 I = NDArray[np.int64]  # noqa: E741
@@ -41,7 +42,7 @@ class State:
 
 def start(here: Station, boot_ns: int) -> State:
     """The state of a boot that begins with empty windows."""
-    block, keep = boot_ns // BLOCK_NS, _history_blocks(here)
+    block, keep = boot_ns // BLOCK_NS, history_blocks(here)
     return State(
         no_segments(here.channels),
         empty_blocks(block, 1, here.channels),
@@ -89,7 +90,8 @@ def convert(counts: NDArray[np.int32], flags: NDArray[np.int32], here: Station) 
     return power, bits | flags[:, None] | here.chain.flags
 
 
-def _history_blocks(here: Station) -> int:
+def history_blocks(here: Station) -> int:
+    """Blocks of the longest averaging time."""
     return max(here.averagings_s) * NS_PER_S // BLOCK_NS
 
 
@@ -137,3 +139,21 @@ def _close(state: State, pieces: Pieces, until: int, here: Station, out: Gathere
         history=closed.part(closed.size - keep, closed.size),
         sides=sides,
     )
+
+
+def live(state: State, averaging_s: int, here: Station) -> Sums:
+    """The window that ends at the front, one point: what the pages show as now."""
+    n, keep = averaging_s * NS_PER_S // BLOCK_NS, state.history.size
+    front = state.front_ns
+    if front <= state.opened.first * BLOCK_NS:
+        return at_block_ends(state.history, keep - 1, n, BLOCK_NS)
+    opened = state.opened
+    point = Trace(
+        np.zeros(1, np.int64),
+        np.array([front], np.int64),
+        opened.energy_w_ns,
+        opened.covered_ns,
+        opened.max_w,
+        opened.flags,
+    )
+    return inside_blocks(join(state.history, opened), point, keep, n, BLOCK_NS)

@@ -5,7 +5,6 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping
 from dataclasses import dataclass
-from pathlib import PurePath
 
 from monitor.core.errors import ConfigError
 from monitor.core.spectrum import datatype_of
@@ -47,7 +46,7 @@ def format_from_sigmf(document: object, where: str) -> IqFormat:
 
 def datatype_by_extension(name: str) -> str | None:
     """The datatype that a file's extension names, such as capture.cu8; None where it names none."""
-    suffix = PurePath(name).suffix.lower().removeprefix(".")
+    suffix = name.rpartition(".")[2].lower()
     return suffix if suffix in ("cu8", "cs8", "cs16", "cf32") else None
 
 

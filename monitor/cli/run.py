@@ -1,0 +1,32 @@
+"""fieldsill run: the daemon and the pages, each started again if it ends."""
+
+from __future__ import annotations
+
+import signal
+import threading
+from pathlib import Path
+
+import click
+
+from monitor import supervise
+from monitor.config import default_site_path, load_site
+
+
+@click.command("run")
+@click.option("--site", "site_file", type=click.Path(path_type=Path), help="Site file.")
+@click.option("--exit", "exit_at_end", is_flag=True, help="End when a recorded series has ended.")
+def command(site_file: Path | None, exit_at_end: bool) -> int:
+    """Run both halves of the monitor: the daemon that measures and the pages that show."""
+    site = load_site(default_site_path(site_file))
+    stop = threading.Event()
+    signal.signal(signal.SIGTERM, lambda *_: stop.set())
+    signal.signal(signal.SIGINT, lambda *_: stop.set())
+    measure = ["monitor", "measure", "--site", str(site.path)] + ["--exit"] * exit_at_end
+    children = [
+        supervise.Child("measure", measure),
+        supervise.Child("serve", ["monitor", "serve", "--site", str(site.path)]),
+    ]
+    try:
+        return supervise.watch(children, stop)
+    finally:
+        supervise.end(children)

@@ -1,0 +1,88 @@
+"""What waits to be committed: readings and rows since the last commit, in memory."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+import numpy as np
+
+from monitor.core.gather import Gathered, nothing, stack
+from monitor.core.readings import Batch
+from monitor.core.rows import Event
+from monitor.record.types import ClockFix, Commit
+
+MOST_READINGS = 2_000_000
+"""About two days of ten readings a second; beyond it the oldest readings are given up."""
+
+
+class Spool:
+    """Gathers the output of steps until a commit takes it."""
+
+    def __init__(self) -> None:
+        self.clear()
+
+    def add(self, batch: Batch, rows: Gathered) -> None:
+        """A batch as it was judged, and what came of it."""
+        if batch.n:
+            self._raw.append(batch)
+            self._readings += batch.n
+        self._rows.extend(rows)
+
+    def event(self, event: Event) -> None:
+        """An event of the daemon's own."""
+        self._rows.events.append(event)
+
+    def fix(self, fix: ClockFix) -> None:
+        """A clock fix."""
+        self._fixes.append(fix)
+
+    @property
+    def empty(self) -> bool:
+        """Whether there is nothing to write."""
+        return not (self._raw or self._rows.blocks or self._rows.events or self._fixes)
+
+    def commit(self, temperature_c: float | None, calibration: str) -> Commit:
+        """All that is here as one commit; it stays here until clear()."""
+        rows = self._rows
+        events = sorted(rows.events, key=lambda event: event.boot_ns)
+        return Commit(
+            _joined(self._raw),
+            stack(rows.blocks),
+            stack(rows.windows),
+            stack(rows.fields),
+            stack(rows.exposures),
+            tuple(events),
+            tuple(self._fixes),
+            temperature_c,
+            calibration,
+        )
+
+    def clear(self) -> None:
+        """Forget what has been handed over."""
+        self._raw: list[Batch] = []
+        self._rows = nothing()
+        self._fixes: list[ClockFix] = []
+        self._readings = 0
+
+    def give_up(self, boot_ns: int) -> None:
+        """While the record takes nothing: keep memory bounded, and say what was lost."""
+        if self._readings <= MOST_READINGS:
+            return
+        lost = 0
+        while self._raw and self._readings > MOST_READINGS // 2:
+            gone = self._raw.pop(0)
+            self._readings -= gone.n
+            lost += gone.n
+        body: dict[str, object] = {"readings": lost, "why": "the record could not be written"}
+        self.event(Event(boot_ns, "fault", "raw readings lost", body))
+
+
+def _joined(batches: Sequence[Batch]) -> Batch | None:
+    if not batches:
+        return None
+    return Batch(
+        np.concatenate([batch.times_ns for batch in batches]),
+        np.concatenate([batch.counts for batch in batches]),
+        np.concatenate([batch.flags for batch in batches]),
+        batches[-1].now_ns,
+    )

@@ -1,0 +1,85 @@
+"""Child processes of run and rehearse: start them, start them again, end them together."""
+
+from __future__ import annotations
+
+import subprocess
+import sys
+import threading
+import time
+from collections.abc import Sequence
+from dataclasses import dataclass, field
+
+FIRST_WAIT_S = 1.0
+LONGEST_WAIT_S = 60.0
+GRACE_S = 15.0
+
+
+@dataclass
+class Child:
+    """One process of ours. lasting: to be started again when it ends of itself."""
+
+    name: str
+    arguments: Sequence[str]
+    lasting: bool = True
+    process: subprocess.Popen[bytes] | None = None
+    wait_s: float = FIRST_WAIT_S
+    started_s: float = 0.0
+    again_s: float = field(default=0.0)
+
+    def start(self, now_s: float) -> None:
+        """Start the process; its output goes where ours goes."""
+        self.process = subprocess.Popen([sys.executable, "-P", "-m", *self.arguments])
+        self.started_s = now_s
+
+    def code(self) -> int | None:
+        """Exit code; None while it runs."""
+        return None if self.process is None else self.process.poll()
+
+
+def look(child: Child, now_s: float) -> int | None:
+    """Start a child that has ended once more, later each time; its code where it may not be.
+
+    A wrong site file (2) or a missing device at the start (3) is final: trying again would hide it.
+    """
+    code = child.code()
+    if child.process is not None and code is None:
+        if now_s - child.started_s > LONGEST_WAIT_S:
+            child.wait_s = FIRST_WAIT_S
+        return None
+    if child.process is None:
+        if now_s >= child.again_s:
+            child.start(now_s)
+        return None
+    if not child.lasting or code in (0, 2, 3):
+        return code
+    print(
+        f"fieldsill: {child.name} ended with {code}; again in {child.wait_s:g} s", file=sys.stderr
+    )
+    child.process, child.again_s = None, now_s + child.wait_s
+    child.wait_s = min(2 * child.wait_s, LONGEST_WAIT_S)
+    return None
+
+
+def watch(children: Sequence[Child], stop: threading.Event, every_s: float = 0.2) -> int:
+    """Keep the children running until stop is set or one may not be started again."""
+    while not stop.is_set():
+        for child in children:
+            code = look(child, time.monotonic())
+            if code is not None:
+                return code
+        stop.wait(every_s)
+    return 0
+
+
+def end(children: Sequence[Child]) -> None:
+    """Ask the children to end, in order; kill what does not within the grace time."""
+    for child in children:
+        if child.process is not None and child.process.poll() is None:
+            child.process.terminate()
+    for child in children:
+        if child.process is not None:
+            try:
+                child.process.wait(GRACE_S)
+            except subprocess.TimeoutExpired:
+                child.process.kill()
+                child.process.wait()
