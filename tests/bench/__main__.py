@@ -36,7 +36,7 @@ def row(figure: Figure) -> tuple[str, str, str, str]:
     if figure.reference is not None:
         beside = f"{figure.reference:.4g} {figure.unit} {figure.reference_name}".rstrip()
     ratio = "-" if figure.ratio is None else f"{figure.ratio:.2f}"
-    return figure.what, f"{figure.value:.4g} {figure.unit}", beside, ratio
+    return figure.what, f"{figure.value:.4g} {figure.unit}".rstrip(), beside, ratio
 
 
 def run(benches: dict[str, Bench], words: list[str]) -> Iterator[str]:
