@@ -44,31 +44,7 @@ def _parser() -> argparse.ArgumentParser:
     )
     commands = parser.add_subparsers(dest="command", required=True)
     commands.add_parser("scenes", help="names of the scenes that are shipped")
-    board = commands.add_parser("board", help="a detector board on a pseudo-terminal")
-    board.add_argument("--scenario", default="busy-day", metavar="NAME|FILE.toml")
-    board.add_argument("--seed", type=int, default=1)
-    board.add_argument("--link", type=Path, required=True, help="link to the device")
-    board.add_argument("--rate", type=float, default=1.0, metavar="HZ", help="readings a second")
-    board.add_argument("--channels", type=int, default=3, choices=(1, 2, 3))
-    board.add_argument("--bits", type=int, default=12, help="of the converter; 12: as calibrated")
-    board.add_argument(
-        "--start-utc", metavar="RFC3339", help="board time 0; default: now - history"
-    )
-    board.add_argument("--history", type=float, default=0.0, metavar="SECONDS")
-    end = board.add_mutually_exclusive_group()
-    end.add_argument("--until-exit", action="store_true", help="until killed (the rule)")
-    end.add_argument("--exit-after-history", action="store_true")
-    board.add_argument("--with-parent", action="store_true", help="end when the starter does")
-    board.add_argument("--truth", type=Path, metavar="FILE.csv")
-    board.add_argument("--control", type=Path, metavar="SOCKET")
-    board.add_argument("--errors", type=int, metavar="SEED", help="draw the instrument's errors")
-    board.add_argument(
-        "--fault",
-        action="append",
-        default=[],
-        metavar="SECONDS:KIND[:AMOUNT]",
-        help=f"at that board time; kinds: {', '.join(KINDS)}",
-    )
+    _board_options(commands.add_parser("board", help="a detector board on a pseudo-terminal"))
     fault = commands.add_parser("fault", help="a fault on command")
     fault.add_argument("--control", type=Path, required=True, metavar="SOCKET")
     fault.add_argument("kind", choices=KINDS)
@@ -76,6 +52,28 @@ def _parser() -> argparse.ArgumentParser:
     amount.add_argument("--count", type=float, metavar="FRAMES")
     amount.add_argument("--seconds", type=float, metavar="S")
     return parser
+
+
+def _board_options(board: argparse.ArgumentParser) -> None:
+    add = board.add_argument
+    add("--scenario", default="busy-day", metavar="NAME|FILE.toml")
+    add("--seed", type=int, default=1)
+    add("--link", type=Path, required=True, help="link to the device")
+    add("--rate", type=float, default=1.0, metavar="HZ", help="readings a second")
+    add("--channels", type=int, default=3, choices=(1, 2, 3))
+    add("--bits", type=int, default=12, help="of the converter; 12 as in its calibration")
+    add("--start-utc", metavar="RFC3339", help="board time 0; by default now less the history")
+    add("--history", type=float, default=0.0, metavar="SECONDS")
+    end = board.add_mutually_exclusive_group()
+    end.add_argument("--until-exit", action="store_true", help="until killed (the rule)")
+    end.add_argument("--exit-after-history", action="store_true")
+    add("--with-parent", action="store_true", help="end when the starter does")
+    add("--truth", type=Path, metavar="FILE.csv")
+    add("--control", type=Path, metavar="SOCKET")
+    add("--errors", type=int, metavar="SEED", help="draw the instrument's errors")
+    kinds = ", ".join(KINDS)
+    at = "SECONDS:KIND[:AMOUNT]"
+    add("--fault", action="append", default=[], metavar=at, help=f"at a board time; {kinds}")
 
 
 def _fault(options: argparse.Namespace) -> int:
@@ -107,15 +105,8 @@ def _board(options: argparse.Namespace) -> int:
             listening = opened.enter_context(closing(control.Control(options.control)))
         line = opened.enter_context(closing(Line(options.link)))
         line.open()
+        _say(event="ready", device=options.link, truth=options.truth, control=options.control)
         board = Board(source, line, listening, faults, options.with_parent)
-        _say(
-            event="ready",
-            device=options.link,
-            truth=options.truth,
-            control=options.control,
-            start_utc=setup.start_utc.isoformat(),
-            scene=setup.scene.name,
-        )
         readings = board.history()
         _say(event="history", readings=readings, took_s=round(time.monotonic() - started_s, 3))
         if not options.exit_after_history:

@@ -174,7 +174,8 @@ class Board:
                 if not self._waits or self._away_until_ms is not None:
                     return
                 self._wait_for_reader()
-                return  # a reader empties its input as it opens: go on with the next frame
+                if len(view) < len(data):
+                    return  # half a frame means nothing to a reader who has just come
             taken = self._line.write(view)
             view = view[taken:]
             if not taken:

@@ -9,6 +9,7 @@ from __future__ import annotations
 import tomllib
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
+from functools import lru_cache
 from pathlib import Path
 
 import numpy as np
@@ -75,6 +76,7 @@ class Board:
         return float(np.sqrt(found.max() * found.min()))
 
 
+@lru_cache(maxsize=4)
 def load(path: Path = CALIBRATION) -> Board:
     """The instrument that a calibration file describes (detector kind "log", no axis tables)."""
     with path.open("rb") as handle:

@@ -55,8 +55,8 @@ class Line:
             return
         if self.link.is_symlink() and os.readlink(self.link) == self._slave_name:
             self.link.unlink()
-        os.close(self._master)
-        self._master = -1
+        master, self._master = self._master, -1  # a signal may come in between
+        os.close(master)
 
     def attached(self) -> bool:
         """Whether somebody has the other end open."""
