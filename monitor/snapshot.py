@@ -14,6 +14,7 @@ from monitor.core.exposure import Verdict, reasons
 from monitor.core.flags import Flag, words
 from monitor.core.pipeline import State, live
 from monitor.core.readings import DeviceStatus
+from monitor.core.rows import ExposureRows
 from monitor.core.station import Station
 
 _EPOCH = datetime(1970, 1, 1, tzinfo=UTC)
@@ -134,7 +135,7 @@ def _exposures(state: State, here: Station) -> list[dict[str, object]]:
 
 
 def _reasons(
-    rows: figures.ExposureRows,
+    rows: ExposureRows,
     i: int,
     inputs: figures.VerdictInputs,
     here: Station,

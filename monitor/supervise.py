@@ -6,12 +6,13 @@ import subprocess
 import sys
 import threading
 import time
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
 
 FIRST_WAIT_S = 1.0
 LONGEST_WAIT_S = 60.0
 GRACE_S = 15.0
+LOOK_EVERY_S = 0.2
 
 
 @dataclass
@@ -36,7 +37,7 @@ class Child:
         return None if self.process is None else self.process.poll()
 
 
-def look(child: Child, now_s: float) -> int | None:
+def look(child: Child, now_s: float, tell: Callable[[str], None]) -> int | None:
     """Start a child that has ended once more, later each time; its code where it may not be.
 
     A wrong site file (2) or a missing device at the start (3) is final: trying again would hide it.
@@ -52,22 +53,23 @@ def look(child: Child, now_s: float) -> int | None:
         return None
     if not child.lasting or code in (0, 2, 3):
         return code
-    print(
-        f"fieldsill: {child.name} ended with {code}; again in {child.wait_s:g} s", file=sys.stderr
-    )
+    tell(f"fieldsill: {child.name} ended with {code}; again in {child.wait_s:g} s")
     child.process, child.again_s = None, now_s + child.wait_s
     child.wait_s = min(2 * child.wait_s, LONGEST_WAIT_S)
     return None
 
 
-def watch(children: Sequence[Child], stop: threading.Event, every_s: float = 0.2) -> int:
-    """Keep the children running until stop is set or one may not be started again."""
+def watch(children: Sequence[Child], stop: threading.Event, tell: Callable[[str], None]) -> int:
+    """Keep the children running until stop is set or one may not be started again.
+
+    tell: says in one line what ended and when it starts again. Returns the exit code to end with.
+    """
     while not stop.is_set():
         for child in children:
-            code = look(child, time.monotonic())
+            code = look(child, time.monotonic(), tell)
             if code is not None:
                 return code
-        stop.wait(every_s)
+        stop.wait(LOOK_EVERY_S)
     return 0
 
 

@@ -34,9 +34,7 @@ def command(
     """Run daemon and pages over a simulated detector board in an invented place."""
     started = datetime.now(UTC).replace(microsecond=0)
     plan = rehearsal.Rehearsal(
-        (
-            folder or _state_folder() / f"rehearsal-{started:%Y%m%dT%H%M%SZ}-{os.getpid()}"
-        ).absolute(),
+        (folder or _new_folder(started)).absolute(),
         scenario,
         seed,
         span_s(history),
@@ -59,9 +57,9 @@ def span_s(text: str) -> float:
     return float(match.group(1)) * _SECONDS[match.group(2)]
 
 
-def _state_folder() -> Path:
+def _new_folder(started: datetime) -> Path:
     base = os.environ.get("XDG_STATE_HOME") or str(Path.home() / ".local" / "state")
-    return Path(base) / "fieldsill"
+    return Path(base) / "fieldsill" / f"rehearsal-{started:%Y%m%dT%H%M%SZ}-{os.getpid()}"
 
 
 def _run(plan: rehearsal.Rehearsal, stop: threading.Event, exit_at_end: bool) -> int:
@@ -92,7 +90,7 @@ def _run(plan: rehearsal.Rehearsal, stop: threading.Event, exit_at_end: bool) ->
                 click.echo(f"Pages: http://127.0.0.1:{plan.port}/   Stop with Ctrl-C.")
         if exit_at_end:
             return measure.code() or 0
-        return supervise.watch(children, stop)
+        return supervise.watch(children, stop, lambda line: click.echo(line, err=True))
     finally:
         supervise.end(children)
         board.terminate()

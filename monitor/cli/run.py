@@ -27,6 +27,6 @@ def command(site_file: Path | None, exit_at_end: bool) -> int:
         supervise.Child("serve", ["monitor", "serve", "--site", str(site.path)]),
     ]
     try:
-        return supervise.watch(children, stop)
+        return supervise.watch(children, stop, lambda line: click.echo(line, err=True))
     finally:
         supervise.end(children)
