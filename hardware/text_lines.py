@@ -97,7 +97,7 @@ class TextLines:
         self._boot_ns = boot_ns
         self._bits = int(Flag.SIMULATED) if simulated else 0
         self._port = Port(settings.device, settings.baud, boot_ns)
-        keys = ("readings", "partial", "comments", "malformed", "too_long", "missing")
+        keys = ("lines", "readings", "partial", "comments", "malformed", "too_long", "missing")
         self._counters = dict.fromkeys(keys, 0)
         self._generation = 0
         self._rest = b""
@@ -142,6 +142,7 @@ class TextLines:
     def _lines(self, data: bytes) -> list[bytes]:
         lines = (self._rest + data).split(b"\n")
         self._rest = lines.pop()
+        self._counters["lines"] += len(lines)
         if lines and self._skip_line:
             self._counters["partial"] += bool(lines[0].strip())
             del lines[0]

@@ -11,6 +11,7 @@ import numpy as np
 import pytest
 
 from hardware import open_front_end, settings_for
+from hardware.frames import crc
 from monitor.core.errors import ConfigError, DeviceError
 from monitor.core.flags import Flag
 from monitor.core.readings import MISSING
@@ -234,14 +235,15 @@ def test_close_ends_a_read_that_waits(bench):
     assert front_end.read(0.0).n == 0
 
 
-def test_board_clock_a_day_of_frames_at_speed(bench, line):
+def test_board_clock_a_day_of_frames_at_speed(bench):
     """Every frame is taken, times are the ticks; at least 60 000 frames in a second of CPU."""
     front_end = board(
         bench.path, simulated=True, clock="board", clock_start="2026-03-01T00:00:00+01:00"
     )
     greet(bench, front_end, "FSB rehearsal-board 0.1 3 1000 12 simulated")
     n = 86_400
-    day = b"".join(line(f"FS1 {i % 65536} {1000 * i} 3 {i % 4096},7,8 253 5012") for i in range(n))
+    bodies = (f"FS1 {i % 65536} {1000 * i} 3 {i % 4096},7,8 253 5012" for i in range(n))
+    day = b"".join(b"<%s*%04X>\n" % (b.encode(), crc(b.encode())) for b in bodies)
 
     def feed():
         left = memoryview(day)
