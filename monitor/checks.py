@@ -13,7 +13,6 @@ import numpy as np
 from monitor import limitsets
 from monitor.calfile import load_chain
 from monitor.config import Site
-from monitor.core.alarms import watches
 from monitor.core.calibration import Chain, CountTable
 from monitor.core.errors import ConfigError, LimitError
 from monitor.core.exposure import CAP_DB, E_ALONE_FROM_HZ, scope_coefficients
@@ -54,24 +53,22 @@ class FindingLike(Protocol):
 def findings(
     site: Site, now_utc_ns: int, front_end: Callable[[Site], Iterable[FindingLike]]
 ) -> Iterator[FindingLike]:
-    """What fits and what does not, in the order of the site file.
+    """What fits and what does not. front_end: the check of sensor, limits and alerts.
 
-    front_end: the check of the sensor's own settings. Raises what makes the site unable to run:
+    Raises what makes the site unable to run:
     ConfigError, CalibrationError, LimitError (2) or DeviceError (3), one line each.
     """
     chain = load_chain(site.calibration, site.channels, site.bands)
+    tops = [(scope, _top(site, chain, scope)) for scope in _scopes(site)]
     yield from _site(site)
-    yield from front_end(site)
     yield from _calibration(chain, now_utc_ns)
     yield from _channels(site, chain)
-    judged = [scope for set_id in site.limit_sets for scope in _scopes(site, set_id)]
-    for scope in judged:
-        yield _limit(site, chain, scope)
-    for rule in site.alerts:
-        n = len(watches([rule], judged))
-        level = f"raised at an exposure ratio of {rule.ratio:g}, in {n} scopes"
-        text = level if n else "matches no scope that is judged; it will never be raised"
-        yield Finding("alert", f"{rule.name}: {text}", n > 0)
+    yield from front_end(site)
+    for scope, top in tops:
+        if top < 1.0:
+            name = f"{scope.set_id}, {scope.population}, {scope.scope}"
+            text = f"{name}: the detector's range ends at {top:.2g} times the limit"
+            yield Finding("range", text, ok=False)
 
 
 def _site(site: Site) -> Iterator[Finding]:
@@ -144,33 +141,30 @@ def _range_w(table: CountTable) -> tuple[float, float]:
     return float(good.min()), float(good.max())
 
 
-def _scopes(site: Site, set_id: str) -> tuple[Scope, ...]:
-    """The scopes of a set in the site's bands; LimitError where there is none."""
+def _scopes(site: Site) -> list[Scope]:
+    """The scopes of every set in the site's bands; LimitError for a set that has none there."""
     low_hz = min(band.low_hz for band in site.bands.values())
     high_hz = max(band.high_hz for band in site.bands.values())
-    found = scopes(limitsets.load(set_id), low_hz, high_hz)
-    if not found:
-        raise LimitError(
-            f"{site.path.name}: limits.sets: {set_id} has no limit for a field strength at "
-            f"{frequency_text(low_hz)} to {frequency_text(high_hz)}; take it out or change the band"
-        )
+    found: list[Scope] = []
+    for set_id in site.limit_sets:
+        here = scopes(limitsets.load(set_id), low_hz, high_hz)
+        if not here:
+            raise LimitError(
+                f"{site.path.name}: limits.sets: {set_id} has no limit for a field strength at "
+                f"{frequency_text(low_hz)} to {frequency_text(high_hz)}; take it out"
+            )
+        found += here
     return found
 
 
-def _limit(site: Site, chain: Chain, scope: Scope) -> Finding:
-    """What a scope can be judged by; LimitError where its table does not hold a whole band."""
+def _top(site: Site, chain: Chain, scope: Scope) -> float:
+    """Exposure ratio at the top of the poorest channel's range; LimitError outside the table."""
     limit_set = limitsets.load(scope.set_id)
     tops = []
     for table, frequencies_hz, k in zip(chain.tables, chain.frequencies_hz, chain.k):
         try:
             per_e2 = ratio_per_e2(limit_set, scope, frequencies_hz)
         except LimitError as error:
-            raise LimitError(f"{site.path.name}: limits.sets: {error}") from None
+            raise LimitError(f"{site.path.name}: limits.sets: {error}; take it out") from None
         tops.append(_range_w(table)[1] * scope_coefficients(k, per_e2))
-    text = f"{scope.set_id}: {scope.population}, {scope.scope}, {scope.averaging_s:g} s"
-    notes = []
-    if not scope.verified:
-        notes.append("from memory: will not conform until confirmed")
-    if min(tops) < 1.0:
-        notes.append(f"the range ends at {min(tops):.2g} times the limit")
-    return Finding("limits", "; ".join([text, *notes]), not notes)
+    return min(tops)

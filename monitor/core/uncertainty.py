@@ -73,8 +73,12 @@ def standard_db(contributions: Budget, shares: Real) -> Real:
     by share; independent ones add in squares. nan where a share is nan.
     """
     variance = np.zeros(shares.shape[0])
-    for _, weights in _errors(contributions):
-        variance += (shares @ weights) ** 2
+    for _, u_db in _errors(contributions):
+        # Channel by channel, not as a matrix product: equal to the bit for any division in time.
+        effect = np.zeros(shares.shape[0])
+        for channel in np.flatnonzero(u_db):
+            effect += shares[:, channel] * u_db[channel]
+        variance += effect * effect
     return np.sqrt(variance)
 
 
