@@ -25,10 +25,14 @@ def available() -> list[str]:
 @cache
 def load(set_id: str) -> LimitSet:
     """The limit set of that id; LimitError names the known ones, or what is wrong in its file."""
+    return parse(document(set_id), set_id)
+
+
+def document(set_id: str) -> bytes:
+    """The file of a limit set, as it is kept in the record; LimitError names the known ones."""
     if set_id not in available():
         raise LimitError(f"limit set {set_id!r} is not known; known: {', '.join(available())}")
-    body = (resources.files("monitor") / "data" / "limits" / f"{set_id}.toml").read_bytes()
-    return parse(body, set_id)
+    return (resources.files("monitor") / "data" / "limits" / f"{set_id}.toml").read_bytes()
 
 
 def parse(body: bytes, set_id: str) -> LimitSet:
@@ -94,7 +98,7 @@ def _rows(table: Table) -> list[LimitRow]:
 
 
 def _row(row: Table, shared: dict[str, object]) -> LimitRow:
-    low, high = frequency_hz(row.text("low")), frequency_hz(row.text("high"))
+    low, high = _frequency(row, "low"), _frequency(row, "high")
     if not low <= high:
         raise row.error("low", "must not be above high")
     quantity = row.text("quantity", choices=tuple(UNITS))
@@ -114,6 +118,14 @@ def _row(row: Table, shared: dict[str, object]) -> LimitRow:
     )
     row.finish()
     return made
+
+
+def _frequency(row: Table, key: str) -> float:
+    text = row.text(key)
+    try:
+        return frequency_hz(text)
+    except ConfigError as error:
+        raise row.error(key, str(error)) from error
 
 
 def _averaging(table: Table) -> float | None:

@@ -79,6 +79,7 @@ def verdicts(
         & (share >= LEAST_VALID_SHARE)
         & ((bits & int(LOWER_BOUND | OUTSIDE_BUDGET)) == 0)
         & np.isfinite(np.asarray(ratio_mean, np.float64))
+        & ~np.isnan(low_db)
     )
     if not verified or field_region not in ("far", "radiating_near"):
         conforms = np.zeros_like(conforms)

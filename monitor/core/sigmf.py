@@ -46,8 +46,8 @@ def format_from_sigmf(document: object, where: str) -> IqFormat:
 
 def datatype_by_extension(name: str) -> str | None:
     """The datatype that a file's extension names, such as capture.cu8; None where it names none."""
-    suffix = name.rpartition(".")[2].lower()
-    return suffix if suffix in ("cu8", "cs8", "cs16", "cf32") else None
+    _, dot, suffix = name.lower().rpartition(".")
+    return suffix if dot and suffix in ("cu8", "cs8", "cs16", "cf32") else None
 
 
 def _mapping(value: object, where: str) -> Mapping[str, object]:
