@@ -35,9 +35,9 @@ class Curve:
         if self.dbm.size < 2 or self.dbm.size != self.volts.size:
             raise CalibrationError("needs at least two points [dBm, volts]")
         for values, word in ((self.dbm, "dBm"), (self.volts, "volts")):
-            steps = np.diff(values)
-            if not (np.all(steps > 0) or np.all(steps < 0)):
-                wrong = int(np.flatnonzero(steps * steps[0] <= 0)[0]) if steps[0] else 0
+            steps = np.diff(values) * np.sign(values[-1] - values[0])
+            if not np.all(steps > 0):
+                wrong = int(np.flatnonzero(steps <= 0)[0])
                 raise CalibrationError(
                     f"not monotonic: {word} {values[wrong]:g} then {values[wrong + 1]:g} at points "
                     f"{wrong + 1} and {wrong + 2}; a voltage must belong to one power"
