@@ -21,22 +21,26 @@ python_found() {
     return 1
 }
 
+lack() {
+    missing="${missing:+$missing }$*"
+}
+
 # Leaves in $missing the Debian packages that the part named $1 still lacks.
 look() {
     missing=""
     if python_found; then
         "$python" -c 'import sys; sys.exit(sys.maxsize < 2**32)' ||
             stop "needs a 64-bit system; this Python is a 32-bit one"
-        "$python" -c 'import ensurepip, venv' 2>/dev/null || missing="python3-venv"
+        "$python" -c 'import ensurepip, venv' 2>/dev/null || lack python3-venv
     elif command -v python3 >/dev/null; then
         stop "needs Python 3.11 or newer (Debian 12 or later); this is $(python3 --version)"
     else
-        missing="python3 python3-venv"
+        lack python3 python3-venv
     fi
     [ "$1" = run ] && return
-    command -v make >/dev/null || missing="$missing make"
+    command -v make >/dev/null || lack make
     command -v chromium >/dev/null || command -v chromium-browser >/dev/null ||
-        missing="$missing chromium"
+        lack chromium
 }
 
 install_packages() {
