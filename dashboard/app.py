@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import hmac
 import secrets
-import time
 from collections.abc import Sequence
 from pathlib import Path
 
@@ -12,9 +11,12 @@ from flask import Flask, Response, abort, current_app, make_response, render_tem
 from werkzeug.exceptions import HTTPException
 
 from dashboard import views, words
-from dashboard.models import Ask, Doors, Station
+from dashboard.models import Doors, Station
+from monitor import control
+from monitor.clock import SystemClock
 from monitor.core.alarms import AlertRule
 from monitor.core.errors import FieldsillError
+from monitor.record.reader import Record
 
 POLICY = (
     "default-src 'none'; style-src 'self'; script-src 'self'; connect-src 'self'; img-src 'self'; "
@@ -73,14 +75,7 @@ def create_app(
 
 def real_doors() -> Doors:
     """The daemon's control socket, the record's reader and the clock of this machine."""
-    from monitor import control
-    from monitor.record.reader import Record
-
-    def ask(path: Path, what: object, timeout_s: float) -> object:
-        return control.ask(path, what, timeout_s)
-
-    asker: Ask = ask  # type: ignore[assignment]
-    return Doors(asker, Record.open, time.time_ns)
+    return Doors(control.ask, Record.open, SystemClock().utc_ns)
 
 
 def _refuse_foreign_hosts() -> None:

@@ -15,12 +15,11 @@ from numpy.typing import NDArray
 
 from dashboard import ticks
 from dashboard.span import Span
+from monitor.core.alarms import ENOUGH_SHARE
 
 F = NDArray[np.float64]
 I = NDArray[np.int64]  # noqa: E741
 
-ENOUGH_SHARE = 0.75
-"""Below this valid share no average conforms (the rule of the verdicts)."""
 MAX_DECADES = 6
 SPREAD_NS = 3 * 60_000_000_000
 """Two averages further apart than this have no line between them, unless reduced to bins."""
@@ -84,6 +83,7 @@ class Chart:
     y_ticks: list[tuple[float, str]]
     marks: list[tuple[float, float, Mark]]
     outside: list[Mark]
+    now_x: float | None
 
 
 @dataclass(frozen=True, slots=True)
@@ -126,18 +126,23 @@ def scale_for(frame: Frame, series: Series, marks: Sequence[Mark], logarithmic: 
     top = float(found.max()) if found.size else 0.0
     if not logarithmic:
         near = [v for v in values if v <= 2.5 * top or not found.size]
-        return Scale(frame, 0.0, max([top, *near], default=1.0) * 1.08 or 1.0, False)
-    high = max([top, *values], default=1.0) * 1.25
+        return Scale(frame, 0.0, (max([top, *near]) or 1.0) * 1.08, False)
+    high = (max([top, *values]) or 1.0) * 1.25
     means = series.mean[np.isfinite(series.mean) & (series.mean > 0)]
-    bottom = float(means.min()) if means.size else high / 100
-    low = max(min([bottom, *values], default=bottom) / 1.6, high / 10**MAX_DECADES)
-    return Scale(frame, low, high, True)
+    bottom = min([*values, float(means.min()) if means.size else high / 100])
+    return Scale(frame, max(bottom / 1.6, high / 10**MAX_DECADES), high, True)
 
 
 def draw(
-    series: Series, span: Span, marks: Sequence[Mark], frame: Frame, *, logarithmic: bool
+    series: Series,
+    span: Span,
+    marks: Sequence[Mark],
+    frame: Frame,
+    *,
+    logarithmic: bool,
+    now_ns: int,
 ) -> Chart:
-    """The drawing of a series over a span."""
+    """The drawing of a series over a span; a span that is not over yet shows where now is."""
     scale = scale_for(frame, series, marks, logarithmic)
     x = _x(series.utc_ns, span, frame)
     full = np.isfinite(series.mean)
@@ -156,6 +161,9 @@ def draw(
         y_ticks=scale.marks(),
         marks=_place(inside, scale),
         outside=[m for m in marks if m.value > scale.high],
+        now_x=float(_x(np.array([now_ns]), span, frame)[0].round(1))
+        if span.start_ns < now_ns < span.end_ns
+        else None,
     )
 
 

@@ -12,15 +12,16 @@ from typing import Any
 import numpy as np
 
 from dashboard import chart, past, span, words
-from dashboard.models import Doors, RecordLike, Station, levels_for, levels_of
+from dashboard.models import OWN_POPULATION, Doors, RecordLike, Station, levels_for, levels_of
 from dashboard.span import Span
 from monitor.core import flags
 from monitor.core.errors import ConfigError, RecordError
+from monitor.core.limits import Scope
 from monitor.record.types import EventRow, History
 
 AVERAGES = (360, 1800)
 WIDE = chart.Frame(1080, 400)
-NARROW = chart.Frame(358, 320, left=46, right=8)
+NARROW = chart.Frame(358, 320, left=52, right=8)
 AT_MOST = 720
 MAX_API_POINTS = 20_000
 MAX_EVENTS = 40
@@ -84,6 +85,13 @@ def opened(station: Station, doors: Doors) -> Iterator[RecordLike]:
         record.close()
 
 
+def _now_ns(record: RecordLike, doors: Doors) -> int:
+    """The present, or the newest average where a record's own clock is ahead of this machine."""
+    latest = record.latest()
+    newest = None if latest is None else latest.utc_ns
+    return max(doors.utc_ns(), newest or 0)
+
+
 def _fallback_day(record: RecordLike, now_ns: int) -> date:
     latest = record.latest()
     known = latest.utc_ns if latest is not None else None
@@ -92,17 +100,18 @@ def _fallback_day(record: RecordLike, now_ns: int) -> date:
 
 def page(station: Station, doors: Doors, args: Mapping[str, str]) -> dict[str, Any]:
     """Everything that the history page shows."""
-    now_ns = doors.utc_ns()
     with opened(station, doors) as record:
+        now_ns = _now_ns(record, doors)
         wish = read_wish(args, _fallback_day(record, now_ns))
         scopes = dict(record.scopes())
         found = record.history(wish.span.start_ns, wish.span.end_ns, wish.averaging_s, AT_MOST)
         events = record.events(wish.span.start_ns, wish.span.end_ns, MAX_EVENTS)
         simulated = record.simulated
-    scope = _scope(wish, scopes)
-    series = past.series_of(found, scope if wish.show == "ratio" else None)
+    scope = _scope(wish, scopes, OWN_POPULATION.get(station.occupancy))
+    series = past.series_of(found, scope if wish.show == "ratio" else None, now_ns)
     marks = _marks(wish, found, scopes, scope, station)
     summary = past.summary(series, wish.span, now_ns)
+    drawing = {"logarithmic": wish.logarithmic, "now_ns": now_ns}
     return {
         "simulated": simulated,
         "name": station.name,
@@ -113,7 +122,7 @@ def page(station: Station, doors: Doors, args: Mapping[str, str]) -> dict[str, A
         "scope_title": _title(scopes[scope]) if scope is not None else "",
         "scope_links": _scope_links(wish, scopes, scope),
         "charts": [
-            (css, chart.draw(series, wish.span, marks, frame, logarithmic=wish.logarithmic))
+            (css, chart.draw(series, wish.span, marks, frame, **drawing))
             for css, frame in (("wide", WIDE), ("narrow", NARROW))
         ],
         "bin_words": words.duration(found.bin_ns / 1e9) if found.bin_ns else "",
@@ -129,20 +138,21 @@ def page(station: Station, doors: Doors, args: Mapping[str, str]) -> dict[str, A
     }
 
 
-def _title(scope: Any) -> str:
+def _title(scope: Scope) -> str:
     return words.scope_title(scope.set_id, scope.population, scope.scope, scope.averaging_s)
 
 
-def _scope(wish: Wish, scopes: Mapping[int, Any]) -> int | None:
-    """The limit whose ledge is drawn: the wished one if it has this averaging time."""
+def _scope(wish: Wish, scopes: Mapping[int, Scope], own: str | None) -> int | None:
+    """The limit whose ledge is drawn: the wished one if it has this averaging time, else one
+    of the population of the place."""
     fitting = [i for i, s in scopes.items() if int(s.averaging_s) == wish.averaging_s]
     if wish.scope in fitting:
         return wish.scope
-    return fitting[0] if fitting else None
+    return min(fitting, key=lambda i: (scopes[i].population != own, i), default=None)
 
 
 def _scope_links(
-    wish: Wish, scopes: Mapping[int, Any], scope: int | None
+    wish: Wish, scopes: Mapping[int, Scope], scope: int | None
 ) -> list[tuple[str, str, bool]]:
     return [
         (_title(s), wish.span.link("/history", **wish.keys(scope=i)), i == scope)
@@ -152,7 +162,7 @@ def _scope_links(
 
 
 def _marks(
-    wish: Wish, found: History, scopes: Mapping[int, Any], scope: int | None, station: Station
+    wish: Wish, found: History, scopes: Mapping[int, Scope], scope: int | None, station: Station
 ) -> list[chart.Mark]:
     if scope is None:
         return []

@@ -18,6 +18,8 @@ from monitor.record.types import EventRow, History, Latest
 Snapshot = Mapping[str, Any]
 Ask = Callable[[Path, Mapping[str, object], float], Mapping[str, Any]]
 ASK_TIMEOUT_S = 1.5
+OWN_POPULATION = {"public": "general_public", "controlled": "occupational"}
+"""The population whose limits are those of a place, by its occupancy."""
 UNREACHABLE = (FieldsillError, OSError, ValueError)
 """What asking a daemon that is not there, hangs or answers nonsense can raise."""
 

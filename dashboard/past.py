@@ -13,12 +13,14 @@ from numpy.typing import NDArray
 from dashboard.chart import Mark, Series
 from dashboard.span import Span
 from dashboard.words import utc_of
-from monitor.record.types import History
+from monitor.record.types import WINDOW_EVERY_NS, History
 
 F = NDArray[np.float64]
 NS = 1_000_000_000
 _ROW_MINUTES = (10, 30, 60, 180, 360, 1440, 7 * 1440, 28 * 1440, 91 * 1440, 365 * 1440)
 MAX_ROWS = 36
+DUE_NS = 2 * WINDOW_EVERY_NS + 10 * NS
+"""A new average is in the record at the latest so long after the one before."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -45,16 +47,19 @@ class Summary:
     gap_count: int
 
 
-def series_of(history: History, scope: int | None) -> Series:
-    """The field in V/m (scope None), or the exposure ratio of a scope, as a series."""
+def series_of(history: History, scope: int | None, now_ns: int) -> Series:
+    """The field in V/m (scope None), or the exposure ratio of a scope, as a series.
+
+    What has not happened yet is no gap, and the newest average may be due still.
+    """
     low, mean, high = (
         (history.e_low, history.e_mean, history.e_high)
         if scope is None
         else history.ratios.get(scope, (np.full(history.utc_ns.size, np.nan),) * 3)
     )
-    return Series(
-        history.utc_ns, low, mean, high, history.valid_share, history.gaps, history.bin_ns
-    )
+    past = [(a, min(b, now_ns)) for a, b in history.gaps if a < now_ns]
+    gaps = [(a, b) for a, b in past if b < now_ns or b - a > DUE_NS]
+    return Series(history.utc_ns, low, mean, high, history.valid_share, gaps, history.bin_ns)
 
 
 def gap_seconds(gaps: Sequence[tuple[int, int]], start_ns: int, end_ns: int) -> float:
@@ -101,7 +106,7 @@ def _row(series: Series, part: Span, now_ns: int) -> Row:
     gap_s = gap_seconds(series.gaps, part.start_ns, end_ns)
     measured = max(0.0, 1.0 - gap_s / max(1e-9, (end_ns - part.start_ns) / NS))
     if not inside.any():
-        return Row(part, None, None, None, 0.0 if gap_s else measured, gap_s)
+        return Row(part, None, None, None, 0.0, gap_s)
     means = series.mean[inside]
     at = int(np.argmax(means))
     return Row(

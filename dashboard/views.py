@@ -9,7 +9,7 @@ from typing import Any
 from flask import Blueprint, current_app, redirect, render_template, request, url_for
 from flask.typing import ResponseReturnValue
 
-from dashboard import history, now, words
+from dashboard import headline, history, now, words
 from dashboard.models import ASK_TIMEOUT_S, UNREACHABLE, Doors, Live, State, Station, read_live
 from monitor.core.errors import ConfigError, DeviceError
 
@@ -49,15 +49,15 @@ def _wanted_scope() -> int | None:
 def _now_values(live: Live) -> dict[str, Any]:
     context = _context()
     wanted = _wanted_scope()
-    chosen = now.governing(live, context.station, wanted)
+    chosen = headline.governing(live, context.station, wanted)
     site = live.snapshot.get("site") or {}
     return {
         "live": live,
         "simulated": live.simulated,
         "name": site.get("name") or context.station.name,
         "place": site.get("place") or context.station.place,
-        "controlled": now.occupancy(live, context.station) == "controlled",
-        "headline": now.headline(live, context.station),
+        "controlled": headline.occupancy(live, context.station) == "controlled",
+        "headline": headline.headline(live, context.station),
         "chosen": chosen and now.scope_line(chosen, live, context.station),
         "chosen_ratio": chosen and chosen.get("ratio_mean"),
         "picture": now.drawn(chosen, live, context.station),
@@ -129,7 +129,7 @@ def api_now() -> ResponseReturnValue:
         "last_reading_utc": _iso(live.since),
         "last_reading_age_s": live.age_s,
         "simulated": live.simulated,
-        "words": now.headline(live, _context().station).text,
+        "words": headline.headline(live, _context().station).text,
         "now": dict(live.snapshot) if live.snapshot else None,
     }
 

@@ -134,6 +134,15 @@ def alarm_state(state: str, *, is_level: bool, muted_until: str = "") -> str:
     }.get(state, state.replace("_", " "))
 
 
+def alarm_text(key: str) -> str:
+    """An alarm's key in words: 'name: scope' for one of an alert level, else as it stands."""
+    name, bar, scope = key.partition(" | ")
+    parts = scope.removesuffix(" s").split(" ")
+    if not bar or len(parts) != 4 or not parts[3].isdecimal():
+        return key
+    return f"{name}: {scope_title(parts[0], parts[1], parts[2], int(parts[3]))}"
+
+
 def parse_utc(text: str | None) -> datetime | None:
     """An RFC 3339 time as an aware UTC datetime; None where there is none or it is not one."""
     if not text:

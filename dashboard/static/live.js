@@ -30,7 +30,7 @@
 
   const renew = (html) => {
     const fresh = new DOMParser().parseFromString(html, "text/html");
-    const parts = [...fresh.body.children];
+    const parts = [...fresh.querySelectorAll("[data-part]")];
     if (!parts.some((part) => part.id === "head")) throw new Error("not the monitor's answer");
     for (const part of parts) {
       const old = document.getElementById(part.id);
