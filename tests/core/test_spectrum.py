@@ -79,7 +79,8 @@ def test_a_band_holds_its_low_edge_and_not_its_high_edge(low_hz: float) -> None:
     samples = noise(8192)
     step = RATE / 1024
     edge = round(low_hz / step) * step
-    found = powers(samples, (edge - 5 * step, edge), (edge, edge + 5 * step), (edge - 5 * step, edge + 5 * step))  # fmt: skip
+    low, high = edge - 5 * step, edge + 5 * step
+    found = powers(samples, (low, edge), (edge, high), (low, high))
     assert found.power[0] + found.power[1] == pytest.approx(found.power[2], rel=1e-12)
 
 

@@ -15,7 +15,9 @@ PLACE = [(98e6, 5.0), (600e6, 3.0), (800e6, 2.0), (1.8e9, 4.0), (3.5e9, 6.0)]
 """Signals of the worked sums: frequency, V/m; far field."""
 
 
-def by_scope(set_id: str, levels: list[Level], population: str = "general_public") -> dict[str, Total]:  # fmt: skip
+def by_scope(
+    set_id: str, levels: list[Level], population: str = "general_public"
+) -> dict[str, Total]:
     return {t.scope: t for t in totals(limitsets.load(set_id), population, levels)}
 
 
