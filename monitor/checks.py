@@ -6,13 +6,13 @@ from collections import Counter
 from collections.abc import Callable, Iterable, Iterator
 from dataclasses import dataclass
 from datetime import UTC, datetime, timedelta
-from typing import Protocol
 
 import numpy as np
 
 from monitor import limitsets
 from monitor.calfile import load_chain
 from monitor.config import Site
+from monitor.core.alarms import watches
 from monitor.core.calibration import Chain, CountTable
 from monitor.core.errors import ConfigError, LimitError
 from monitor.core.exposure import CAP_DB, E_ALONE_FROM_HZ, scope_coefficients
@@ -34,29 +34,13 @@ class Finding:
     ok: bool = True
 
 
-class FindingLike(Protocol):
-    """What the check of a front end gives."""
-
-    @property
-    def where(self) -> str:
-        """The table of the site file."""
-
-    @property
-    def text(self) -> str:
-        """What was found."""
-
-    @property
-    def ok(self) -> bool:
-        """False for a note."""
-
-
 def findings(
-    site: Site, now_utc_ns: int, front_end: Callable[[Site], Iterable[FindingLike]]
-) -> Iterator[FindingLike]:
-    """What fits and what does not. front_end: the check of sensor, limits and alerts.
+    site: Site, now_utc_ns: int, front_end: Callable[[Site], Iterable[Finding]]
+) -> Iterator[Finding]:
+    """What fits and what does not. front_end: the check of sensor and record.
 
-    Raises what makes the site unable to run:
-    ConfigError, CalibrationError, LimitError (2) or DeviceError (3), one line each.
+    Raises what makes the site unable to run: ConfigError, CalibrationError, LimitError (2) or
+    DeviceError (3), one line each.
     """
     chain = load_chain(site.calibration, site.channels, site.bands)
     tops = [(scope, _top(site, chain, scope)) for scope in _scopes(site)]
@@ -65,10 +49,11 @@ def findings(
     yield from _channels(site, chain)
     yield from front_end(site)
     for scope, top in tops:
-        if top < 1.0:
-            name = f"{scope.set_id}, {scope.population}, {scope.scope}"
-            text = f"{name}: the detector's range ends at {top:.2g} times the limit"
-            yield Finding("range", text, ok=False)
+        yield _limit(scope, top)
+    for rule in site.alerts:
+        n = len(watches([rule], [scope for scope, _ in tops]))
+        text = f"{rule.name}: raised at an exposure ratio of {rule.ratio:g}, in {n} scopes"
+        yield Finding("alert", text, n > 0)
 
 
 def _site(site: Site) -> Iterator[Finding]:
@@ -155,6 +140,16 @@ def _scopes(site: Site) -> list[Scope]:
             )
         found += here
     return found
+
+
+def _limit(scope: Scope, top: float) -> Finding:
+    """What stands in the way of a verdict. top: exposure ratio where the detector's range ends."""
+    notes = [f"{scope.set_id}: {scope.population}, {scope.scope}, {scope.averaging_s:g} s"]
+    if not scope.verified:
+        notes.append("from memory, will not conform until confirmed")
+    if top < 1.0:
+        notes.append(f"the detector's range ends at {top:.2g} times the limit")
+    return Finding("limits", "; ".join(notes), len(notes) == 1)
 
 
 def _top(site: Site, chain: Chain, scope: Scope) -> float:
