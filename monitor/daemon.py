@@ -63,7 +63,7 @@ class Daemon:
         self._heard_ns: int | None = None
         self._committed_ns = clock.boot_ns()
         self._device: tuple[bool, str] | None = None
-        self._told_late = 0
+        self._refused = 0
         self._told_ns = -DEVICE_EVENTS_EVERY_NS
         self.ended = threading.Event()
         self._status = DeviceStatus(False, "starting")
@@ -184,7 +184,20 @@ class Daemon:
             self._writer.flush()
             self.ended.set()
 
+    def _tell_refused(self) -> None:
+        """A commit that the record can never take is lost: say so in the record itself."""
+        if self._writer.refused > self._refused:
+            self._refused = self._writer.refused
+            body: dict[str, object] = {"commits": self._refused, "why": self._writer.refusal}
+            self._spool.event(Event(self._state.front_ns, "fault", "commit refused", body))
+
+    @property
+    def trouble(self) -> str:
+        """Why something is not in the record, or ""."""
+        return self._writer.error or self._writer.refusal
+
     def _commit(self, block: bool) -> None:
+        self._tell_refused()
         self._committed_ns = self._clock.boot_ns()
         self._start_ns = self._state.front_ns
         if self._spool.empty:
@@ -204,7 +217,7 @@ class Daemon:
             progress = (max(state.front_ns, 0) / NS_PER_S, self._history_s)
         return View(
             state, self._status, self._boot, self._offset_ns, age_s, self._desk.alarms(),
-            progress, self._writer.error or self._writer.refusal,
+            progress, self.trouble,
         )  # fmt: skip
 
     def answer(self, request: Mapping[str, object]) -> dict[str, object]:

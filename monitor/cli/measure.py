@@ -10,6 +10,7 @@ from types import FrameType
 import click
 
 from monitor.config import Site, default_site_path, load_site
+from monitor.core.errors import RecordError
 
 
 @click.command("measure")
@@ -39,3 +40,5 @@ def measure(site: Site, exit_at_end: bool, history_s: float | None) -> None:
         daemon.run(stop, exit_at_end)
     finally:
         server.close()
+    if daemon.trouble:
+        raise RecordError(daemon.trouble)

@@ -33,7 +33,7 @@ CREATE INDEX raw_by_time ON raw (boot, end_ns, start_ns);
 CREATE TABLE blocks (
   derivation INTEGER NOT NULL, boot INTEGER NOT NULL, start_ns INTEGER NOT NULL,
   channel INTEGER NOT NULL, energy_w_ns REAL NOT NULL, covered_ns INTEGER NOT NULL,
-  observed_ns INTEGER NOT NULL, min_w REAL NOT NULL, max_w REAL NOT NULL, n INTEGER NOT NULL,
+  observed_ns INTEGER NOT NULL, min_w REAL, max_w REAL, n INTEGER NOT NULL,
   flags INTEGER NOT NULL, temperature_c REAL, calibration INTEGER,
   PRIMARY KEY (derivation, boot, start_ns, channel)) STRICT, WITHOUT ROWID;
 CREATE TABLE windows (
