@@ -79,7 +79,7 @@ install_lock() {
     { [ "$have" = "test $sum" ] || [ "$have" = "$1 $sum" ]; } && return
     echo "fieldsill: installing Python packages into .venv from $lock"
     [ "$have" = nothing ] && "$python" -m venv --clear .venv
-    in_venv --require-hashes -r "$lock"
+    in_venv --require-hashes --only-binary :all: -r "$lock"
     in_venv --no-deps --no-build-isolation --editable .
     echo "$1 $sum" >.venv/installed
 }
