@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 from collections.abc import Iterator
+from dataclasses import replace
 from pathlib import Path
 
 from monitor.core.errors import ConfigError, DeviceError
@@ -26,7 +27,7 @@ def open_format(path: Path, datatype: str | None) -> tuple[Path, IqFormat]:
     if meta.is_file():
         found = _read_meta(meta)
         if datatype:
-            found = IqFormat(datatype, found.rate_hz, found.centre_hz, found.header_bytes)
+            found = replace(found, datatype=datatype)
         return data, found
     name = datatype or datatype_by_extension(data.name)
     if name is None:
@@ -51,8 +52,10 @@ def pieces(path: Path, form: IqFormat) -> Iterator[bytes]:
     size = CHUNK_SAMPLES * bytes_per_sample(form.datatype)
     try:
         with path.open("rb") as file:
+            left = path.stat().st_size - form.header_bytes - form.trailing_bytes
             file.seek(form.header_bytes)
-            while piece := file.read(size):
+            while left > 0 and (piece := file.read(min(size, left))):
+                left -= len(piece)
                 yield piece
     except OSError as error:
         raise DeviceError(f"{path}: {error.strerror}") from error

@@ -15,12 +15,18 @@ DATA = ".sigmf-data"
 
 @dataclass(frozen=True, slots=True)
 class IqFormat:
-    """How samples are stored. rate_hz, centre_hz: None where unknown; header_bytes: to skip."""
+    """How samples are stored; None where unknown.
+
+    header_bytes, trailing_bytes: not samples, before and after them. start: recording time of the
+    first sample as it was written.
+    """
 
     datatype: str
     rate_hz: float | None = None
     centre_hz: float | None = None
     header_bytes: int = 0
+    trailing_bytes: int = 0
+    start: str | None = None
 
 
 def format_from_sigmf(document: object, where: str) -> IqFormat:
@@ -33,15 +39,28 @@ def format_from_sigmf(document: object, where: str) -> IqFormat:
     datatype_of(datatype)
     if general.get("core:num_channels", 1) != 1:
         raise ConfigError(f"{where}: core:num_channels: only one channel can be read")
-    captures = top.get("captures", [])
-    first = captures[0] if isinstance(captures, list) and captures else {}
-    capture = _mapping(first, f"{where}: captures[0]")
+    captures = _captures(top, where)
+    start = captures[0].get("core:datetime")
     return IqFormat(
         datatype,
         _number(general, "core:sample_rate", where, least=0.0),
-        _number(capture, "core:frequency", where, least=-math.inf),
-        int(_number(capture, "core:header_bytes", where, least=-1.0) or 0),
+        _number(captures[0], "core:frequency", where, least=-math.inf),
+        int(_number(captures[0], "core:header_bytes", where, least=-1.0) or 0),
+        int(_number(general, "core:trailing_bytes", where, least=-1.0) or 0),
+        start if isinstance(start, str) else None,
     )
+
+
+def _captures(top: Mapping[str, object], where: str) -> list[Mapping[str, object]]:
+    """The captures, at least one; ConfigError where the receiver was tuned in between."""
+    listed = top.get("captures")
+    if not isinstance(listed, list) or not listed:
+        return [{}]
+    captures = [_mapping(each, f"{where}: captures[{i}]") for i, each in enumerate(listed)]
+    first = captures[0].get("core:frequency")
+    if any(each.get("core:frequency", first) != first for each in captures):
+        raise ConfigError(f"{where}: captures: the centre changes; split the recording")
+    return captures
 
 
 def datatype_by_extension(name: str) -> str | None:

@@ -79,6 +79,21 @@ def test_a_sigmf_pair_knows_its_rate_and_centre(
     assert found["duration_s"] == 4096 / 1.6e6
 
 
+def test_bytes_round_the_samples_are_left_out(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path
+) -> None:
+    """A header of 128 bytes read as samples moved a real mean by 1.2 dB once."""
+    meta = sigmf(tmp_path, **{"core:trailing_bytes": 8})
+    document = json.loads(meta.read_text(encoding="utf-8"))
+    document["captures"][0]["core:header_bytes"] = 128
+    meta.write_text(json.dumps(document), encoding="utf-8")
+    data = meta.with_suffix(".sigmf-data")
+    data.write_bytes(b"\x7f" * 128 + data.read_bytes() + b"\x7f" * 8)
+    found = run(capsys, ["iq", meta, "--json"]).document
+    assert found["samples"] == 4096
+    assert found["total_power_dbfs"] == pytest.approx(-6.02, abs=0.01)
+
+
 def test_for_people(capsys: pytest.CaptureFixture[str], tmp_path: Path) -> None:
     out = run(capsys, ["iq", sigmf(tmp_path), "--band", "90kHz:110kHz"]).out
     assert "ci16_le, 4096 samples, 0.00256 s" in out

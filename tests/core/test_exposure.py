@@ -78,7 +78,9 @@ def test_conforms_needs_the_gaps_at_maximum_below() -> None:
     assert verdict(ratio_high=0.6) is Verdict.CONFORMS
 
 
-@pytest.mark.parametrize(("u", "k", "conforms"), [(2.0, 2.0, True), (2.01, 2.0, False), (2.2, 1.8, True)])  # fmt: skip
+@pytest.mark.parametrize(
+    ("u", "k", "conforms"), [(2.0, 2.0, True), (2.01, 2.0, False), (2.2, 1.8, True)]
+)
 def test_cap_holds_for_the_expanded_uncertainty(u: float, k: float, conforms: bool) -> None:
     assert (verdict(**level(-20), u_db=u, k=k) is Verdict.CONFORMS) == conforms
 

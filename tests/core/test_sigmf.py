@@ -28,10 +28,19 @@ def test_rate_and_centre_may_be_unknown() -> None:
     assert format_from_sigmf(bare, "a") == IqFormat("cu8", None, None, 0)
 
 
-def test_header_bytes_are_skipped() -> None:
+def test_bytes_that_are_no_samples_and_the_time_of_recording() -> None:
+    whole = document(**{"core:trailing_bytes": 16})
+    whole["captures"][0] |= {"core:header_bytes": 128, "core:datetime": "2031-05-01T07:12:00Z"}
+    found = format_from_sigmf(whole, "a")
+    assert (found.header_bytes, found.trailing_bytes) == (128, 16)
+    assert found.start == "2031-05-01T07:12:00Z"
+
+
+def test_a_recording_tuned_on_the_way_is_refused() -> None:
     whole = document()
-    whole["captures"][0]["core:header_bytes"] = 128
-    assert format_from_sigmf(whole, "a").header_bytes == 128
+    whole["captures"].append({"core:sample_start": 10, "core:frequency": 1.9e9})
+    with pytest.raises(ConfigError, match="the centre changes"):
+        format_from_sigmf(whole, "a")
 
 
 @pytest.mark.parametrize(
