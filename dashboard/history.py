@@ -3,72 +3,27 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from contextlib import contextmanager
-from dataclasses import dataclass
 from datetime import date
 from typing import Any
 
 import numpy as np
 
-from dashboard import chart, past, span, words
+from dashboard import chart, events, past, span, words
 from dashboard.models import OWN_POPULATION, Doors, RecordLike, Station, levels_for, levels_of
-from dashboard.span import Span
+from dashboard.wish import Wish, read_wish
 from monitor.core import flags
 from monitor.core.errors import ConfigError, RecordError
 from monitor.core.limits import Scope
-from monitor.record.types import EventRow, History
+from monitor.record.types import History
 
-AVERAGES = (360, 1800)
 WIDE = chart.Frame(1080, 400)
 NARROW = chart.Frame(358, 320, left=52, right=8)
-AT_MOST = 720
+AT_MOST = 1440
+"""A day of averages, one a minute, is drawn whole."""
 MAX_API_POINTS = 20_000
 MAX_EVENTS = 40
-POWER = {"e": 0.5, "ratio": 1.0}
-
-
-@dataclass(frozen=True, slots=True)
-class Wish:
-    """What a request asks for. scope: index of the limit whose ledge is drawn, None: the first."""
-
-    span: Span
-    averaging_s: int
-    show: str
-    scope: int | None
-    logarithmic: bool
-
-    def keys(self, **other: object) -> dict[str, str]:
-        """Everything but the span, as an address writes it."""
-        keys: dict[str, object] = {
-            "averaging": self.averaging_s,
-            "show": self.show,
-            "scale": "log" if self.logarithmic else "straight",
-            "scope": self.scope,
-            **other,
-        }
-        return {key: str(value) for key, value in keys.items() if value is not None}
-
-
-def _choice(args: Mapping[str, str], key: str, choices: tuple[str, ...]) -> str:
-    text = args.get(key) or choices[0]
-    if text not in choices:
-        raise ConfigError(f"{key}: {text!r} is not one of {', '.join(choices)}")
-    return text
-
-
-def read_wish(args: Mapping[str, str], fallback: date) -> Wish:
-    """The wish of a request; ConfigError names the key that is wrong."""
-    scope = args.get("scope") or ""
-    if scope and not scope.isdecimal():
-        raise ConfigError(f"scope: {scope!r} is not the number of a limit")
-    return Wish(
-        span=span.read(args.get("from") or "", args.get("to") or "", fallback),
-        averaging_s=int(_choice(args, "averaging", tuple(str(a) for a in AVERAGES))),
-        show=_choice(args, "show", ("e", "ratio")),
-        scope=int(scope) if scope else None,
-        logarithmic=_choice(args, "scale", ("log", "straight")) == "log",
-    )
 
 
 @contextmanager
@@ -105,7 +60,7 @@ def page(station: Station, doors: Doors, args: Mapping[str, str]) -> dict[str, A
         wish = read_wish(args, _fallback_day(record, now_ns))
         scopes = dict(record.scopes())
         found = record.history(wish.span.start_ns, wish.span.end_ns, wish.averaging_s, AT_MOST)
-        events = record.events(wish.span.start_ns, wish.span.end_ns, MAX_EVENTS)
+        happened = record.events(wish.span.start_ns, wish.span.end_ns, MAX_EVENTS)
         simulated = record.simulated
     scope = _scope(wish, scopes, OWN_POPULATION.get(station.occupancy))
     series = past.series_of(found, scope if wish.show == "ratio" else None, now_ns)
@@ -131,9 +86,11 @@ def page(station: Station, doors: Doors, args: Mapping[str, str]) -> dict[str, A
         "marks": marks,
         "gaps": past.gap_words(series.gaps, wish.span),
         "rows": past.rows(series, wish.span, now_ns),
-        "flags": flags.words(int(np.bitwise_or.reduce(found.flags)) if found.flags.size else 0),
-        "events": [_event(event) for event in events],
-        "more_events": len(events) >= MAX_EVENTS,
+        "flags": _reservations(found),
+        "levels": _levels(scopes, scope, station),
+        "whole": not found.bin_ns,
+        "events": [events.line(event) for event in happened],
+        "more_events": len(happened) >= MAX_EVENTS,
         "links": _links(wish, now_ns),
     }
 
@@ -167,11 +124,24 @@ def _marks(
     if scope is None:
         return []
     limit = 1.0 if wish.show == "ratio" else past.equivalent_limit(found, scope)
+    return past.marks(_levels(scopes, scope, station), limit, wish.show == "e")
+
+
+def _levels(
+    scopes: Mapping[int, Scope], scope: int | None, station: Station
+) -> Sequence[Mapping[str, object]]:
+    """The alert levels that watch the scope whose limit is drawn."""
+    if scope is None:
+        return []
     one = scopes[scope]
     described = {"set": one.set_id, "population": one.population, "scope": one.scope}
-    label = "limit" if wish.show == "ratio" else f"limit {words.figure(limit, 3)} V/m"
-    levels = levels_for(levels_of(station.alerts), described)
-    return past.marks(levels, limit, label, POWER[wish.show])
+    return levels_for(levels_of(station.alerts), described)
+
+
+def _reservations(found: History) -> list[str]:
+    """What any average in the span has to say about itself; simulated stands on every page."""
+    bits = int(np.bitwise_or.reduce(found.flags)) if found.flags.size else 0
+    return flags.words(bits & ~int(flags.Flag.SIMULATED | flags.Flag.GAP))
 
 
 def _summary_words(summary: past.Summary, wish: Wish, found: History) -> list[str]:
@@ -197,12 +167,6 @@ def _summary_words(summary: past.Summary, wish: Wish, found: History) -> list[st
     else:
         lines.append(f"Measured for {share} of the span so far, without a gap.")
     return lines
-
-
-def _event(event: EventRow) -> tuple[str, str, str]:
-    when = words.moment(words.utc_of(event.utc_ns)) if event.utc_ns is not None else "not known"
-    text = event.body.get("text") or event.body.get("words") or ""
-    return when, f"{event.kind}: {event.name}".replace("_", " "), str(text)
 
 
 def _links(wish: Wish, now_ns: int) -> dict[str, str]:

@@ -21,9 +21,8 @@ class ScopeLine:
     index: int
     title: str
     ratio: str
-    interval: str
+    detail: str
     verdict: str
-    reasons: tuple[str, ...]
     note: str
     kind: str
     picture: Picture
@@ -64,14 +63,14 @@ def scope_line(exposure: Snapshot, live: Live, station: Station) -> ScopeLine:
     """One scope in words."""
     mean = ratio_of(exposure, "ratio_mean")
     verdict = str(exposure.get("verdict", "undecided"))
+    u_db = uncertainty_db(live, exposure)
     reasons = tuple(str(r) for r in exposure.get("reasons") or ())
     return ScopeLine(
         index=int(exposure["index"]),
         title=title(exposure),
         ratio=words.of_limit(mean),
-        interval=_interval(exposure, uncertainty_db(live, exposure)),
-        verdict=words.verdict(verdict, () if verdict != "undecided" else reasons),
-        reasons=reasons if verdict != "undecided" else (),
+        detail="; ".join(filter(None, [_interval(exposure, u_db), *reasons[:1]])),
+        verdict=words.verdict(verdict, reasons[1:]),
         note=FROM_MEMORY if verdict != "undecided" and not exposure.get("verified") else "",
         kind=verdict,
         picture=drawn(exposure, live, station),
@@ -128,3 +127,18 @@ def _alarm(alarm: Mapping[str, Any], live: Live) -> AlarmLine:
         can_mute=state in ("unacknowledged", "acknowledged"),
         can_unmute=state == "shelved",
     )
+
+
+@dataclass(frozen=True, slots=True)
+class Counters:
+    """The device's counters in words: those that counted something, and the names of the rest."""
+
+    some: list[tuple[str, int]]
+    none: list[str]
+
+
+def counters(live: Live) -> Counters:
+    """Every counter of the device, bad frames among them."""
+    found = (live.snapshot.get("device") or {}).get("counters") or {}
+    named = [(str(key).replace("_", " "), int(count)) for key, count in found.items()]
+    return Counters([c for c in named if c[1]], [name for name, count in named if not count])

@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from dashboard.chart import Mark, Series
 from dashboard.span import Span
-from dashboard.words import utc_of
+from dashboard.words import figure, utc_of
 from monitor.record.types import WINDOW_EVERY_NS, History
 
 F = NDArray[np.float64]
@@ -131,16 +131,18 @@ def equivalent_limit(history: History, scope: int, spread: float = 0.05) -> floa
     return low if high <= low * (1 + spread) else None
 
 
-def marks(
-    levels: Sequence[Mapping[str, object]], limit: float | None, label: str, power: float
-) -> list[Mark]:
-    """The limit and the alert levels of a scope as marks; power 1 for ratios, 0.5 for E."""
+def marks(levels: Sequence[Mapping[str, object]], limit: float | None, in_e: bool) -> list[Mark]:
+    """The limit (V/m where in_e, else a ratio) and the alert levels of a scope as marks.
+
+    A level at the limit itself has no line of its own: the ledge is there.
+    """
     if limit is None:
         return []
-    found = [Mark(limit, label, "limit")]
-    for level in levels:
-        ratio = float(str(level["ratio"]))
-        found.append(Mark(limit * ratio**power, f"alert level: {level['name']}", "alert"))
+    found = [Mark(limit, f"limit {figure(limit, 3)} V/m" if in_e else "limit", "limit")]
+    for ratio in sorted({float(str(level["ratio"])) for level in levels} - {1.0}):
+        value = limit * math.sqrt(ratio) if in_e else ratio
+        label = f"{figure(value, 3)} V/m" if in_e else f"{ratio:g}"
+        found.append(Mark(value, f"alert {label}", "alert"))
     return found
 
 

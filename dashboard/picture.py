@@ -25,7 +25,8 @@ class Notch:
 
     y: float
     label_y: float
-    text: str
+    ratio: float
+    names: tuple[str, ...]
 
 
 @dataclass(frozen=True, slots=True)
@@ -63,14 +64,16 @@ def interval(ratio_low: float, ratio_high: float, u_db: float | None) -> tuple[f
 
 def notches(levels: Sequence[Mapping[str, object]]) -> tuple[Notch, ...]:
     """The alert levels below the ledge, from the top down, labels at least a line apart."""
-    known = {float(str(level["ratio"])): str(level["name"]) for level in levels}
+    known: dict[float, list[str]] = {}
+    for level in levels:
+        known.setdefault(float(str(level["ratio"])), []).append(str(level["name"]))
     found: list[Notch] = []
-    lowest_free = LEDGE_Y + LEDGE_THICK + LABEL_STEP
-    for ratio, name in sorted(known.items(), reverse=True):
+    free = float(LEDGE_Y + LEDGE_THICK + LABEL_STEP)
+    for ratio, names in sorted(known.items(), reverse=True):
         if 0 < ratio < 1:
-            label_y = max(y_of(ratio) + 5, lowest_free)
-            found.append(Notch(y_of(ratio), label_y, name))
-            lowest_free = int(label_y) + LABEL_STEP
+            label_y = max(y_of(ratio) + 5, free)
+            found.append(Notch(y_of(ratio), label_y, ratio, tuple(dict.fromkeys(names))))
+            free = label_y + LABEL_STEP
     return tuple(found)
 
 

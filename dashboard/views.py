@@ -64,6 +64,7 @@ def _now_values(live: Live) -> dict[str, Any]:
         "wanted": wanted,
         "groups": now.scope_lines(live, context.station),
         "alarms": now.alarm_lines(live),
+        "counters": now.counters(live),
         "device": live.snapshot.get("device") or {},
         "token": context.token,
         "may_act": context.may_act,
