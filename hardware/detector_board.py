@@ -142,7 +142,7 @@ class DetectorBoard:
             return f"{self._port.problem}; trying again"
         if self._hung:
             silent_s = (self._boot_ns() - self._heard_ns) // NS_PER_S
-            return f"{self._settings.device} is open, but no frame came for {silent_s} s"
+            return f"{self._settings.device} is open, but no new frame came for {silent_s} s"
         if self._waits_for() or self._reception.banner is None:
             return self._waits_for()
         banner = self._reception.banner

@@ -41,9 +41,8 @@ class Settings:
     real_pace: bool
 
     def check_device(self) -> None:
-        """DeviceError where the file cannot be read."""
-        with _opened(self.file):
-            pass
+        """DeviceError where the file cannot be read, ConfigError where a column is missing."""
+        LevelSeries(self, lambda: 0, False).close()
 
     def open(
         self,

@@ -25,7 +25,8 @@ _REMEMBERED = 16
 class Taken(NamedTuple):
     """A frame that is taken. Its samples are evenly spaced over (since_ms, frame.tick_ms].
 
-    since_ms is None where the spacing is unknown: only the last sample has a place in time.
+    since_ms is None where the spacing is unknown: only the last sample has a place in time. It
+    is below 0 where the first sample was taken as the board's ticks began.
     restarted: the board's ticks began anew with this frame.
     """
 
@@ -55,10 +56,8 @@ class Reception:
 
     @property
     def frames_seen(self) -> int:
-        """Whole frames of every kind that came, taken or not: a sign of life."""
-        c = self._counters
-        kinds = ("frames", "repeated", "contradicting", "unannounced", "refused")
-        return sum(c[kind] for kind in kinds)
+        """Frames that were new, taken or not: a board that only repeats itself shows no life."""
+        return sum(self._counters[kind] for kind in ("frames", "unannounced", "refused"))
 
     def reopened(self) -> None:
         """The port was opened: another board may be at its end, which must name itself."""
@@ -140,4 +139,4 @@ class Reception:
         if not spacing_ms:
             return None
         since_ms = frame.tick_ms - samples * spacing_ms
-        return max(since_ms, 0 if last_ms is None else last_ms)
+        return since_ms if last_ms is None else max(since_ms, last_ms)

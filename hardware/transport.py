@@ -5,6 +5,7 @@ from __future__ import annotations
 import os
 import select
 import stat
+import weakref
 from collections.abc import Callable
 from io import UnsupportedOperation
 from pathlib import Path
@@ -71,7 +72,8 @@ class Port:
         self._port: serial.SerialBase | None = None
         self._fd = -1
         self._closed = False
-        self._wake_r, self._wake_w = os.pipe()
+        self._wake_r, self._wake_w = pair = os.pipe()
+        weakref.finalize(self, _close_all, pair)
         self._back_off_s = BACK_OFF_S
         self._try_at_ns = now_ns()
         self.generation = 0
@@ -206,6 +208,11 @@ class Port:
                 port.close()
             except OSError as error:
                 self.problem = str(error)
+
+
+def _close_all(descriptors: tuple[int, int]) -> None:
+    for descriptor in descriptors:
+        os.close(descriptor)
 
 
 def _descriptor(port: serial.SerialBase) -> int:

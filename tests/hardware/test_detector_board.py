@@ -109,13 +109,28 @@ def test_a_hang_is_seen_asked_about_and_ends_with_the_next_frame(bench, front_en
     bench.send("FS1 0 100 3 1,2,3 - -")
     until(front_end, lambda: counters(front_end)["frames"] == 1)
     until(front_end, lambda: not front_end.status().connected)
-    assert "no frame came for" in front_end.status().text
+    assert "no new frame came for" in front_end.status().text
     assert counters(front_end)["hangs"] == 1
     assert b"?\n" in bench.heard()
     bench.send("FS1 1 200 3 1,2,3 - -")
     until(front_end, lambda: front_end.status().connected)
     assert counters(front_end)["hangs"] == 1
     assert counters(front_end)["lost"] == 0
+
+
+def test_a_board_that_only_repeats_itself_counts_as_hung(bench, front_end, banner):
+    greet(bench, front_end, banner)
+    bench.send("FS1 0 100 3 1,2,3 - -")
+    until(front_end, lambda: counters(front_end)["frames"] == 1)
+
+    def hung():
+        bench.send("FS1 0 100 3 1,2,3 - -")
+        return not front_end.status().connected
+
+    batches = until(front_end, hung)
+    assert sum(b.n for b in batches) == 0
+    assert counters(front_end)["repeated"] > 1
+    assert "no new frame" in front_end.status().text
 
 
 def test_a_long_hang_opens_the_port_anew(bench, front_end, banner):
@@ -323,6 +338,12 @@ def test_wrong_options_are_one_line(options, words, tmp_path):
     assert words in str(caught.value)
     assert "\n" not in str(caught.value)
     assert caught.value.exit_code == 2
+
+
+def test_every_counter_is_on_the_protocols_page(tmp_path, page):
+    front_end = board(tmp_path / "none")
+    for name in counters(front_end):
+        assert f"`{name}`" in page, name
 
 
 def test_check_device_names_what_is_wrong_and_the_remedy(tmp_path, bench):

@@ -6,6 +6,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
+from hardware.detector_board import sample_ticks
 from hardware.frames import crc
 from hardware.reception import Reception
 
@@ -88,6 +89,13 @@ def test_where_the_samples_of_a_frame_begin():
     taken = reception.feed(lines)
     # first: banner's spacing; then the frame before; after a loss the banner's spacing again
     assert [one.since_ms for one in taken] == [100, 200, 800]
+
+
+def test_a_first_frame_may_begin_with_the_ticks():
+    taken = ready(spacing_ms=50).feed(sent(frame(0, 100, "1;2;3")))
+    ticks_ns, known = sample_ticks(taken)
+    assert (ticks_ns // 1_000_000).tolist() == [0, 50, 100]
+    assert known.all()
 
 
 def test_without_a_spacing_only_the_last_sample_has_its_place():
