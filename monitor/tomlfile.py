@@ -16,6 +16,8 @@ from monitor.core.quantities import frequency_hz
 
 MAX_BYTES = 4_000_000
 MAX_ROWS = 10_000
+MAX_FIGURE = 300.0
+"""No dB, dBm, degree or detector voltage is larger; a slip of the point would overflow later."""
 
 
 class TopTable(Table):
@@ -48,13 +50,28 @@ def read(path: Path, what: str) -> tuple[TopTable, bytes]:
         raise DeviceError(f"{path}: the {what} cannot be read: {error.strerror}") from error
     if len(body) > MAX_BYTES:
         raise ConfigError(f"{path.name}: {len(body)} bytes; a {what} has at most {MAX_BYTES}")
+    return parse(body, path.name, what), body
+
+
+def parse(body: bytes, name: str, what: str) -> TopTable:
+    """The tables of a TOML text; ConfigError where it is none."""
     try:
         values = tomllib.loads(body.decode("utf-8"))
+        _refuse_huge(values)
     except UnicodeDecodeError:
-        raise ConfigError(f"{path.name}: the {what} is not UTF-8 text") from None
-    except tomllib.TOMLDecodeError as error:
-        raise ConfigError(f"{path.name}: not valid TOML: {error}") from None
-    return TopTable(values, path.name), body
+        raise ConfigError(f"{name}: the {what} is not UTF-8 text") from None
+    except (ValueError, RecursionError) as error:
+        raise ConfigError(f"{name}: not valid TOML: {error}") from None
+    return TopTable(values, name)
+
+
+def _refuse_huge(value: object) -> None:
+    """ValueError for an integer beyond 64 bits: TOML 1.0 has none, its reader here takes any."""
+    if isinstance(value, (dict, list)):
+        for item in value.values() if isinstance(value, dict) else value:
+            _refuse_huge(item)
+    elif isinstance(value, int) and not -(2**63) <= value < 2**63:
+        raise ValueError("an integer is beyond 64 bits")
 
 
 def pair(table: Table, key: str, default: Any = REQUIRED) -> tuple[float, float]:
@@ -64,6 +81,8 @@ def pair(table: Table, key: str, default: Any = REQUIRED) -> tuple[float, float]
         return value  # type: ignore[no-any-return]
     if not _numbers(value, 2) or not value[0] < value[1]:
         raise table.error(key, "must be two numbers [low, high], low below high")
+    if max(abs(value[0]), abs(value[1])) > MAX_FIGURE:
+        raise table.error(key, f"{value!r} is beyond {MAX_FIGURE:g}")
     return float(value[0]), float(value[1])
 
 
@@ -84,6 +103,8 @@ def rows(table: Table, key: str, form: str, frequency: bool = False) -> NDArray[
             raise table.error(key, f"row {i}: {error}") from None
         if not _numbers(row, 2) or (frequency and row[0] <= 0):
             raise table.error(key, f"row {i}: {row!r} is not {form}")
+        if abs(row[1]) > MAX_FIGURE or not (frequency or abs(row[0]) <= MAX_FIGURE):
+            raise table.error(key, f"row {i}: {row!r} is beyond {MAX_FIGURE:g}")
         plain.append(row)
     return np.array(plain, np.float64)
 
