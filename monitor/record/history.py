@@ -37,6 +37,10 @@ _HOUR_RATIOS = (
     "WHERE derivation = 0 AND boot = ? AND hour >= ? AND hour <= ? "
     "AND scope IN (SELECT scope FROM scopes WHERE averaging_s = ?)"
 )
+_EXTENT = (
+    "SELECT (SELECT min(end_ns) FROM fields WHERE derivation = 0 AND boot = ?1), "
+    "(SELECT max(end_ns) FROM fields WHERE derivation = 0 AND boot = ?1)"
+)
 _SMALLEST = ("e2_low", "valid_share", "ratio_low")
 
 Column = NDArray[Any]
@@ -49,9 +53,11 @@ def history(
 ) -> History:  # fmt: skip
     """See Record.history; span: (start, end] in UTC ns. Boots without a clock fix are left out.
 
-    Where a bin is two hours or wider the hours that touch the span are used whole.
+    Bins divide the part of the span that has data. Where one is two hours or wider, the hours
+    that touch the span are used whole.
     """
-    width = -(-(span[1] - span[0]) // at_most)
+    first_ns, last_ns = _part_with_data(db, boots, span)
+    width = -(-(last_ns - first_ns) // at_most)
     hourly = width >= _HOURS_FROM_NS
     tables = [
         _of_boot(db, boot, boot.utc_offset_ns, span, averaging_s, hourly)
@@ -65,9 +71,22 @@ def history(
     gaps = _gaps(merged, span) if tables else [span]
     reduced = merged["utc_ns"].size > at_most
     if reduced:
-        merged = _in_bins(merged, (merged["utc_ns"] - span[0] - 1) // width)
+        merged = _in_bins(merged, (merged["utc_ns"] - first_ns - 1) // width)
     bin_ns = width if reduced else HOUR_NS if hourly else 0
     return _as_history(merged, averaging_s, gaps, bin_ns)
+
+
+def _part_with_data(
+    db: sqlite3.Connection, boots: Sequence[Boot], span: tuple[int, int]
+) -> tuple[int, int]:
+    start, end = span[1], span[0]
+    for boot in boots:
+        offset = boot.utc_offset_ns
+        first, last = db.execute(_EXTENT, (boot.boot,)).fetchone()
+        if offset is not None and first is not None:
+            start, end = min(start, first + offset - 1), max(end, last + offset)
+    start, end = max(start, span[0]), min(end, span[1])
+    return (start, end) if start < end else span
 
 
 def _of_boot(

@@ -122,6 +122,8 @@ class Record:
         for body, now_ns in self._rows(query, boot, start, end):
             batch = unpack(body, now_ns)
             first, last = np.searchsorted(batch.times_ns, (start, end))
+            if first == last and now_ns <= start:
+                continue
             if first > 0 or last < batch.n:
                 batch = Batch(
                     batch.times_ns[first:last], batch.counts[first:last],
