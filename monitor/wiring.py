@@ -41,7 +41,7 @@ def sensor_settings(site: Site) -> Settings:
 def chain_for(site: Site, settings: Settings) -> Chain:
     """The site's chain. ConfigError where the sensor's step is not the calibration's."""
     chain = load_chain(site.calibration, site.channels, site.bands)
-    if settings.resolution != chain.resolution:
+    if (settings.resolution or 1.0) != (chain.resolution or 1.0):  # counts of a converter: 1
         raise ConfigError(
             f"{site.path.name}: sensor.resolution: {settings.resolution} differs from "
             f"{chain.resolution} in {site.calibration.name}: detector.resolution; make them equal"

@@ -45,7 +45,7 @@ def main(argv: list[str] | None = None) -> None:
         click.echo(f"fieldsill: {error}", err=True)
         sys.exit(error.exit_code)
     except click.ClickException as error:
-        click.echo(f"fieldsill: {error.format_message()}", err=True)
+        click.echo(f"fieldsill: {' '.join(error.format_message().split())}", err=True)
         sys.exit(2)
     except (click.Abort, KeyboardInterrupt):
         sys.exit(130)
