@@ -11,12 +11,13 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hardware import sigmf
-from hardware.options import clock_start_ns, existing_file, pace
+from hardware.options import clock_start_ns, existing_file, pace, utc_ns_of
 from hardware.recorded import Pace
 from monitor.core.errors import ConfigError, DeviceError
 from monitor.core.flags import Flag
 from monitor.core.keys import REQUIRED, Table
 from monitor.core.readings import MISSING, NS_PER_S, Batch, DeviceStatus, FrontEnd, empty_batch
+from monitor.core.sigmf import IqFormat
 from monitor.core.spectrum import (
     DATATYPES,
     BandAccumulator,
@@ -75,42 +76,38 @@ class Settings:
 
 def settings_from(table: Table, folder: Path) -> Settings:
     """Settings from the options; ConfigError about each wrong key, DeviceError without the file."""
-    path = existing_file(table, "file", folder)
-    header = sigmf.load(path) if sigmf.is_pair(path) else None
-    said_hz = (header.rate_hz if header else None) or REQUIRED
-    datatype = table.text("datatype", header.datatype if header else REQUIRED)
-    if datatype not in DATATYPES:
-        raise table.error("datatype", f"{datatype!r} is not one of {', '.join(DATATYPES)}")
-    rate_hz = table.number("rate_hz", said_hz, low=1.0, high=1e12)
+    data, form = sigmf.find(existing_file(table, "file", folder))
+    known = form or IqFormat("")
+    datatype = table.text("datatype", known.datatype or REQUIRED, tuple(DATATYPES))
+    rate_hz = table.number("rate_hz", known.rate_hz or REQUIRED, low=1.0, high=1e12)
     fft = table.whole("fft", 1024, 8, 1 << 20)
-    start_utc_ns, source = _start(table, path, header)
+    start_utc_ns, source = _start(table, data, known)
     settings = Settings(
-        file=header.data if header else path,
+        file=data,
         datatype=datatype,
         rate_hz=rate_hz,
-        centre_hz=table.number(
-            "centre_hz", header.centre_hz if header else None, low=0.0, high=1e12
-        ),
+        centre_hz=table.number("centre_hz", known.centre_hz, low=0.0, high=1e12),
         bands=_bands(table),
         fft=fft,
         overlap=table.number("overlap", 0.5, 0.0, 0.99),
         interval_s=table.number("interval_s", 0.1, fft / rate_hz, 3600.0),
         start_utc_ns=start_utc_ns,
         start_source=source,
-        skip_bytes=header.skip_bytes if header else 0,
-        trailing_bytes=header.trailing_bytes if header else 0,
+        skip_bytes=known.header_bytes,
+        trailing_bytes=known.trailing_bytes,
         real_pace=pace(table),
     )
     _accumulator(settings, table)
     return settings
 
 
-def _start(table: Table, path: Path, header: sigmf.Header | None) -> tuple[int, str]:
+def _start(table: Table, path: Path, form: IqFormat) -> tuple[int, str]:
     given_ns = clock_start_ns(table)
     if given_ns is not None:
         return given_ns, "clock_start"
-    if header is not None and header.start_utc_ns is not None:
-        return header.start_utc_ns, "header"
+    header_ns = utc_ns_of(form.start)
+    if header_ns is not None:
+        return header_ns, "header"
     return path.stat().st_mtime_ns, "time of the file, its recording time is unknown"
 
 

@@ -8,6 +8,7 @@ from pathlib import Path
 
 from monitor.core.errors import DeviceError
 from monitor.core.keys import Table
+from monitor.core.readings import NS_PER_S
 
 _EPOCH = datetime(1970, 1, 1, tzinfo=UTC)
 
@@ -17,10 +18,16 @@ def sensor_table(options: Mapping[str, object]) -> Table:
     return Table(options, "sensor")
 
 
-def utc_ns(when: datetime) -> int:
-    """UTC in ns since 1970 of an aware time."""
+def utc_ns_of(value: object) -> int | None:
+    """UTC in ns since 1970 of a time with its offset, aware or RFC 3339; None for all else."""
+    try:
+        when = datetime.fromisoformat(value) if isinstance(value, str) else value
+    except ValueError:
+        return None
+    if not isinstance(when, datetime) or when.tzinfo is None:
+        return None
     since = when - _EPOCH
-    return (since.days * 86_400 + since.seconds) * 1_000_000_000 + since.microseconds * 1_000
+    return (since.days * 86_400 + since.seconds) * NS_PER_S + since.microseconds * 1_000
 
 
 def clock_start_ns(table: Table, required: bool = False) -> int | None:
@@ -29,17 +36,10 @@ def clock_start_ns(table: Table, required: bool = False) -> int | None:
     value = table.any(key) if required else table.any(key, None)
     if value is None:
         return None
-    when = value if isinstance(value, datetime) else _parsed(value)
-    if when is None or when.tzinfo is None:
+    start_ns = utc_ns_of(value)
+    if start_ns is None:
         raise table.error(key, f'{value!r} is not a time with its offset; "2026-03-01T00:00:00Z"')
-    return utc_ns(when)
-
-
-def _parsed(value: object) -> datetime | None:
-    try:
-        return datetime.fromisoformat(value) if isinstance(value, str) else None
-    except ValueError:
-        return None
+    return start_ns
 
 
 def existing_file(table: Table, key: str, folder: Path) -> Path:

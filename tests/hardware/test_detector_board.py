@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-import os
-import socket
 import threading
 import time
 
@@ -11,16 +9,9 @@ import numpy as np
 import pytest
 
 from hardware import open_front_end, settings_for
-from hardware.frames import crc
-from monitor.core.errors import ConfigError, DeviceError
 from monitor.core.flags import Flag
 from monitor.core.readings import MISSING
-
-
-def board(path, clock_ns=time.monotonic_ns, channels=3, simulated=False, **options):
-    options = {"device": str(path)} | options
-    settings = settings_for("detector_board", options, path.parent)
-    return open_front_end(settings, channels, clock_ns, time.time_ns, simulated)
+from tests.hardware.boards import board, counters, greet, until
 
 
 @pytest.fixture
@@ -28,26 +19,6 @@ def front_end(bench, fast_ns):
     opened = board(bench.path, fast_ns)
     yield opened
     opened.close()
-
-
-def until(front_end, condition, within_s=5.0):
-    """Reads until condition() holds; all readings on the way."""
-    batches, end = [], time.monotonic() + within_s
-    while not condition():
-        assert time.monotonic() < end, front_end.status()
-        batches.append(front_end.read(0.02))
-    return batches
-
-
-def counters(front_end):
-    return front_end.status().counters
-
-
-def greet(bench, front_end, banner):
-    front_end.read(0.01)
-    assert bench.heard() == b"?\n"
-    bench.send(banner)
-    until(front_end, lambda: counters(front_end)["banners"] >= 1)
 
 
 def test_readings_come_with_counts_flags_and_status(bench, front_end, banner):
@@ -250,61 +221,6 @@ def test_close_ends_a_read_that_waits(bench):
     assert front_end.read(0.0).n == 0
 
 
-def test_board_clock_a_day_of_frames_at_speed(bench):
-    """Every frame is taken, times are the ticks; at least 60 000 frames in a second of CPU."""
-    front_end = board(
-        bench.path, simulated=True, clock="board", clock_start="2026-03-01T00:00:00+01:00"
-    )
-    greet(bench, front_end, "FSB rehearsal-board 0.1 3 1000 12 simulated")
-    n = 86_400
-    bodies = (f"FS1 {i % 65536} {1000 * i} 3 {i % 4096},7,8 253 5012" for i in range(n))
-    day = b"".join(b"<%s*%04X>\n" % (b.encode(), crc(b.encode())) for b in bodies)
-
-    def feed():
-        left = memoryview(day)
-        while left:
-            left = left[os.write(bench.master, left[:65536]) :]
-
-    feeder = threading.Thread(target=feed)
-    feeder.start()
-    # thread time: the feeding thread is not the driver's cost
-    cpu, batches, deadline = time.thread_time(), [], time.monotonic() + 60
-    while counters(front_end)["frames"] < n:
-        assert time.monotonic() < deadline
-        batches.append(front_end.read(1.0))
-    cpu = time.thread_time() - cpu
-    feeder.join()
-    times = np.concatenate([b.times_ns for b in batches])
-    counts = np.concatenate([b.counts for b in batches])
-    assert (times == np.arange(n, dtype=np.int64) * 1_000_000_000).all()
-    assert (counts[:, 0] == np.arange(n) % 4096).all()
-    assert front_end.owns_clock
-    assert front_end.clock_fix == (0, 1_772_319_600 * 1_000_000_000)
-    assert counters(front_end)["lost"] == 0
-    assert n / cpu > 60_000
-    front_end.close()
-
-
-def test_frames_that_came_before_the_line_broke_are_all_taken(tmp_path, fast_ns, banner, line):
-    """Over socket://, where what was sent before the end can still be read."""
-    with socket.create_server(("127.0.0.1", 0)) as server:
-        device = f"socket://127.0.0.1:{server.getsockname()[1]}"
-        start = "2026-03-01T00:00:00Z"
-        settings = settings_for(
-            "detector_board", {"device": device, "clock": "board", "clock_start": start}, tmp_path
-        )
-        front_end = open_front_end(settings, 3, fast_ns, time.time_ns, False)
-        front_end.read(0.0)
-        far, _ = server.accept()
-        frames = (line(f"FS1 {i} {100 * i} 3 1,2,3 - -") for i in range(40))
-        far.sendall(line(banner) + b"".join(frames))
-        far.shutdown(socket.SHUT_WR)
-        batches = until(front_end, lambda: counters(front_end)["vanished"] == 1)
-        far.close()
-    assert sum(b.n for b in batches) == 40
-    front_end.close()
-
-
 def test_any_url_of_the_serial_library_serves(tmp_path, fast_ns, banner, line):
     settings = settings_for("detector_board", {"device": "loop://"}, tmp_path)
     settings.check_device()
@@ -316,45 +232,3 @@ def test_any_url_of_the_serial_library_serves(tmp_path, fast_ns, banner, line):
     until(front_end, lambda: counters(front_end)["frames"] == 1)
     assert counters(front_end)["garbage"] == 1
     front_end.close()
-
-
-@pytest.mark.parametrize(
-    ("options", "words"),
-    [
-        ({}, "sensor.device: missing"),
-        ({"device": "nonsense://x"}, "sensor.device"),
-        ({"device": "/dev/x", "baud": "fast"}, "sensor.baud"),
-        ({"device": "/dev/x", "clock": "own"}, "sensor.clock"),
-        ({"device": "/dev/x", "clock": "board"}, "sensor.clock_start: missing"),
-        ({"device": "/dev/x", "clock_start": "2026-03-01T00:00:00Z"}, "sensor.clock_start"),
-        ({"device": "/dev/x", "clock": "board", "clock_start": "2026-03-01"}, "clock_start"),
-        ({"device": "/dev/x", "supply_v": [5, 4]}, "sensor.supply_v"),
-        ({"device": "/dev/x", "bauds": 9600}, "sensor.bauds: unknown key; did you mean baud?"),
-    ],
-)
-def test_wrong_options_are_one_line(options, words, tmp_path):
-    with pytest.raises(ConfigError) as caught:
-        settings_for("detector_board", options, tmp_path)
-    assert words in str(caught.value)
-    assert "\n" not in str(caught.value)
-    assert caught.value.exit_code == 2
-
-
-def test_every_counter_is_on_the_protocols_page(tmp_path, page):
-    front_end = board(tmp_path / "none")
-    for name in counters(front_end):
-        assert f"`{name}`" in page, name
-
-
-def test_check_device_names_what_is_wrong_and_the_remedy(tmp_path, bench):
-    settings_for("detector_board", {"device": str(bench.path)}, tmp_path).check_device()
-    plain = tmp_path / "plain"
-    plain.write_text("")
-    for device, words in [("/dev/ttyNone7", "does not exist"), (str(plain), "not a serial port")]:
-        with pytest.raises(DeviceError) as caught:
-            settings_for("detector_board", {"device": device}, tmp_path).check_device()
-        assert str(caught.value).startswith(f"sensor.device: {device} ")
-        assert words in str(caught.value)
-        assert "; " in str(caught.value)
-        assert "\n" not in str(caught.value)
-        assert caught.value.exit_code == 3

@@ -191,18 +191,29 @@ def test_bands_must_match_the_channels(tmp_path):
 
 def test_halves_of_a_pair_and_wrong_headers_are_one_line(tmp_path):
     cases = [
-        (pair(tmp_path, {"core:datatype": "ri16_le"}, name="a"), "sensor.datatype"),
+        (pair(tmp_path, {"core:datatype": "ri16_le"}, name="a"), "ri16_le"),
         (pair(tmp_path, {"core:num_channels": 2}, name="b"), "core:num_channels"),
-        (pair(tmp_path, name="c"), "not a header"),
+        (pair(tmp_path, name="c"), "global: must be"),
     ]
     cases[2][0].write_text("{}", encoding="utf-8")
     for path, words in cases:
         with pytest.raises(ConfigError, match=words):
             iq(path)
+    cases[2][0].write_text("{", encoding="utf-8")
+    with pytest.raises(ConfigError, match="not a JSON text"):
+        iq(cases[2][0])
     lonely = pair(tmp_path, name="d")
     lonely.with_suffix(".sigmf-data").unlink()
     with pytest.raises(DeviceError, match="both files"):
         iq(lonely)
+
+
+def test_a_files_name_may_tell_its_datatype(tmp_path):
+    path = tmp_path / "a.cs16"
+    path.write_bytes(KINDS["cs16"](tone(10_000)).tobytes())
+    assert abs(int(all_of(iq(path, rate_hz=RATE_HZ))[0].counts[0, 0]) + 6021) <= 2
+    with pytest.raises(ConfigError, match="sensor.datatype: missing"):
+        iq(path.rename(tmp_path / "a.bin"), rate_hz=RATE_HZ)
 
 
 def test_real_recordings_against_the_folders_reference(recordings):
