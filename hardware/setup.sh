@@ -39,6 +39,7 @@ look() {
     fi
     [ "$1" = run ] && return
     command -v make >/dev/null || lack make
+    command -v sqlite3 >/dev/null || lack sqlite3
     command -v chromium >/dev/null || command -v chromium-browser >/dev/null ||
         lack chromium
 }

@@ -67,7 +67,7 @@ def test_old_python_gets_one_line(machine: Machine) -> None:
 
 
 def test_newer_python_beside_an_old_one_is_found(machine: Machine) -> None:
-    newer = machine(python3="exit 1", **{"python3.12": GOOD_PYTHON, "make": "", "chromium": ""})
+    newer = machine(python3="exit 1", **{"python3.12": GOOD_PYTHON, "make": ""})
     assert "needs Python" not in newer.stderr
     assert "from requirements.lock" in newer.stdout
 
@@ -88,9 +88,9 @@ def test_missing_venv_is_named_alone(machine: Machine) -> None:
     assert_one_line(done, "apt-get install python3-venv")
 
 
-def test_tests_also_want_make_and_a_browser(machine: Machine) -> None:
+def test_tests_also_want_make_a_browser_and_a_stranger_to_the_record(machine: Machine) -> None:
     done = machine("test", python3=GOOD_PYTHON, **{"apt-get": "exit 1"})
-    assert_one_line(done, "apt-get install make chromium")
+    assert_one_line(done, "apt-get install make sqlite3 chromium")
 
 
 def test_a_machine_without_apt_is_told_so(machine: Machine) -> None:
