@@ -12,6 +12,7 @@ from dataclasses import dataclass, field
 FIRST_WAIT_S = 1.0
 LONGEST_WAIT_S = 60.0
 GRACE_S = 15.0
+SOON_S = 10.0
 LOOK_EVERY_S = 0.2
 
 
@@ -40,7 +41,8 @@ class Child:
 def look(child: Child, now_s: float, tell: Callable[[str], None]) -> int | None:
     """Start a child that has ended once more, later each time; its code where it may not be.
 
-    A wrong site file (2) or a missing device at the start (3) is final: trying again would hide it.
+    A wrong site file (2) or what is missing (3) is final soon after a start: trying again would
+    hide it.
     """
     code = child.code()
     if child.process is not None and code is None:
@@ -51,7 +53,8 @@ def look(child: Child, now_s: float, tell: Callable[[str], None]) -> int | None:
         if now_s >= child.again_s:
             child.start(now_s)
         return None
-    if not child.lasting or code in (0, 2, 3):
+    soon = now_s - child.started_s < SOON_S
+    if not child.lasting or code == 0 or (code in (2, 3) and soon):
         return code
     tell(f"fieldsill: {child.name} ended with {code}; again in {child.wait_s:g} s")
     child.process, child.again_s = None, now_s + child.wait_s

@@ -103,7 +103,8 @@ def daemon_for(site: Site, *, history_s: float | None = None) -> Daemon:
     settings = sensor_settings(site)
     chain = chain_for(site, settings)
     here = station_for(site, chain)
-    if site.sensor_kind in ("level_series", "iq_file"):
+    # A box in service waits for a device that is away, and says so; a first start needs it.
+    if site.sensor_kind in ("level_series", "iq_file") or not site.record_path.exists():
         settings.check_device()
     connect.ensure(site.record_path, site.simulated)
     writer = Writer(site.record_path, simulated=site.simulated)
