@@ -14,7 +14,7 @@ from monitor.record.fetch import columns
 from monitor.record.hours import HOUR_NS
 from monitor.record.types import WINDOW_EVERY_NS, Boot, History, I
 
-_HOURS_FROM_NS = 2 * HOUR_NS  # bins at least this wide are drawn from the hourly extremes
+_HOURS_FROM_NS = HOUR_NS  # bins at least this wide are drawn from the hourly extremes
 _E2 = ("e2_low", "e2_mean", "e2_high", "e2_max")
 _VALUES = "e2_low, e2_mean, e2_high, e2_max, u_db, valid_share, flags"
 _MINUTE_FIELDS = (
@@ -53,7 +53,7 @@ def history(
 ) -> History:  # fmt: skip
     """See Record.history; span: (start, end] in UTC ns. Boots without a clock fix are left out.
 
-    Bins divide the part of the span that has data. Where one is two hours or wider, the hours
+    Bins divide the part of the span that has data. Where one is an hour or wider, the hours
     that touch the span are used whole.
     """
     first_ns, last_ns = _part_with_data(db, boots, span)

@@ -6,7 +6,7 @@ import json
 import math
 import sqlite3
 from collections.abc import Iterator
-from contextlib import closing
+from contextlib import closing, contextmanager
 from pathlib import Path
 from types import TracebackType
 from typing import Any
@@ -17,10 +17,9 @@ from monitor.core.errors import RecordError
 from monitor.core.limits import Scope
 from monitor.core.readings import Batch
 from monitor.core.rows import BlockRows, ExposureRows, FieldRows, WindowRows
-from monitor.record import connect
+from monitor.record import connect, marks
 from monitor.record.fetch import Rows, columns, kinds_of
 from monitor.record.history import history
-from monitor.record.packing import unpack
 from monitor.record.types import (
     Boot,
     ChannelRow,
@@ -115,21 +114,17 @@ class Record:
         """Raw counts with start_ns <= time < end_ns, in the order of time, cut to the span."""
         start = FIRST_NS if start_ns is None else start_ns
         end = LAST_NS if end_ns is None else end_ns
-        query = (
-            "SELECT body, end_ns FROM raw WHERE boot = ? AND end_ns >= ? AND start_ns < ? "
-            "ORDER BY end_ns, seq"
-        )
-        for body, now_ns in self._rows(query, boot, start, end):
-            batch = unpack(body, now_ns)
-            first, last = np.searchsorted(batch.times_ns, (start, end))
-            if first == last and now_ns <= start:
-                continue
-            if first > 0 or last < batch.n:
-                batch = Batch(
-                    batch.times_ns[first:last], batch.counts[first:last],
-                    batch.flags[first:last], min(now_ns, end),
-                )  # fmt: skip
-            yield batch
+        with self._one_line():
+            for batch in marks.batches(self._db, boot, start, end):
+                first, last = np.searchsorted(batch.times_ns, (start, end))
+                if first == last and batch.now_ns <= start:
+                    continue
+                if first > 0 or last < batch.n:
+                    batch = Batch(
+                        batch.times_ns[first:last], batch.counts[first:last],
+                        batch.flags[first:last], min(batch.now_ns, end),
+                    )  # fmt: skip
+                yield batch
 
     def blocks(self, boot: int, start_ns: int = FIRST_NS, end_ns: int = LAST_NS) -> BlockRows:
         """Blocks with start_ns <= start < end_ns as judged live (derivation 0)."""
@@ -169,7 +164,9 @@ class Record:
         """
         if not start_utc_ns < end_utc_ns or at_most < 1:
             raise ValueError("a history needs start < end and at_most > 0")
-        return history(self._db, self.boots(), (start_utc_ns, end_utc_ns), averaging_s, at_most)
+        span = start_utc_ns, end_utc_ns
+        with self._one_line():
+            return history(self._db, self.boots(), span, averaging_s, at_most)
 
     def events(
         self, start_utc_ns: int | None = None, end_utc_ns: int | None = None, limit: int = 1000
@@ -192,9 +189,9 @@ class Record:
 
     def last_reading_ns(self, boot: int) -> int | None:
         """Boot time of the last raw reading; None before the first."""
-        query = "SELECT body, end_ns FROM raw WHERE boot = ? AND n > 0 ORDER BY end_ns DESC LIMIT 1"
-        rows = self._all(query, boot)
-        return int(unpack(*rows[0]).times_ns[-1]) if rows else None
+        with self._one_line():
+            reading, _ = marks.stored_until(self._db, boot)
+        return reading if reading >= 0 else None
 
     def _latest(self, boot: Boot, end_ns: int) -> Latest:
         fields = self._all(_LATEST_FIELDS, boot.boot, end_ns)
@@ -219,22 +216,19 @@ class Record:
             f"SELECT {', '.join(shape.__slots__)} FROM {table} WHERE derivation = 0 "  # noqa: S608
             f"AND boot = ? AND {time} >= ? AND {time} < ? ORDER BY {order}"
         )
-        with closing(self._execute(query, boot, start_ns, end_ns)) as cursor:
-            return shape(*columns(cursor, kinds_of(shape)))
-
-    def _execute(self, query: str, *values: object) -> sqlite3.Cursor:
-        try:
-            return self._db.execute(query, values)
-        except sqlite3.DatabaseError as error:
-            raise RecordError(f"{self.path}: cannot be read: {error}; restore a copy") from error
-
-    def _rows(self, query: str, *values: object) -> Iterator[tuple[Any, ...]]:
-        with closing(self._execute(query, *values)) as cursor:
-            yield from cursor
+        with self._one_line(), closing(self._db.execute(query, (boot, start_ns, end_ns))) as rows:
+            return shape(*columns(rows, kinds_of(shape)))
 
     def _all(self, query: str, *values: object) -> list[tuple[Any, ...]]:
-        with closing(self._execute(query, *values)) as cursor:
+        with self._one_line(), closing(self._db.execute(query, values)) as cursor:
             return cursor.fetchall()
+
+    @contextmanager
+    def _one_line(self) -> Iterator[None]:
+        try:
+            yield
+        except sqlite3.DatabaseError as error:
+            raise RecordError(f"{self.path}: cannot be read: {error}; restore a copy") from error
 
 
 def _utc(offset_ns: int | None, boot_ns: int | None) -> int | None:

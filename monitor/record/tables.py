@@ -29,7 +29,8 @@ CREATE TABLE raw (
   seq INTEGER PRIMARY KEY, boot INTEGER NOT NULL, start_ns INTEGER NOT NULL,
   end_ns INTEGER NOT NULL, n INTEGER NOT NULL, channels INTEGER NOT NULL,
   body BLOB NOT NULL) STRICT;
-CREATE INDEX raw_by_time ON raw (boot, end_ns, start_ns);
+CREATE TABLE raw_marks (
+  seq INTEGER PRIMARY KEY, boot INTEGER NOT NULL, start_ns INTEGER NOT NULL) STRICT;
 CREATE TABLE blocks (
   derivation INTEGER NOT NULL, boot INTEGER NOT NULL, start_ns INTEGER NOT NULL,
   channel INTEGER NOT NULL, energy_w_ns REAL NOT NULL, covered_ns INTEGER NOT NULL,

@@ -22,8 +22,8 @@ from monitor.core.errors import RecordError
 from monitor.core.flags import Flag
 from monitor.core.readings import Batch
 from monitor.core.rows import BlockRows, Event, ExposureRows, FieldRows, WindowRows, count
-from monitor.record import connect, hours
-from monitor.record.packing import pack, unpack
+from monitor.record import connect, hours, marks
+from monitor.record.packing import pack
 from monitor.record.types import BOOT_KINDS, ClockFix, Commit
 
 if TYPE_CHECKING:
@@ -43,6 +43,7 @@ _FIELD = _insert("fields", 13)
 _EXPOSURE = _insert("exposures", 8)
 _FIX = _insert("clock_fixes", 5)
 _RAW = "INSERT INTO raw (boot, start_ns, end_ns, n, channels, body) VALUES (?, ?, ?, ?, ?, ?)"
+_MARK = "INSERT INTO raw_marks VALUES (?, ?, ?)"
 _EVENT = "INSERT INTO events (boot, boot_ns, kind, name, body) VALUES (?, ?, ?, ?, ?)"
 _FIND_SCOPE = (
     "SELECT scope FROM scopes WHERE set_id = ? AND edition = ? AND population = ? "
@@ -74,6 +75,7 @@ class Writer:
         self._scope_numbers = np.empty(0, np.int64)
         self._calibrations: dict[str, int] = {}
         self._ends: dict[int, tuple[int, int]] = {}
+        self._mark = -1, -1
 
     def begin_boot(self, boot_id: str, kind: str) -> int:
         """Number of the boot; the same again when boot_id and kind were here before."""
@@ -173,6 +175,7 @@ class Writer:
                 self._db.execute("COMMIT")
             except BaseException as error:
                 self._calibrations.clear()
+                self._mark = -1, -1
                 if self._db.in_transaction:
                     self._db.execute("ROLLBACK")
                 if isinstance(error, sqlite3.IntegrityError):
@@ -189,18 +192,10 @@ class Writer:
             if rows is not None and not self.simulated and np.any(rows.flags & Flag.SIMULATED):
                 connect.refuse_other_mark(self.path, False, True)
 
-    def _stored_until(self, boot: int) -> tuple[int, int]:
-        """Boot times of the last reading and of the last raw row's end; -1 before the first."""
-        if boot not in self._ends:
-            query = "SELECT body, end_ns FROM raw WHERE boot = ? AND n >= ? ORDER BY end_ns DESC"
-            held = self._db.execute(query, (boot, 1)).fetchone()
-            last = self._db.execute(query, (boot, 0)).fetchone()
-            reading = int(unpack(*held).times_ns[-1]) if held else -1
-            self._ends[boot] = (reading, last[1] if last else -1)
-        return self._ends[boot]
-
     def _put_raw(self, boot: int, batch: Batch) -> tuple[int, int]:
-        last, end = self._stored_until(boot)
+        if boot not in self._ends:
+            self._ends[boot] = marks.stored_until(self._db, boot)
+        last, end = self._ends[boot]
         new = int(np.searchsorted(batch.times_ns, last, side="right"))
         if new:
             batch = Batch(batch.times_ns[new:], batch.counts[new:], batch.flags[new:], batch.now_ns)
@@ -208,7 +203,10 @@ class Writer:
             return last, end
         start = int(batch.times_ns[0]) if batch.n else batch.now_ns
         row = (boot, start, batch.now_ns, batch.n, batch.counts.shape[1], pack(batch))
-        self._db.execute(_RAW, row)
+        seq = self._db.execute(_RAW, row).lastrowid
+        if self._mark != (boot, start // hours.HOUR_NS):
+            self._mark = boot, start // hours.HOUR_NS
+            self._db.execute(_MARK, (seq, boot, start))
         return (int(batch.times_ns[-1]) if batch.n else last), max(end, batch.now_ns)
 
     def _put_blocks(self, derivation: int, boot: int, rows: BlockRows, commit: Commit) -> None:
