@@ -195,7 +195,8 @@ def document(station: Station, doors: Doors, args: Mapping[str, str]) -> dict[st
     if not text.isdecimal() or not 1 <= int(text) <= MAX_API_POINTS:
         raise ConfigError(f"at_most: {text!r} is not a whole number from 1 to {MAX_API_POINTS}")
     with opened(station, doors) as record:
-        wish = read_wish(args, _fallback_day(record, doors.utc_ns()))
+        now_ns = _now_ns(record, doors)
+        wish = read_wish(args, _fallback_day(record, now_ns))
         found = record.history(wish.span.start_ns, wish.span.end_ns, wish.averaging_s, int(text))
         scopes = dict(record.scopes())
         simulated = record.simulated
@@ -226,7 +227,8 @@ def document(station: Station, doors: Doors, args: Mapping[str, str]) -> dict[st
             for index, (low, mean, high) in found.ratios.items()
         ],
         "gaps": [
-            {"start_utc": words.rfc3339(a), "end_utc": words.rfc3339(b)} for a, b in found.gaps
+            {"start_utc": words.rfc3339(a), "end_utc": words.rfc3339(b)}
+            for a, b in past.gaps_until(found.gaps, now_ns)
         ],
     }
 

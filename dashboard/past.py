@@ -48,18 +48,20 @@ class Summary:
 
 
 def series_of(history: History, scope: int | None, now_ns: int) -> Series:
-    """The field in V/m (scope None), or the exposure ratio of a scope, as a series.
-
-    What has not happened yet is no gap, and the newest average may be due still.
-    """
+    """The field in V/m (scope None), or the exposure ratio of a scope, as a series."""
     low, mean, high = (
         (history.e_low, history.e_mean, history.e_high)
         if scope is None
         else history.ratios.get(scope, (np.full(history.utc_ns.size, np.nan),) * 3)
     )
-    past = [(a, min(b, now_ns)) for a, b in history.gaps if a < now_ns]
-    gaps = [(a, b) for a, b in past if b < now_ns or b - a > DUE_NS]
+    gaps = gaps_until(history.gaps, now_ns)
     return Series(history.utc_ns, low, mean, high, history.valid_share, gaps, history.bin_ns)
+
+
+def gaps_until(gaps: Sequence[tuple[int, int]], now_ns: int) -> list[tuple[int, int]]:
+    """The gaps up to now; what has not happened yet is none, and an average may be due still."""
+    begun = [(start, min(end, now_ns)) for start, end in gaps if start < now_ns]
+    return [(start, end) for start, end in begun if end < now_ns or end - start > DUE_NS]
 
 
 def gap_seconds(gaps: Sequence[tuple[int, int]], start_ns: int, end_ns: int) -> float:

@@ -54,8 +54,9 @@ def figure(value: float | None, digits: int = 2) -> str:
         return "no figure"
     if value == 0:
         return "0"
-    decimals = digits - 1 - math.floor(math.log10(abs(value)))
-    return f"{round(value, decimals):.{max(0, decimals)}f}"
+    rounded = float(f"{value:.{digits - 1}e}")
+    decimals = digits - 1 - math.floor(math.log10(abs(rounded)))
+    return f"{rounded:.{max(0, decimals)}f}"
 
 
 def ratio_figure(ratio: float | None) -> str:

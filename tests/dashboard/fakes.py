@@ -49,6 +49,9 @@ LEVEL = {
 WORKERS_LEVEL = {**LEVEL, "population": "occupational"}
 
 
+KEY = "half | icnirp-2020 general_public whole_body 1800 s"
+
+
 def snapshot(ratio: float = 0.31, **changes: Any) -> dict[str, Any]:
     """A daemon's snapshot in which scope 1 stands at a ratio; changes replace its keys."""
     e = 40.0 * ratio**0.5
@@ -60,8 +63,10 @@ def snapshot(ratio: float = 0.31, **changes: Any) -> dict[str, Any]:
         "last_reading_utc": rfc3339(NOON_NS - 3 * S),
         "simulated": False,
         "progress": None,
+        "record_error": "",
         "device": {
-            "connected": True, "text": "board A, firmware 1.2", "temperature_c": 21.4,
+            "ended": False, "late": 0, "connected": True,
+            "text": "board A, firmware 1.2", "temperature_c": 21.4,
             "supply_v": 5.02, "counters": {"bad_checksums": 2, "lost_frames": 0},
         },
         "site": {"name": "Harrowgate Mill", "place": "Tern Hollow", "occupancy": "public"},
@@ -148,8 +153,10 @@ class FakeRecord:
         return {} if self.empty else SCOPES
 
     def events(self, start_utc_ns: int, end_utc_ns: int, limit: int) -> list[EventRow]:
-        found = EventRow(DAY_NS + 3600 * S, 3, 0, "alarm", "raised", {"text": "<over> a level"})
-        return [found] if start_utc_ns <= DAY_NS + 3600 * S < end_utc_ns else []
+        body: dict[str, object] = {"raised": True, "exposure_ratio": 0.52}
+        found = EventRow(DAY_NS + 3600 * S, 3, 0, "alarm", KEY, body)
+        note = EventRow(DAY_NS + 3601 * S, 3, 0, "note", "", {"text": "<over> a level"})
+        return [found, note] if start_utc_ns <= DAY_NS + 3600 * S < end_utc_ns else []
 
     def history(
         self, start_utc_ns: int, end_utc_ns: int, averaging_s: int, at_most: int
