@@ -14,7 +14,8 @@ from monitor.core.readings import Batch
 VERSION = 1
 _HEAD = struct.Struct("<IH")
 _COLUMN = struct.Struct("<QQB")
-_LEVEL = 1  # higher levels gain 2 % on noisy counts and cost three times the time
+_PLAIN = 128  # bit of the width byte: values, not steps
+_LEVEL = 6  # a tenth smaller than level 1; 90 days of raw counts take 3 s longer
 
 U64 = NDArray[np.uint64]
 
@@ -53,25 +54,29 @@ def unpack(body: bytes, end_ns: int) -> Batch:
 
 
 def _packed(values: NDArray[np.signedinteger]) -> bytes:
-    """First value, smallest step, and each step above it in as few whole bytes as all fit.
+    """First value; then what follows, as steps or as values, each above the least of them.
 
-    Arithmetic is modulo 2**64, so that no value and no step can overflow. Bytes are stored
+    Steps are smaller where a column moves slowly, values where neighbours have nothing to do
+    with each other. Arithmetic is modulo 2**64, so that nothing can overflow. Bytes are stored
     plane by plane: all lowest bytes first, because the higher ones hardly vary.
     """
     x = values.astype(np.int64).view(np.uint64)
     if x.size < 2:
         return _COLUMN.pack(int(x[0]) if x.size else 0, 0, 0)
-    steps = np.diff(x)
-    least = steps[np.argmin(steps.view(np.int64))]
-    above = steps - least
+    parts, plain = np.diff(x), 0
+    if np.var(values) < np.var(parts.view(np.int64)):
+        parts, plain = x[1:], _PLAIN
+    least = parts[np.argmin(parts.view(np.int64))]
+    above = parts - least
     width = (int(above.max()).bit_length() + 7) // 8
     planes = above.astype("<u8").view(np.uint8).reshape(-1, 8)[:, :width]
     body: bytes = planes.T.tobytes()
-    return _COLUMN.pack(int(x[0]), int(least), width) + body
+    return _COLUMN.pack(int(x[0]), int(least), width | plain) + body
 
 
 def _unpacked(data: bytes, at: int, n: int) -> tuple[U64, int]:
-    first, least, width = _COLUMN.unpack_from(data, at)
+    first, least, kind = _COLUMN.unpack_from(data, at)
+    width, plain = kind & ~_PLAIN, kind & _PLAIN
     at += _COLUMN.size
     out = np.empty(n, np.uint64)
     if n:
@@ -81,6 +86,7 @@ def _unpacked(data: bytes, at: int, n: int) -> tuple[U64, int]:
         planes[:, :width] = stored.T
         out[0] = first
         out[1:] = planes.view("<u8")[:, 0] + np.uint64(least)
-        np.cumsum(out, out=out)
+        if not plain:
+            np.cumsum(out, out=out)
         at += length
     return out, at

@@ -213,3 +213,25 @@ def test_another_user_reads_during_and_after(tmp_path: Path, closed: bool) -> No
         assert (done.stdout.strip(), done.stderr) == ("21", "")
     finally:
         shutil.rmtree(folder)
+
+
+def test_boots_and_runs_that_alternate_are_kept_apart(path: Path) -> None:
+    """Three runs, two boots in turn, hours crossed: each boot reads back its own and all of it."""
+    said: dict[int, list[int]] = {1: [], 2: []}
+    for run in range(3):
+        writer = writer_of(path)
+        for boot in (1, 2):
+            assert writer.begin_boot(f"b{boot}", "machine") == boot
+            for part in range(5):
+                batch = raw(3000 * (5 * run + part), 40, seed=boot)
+                writer.commit(boot, Commit(batch))
+                said[boot] += batch.times_ns.tolist()
+        writer.close()
+    with Record.open(path) as record:
+        for boot, times in said.items():
+            found = [t for b in record.raw_batches(boot) for t in b.times_ns.tolist()]
+            assert found == times
+            assert record.last_reading_ns(boot) == times[-1]
+            cut = [t for b in record.raw_batches(boot, times[77], times[333]) for t in b.times_ns]
+            assert cut == times[77:333]
+        assert list(record.raw_batches(3)) == []
