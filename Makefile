@@ -4,7 +4,7 @@
 BIN := .venv/bin
 ARGS ?=
 
-.PHONY: help run test lint bench lock clean ready
+.PHONY: help run test lint bench lock clean tools
 
 help:
 	@echo "make run     the main job on a simulated detector"
@@ -14,8 +14,8 @@ help:
 	@echo "make lock    write the lock files anew from pyproject.toml"
 	@echo "make clean   remove .venv and what tools left behind (no record)"
 
-ready:
-	@sh hardware/setup.sh ready
+tools:
+	@sh hardware/setup.sh tools
 
 run:
 	@sh hardware/setup.sh run $(ARGS)
@@ -23,12 +23,12 @@ run:
 test: lint
 	$(BIN)/python -m pytest $(ARGS)
 
-lint: ready
+lint: tools
 	$(BIN)/ruff check .
 	$(BIN)/mypy
 	$(BIN)/lint-imports --no-logo
 
-bench: ready
+bench: tools
 	$(BIN)/python -m tests.bench $(ARGS)
 
 # One resolution for every supported Python and both architectures; no address of an index in it.
@@ -36,7 +36,7 @@ LOCK = .venv/lock/bin/uv pip compile --quiet --upgrade --universal --fork-strate
   --python-version 3.11 --generate-hashes --no-header --no-annotate --no-config \
   --no-emit-index-url --no-emit-find-links pyproject.toml --group build
 
-lock: ready
+lock: tools
 	python3 -m venv .venv/lock && .venv/lock/bin/pip install --quiet uv
 	$(LOCK) --output-file requirements.lock
 	$(LOCK) --group test --group lint --constraint requirements.lock --output-file tests/requirements.lock

@@ -1,9 +1,10 @@
 #!/bin/sh
 # Brings a fresh Debian or Raspberry Pi OS machine to where Fieldsill runs.
 #
-#   sh hardware/setup.sh run    install what is missing, then run on a simulated detector
-#   sh hardware/setup.sh test   install what is missing, then pass the checks and the tests
-#   sh hardware/setup.sh ready  install everything, start nothing
+#   sh hardware/setup.sh run      install what is missing, then run on a simulated detector
+#   sh hardware/setup.sh test     install what is missing, then pass the checks and the tests
+#   sh hardware/setup.sh install  install what a box needs, start nothing
+#   sh hardware/setup.sh tools    install what the checks and tests need too, start nothing
 #
 # Debian packages come through apt-get, Python packages into .venv from the lock files.
 set -eu
@@ -107,10 +108,13 @@ test)
     ready test
     exec make --no-print-directory test
     ;;
-ready)
+install)
+    ready run
+    ;;
+tools)
     ready test
     ;;
 *)
-    stop "usage: sh hardware/setup.sh run | test | ready"
+    stop "usage: sh hardware/setup.sh run | test | install | tools"
     ;;
 esac
