@@ -138,7 +138,6 @@ def draw(
     span: Span,
     marks: Sequence[Mark],
     frame: Frame,
-    *,
     logarithmic: bool,
     now_ns: int,
 ) -> Chart:

@@ -53,6 +53,9 @@ def headline(live: Live, station: Station) -> Headline:
         )
     if live.state is State.STARTING:
         return Headline("starting", f"No reading yet; this {words.NOTHING}.", (_device(live),))
+    if live.state is State.SILENT and (live.snapshot.get("device") or {}).get("ended"):
+        text = f"The recorded series ended at {since}; this {words.NOTHING} since then."
+        return Headline("silent", text, (_device(live),))
     if live.state is State.SILENT:
         age = words.duration(live.age_s or 0)
         text = f"No reading since {since}, for {age}; this {words.NOTHING}."

@@ -66,7 +66,6 @@ def page(station: Station, doors: Doors, args: Mapping[str, str]) -> dict[str, A
     series = past.series_of(found, scope if wish.show == "ratio" else None, now_ns)
     marks = _marks(wish, found, scopes, scope, station)
     summary = past.summary(series, wish.span, now_ns)
-    drawing = {"logarithmic": wish.logarithmic, "now_ns": now_ns}
     return {
         "simulated": simulated,
         "name": station.name,
@@ -77,7 +76,7 @@ def page(station: Station, doors: Doors, args: Mapping[str, str]) -> dict[str, A
         "scope_title": _title(scopes[scope]) if scope is not None else "",
         "scope_links": _scope_links(wish, scopes, scope),
         "charts": [
-            (css, chart.draw(series, wish.span, marks, frame, **drawing))
+            (css, chart.draw(series, wish.span, marks, frame, wish.logarithmic, now_ns))
             for css, frame in (("wide", WIDE), ("narrow", NARROW))
         ],
         "bin_words": words.duration(found.bin_ns / 1e9) if found.bin_ns else "",
@@ -214,23 +213,27 @@ def document(station: Station, doors: Doors, args: Mapping[str, str]) -> dict[st
         "valid_share": _numbers(found.valid_share),
         "expanded_uncertainty_db": _numbers(found.u_db),
         "flags": [flags.words(int(bits)) for bits in found.flags],
-        "exposure_ratios": [
-            {
-                "set": scopes[index].set_id,
-                "edition": scopes[index].edition,
-                "population": scopes[index].population,
-                "scope": scopes[index].scope,
-                "low": _numbers(low),
-                "mean": _numbers(mean),
-                "high": _numbers(high),
-            }
-            for index, (low, mean, high) in found.ratios.items()
-        ],
+        "exposure_ratios": _ratios(found, scopes),
         "gaps": [
             {"start_utc": words.rfc3339(a), "end_utc": words.rfc3339(b)}
             for a, b in past.gaps_until(found.gaps, now_ns)
         ],
     }
+
+
+def _ratios(found: History, scopes: Mapping[int, Scope]) -> list[dict[str, Any]]:
+    return [
+        {
+            "set": scopes[index].set_id,
+            "edition": scopes[index].edition,
+            "population": scopes[index].population,
+            "scope": scopes[index].scope,
+            "low": _numbers(low),
+            "mean": _numbers(mean),
+            "high": _numbers(high),
+        }
+        for index, (low, mean, high) in found.ratios.items()
+    ]
 
 
 def _numbers(values: Any) -> list[float | None]:

@@ -65,12 +65,15 @@ def scope_line(exposure: Snapshot, live: Live, station: Station) -> ScopeLine:
     verdict = str(exposure.get("verdict", "undecided"))
     u_db = uncertainty_db(live, exposure)
     reasons = tuple(str(r) for r in exposure.get("reasons") or ())
+    # The first reason tells what was compared; alone, it is why nothing can be decided.
+    alone = verdict == "undecided" and len(reasons) == 1
+    compared, why = ((), reasons) if alone else (reasons[:1], reasons[1:])
     return ScopeLine(
         index=int(exposure["index"]),
         title=title(exposure),
         ratio=words.of_limit(mean),
-        detail="; ".join(filter(None, [_interval(exposure, u_db), *reasons[:1]])),
-        verdict=words.verdict(verdict, reasons[1:]),
+        detail="; ".join(filter(None, [_interval(exposure, u_db), *compared])),
+        verdict=words.verdict(verdict, why),
         note=FROM_MEMORY if verdict != "undecided" and not exposure.get("verified") else "",
         kind=verdict,
         picture=drawn(exposure, live, station),

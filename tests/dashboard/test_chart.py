@@ -26,7 +26,7 @@ def _series(minutes: list[int], values: list[float], gaps=(), share: float = 1.0
 
 def _draw(series: Series, marks=(), logarithmic: bool = False, now_h: float = 30.0) -> chart.Chart:
     now_ns = SPAN.start_ns + int(now_h * 3600) * S
-    return chart.draw(series, SPAN, marks, FRAME, logarithmic=logarithmic, now_ns=now_ns)
+    return chart.draw(series, SPAN, marks, FRAME, logarithmic, now_ns)
 
 
 def _points(path: str) -> list[tuple[float, float]]:

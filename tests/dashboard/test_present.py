@@ -134,6 +134,16 @@ def test_above_the_limit_but_not_decided_says_both(tmp_path: Path) -> None:
     assert "cannot be decided" in heading
 
 
+def test_why_nothing_can_be_decided_is_told_once(tmp_path: Path) -> None:
+    one = snapshot(0.8)
+    one["exposures"][0]["reasons"] = ["ratio 0.8; guard 2 dB"]
+    assert "cannot be decided: ratio 0.8; guard 2 dB" in _page(one, tmp_path)
+    one["exposures"][0]["reasons"].append("gaps")
+    page = _page(one, tmp_path)
+    assert "cannot be decided: gaps" in page
+    assert page.count("ratio 0.8; guard 2 dB") == 1
+
+
 @pytest.mark.parametrize(
     "change", [{"last_reading_age_s": 132.0}, {"last_reading_age_s": 7.0, "device": GONE}]
 )
@@ -147,6 +157,13 @@ def test_a_silent_instrument_shows_no_figure(change: dict[str, Any], tmp_path: P
     assert "of the limit (" not in page
     assert "Below" not in page
     assert 'class="boards"' in markup
+
+
+def test_a_series_that_has_ended_says_so(tmp_path: Path) -> None:
+    ended = {"connected": False, "ended": True, "text": "end of file", "counters": {}}
+    page = _page(snapshot(last_reading_age_s=40.0, device=ended), tmp_path)
+    assert "The recorded series ended at 11:59 UTC; this says nothing about the field since" in page
+    assert "of the limit (" not in page
 
 
 def test_a_dead_daemon_says_since_when_nothing_is_measured(tmp_path: Path) -> None:
