@@ -5,38 +5,60 @@ from __future__ import annotations
 import sqlite3
 from collections.abc import Mapping, Sequence
 from contextlib import closing
+from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from monitor.record.fetch import columns
-from monitor.record.hours import HOUR_NS
+from monitor.record.spans import DAY_NS, HOUR_NS
 from monitor.record.types import WINDOW_EVERY_NS, Boot, History, I
 
-_HOURS_FROM_NS = HOUR_NS  # bins at least this wide are drawn from the hourly extremes
 _E2 = ("e2_low", "e2_mean", "e2_high", "e2_max")
 _VALUES = "e2_low, e2_mean, e2_high, e2_max, u_db, valid_share, flags"
-_MINUTE_FIELDS = (
-    "SELECT end_ns, end_ns, iif(valid_share > 0, end_ns, -1), iif(valid_share > 0, end_ns, -1), "
-    f"{_VALUES} FROM fields WHERE derivation = 0 AND boot = ? AND end_ns > ? AND end_ns <= ? "  # noqa: S608
-    "AND averaging_s = ?"
+_RATIOS = "scope, ratio_low, ratio_mean, ratio_high"
+_OF_AVERAGING = "scope IN (SELECT scope FROM scopes WHERE averaging_s = ?4)"
+_DAYS = (
+    "WITH RECURSIVE days (d) AS (SELECT ?2 UNION ALL SELECT d + 1 FROM days WHERE d < ?3) "
+    "SELECT {} FROM days JOIN {} ON derivation = 0 AND boot = ?1 AND day = d AND hour = 24 AND {}"
 )
-_HOUR_FIELDS = (
-    "SELECT hour, end_ns, coalesce(first_ns, -1), coalesce(last_ns, -1), "
-    f"{_VALUES} FROM field_hours WHERE derivation = 0 AND boot = ? AND hour >= ? AND hour <= ? "  # noqa: S608
-    "AND averaging_s = ?"
+_HOURS = (
+    "SELECT {} FROM {} WHERE derivation = 0 AND boot = ?1 AND day >= ?2 / 24 AND day <= ?3 / 24 "
+    "AND hour < 24 AND day * 24 + hour BETWEEN ?2 AND ?3 AND {}"
 )
-_MINUTE_RATIOS = (
-    "SELECT end_ns, end_ns, scope, ratio_low, ratio_mean, ratio_high FROM exposures "
-    "WHERE derivation = 0 AND boot = ? AND end_ns > ? AND end_ns <= ? "
-    "AND scope IN (SELECT scope FROM scopes WHERE averaging_s = ?)"
+_WINDOWS = (
+    "SELECT {} FROM {} WHERE derivation = 0 AND boot = ?1 AND end_ns > ?2 AND end_ns <= ?3 AND {}"
 )
-_HOUR_RATIOS = (
-    "SELECT hour, end_ns, scope, ratio_low, ratio_mean, ratio_high FROM exposure_hours "
-    "WHERE derivation = 0 AND boot = ? AND hour >= ? AND hour <= ? "
-    "AND scope IN (SELECT scope FROM scopes WHERE averaging_s = ?)"
+_SPAN_ENDS = "end_ns, coalesce(first_ns, -1), coalesce(last_ns, -1), "
+_WINDOW_ENDS = "end_ns, end_ns, iif(valid_share > 0, end_ns, -1), iif(valid_share > 0, end_ns, -1)"
+
+
+@dataclass(frozen=True, slots=True)
+class _Source:
+    """Where points come from, by the width of a bin. fields, ratios: key, end, ... of each row."""
+
+    unit_ns: int
+    fields: str
+    ratios: str
+
+
+def _spans(unit_ns: int, query: str, key: str) -> _Source:
+    fields = query.format(f"{key}, {_SPAN_ENDS}{_VALUES}", "field_spans", "averaging_s = ?4")
+    ratios = query.format(f"{key}, end_ns, {_RATIOS}", "exposure_spans", _OF_AVERAGING)
+    return _Source(unit_ns, fields, ratios)
+
+
+_SOURCES = (
+    _spans(DAY_NS, _DAYS, "day"),
+    _spans(HOUR_NS, _HOURS, "day * 24 + hour"),
+    _Source(
+        0,
+        _WINDOWS.format(f"{_WINDOW_ENDS}, {_VALUES}", "fields", "averaging_s = ?4"),
+        _WINDOWS.format(f"end_ns, end_ns, {_RATIOS}", "exposures", _OF_AVERAGING),
+    ),
 )
+"""Coarse to fine: bins at least half as wide as the unit are drawn from its extremes."""
 _EXTENT = (
     "SELECT (SELECT min(end_ns) FROM fields WHERE derivation = 0 AND boot = ?1), "
     "(SELECT max(end_ns) FROM fields WHERE derivation = 0 AND boot = ?1)"
@@ -53,14 +75,14 @@ def history(
 ) -> History:  # fmt: skip
     """See Record.history; span: (start, end] in UTC ns. Boots without a clock fix are left out.
 
-    Bins divide the part of the span that has data. Where one is an hour or wider, the hours
-    that touch the span are used whole.
+    Bins divide the part of the span that has data. Where they would be half an hour (half a
+    day) or wider, points come from the hours (days) of the boot that touch the span.
     """
     first_ns, last_ns = _part_with_data(db, boots, span)
     width = -(-(last_ns - first_ns) // at_most)
-    hourly = width >= _HOURS_FROM_NS
+    source = next(source for source in _SOURCES if 2 * width >= source.unit_ns)
     tables = [
-        _of_boot(db, boot, boot.utc_offset_ns, span, averaging_s, hourly)
+        _of_boot(db, boot, boot.utc_offset_ns, span, averaging_s, source)
         for boot in boots
         if boot.utc_offset_ns is not None
     ]
@@ -72,7 +94,7 @@ def history(
     reduced = merged["utc_ns"].size > at_most
     if reduced:
         merged = _in_bins(merged, (merged["utc_ns"] - first_ns - 1) // width)
-    bin_ns = width if reduced else HOUR_NS if hourly else 0
+    bin_ns = width if reduced else source.unit_ns
     return _as_history(merged, averaging_s, gaps, bin_ns)
 
 
@@ -91,16 +113,16 @@ def _part_with_data(
 
 def _of_boot(
     db: sqlite3.Connection, boot: Boot, offset: int, span: tuple[int, int], averaging_s: int,
-    hourly: bool,
+    source: _Source,
 ) -> Table:  # fmt: skip
-    """One row for each window end (or hour) that has a field or a ratio."""
+    """One row for each window end (or hour or day) that has a field or a ratio."""
     start, end = (limit - offset for limit in span)
-    if hourly:
-        start, end = start // HOUR_NS, (end - 1) // HOUR_NS
+    if source.unit_ns:
+        start, end = start // source.unit_ns, (end - 1) // source.unit_ns
     values = (boot.boot, start, end, averaging_s)
-    with closing(db.execute(_HOUR_FIELDS if hourly else _MINUTE_FIELDS, values)) as cursor:
+    with closing(db.execute(source.fields, values)) as cursor:
         key, ends, first, last, *fields, flags = columns(cursor, "iiiiffffffi")
-    with closing(db.execute(_HOUR_RATIOS if hourly else _MINUTE_RATIOS, values)) as cursor:
+    with closing(db.execute(source.ratios, values)) as cursor:
         judged, judged_ends, scope, *ratios = columns(cursor, "iiifff")
     keys = np.union1d(key, judged)
     utc = np.zeros(keys.size, np.int64)

@@ -53,17 +53,18 @@ CREATE TABLE exposures (
   scope INTEGER NOT NULL, ratio_low REAL, ratio_mean REAL, ratio_high REAL,
   verdict INTEGER NOT NULL,
   PRIMARY KEY (derivation, boot, end_ns, scope)) STRICT, WITHOUT ROWID;
-CREATE TABLE field_hours (
-  derivation INTEGER NOT NULL, boot INTEGER NOT NULL, hour INTEGER NOT NULL,
-  averaging_s INTEGER NOT NULL, first_ns INTEGER, last_ns INTEGER, end_ns INTEGER NOT NULL,
+CREATE TABLE field_spans (
+  derivation INTEGER NOT NULL, boot INTEGER NOT NULL, day INTEGER NOT NULL,
+  hour INTEGER NOT NULL, averaging_s INTEGER NOT NULL, first_ns INTEGER, last_ns INTEGER,
+  end_ns INTEGER NOT NULL,
   e2_low REAL, e2_mean REAL, e2_high REAL, e2_max REAL, u_db REAL, valid_share REAL NOT NULL,
   flags INTEGER NOT NULL,
-  PRIMARY KEY (derivation, boot, hour, averaging_s)) STRICT, WITHOUT ROWID;
-CREATE TABLE exposure_hours (
-  derivation INTEGER NOT NULL, boot INTEGER NOT NULL, hour INTEGER NOT NULL,
-  scope INTEGER NOT NULL, end_ns INTEGER NOT NULL,
+  PRIMARY KEY (derivation, boot, day, hour, averaging_s)) STRICT, WITHOUT ROWID;
+CREATE TABLE exposure_spans (
+  derivation INTEGER NOT NULL, boot INTEGER NOT NULL, day INTEGER NOT NULL,
+  hour INTEGER NOT NULL, scope INTEGER NOT NULL, end_ns INTEGER NOT NULL,
   ratio_low REAL, ratio_mean REAL, ratio_high REAL,
-  PRIMARY KEY (derivation, boot, hour, scope)) STRICT, WITHOUT ROWID;
+  PRIMARY KEY (derivation, boot, day, hour, scope)) STRICT, WITHOUT ROWID;
 CREATE TABLE events (
   event INTEGER PRIMARY KEY, boot INTEGER NOT NULL, boot_ns INTEGER NOT NULL,
   kind TEXT NOT NULL, name TEXT NOT NULL, body TEXT NOT NULL) STRICT;

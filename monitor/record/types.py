@@ -137,9 +137,11 @@ class History:
 
     utc_ns: window ends. e_*: V/m rms, nan where nothing is valid. ratios: scope index to
     (low, mean, high) of shape (n,). gaps: [(start, end)] in UTC ns where nothing was valid;
-    no line may be drawn across one. bin_ns: 0, or the width of the equal bins that the points
-    were reduced to: then e_low and valid_share are the smallest in the bin, all else the
-    largest, and flags are those of any window in it.
+    no line may be drawn across one. bin_ns: 0 where each point is one window, else the width of
+    the bins that the points were reduced to: then e_low, valid_share and the low ratio are the
+    smallest in the bin, all else the largest, and flags are those of any window in it. A gap
+    inside one hour (one day) is not told where bins are an hour (a day) or wider: then
+    valid_share is 0.
     """
 
     averaging_s: int

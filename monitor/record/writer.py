@@ -22,7 +22,7 @@ from monitor.core.errors import RecordError
 from monitor.core.flags import Flag
 from monitor.core.readings import Batch
 from monitor.core.rows import BlockRows, Event, ExposureRows, FieldRows, WindowRows, count
-from monitor.record import connect, hours, marks
+from monitor.record import connect, marks, spans
 from monitor.record.packing import pack
 from monitor.record.types import BOOT_KINDS, ClockFix, Commit
 
@@ -204,8 +204,8 @@ class Writer:
         start = int(batch.times_ns[0]) if batch.n else batch.now_ns
         row = (boot, start, batch.now_ns, batch.n, batch.counts.shape[1], pack(batch))
         seq = self._db.execute(_RAW, row).lastrowid
-        if self._mark != (boot, start // hours.HOUR_NS):
-            self._mark = boot, start // hours.HOUR_NS
+        if self._mark != (boot, start // spans.HOUR_NS):
+            self._mark = boot, start // spans.HOUR_NS
             self._db.execute(_MARK, (seq, boot, start))
         return (int(batch.times_ns[-1]) if batch.n else last), max(end, batch.now_ns)
 
@@ -216,7 +216,7 @@ class Writer:
     def _put_fields(self, derivation: int, boot: int, rows: FieldRows) -> None:
         self._put(_FIELD, derivation, boot, rows)
         if count(rows):
-            self._db.executemany(hours.FIELD_SQL, hours.fields_by_hour(derivation, boot, rows))
+            self._db.executemany(spans.FIELD_SQL, spans.of_fields(derivation, boot, rows))
 
     def _put_exposures(self, derivation: int, boot: int, rows: ExposureRows) -> None:
         if not count(rows):
@@ -228,8 +228,8 @@ class Writer:
         columns.append(rows.verdict)
         lists = (column.tolist() for column in columns)
         self._db.executemany(_EXPOSURE, zip(repeat(derivation), repeat(boot), *lists))
-        hourly = hours.exposures_by_hour(derivation, boot, rows, scope)
-        self._db.executemany(hours.EXPOSURE_SQL, hourly)
+        extremes = spans.of_exposures(derivation, boot, rows, scope)
+        self._db.executemany(spans.EXPOSURE_SQL, extremes)
 
     def _put(
         self, sql: str, derivation: int, boot: int, rows: BlockRows | WindowRows | FieldRows,

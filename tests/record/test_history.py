@@ -86,15 +86,34 @@ def test_a_peak_of_one_minute_survives_ten_years(writer: Writer) -> None:
             e2[77] = 1e4
         _put(writer, ends, e2)
     with Record.open(writer.path) as record:
-        found = record.history(UTC0, UTC0 + 3650 * DAY, 360, 60)
-    assert found.bin_ns > 50 * DAY
-    assert found.utc_ns.size <= 60
+        found = record.history(UTC0, UTC0 + 3650 * DAY, 360, 40)
+    assert found.bin_ns > 80 * DAY
+    assert found.utc_ns.size <= 40
     assert found.e_mean.max() == 100.0
     assert found.ratios[1][1].max() == 100.0
     peak = int(found.utc_ns[found.e_mean.argmax()]) - UTC0
-    assert 730 * DAY <= peak <= 730 * DAY + 2 * HOUR
+    assert 730 * DAY <= peak <= 730 * DAY + found.bin_ns
     assert len(found.gaps) == 50
     assert found.gaps[3] == (UTC0 + 219 * DAY + 2 * HOUR, UTC0 + 292 * DAY)
+
+
+@pytest.mark.parametrize(("at_most", "unit"), [(40, DAY), (40 * 24, HOUR), (10**9, 0)])
+def test_every_source_tells_the_same(writer: Writer, at_most: int, unit: int) -> None:
+    """From windows, hours and days alike: the largest, the smallest and where it is silent."""
+    e2 = np.random.default_rng(8).lognormal(0, 1, 40 * 1440)
+    e2[5 * 1440 + 100 : 9 * 1440 + 7] = np.nan
+    ends = _minutes(1, 40 * 1440 + 1)
+    _put(writer, ends, e2)
+    with Record.open(writer.path) as record:
+        found = record.history(UTC0, UTC0 + 40 * DAY, 360, at_most)
+    assert found.bin_ns == unit
+    assert np.nanmax(found.e_mean) == np.sqrt(np.nanmax(e2))
+    assert np.nanmin(found.ratios[1][0]) == np.nanmin(e2) / 200
+    assert found.valid_share.min() == 0.0
+    assert found.gaps == [
+        (UTC0 + 5 * DAY + 100 * MINUTE, UTC0 + 9 * DAY + 7 * MINUTE),
+    ]
+    assert np.all(np.diff(found.utc_ns) > 0)
 
 
 def test_gaps_are_missing_minutes_and_minutes_without_a_valid_part(writer: Writer) -> None:
@@ -153,12 +172,12 @@ def test_hours_are_the_same_however_the_commits_are_cut(tmp_path: Path) -> None:
             _put(writer, ends[at : at + size], e2[at : at + size])
         with Record.open(writer.path) as record:
             found.append(
-                record._all("SELECT * FROM field_hours")  # noqa: SLF001
-                + record._all("SELECT * FROM exposure_hours")  # noqa: SLF001
+                record._all("SELECT * FROM field_spans")  # noqa: SLF001
+                + record._all("SELECT * FROM exposure_spans")  # noqa: SLF001
             )
         writer.close()
     assert found[0] == found[1]
-    assert len(found[0]) == 20
+    assert len(found[0]) == 22  # ten hours and a day, of a field and of a ratio
 
 
 @pytest.mark.parametrize("bad", [(5, 5, 10), (6, 5, 10), (0, 5, 0)])
