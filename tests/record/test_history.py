@@ -51,7 +51,7 @@ def test_every_window_where_they_fit(writer: Writer) -> None:
     assert other.gaps == [(UTC0, UTC0 + 100 * MINUTE)]
 
 
-@pytest.mark.parametrize("at_most", [1, 7, 40, 399])
+@pytest.mark.parametrize("at_most", [1, 20, 40, 399])
 def test_a_reduction_keeps_the_largest_and_the_smallest(writer: Writer, at_most: int) -> None:
     """Against a plain loop over the same equal bins."""
     ends = _minutes(1, 401)
