@@ -172,7 +172,7 @@ def _x(utc_ns: I, span: Span, frame: Frame) -> F:
 
 
 def _x_ticks(span: Span, frame: Frame) -> list[tuple[float, str]]:
-    room = max(3, (frame.x1 - frame.left) // 62)
+    room = max(3, (frame.x1 - frame.left) // 72)
     found = ticks.calendar(span, room)
     plot = frame.x1 - frame.left
     return [
