@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import threading
 from collections.abc import Iterator
 from pathlib import Path
@@ -48,7 +49,11 @@ class Served:
         app = app_over(self.daemon, self.record, folder)
         app.before_request(lambda: ("", 500) if self.fails else None)
         self._server = create_server(app, host="127.0.0.1", port=0)
-        threading.Thread(target=self._server.run, daemon=True).start()
+        threading.Thread(target=self._run, daemon=True).start()
+
+    def _run(self) -> None:
+        with contextlib.suppress(OSError):  # its sockets are closed under it by close()
+            self._server.run()
 
     def address(self, path: str = "/") -> str:
         """The address of a page."""
