@@ -49,7 +49,7 @@ def test_below_the_alert_level(tmp_path: Path) -> None:
     assert "2.6 dB (k 1.96)" in page
     assert "98 %" in page
     assert "Bad checksums 2" in page.replace("bad", "Bad")
-    assert "Counted 0 times lost frames" in page
+    assert "None so far lost frames" in page
     assert "21.4 °C" in page
     assert "5.02 V" in page
 
