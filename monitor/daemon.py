@@ -52,7 +52,7 @@ class Daemon:
     ) -> None:
         self._site, self._here, self._front, self._writer = site, here, front, writer
         self._clock, self._boot, self._state, self._desk = clock, boot, state, desk
-        self._history_s = history_s
+        self._history_ns = None if history_s is None else round(history_s * NS_PER_S)
         self._start_ns = state.front_ns
         self._spool = Spool()
         self._lock = threading.Lock()
@@ -175,7 +175,7 @@ class Daemon:
         now = self._clock.boot_ns()
         due = now - self._committed_ns >= self._site.commit_s * NS_PER_S
         if self._front.owns_clock:
-            due = due or self._state.front_ns - self._start_ns >= BULK_NS
+            due = due or self._state.front_ns - self._start_ns >= BULK_NS or self._caught_up()
         if self._status.ended and not self.ended.is_set() and not batch.n:
             due = True
         if due:
@@ -183,6 +183,13 @@ class Daemon:
         if self._status.ended and self._spool.empty and not self.ended.is_set():
             self._writer.flush()
             self.ended.set()
+
+    def _caught_up(self) -> bool:
+        """Once, when a rehearsal's history has been judged: the pages wait for it."""
+        if self._history_ns is None or self._state.front_ns < self._history_ns:
+            return False
+        self._history_ns = None
+        return True
 
     def _tell_refused(self) -> None:
         """A commit that the record can never take is lost: say so in the record itself."""
@@ -213,8 +220,9 @@ class Daemon:
         state, heard = self._state, self._heard_ns
         age_s = None if heard is None else (self._clock.boot_ns() - heard) / NS_PER_S
         progress = None
-        if self._history_s is not None and state.front_ns < self._history_s * NS_PER_S:
-            progress = (max(state.front_ns, 0) / NS_PER_S, self._history_s)
+        history_ns = self._history_ns
+        if history_ns is not None and state.front_ns < history_ns:
+            progress = (max(state.front_ns, 0) / NS_PER_S, history_ns / NS_PER_S)
         return View(
             state, self._status, self._boot, self._offset_ns, age_s, self._desk.alarms(),
             progress, self.trouble,

@@ -86,6 +86,7 @@ def _run(plan: rehearsal.Rehearsal, stop: threading.Event, exit_at_end: bool) ->
         took_s = time.monotonic() - began_s
         if not stop.is_set() and measure.code() is None:
             click.echo(f"History of {plan.history_s / 3600:g} h written in {took_s:.1f} s.")
+            measure.lasting = not exit_at_end
             if not exit_at_end:
                 click.echo(f"Pages: http://127.0.0.1:{plan.port}/   Stop with Ctrl-C.")
         if exit_at_end:
