@@ -14,6 +14,7 @@ from monitor.config import Site
 from monitor.core import pipeline
 from monitor.core.errors import ConfigError
 from monitor.core.flags import Flag
+from monitor.core.judgement import MINUTE_NS
 from monitor.core.readings import NS_PER_S, Batch, DeviceStatus, FrontEnd
 from monitor.core.rows import Event
 from monitor.core.station import Station
@@ -98,7 +99,7 @@ class Daemon:
         batch = self._front.read(READ_S)
         self._status = self._front.status()
         if self._status.ended and not self.ended.is_set():
-            batch = replace(batch, now_ns=max(batch.now_ns, self._last_hold_ns(batch)))
+            batch = replace(batch, now_ns=self._after_the_end_ns(batch))
         batch = self._marked(pipeline.accepted(self._state, batch), batch)
         self._state, out = pipeline.step(self._state, batch, self._here)
         for event in out.events:
@@ -110,9 +111,11 @@ class Daemon:
         self._take_asked()
         self._commit_when_due(batch)
 
-    def _last_hold_ns(self, batch: Batch) -> int:
+    def _after_the_end_ns(self, batch: Batch) -> int:
+        """Nothing comes after a series: its last block closes, and the minute that is kept."""
         last = int(batch.times_ns[-1]) if batch.n else self._state.last_ns
-        return last + self._here.hold_ns
+        end = max(batch.now_ns, last + self._here.hold_ns)
+        return -(-end // MINUTE_NS) * MINUTE_NS
 
     def _marked(self, kept: Batch, came: Batch) -> Batch:
         """The readings taken, with the flags that only the daemon knows of."""
