@@ -42,7 +42,7 @@ _LATEST_FIELDS = (
     "flags FROM fields WHERE derivation = 0 AND boot = ? AND end_ns = ?"
 )
 _LATEST_EXPOSURES = (
-    "SELECT scope, ratio_low, ratio_mean, ratio_high, verdict FROM exposures "
+    "SELECT scope, ratio_low, ratio_mean, ratio_high, u_db, verdict FROM exposures "
     "WHERE derivation = 0 AND boot = ? AND end_ns = ?"
 )
 
@@ -252,7 +252,7 @@ def _latest_field(
 
 def _latest_exposure(
     scopes: dict[int, Scope], number: int, low: float | None, mean: float | None,
-    high: float | None, verdict: int,
+    high: float | None, u_db: float | None, verdict: int,
 ) -> LatestExposure:  # fmt: skip
-    ratios = (_number(low), _number(mean), _number(high))
+    ratios = (_number(low), _number(mean), _number(high), _number(u_db))
     return LatestExposure(number, scopes[number], *ratios, verdict)

@@ -50,7 +50,7 @@ CREATE TABLE fields (
   PRIMARY KEY (derivation, boot, end_ns, averaging_s)) STRICT, WITHOUT ROWID;
 CREATE TABLE exposures (
   derivation INTEGER NOT NULL, boot INTEGER NOT NULL, end_ns INTEGER NOT NULL,
-  scope INTEGER NOT NULL, ratio_low REAL, ratio_mean REAL, ratio_high REAL,
+  scope INTEGER NOT NULL, ratio_low REAL, ratio_mean REAL, ratio_high REAL, u_db REAL,
   verdict INTEGER NOT NULL,
   PRIMARY KEY (derivation, boot, end_ns, scope)) STRICT, WITHOUT ROWID;
 CREATE TABLE field_spans (
@@ -102,7 +102,7 @@ SELECT {_UTC.format("end_ns")} AS end_utc, derivation, boot, averaging_s,
 FROM fields LEFT JOIN boot_utc USING (boot)""",
     "exposure_levels": f"""
 SELECT {_UTC.format("end_ns")} AS end_utc, derivation, boot, set_id, edition, population,
-  scope_kind, averaging_s, ratio_low, ratio_mean, ratio_high, meaning AS verdict, verified
+  scope_kind, averaging_s, ratio_low, ratio_mean, ratio_high, u_db, meaning AS verdict, verified
 FROM exposures LEFT JOIN scopes USING (scope) LEFT JOIN verdict_words USING (verdict)
   LEFT JOIN boot_utc USING (boot)""",
     "event_log": f"""

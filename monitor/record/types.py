@@ -113,6 +113,7 @@ class LatestExposure:
     ratio_low: float
     ratio_mean: float
     ratio_high: float
+    u_db: float
     verdict: int
 
 

@@ -84,7 +84,7 @@ def exposure_rows(end_ns: np.ndarray, ratio: np.ndarray, *, scope: int = 1) -> E
     size = end_ns.size
     return ExposureRows(
         end_ns.astype(np.int64), np.full(size, scope), ratio / 2, ratio, ratio * 2,
-        np.full(size, 1),
+        np.full(size, 1.5), np.full(size, 1),
     )  # fmt: skip
 
 
