@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
 from dataclasses import dataclass
 from pathlib import Path
@@ -34,7 +35,7 @@ Bands = tuple[tuple[float, float], ...]
 
 @dataclass(frozen=True, slots=True)
 class Settings:
-    """Options of [sensor] for an I/Q file. bands: (low, high) in Hz from the centre, per channel.
+    """Options of [sensor] for an I/Q file. bands: (low, high) in Hz from centre_hz, per channel.
 
     start_utc_ns: of the first sample; start_source: where that was found.
     """
@@ -42,7 +43,7 @@ class Settings:
     file: Path
     datatype: str
     rate_hz: float
-    centre_hz: float | None
+    centre_hz: float
     bands: Bands
     fft: int
     overlap: float
@@ -53,6 +54,16 @@ class Settings:
     trailing_bytes: int
     real_pace: bool
     resolution: ClassVar[float | None] = 1.0 / COUNTS_PER_DB
+
+    @property
+    def bands_hz(self) -> Bands:
+        """(low, high) on the air per channel, Hz."""
+        return tuple((self.centre_hz + low, self.centre_hz + high) for low, high in self.bands)
+
+    @property
+    def bin_hz(self) -> float:
+        """Spacing of the spectrum's bins: an edge of a band cannot be finer."""
+        return self.rate_hz / self.fft
 
     def check_device(self) -> None:
         """DeviceError where the file cannot be read."""
@@ -79,14 +90,14 @@ def settings_from(table: Table, folder: Path) -> Settings:
     data, form = sigmf.find(existing_file(table, "file", folder))
     known = form or IqFormat("")
     datatype = table.text("datatype", known.datatype or REQUIRED, tuple(DATATYPES))
-    rate_hz = table.number("rate_hz", known.rate_hz or REQUIRED, low=1.0, high=1e12)
+    rate_hz = _agreed(table, "rate_hz", known.rate_hz)
     fft = table.whole("fft", 1024, 8, 1 << 20)
     start_utc_ns, source = _start(table, data, known)
     settings = Settings(
         file=data,
         datatype=datatype,
         rate_hz=rate_hz,
-        centre_hz=table.number("centre_hz", known.centre_hz, low=0.0, high=1e12),
+        centre_hz=_agreed(table, "centre_hz", known.centre_hz),
         bands=_bands(table),
         fft=fft,
         overlap=table.number("overlap", 0.5, 0.0, 0.99),
@@ -99,6 +110,21 @@ def settings_from(table: Table, folder: Path) -> Settings:
     )
     _accumulator(settings, table)
     return settings
+
+
+def _agreed(table: Table, key: str, header_hz: float | None) -> float:
+    """A frequency from the options or the header; ConfigError where neither or both tell it.
+
+    Both may, if they agree. A header's 0 is a receiver that did not know: it tells nothing.
+    """
+    given_hz = table.number(key, header_hz or REQUIRED, low=1.0, high=1e12)
+    if header_hz and not math.isclose(given_hz, header_hz, rel_tol=1e-9):
+        raise table.error(
+            key,
+            f"{given_hz:.12g} differs from {header_hz:.12g} in the recording's header;"
+            " leave it out or correct the header",
+        )
+    return given_hz
 
 
 def _start(table: Table, path: Path, form: IqFormat) -> tuple[int, str]:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections import Counter
-from collections.abc import Callable, Iterable, Iterator
+from collections.abc import Callable, Iterable, Iterator, Sequence
 from dataclasses import dataclass
 from datetime import UTC, datetime, timedelta
 
@@ -22,6 +22,11 @@ from monitor.core.quantities import dbm_from_w
 from monitor.core.uncertainty import coverage_factor, standard_db
 
 DUE_SOON_DAYS = 60
+TELL_NO_TEMPERATURE = ("text_lines", "level_series", "iq_file")
+OUTSIDE_TEXTS = {
+    "filter": "a filter keeps out signals outside it",
+    "survey": "a survey rules out signals outside it",
+}
 _EPOCH = datetime(1970, 1, 1, tzinfo=UTC)
 
 
@@ -46,6 +51,7 @@ def findings(
     tops = [(scope, _top(site, chain, scope)) for scope in _scopes(site)]
     yield from _site(site)
     yield from _calibration(chain, now_utc_ns)
+    yield from _temperature(site, chain)
     yield from _channels(site, chain)
     yield from front_end(site)
     for scope, top in tops:
@@ -92,6 +98,16 @@ def _calibration(chain: Chain, now_utc_ns: int) -> Iterator[Finding]:
     )
 
 
+def _temperature(site: Site, chain: Chain) -> Iterator[Finding]:
+    if site.sensor_kind in TELL_NO_TEMPERATURE:
+        low, high = chain.valid_temperature_c
+        yield Finding(
+            "sensor",
+            f"tells no temperature: that it was between {low:g} and {high:g} °C is assumed",
+            ok=False,
+        )
+
+
 def _expanded(chain: Chain) -> tuple[float, float]:
     channels = len(chain.tables)
     k = coverage_factor(chain.contributions)
@@ -109,6 +125,12 @@ def _channels(site: Site, chain: Chain) -> Iterator[Finding]:
             + ("; a component only, a lower bound: nothing will conform" if few else ""),
             not few,
         )
+        outside = OUTSIDE_TEXTS.get(band.outside)
+        yield Finding(
+            "band.outside",
+            f"{name}: {outside or 'undeclared: nothing will ever conform'}",
+            outside is not None,
+        )
         if band.low_hz < E_ALONE_FROM_HZ:
             yield Finding("band", f"{name}: no verdict from E alone below 30 MHz", ok=False)
     for channel, table, k_mid in zip(site.channels, chain.tables, chain.k_mid):
@@ -124,6 +146,36 @@ def _range_w(table: CountTable) -> tuple[float, float]:
     if not good.size:
         raise ConfigError("detector: no count lies within the range; correct bits and curve")
     return float(good.min()), float(good.max())
+
+
+def compare_bands(
+    site: Site, bands_hz: Sequence[tuple[float, float]] | None, bin_hz: float
+) -> None:
+    """ConfigError unless each channel's band in the site file is the one that it receives.
+
+    bands_hz: (low, high) on the air per channel, Hz; None where the sensor has no bands of its
+    own. bin_hz: how far an edge may be off, one bin of the sensor's spectrum.
+    """
+    if bands_hz is None:
+        return
+    if len(bands_hz) != len(site.channels):
+        raise ConfigError(
+            f"{site.path.name}: sensor.bands: {len(bands_hz)} bands for {len(site.channels)} "
+            "channels; give one [low, high] for each channel"
+        )
+    for i, (channel, (low_hz, high_hz)) in enumerate(zip(site.channels, bands_hz), 1):
+        band = site.bands[channel.band]
+        if max(abs(band.low_hz - low_hz), abs(band.high_hz - high_hz)) > bin_hz:
+            raise ConfigError(
+                f"{site.path.name}: band {band.name!r}: {_span(band.low_hz, band.high_hz)}, but "
+                f"sensor.bands[{i}] round the recording's centre is {_span(low_hz, high_hz)}; "
+                "correct centre_hz, bands or the band"
+            )
+
+
+def _span(low_hz: float, high_hz: float) -> str:
+    """To the hertz: two bands that differ must not look alike."""
+    return f"{low_hz / 1e6:.10g} to {high_hz / 1e6:.10g} MHz"
 
 
 def _scopes(site: Site) -> list[Scope]:

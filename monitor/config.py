@@ -18,17 +18,19 @@ from monitor.tomlfile import TopTable
 
 OCCUPANCIES = ("public", "controlled")
 AXES = ("x", "y", "z", "")
+OUTSIDE = ("filter", "survey", "undeclared")
 MAX_CHANNELS = 64
 DAY_S = 86_400.0
 
 
 @dataclass(frozen=True, slots=True)
 class Band:
-    """A part of the spectrum, Hz."""
+    """A part of the spectrum, Hz. outside: what rules out signals beyond it, one of OUTSIDE."""
 
     name: str
     low_hz: float
     high_hz: float
+    outside: str = "undeclared"
 
 
 @dataclass(frozen=True, slots=True)
@@ -159,7 +161,12 @@ def _pages(table: Table) -> dict[str, object]:
 def _bands(top: TopTable) -> dict[str, Band]:
     bands: dict[str, Band] = {}
     for table in top.tables("band"):
-        band = Band(_named(table, "name"), frequency(table, "low"), frequency(table, "high"))
+        band = Band(
+            _named(table, "name"),
+            frequency(table, "low"),
+            frequency(table, "high"),
+            table.text("outside", "undeclared", OUTSIDE),
+        )
         table.finish()
         if band.low_hz >= band.high_hz:
             raise table.error("high", "must be above low")

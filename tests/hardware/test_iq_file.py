@@ -15,6 +15,7 @@ from monitor.core.flags import Flag
 from monitor.core.readings import MISSING
 
 RATE_HZ = 100_000.0
+CENTRE_HZ = 9e8
 KINDS = {
     "cu8": lambda z: np.rint(z * 127.5 + 127.5).astype("u1"),
     "cs8": lambda z: np.rint(z * 128).astype("i1"),
@@ -29,10 +30,21 @@ def tone(n, amplitude=0.5, hz=12_500.0):
     return np.column_stack([z.real, z.imag]).ravel()
 
 
+_opened = []
+
+
+@pytest.fixture(autouse=True)
+def _files_are_let_go():
+    yield
+    while _opened:
+        _opened.pop().close()
+
+
 def iq(path, bands=((-50_000, 50_000),), clock_ns=time.monotonic_ns, simulated=False, **options):
-    options = {"file": path.name, "bands": [list(band) for band in bands]} | options
-    settings = settings_for("iq_file", options, path.parent)
-    return open_front_end(settings, len(bands), clock_ns, time.time_ns, simulated)
+    own = {"file": path.name, "bands": [list(band) for band in bands], "centre_hz": CENTRE_HZ}
+    settings = settings_for("iq_file", own | options, path.parent)
+    _opened.append(open_front_end(settings, len(bands), clock_ns, time.time_ns, simulated))
+    return _opened[-1]
 
 
 def all_of(front_end):
@@ -122,7 +134,7 @@ def pair(folder, general=None, capture=None, name="rec"):
         "captures": [
             {
                 "core:sample_start": 0,
-                "core:frequency": 9e8,
+                "core:frequency": CENTRE_HZ,
                 "core:datetime": "2026-03-01T00:00:00.250Z",
                 "core:header_bytes": 8,
             }
@@ -182,8 +194,8 @@ def test_wrong_options_are_one_line(tmp_path, options, words):
 
 def test_bands_must_match_the_channels(tmp_path):
     (tmp_path / "a.cs16").write_bytes(bytes(4 * 10_000))
-    options = {"file": "a.cs16", "datatype": "cs16", "rate_hz": RATE_HZ, "bands": [[0, 1e4]]}
-    settings = settings_for("iq_file", options, tmp_path)
+    options = {"datatype": "cs16", "rate_hz": RATE_HZ, "bands": [[0, 1e4]], "centre_hz": CENTRE_HZ}
+    settings = settings_for("iq_file", {"file": "a.cs16"} | options, tmp_path)
     assert settings.resolution == 0.001
     with pytest.raises(ConfigError, match="sensor.bands: 1 bands for 2 channels"):
         open_front_end(settings, 2, time.monotonic_ns, time.time_ns, False)

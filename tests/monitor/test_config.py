@@ -10,7 +10,8 @@ from monitor.config import Band, Channel, default_site_path, load_site
 from monitor.core.alarms import AlertRule
 from monitor.core.errors import ConfigError, DeviceError
 
-EXAMPLES = Path(__file__).parents[2] / "hardware" / "examples"
+ROOT = Path(__file__).parents[2]
+EXAMPLES = ROOT / "hardware" / "examples"
 
 SITE = """
 [site]
@@ -108,6 +109,7 @@ def test_paths_are_relative_to_the_site_file(
         ("hold_s = 3", "hold_s = nan", "sensor.hold_s: nan is outside"),
         ('"700MHz"', '"700Volt"', "band[1].low: '700Volt': not a frequency"),
         ('"700MHz"', "true", "band[1].low: True is not a frequency"),
+        ("high = 2.7e9", "high = 2.7e9\noutside = 'hope'", "band[1].outside: 'hope' is not one of"),
         ('"700MHz"', '"3GHz"', "band[1].high: must be above low"),
         ('axis = "y"', 'axis = "x"', "channel[2].axis: band 'main' has several channels"),
         ('axis = "y"', "", "channel[2].axis: band 'main' has several channels"),
@@ -157,6 +159,16 @@ def test_bands_may_touch(tmp_path: Path) -> None:
     assert site.channels[2] == Channel("b", "", "b")
 
 
+@pytest.mark.parametrize("outside", ["filter", "survey", "undeclared"])
+def test_what_rules_out_signals_beyond_a_band(tmp_path: Path, outside: str) -> None:
+    text = SITE.replace("high = 2.7e9", f'high = 2.7e9\noutside = "{outside}"')
+    assert load_site(written(tmp_path, text)).bands == {"main": Band("main", 7e8, 2.7e9, outside)}
+
+
+def test_nothing_said_about_signals_beyond_a_band_is_undeclared(tmp_path: Path) -> None:
+    assert load_site(written(tmp_path, SITE)).bands["main"].outside == "undeclared"
+
+
 def test_a_site_file_that_is_not_there_is_wrong_input(tmp_path: Path) -> None:
     with pytest.raises(ConfigError, match="no site file .*none.toml") as caught:
         load_site(tmp_path / "none.toml")
@@ -199,3 +211,10 @@ def test_every_example_is_a_site(path: Path) -> None:
     assert site.sensor_kind == path.stem.removesuffix("-site").replace("-", "_")
     assert site.calibration.is_file()
     assert not site.simulated
+    assert {band.outside for band in site.bands.values()} == {"undeclared"}
+
+
+def test_the_rehearsal_declares_its_filter(tmp_path: Path) -> None:
+    text = (ROOT / "simulators" / "data" / "rehearsal-site.toml.in").read_text(encoding="utf-8")
+    site = load_site(written(tmp_path, text.replace("{port}", "8080")))
+    assert {band.outside for band in site.bands.values()} == {"filter"}

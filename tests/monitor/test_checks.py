@@ -1,0 +1,110 @@
+"""What fieldsill check notes about a band and a temperature, and bands that are not received."""
+
+from __future__ import annotations
+
+import shutil
+from dataclasses import replace
+from pathlib import Path
+
+import pytest
+
+from hardware import settings_for
+from monitor.checks import Finding, compare_bands, findings
+from monitor.config import Site, load_site
+from monitor.core.errors import ConfigError
+
+EXAMPLES = Path(__file__).parents[2] / "hardware" / "examples"
+BINS_HZ = 1.92e6 / 1024
+
+
+def example(kind: str) -> Site:
+    """The site of an example."""
+    return load_site(EXAMPLES / f"{kind}-site.toml")
+
+
+def noted(site: Site, where: str) -> list[Finding]:
+    """What is found about one thing; the front end is left out."""
+    return [found for found in findings(site, 0, lambda _: []) if found.where == where]
+
+
+@pytest.mark.parametrize(
+    ("outside", "words", "ok"),
+    [
+        ("undeclared", "700-2700: undeclared: nothing will ever conform", False),
+        ("filter", "700-2700: a filter keeps out signals outside it", True),
+        ("survey", "700-2700: a survey rules out signals outside it", True),
+    ],
+)
+def test_what_rules_out_signals_beyond_a_band_is_said(outside: str, words: str, ok: bool) -> None:
+    site = example("detector-board")
+    bands = {name: replace(band, outside=outside) for name, band in site.bands.items()}
+    assert noted(replace(site, bands=bands), "band.outside") == [Finding("band.outside", words, ok)]
+
+
+def test_each_band_is_asked() -> None:
+    texts = [found.text for found in noted(example("iq-file"), "band.outside")]
+    assert [text.split(":")[0] for text in texts] == ["lower half", "upper half"]
+
+
+@pytest.mark.parametrize(
+    ("kind", "span"),
+    [("text-lines", "0 and 45"), ("level-series", "-33 and 55"), ("iq-file", "0 and 40")],
+)
+def test_a_sensor_that_tells_no_temperature_is_noted(kind: str, span: str) -> None:
+    (found,) = noted(example(kind), "sensor")
+    assert found.text == f"tells no temperature: that it was between {span} °C is assumed"
+    assert not found.ok
+
+
+def test_a_board_tells_its_temperature() -> None:
+    assert noted(example("detector-board"), "sensor") == []
+
+
+def test_the_example_of_a_recording_names_the_bands_it_receives(tmp_path: Path) -> None:
+    for path in EXAMPLES.glob("iq-file-*"):
+        shutil.copy(path, tmp_path)
+    (tmp_path / "recording.cu8").write_bytes(bytes(4096))
+    site = load_site(tmp_path / "iq-file-site.toml")
+    settings = settings_for(site.sensor_kind, site.sensor_options, tmp_path)
+    compare_bands(site, settings.bands_hz, settings.bin_hz)
+    elsewhere = settings_for(
+        site.sensor_kind, {**site.sensor_options, "centre_hz": 868e6}, tmp_path
+    )
+    with pytest.raises(ConfigError) as caught:
+        compare_bands(site, elsewhere.bands_hz, elsewhere.bin_hz)
+    text = str(caught.value)
+    assert "band 'lower half': 2644.1 to 2644.99 MHz" in text
+    assert "sensor.bands[1] round the recording's centre is 867.1 to 867.99 MHz" in text
+    assert "\n" not in text
+
+
+HALVES = ((2644.1e6, 2644.99e6), (2645.01e6, 2645.9e6))
+
+
+@pytest.mark.parametrize("edge", range(4))
+@pytest.mark.parametrize("sign", [-1, 1])
+def test_an_edge_may_be_off_by_a_bin_and_no_more(edge: int, sign: int) -> None:
+    site = example("iq-file")
+
+    def moved(by_hz: float) -> list[tuple[float, float]]:
+        edges = [hz for band in HALVES for hz in band]
+        edges[edge] += sign * by_hz
+        return [(edges[0], edges[1]), (edges[2], edges[3])]
+
+    compare_bands(site, moved(0.99 * BINS_HZ), BINS_HZ)
+    with pytest.raises(ConfigError, match=rf"sensor.bands\[{1 + edge // 2}\]"):
+        compare_bands(site, moved(1.01 * BINS_HZ), BINS_HZ)
+
+
+def test_bands_that_changed_places_are_refused() -> None:
+    with pytest.raises(ConfigError, match="band 'lower half'"):
+        compare_bands(example("iq-file"), HALVES[::-1], BINS_HZ)
+
+
+def test_a_channel_without_a_band_of_its_own_is_refused() -> None:
+    with pytest.raises(ConfigError, match="sensor.bands: 1 bands for 2 channels"):
+        compare_bands(example("iq-file"), HALVES[:1], BINS_HZ)
+
+
+def test_a_sensor_without_bands_has_none_to_compare() -> None:
+    assert compare_bands(example("detector-board"), None, 0.0) is None
