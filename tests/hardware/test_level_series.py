@@ -14,6 +14,15 @@ from monitor.core.errors import ConfigError, DeviceError
 from monitor.core.flags import Flag
 from monitor.core.readings import MISSING
 
+_opened = []
+
+
+@pytest.fixture(autouse=True)
+def _files_are_let_go():
+    yield
+    while _opened:
+        _opened.pop().close()
+
 
 def series(path, text=None, channels=1, clock_ns=time.monotonic_ns, simulated=False, **options):
     if text is not None:
@@ -22,7 +31,8 @@ def series(path, text=None, channels=1, clock_ns=time.monotonic_ns, simulated=Fa
     if not {"level_column", "level_columns"} & options.keys():
         options["level_column"] = "dbm"
     settings = settings_for("level_series", options, path.parent)
-    return open_front_end(settings, channels, clock_ns, time.time_ns, simulated)
+    _opened.append(open_front_end(settings, channels, clock_ns, time.time_ns, simulated))
+    return _opened[-1]
 
 
 def all_of(front_end):
