@@ -53,16 +53,31 @@ class AlarmDesk:
 
     def request(self, wanted: Mapping[str, object], now_ns: int) -> Event:
         """The event of what a person asks for on a page; ConfigError where it cannot be done."""
-        key, do = str(wanted.get("key", "")), wanted.get("do")
+        key, do = text_of(wanted, "key", 1000), wanted.get("do")
         if key not in self._alarms:
             raise ConfigError(f"no alarm {key!r}; reload the page")
-        who = str(wanted.get("by", ""))[:200]
+        who = text_of(wanted, "by", 200, "")
         if do == "acknowledge":
             return Event(now_ns, "confirmed", key, {"by": who})
         if do == "unshelve":
             return Event(now_ns, "muted", key, {"by": who, "until_ns": None})
         seconds = wanted.get("for_s", 1800)
-        if not isinstance(seconds, (int, float)) or not 0 < seconds <= LONGEST_MUTE_S:
+        number = isinstance(seconds, (int, float)) and not isinstance(seconds, bool)
+        if not number or not 0 < seconds <= LONGEST_MUTE_S:
             raise ConfigError(f"for_s: {seconds!r} is not between 0 and {LONGEST_MUTE_S} s")
         until = now_ns + round(seconds * NS_PER_S)
         return Event(now_ns, "muted", key, {"by": who, "until_ns": until})
+
+
+def text_of(
+    request: Mapping[str, object], key: str, longest: int, default: str | None = None
+) -> str:
+    """A text of a request, cut to its longest; ConfigError where it is none or cannot be stored."""
+    value = request.get(key, default)
+    if not isinstance(value, str) or (default is None and not value.strip()):
+        raise ConfigError(f"{key}: {value!r} is not a text; write it")
+    try:
+        value.encode("utf-8")
+    except UnicodeEncodeError as error:
+        raise ConfigError(f"{key}: holds what is no character; write it anew") from error
+    return value.strip()[:longest]

@@ -111,7 +111,8 @@ def _exposures(state: State, here: Station) -> list[dict[str, object]]:
     for averaging_s in here.averagings_s:
         sums = live(state, averaging_s, here)
         rows = figures.exposures(sums, averaging_s, here)
-        verdict_inputs = figures.verdict_inputs(sums, averaging_s, here)
+        share = float(figures.valid_share(sums, averaging_s)[0])
+        bits = int(figures.verdict_flags(sums, averaging_s)[0])
         for i, index in enumerate(rows.scope.tolist()):
             scope = here.scopes[index]
             found.append(
@@ -127,8 +128,10 @@ def _exposures(state: State, here: Station) -> list[dict[str, object]]:
                     "ratio_low": _number(rows.ratio_low[i]),
                     "ratio_mean": _number(rows.ratio_mean[i]),
                     "ratio_high": _number(rows.ratio_high[i]),
+                    "u_db": _number(rows.u_db[i]),
+                    "k": here.k_ratio,
                     "verdict": Verdict(int(rows.verdict[i])).name.lower(),
-                    "reasons": _reasons(rows, i, verdict_inputs, here, scope.verified),
+                    "reasons": _reasons(rows, i, (share, bits), here, scope.verified),
                 }
             )
     return sorted(found, key=lambda item: int(str(item["index"])))
@@ -137,7 +140,7 @@ def _exposures(state: State, here: Station) -> list[dict[str, object]]:
 def _reasons(
     rows: ExposureRows,
     i: int,
-    inputs: figures.VerdictInputs,
+    share_flags: tuple[float, int],
     here: Station,
     verified: bool,
 ) -> list[str]:
@@ -145,12 +148,12 @@ def _reasons(
         float(rows.ratio_low[i]),
         float(rows.ratio_mean[i]),
         float(rows.ratio_high[i]),
-        float(inputs.u_db[0]),
-        here.k,
-        float(inputs.share[0]),
-        int(inputs.flags[0]),
+        float(rows.u_db[i]) / here.k_ratio,
+        here.k_ratio,
+        *share_flags,
         verified=verified,
         field_region=here.field_region,
+        outside_excluded=here.outside_excluded,
         lowest_hz=here.lowest_hz,
     )
 

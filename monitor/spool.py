@@ -13,6 +13,9 @@ from monitor.record.types import ClockFix, Commit
 
 MOST_READINGS = 2_000_000
 """About two days of ten readings a second; beyond it the oldest readings are given up."""
+MOST_TABLES = 40_000
+"""Tables of rows: about six hours of ten a second in half-second steps; the same beyond it."""
+WHY = "the record could not be written for too long"
 
 
 class Spool:
@@ -66,15 +69,20 @@ class Spool:
 
     def give_up(self, boot_ns: int) -> None:
         """While the record takes nothing: keep memory bounded, and say what was lost."""
-        if self._readings <= MOST_READINGS:
-            return
-        lost = 0
-        while self._raw and self._readings > MOST_READINGS // 2:
-            gone = self._raw.pop(0)
-            self._readings -= gone.n
-            lost += gone.n
-        body: dict[str, object] = {"readings": lost, "why": "the record could not be written"}
-        self.event(Event(boot_ns, "fault", "raw readings lost", body))
+        lost, rows = 0, self._rows
+        if self._readings > MOST_READINGS:
+            while self._raw and self._readings > MOST_READINGS // 2:
+                gone = self._raw.pop(0)
+                self._readings -= gone.n
+                lost += gone.n
+        shed = 0
+        for tables in (rows.blocks, rows.windows, rows.fields, rows.exposures):
+            if len(tables) > MOST_TABLES:
+                shed += len(tables) // 2
+                del tables[: len(tables) // 2]
+        if lost or shed:
+            body: dict[str, object] = {"readings": lost, "tables": shed, "why": WHY}
+            self.event(Event(boot_ns, "fault", "given up", body))
 
 
 def _joined(batches: Sequence[Batch]) -> Batch | None:

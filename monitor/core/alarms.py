@@ -14,6 +14,7 @@ from monitor.core.rows import Event
 F = NDArray[np.float64]
 I = NDArray[np.int64]  # noqa: E741
 
+UNKNOWN = 2
 ENOUGH_SHARE = 0.75
 """Valid share from which the mean of the valid part speaks for the window (design: verdicts)."""
 
@@ -59,8 +60,8 @@ def watches(rules: Sequence[AlertRule], scopes: Sequence[Scope]) -> tuple[Watch,
 
 @dataclass(frozen=True, slots=True)
 class Side:
-    """Where a watched ratio stands. code: 1 at or above the level, -1 below the return level, 0
-    between or unknown; since_ns: start of that; above: on which side it was last seen."""
+    """Where a watched figure stands. code: 1 at or above the level, -1 below the return level, 0
+    between; since_ns: start of that; above: on which side it was last seen."""
 
     code: int = 0
     since_ns: int = 0
@@ -69,14 +70,28 @@ class Side:
 
 
 def codes(ratio_low: F, ratio_mean: F, valid_share: F, rule: AlertRule) -> NDArray[np.int8]:
-    """Code of each point (p,). What is unknown neither raises an alarm nor returns one.
+    """Code of each point (p,), UNKNOWN where too little is valid to tell.
 
     The mean of the valid part counts from a valid share of 0.75; gaps as zero count always.
     """
     enough = valid_share >= ENOUGH_SHARE
     over = (ratio_low >= rule.ratio) | (enough & (ratio_mean >= rule.ratio))
     under = enough & (ratio_mean < rule.returns_at)
-    return np.where(over, 1, np.where(under, -1, 0)).astype(np.int8)
+    rest = np.where(enough & ~np.isnan(ratio_mean), 0, UNKNOWN)
+    return np.where(over, 1, np.where(under, -1, rest)).astype(np.int8)
+
+
+def known_codes(code: NDArray[np.int8], before: int) -> NDArray[np.int8]:
+    """Unknown points resolved: they go on being over, but nothing returns while it is unknown.
+
+    before: code of the last point of the call before.
+    """
+    unknown = code == UNKNOWN
+    if not unknown.any():
+        return code
+    last = np.maximum.accumulate(np.where(unknown, -1, np.arange(code.size)))
+    carried = np.where(last < 0, before, code[last])
+    return np.where(unknown, np.where(carried == 1, 1, 0), code).astype(np.int8)
 
 
 @dataclass(frozen=True, slots=True)
@@ -92,6 +107,7 @@ def follow(side: Side, times_ns: I, code: NDArray[np.int8], rule: AlertRule) -> 
     """Follow a ratio over points in time order; many small calls equal one large one."""
     crossed: list[int] = []
     changes: list[tuple[int, bool]] = []
+    code = known_codes(code, side.code)
     starts = np.concatenate([[0], np.flatnonzero(code[1:] != code[:-1]) + 1])
     ends = np.concatenate([starts[1:], [code.size]])
     for start, end in zip(starts.tolist(), ends.tolist()):

@@ -159,6 +159,10 @@ def e2_per_w(
     return np.asarray(PORT_OHM * 10.0 ** (db / 10.0))
 
 
+BAND_KIND = "response over the band"
+"""Kind of the budget line that spread() makes."""
+
+
 def middle(k: Real) -> float:
     """Root of smallest times largest: the figure with the smallest worst error in dB."""
     return math.sqrt(float(k.min()) * float(k.max()))
@@ -174,6 +178,6 @@ def spread(k: Real, band: str) -> tuple[Contribution, ...]:
         return ()
     return (
         Contribution(
-            f"response over band {band}", half_db, "rectangular", shared=True, kind="antenna"
+            f"response over band {band}", half_db, "rectangular", shared=True, kind=BAND_KIND
         ),
     )

@@ -23,8 +23,10 @@ FIELD_REGIONS = ("far", "radiating_near", "reactive_near", "undeclared")
 
 OUTSIDE_BUDGET = (
     Flag.OUT_OF_TEMPERATURE | Flag.CALIBRATION_OVERDUE | Flag.OUT_OF_BAND | Flag.SUPPLY_OUT_OF_RANGE
-)
-"""Conditions that the stated uncertainty does not cover."""
+    | Flag.TEMPERATURE_UNKNOWN | Flag.CLOCK_UNSYNCHRONISED
+)  # fmt: skip
+"""Conditions that the stated uncertainty does not cover. A clock that nothing has set cannot tell
+whether the calibration is in date."""
 
 
 class Verdict(IntEnum):
@@ -44,6 +46,11 @@ def scope_coefficients(k: Real, ratio_per_e2: Real) -> float:
     return float(np.max(np.asarray(k, np.float64) * np.asarray(ratio_per_e2, np.float64)))
 
 
+def least_coefficient(k: Real, ratio_per_e2: Real) -> float:
+    """The smallest product over the band: what a signal of that power causes at the least."""
+    return float(np.min(np.asarray(k, np.float64) * np.asarray(ratio_per_e2, np.float64)))
+
+
 def verdicts(
     ratio_low: ArrayLike,
     ratio_mean: ArrayLike,
@@ -55,6 +62,7 @@ def verdicts(
     *,
     verified: bool,
     field_region: str,
+    outside_excluded: bool,
     cap_db: float = CAP_DB,
     lowest_hz: float = math.inf,
 ) -> NDArray[np.int8]:
@@ -63,9 +71,11 @@ def verdicts(
     ratio_low, ratio_mean, ratio_high: exposure ratio with gaps as zero, of the valid part, with
     gaps at the period's maximum. u_db: STANDARD uncertainty of the ratio in dB (10 log), that is
     the expanded one divided by its coverage factor k; cap_db holds for k * u. flags: Flag bits.
-    lowest_hz: lower end of what the channels receive, where E alone is measured. Decisions are
-    taken in dB with a one-sided 95 % guard of 1.64 u. An exceedance stands at any valid share and
-    with any U, for the guard counts it; what forbids "conforms" is listed in reasons().
+    field_region: only in the far field does E alone show conformity (ICNIRP 2020, notes to the
+    reference levels). outside_excluded: see Station. lowest_hz: lower end of what the channels
+    receive, where E alone is measured. Decisions are taken in dB with a one-sided 95 % guard of
+    1.64 u. An exceedance stands at any valid share and with any U, for the guard counts it; what
+    forbids "conforms" is listed in reasons().
     """
     low_db, high_db = _db(ratio_low), _db(ratio_high)
     u = np.asarray(u_db, np.float64)
@@ -81,7 +91,7 @@ def verdicts(
         & np.isfinite(np.asarray(ratio_mean, np.float64))
         & ~np.isnan(low_db)
     )
-    if not verified or field_region not in ("far", "radiating_near"):
+    if not (verified and outside_excluded and field_region == "far"):
         conforms = np.zeros_like(conforms)
     if not _e_alone_decides(field_region, lowest_hz):
         exceeds, conforms = np.zeros_like(exceeds), np.zeros_like(conforms)
@@ -100,6 +110,7 @@ def reasons(
     *,
     verified: bool,
     field_region: str,
+    outside_excluded: bool,
     cap_db: float = CAP_DB,
     lowest_hz: float = math.inf,
 ) -> list[str]:
@@ -109,7 +120,8 @@ def reasons(
     """
     verdict = verdicts(
         ratio_low, ratio_mean, ratio_high, u_db, k, valid_share, flags,
-        verified=verified, field_region=field_region, cap_db=cap_db, lowest_hz=lowest_hz,
+        verified=verified, field_region=field_region, outside_excluded=outside_excluded,
+        cap_db=cap_db, lowest_hz=lowest_hz,
     )[0]  # fmt: skip
     said = [_comparison(int(verdict), ratio_low, ratio_mean, ratio_high, GUARD * u_db)]
     said += _no_verdict(field_region, lowest_hz)
@@ -119,6 +131,10 @@ def reasons(
         said.append(_because(flags & int(UPPER_BOUND), "the figure is an upper bound"))
     if field_region == "undeclared":
         said.append("the field region is not declared")
+    if field_region == "radiating_near":
+        said.append("in the radiating near field E alone does not show conformity")
+    if not outside_excluded:
+        said.append("signals outside the band are not excluded by a filter or a survey")
     if not verified:
         said.append("the limit is from memory, not confirmed against the published text")
     return said + _weak(k * u_db, cap_db, valid_share, flags)
@@ -159,17 +175,15 @@ def _no_verdict(field_region: str, lowest_hz: float) -> list[str]:
 
 
 def _comparison(verdict: int, low: float, mean: float, high: float, guard_db: float) -> str:
-    guard = f"guard {_number(guard_db)} dB"
+    least, most = low * 10.0 ** (-guard_db / 10.0), high * 10.0 ** (guard_db / 10.0)
     if verdict == Verdict.EXCEEDS:
-        return f"with gaps counted as zero the ratio is {low:.3g}, above 1 by more than the {guard}"
+        return f"at least {least:.3g} of the limit, gaps counted as nothing"
     if not math.isfinite(mean):
         return "no valid part in the averaging time"
     if verdict == Verdict.CONFORMS:
-        return (
-            f"with gaps at the period's maximum the ratio is {high:.3g},"
-            f" below 1 by more than the {guard}"
-        )
-    return f"ratio {mean:.3g}; {low:.3g} with gaps as zero, {_number(high)} at worst; {guard}"
+        return f"at most {most:.3g} of the limit, gaps counted at the highest reading"
+    holds = "; the limit lies between" if least <= 1.0 <= most else ""
+    return f"{_number(least)} to {_number(most)} of the limit{holds}"
 
 
 def _above(ratio: float, guard_db: float) -> bool:

@@ -7,6 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from monitor.core.blocks import BLOCK_NS
 from monitor.core.exposure import verdicts
 from monitor.core.flags import Flag
 from monitor.core.readings import NS_PER_S
@@ -35,11 +36,12 @@ def powers(sums: Sums, averaging_s: int, here: Station) -> Powers:
     """
     whole_ns = averaging_s * NS_PER_S
     below = (sums.flags & int(Flag.BELOW_RANGE)) != 0
-    floor_w_ns = np.where(below, sums.covered_ns * here.floor_w, 0.0)
+    # a block more: inside a block the valid time is only known to be at least this
+    floor_w_ns = np.where(below, (sums.covered_ns + BLOCK_NS) * here.floor_w, 0.0)
     low = np.maximum(sums.energy_low - floor_w_ns, 0.0)
-    bare = sums.covered_ns == 0
+    bare = sums.mean_ns == 0
     with np.errstate(invalid="ignore", divide="ignore"):
-        mean = sums.energy_w_ns / sums.covered_ns
+        mean = sums.energy_w_ns / sums.mean_ns
     missing = np.maximum(whole_ns - sums.covered_ns, 0)
     high = (sums.energy_high + missing * sums.max_w) / whole_ns
     return Powers(low / whole_ns, mean, np.where(bare, np.nan, high))
@@ -82,13 +84,14 @@ def windows(sums: Sums, averaging_s: int) -> WindowRows:
     )
 
 
-def u_standard_db(mean_w: F, here: Station) -> F:
-    """Combined standard uncertainty (p,), dB; equal shares where there is no field to share."""
-    parts = mean_w * here.chain.k_mid
-    total = over_channels(mean_w, here.chain.k_mid)[:, None]
+def shares(power: Powers, per_watt: F) -> F:
+    """Each channel's part (p, c) of the sum; of what is known where a channel has no valid part."""
+    dead = np.any(np.isnan(power.mean), axis=1)
+    parts = np.where(np.repeat(dead[:, None], power.mean.shape[1], axis=1), power.low, power.mean)
+    parts = parts * per_watt
+    total = over_channels(parts, np.ones(parts.shape[1]))[:, None]
     with np.errstate(invalid="ignore", divide="ignore"):
-        shares = np.where(total > 0, parts / total, 1.0 / mean_w.shape[1])
-    return standard_db(here.chain.contributions, shares)
+        return np.where(total > 0, parts / total, 1.0 / parts.shape[1])
 
 
 def fields(sums: Sums, averaging_s: int, here: Station) -> FieldRows:
@@ -96,7 +99,7 @@ def fields(sums: Sums, averaging_s: int, here: Station) -> FieldRows:
 
     Over its band a channel's E squared per watt is a range: the lower figure takes its smallest,
     the upper its largest, the mean the middle in dB. e2_max adds the channels' largest readings,
-    which may not have come together: an upper bound.
+    by the middle too; they may not have come together.
     """
     power = powers(sums, averaging_s, here)
     low = np.array([k.min() for k in here.chain.k])
@@ -111,7 +114,7 @@ def fields(sums: Sums, averaging_s: int, here: Station) -> FieldRows:
         mean,
         over_channels(power.high, high),
         np.where(np.isnan(mean), np.nan, over_channels(sums.max_w, mid)),
-        u_standard_db(power.mean, here) * here.k,
+        standard_db(here.chain.contributions, shares(power, mid)) * here.k,
         np.full(sums.end_ns.size, here.k),
         valid_share(sums, averaging_s),
         sums.observed_ns.min(axis=1) / float(whole_ns),
@@ -119,50 +122,47 @@ def fields(sums: Sums, averaging_s: int, here: Station) -> FieldRows:
     )
 
 
-@dataclass(frozen=True, slots=True)
-class VerdictInputs:
-    """What every verdict on these windows takes, one per window (p,). u_db: standard, in dB."""
-
-    u_db: F
-    share: F
-    flags: I
-
-
-def verdict_inputs(sums: Sums, averaging_s: int, here: Station) -> VerdictInputs:
-    """Uncertainty, valid share and flags. The low figure has left readings below the range out,
-    so they no longer forbid "exceeds"."""
-    bits = window_flags(sums, averaging_s) & ~int(Flag.BELOW_RANGE)
-    mean_w = powers(sums, averaging_s, here).mean
-    return VerdictInputs(u_standard_db(mean_w, here), valid_share(sums, averaging_s), bits)
+def verdict_flags(sums: Sums, averaging_s: int) -> I:
+    """Flags that bear on a verdict. The low figure has left readings below the range out, so they
+    do not forbid "exceeds"."""
+    return window_flags(sums, averaging_s) & ~int(Flag.BELOW_RANGE)
 
 
 def exposures(sums: Sums, averaging_s: int, here: Station) -> ExposureRows:
-    """Ratios and verdicts of every scope that has this averaging time, scope after scope."""
+    """Ratios and verdicts of every scope that has this averaging time, scope after scope.
+
+    A channel cannot tell where in its band the signal lies: the low ratio assumes the smallest
+    response over limit, the mean and the high one the largest.
+    """
     power = powers(sums, averaging_s, here)
-    inputs = verdict_inputs(sums, averaging_s, here)
-    columns: list[tuple[I, I, F, F, F, I]] = []
+    share, bits = valid_share(sums, averaging_s), verdict_flags(sums, averaging_s)
+    columns: list[tuple[I, I, F, F, F, F, I]] = []
     for index, scope in enumerate(here.scopes):
         if round(scope.averaging_s) != averaging_s:
             continue
-        per_watt = here.coefficients[:, index]
-        low, mean, high = (
-            over_channels(figure, per_watt) for figure in (power.low, power.mean, power.high)
-        )
+        most = here.coefficients[:, index]
+        low = over_channels(power.low, here.least[:, index])
+        mean, high = over_channels(power.mean, most), over_channels(power.high, most)
+        u_db = standard_db(here.budget, shares(power, most))
         decided = verdicts(
             low,
             mean,
             high,
-            inputs.u_db,
-            here.k,
-            inputs.share,
-            inputs.flags,
+            u_db,
+            here.k_ratio,
+            share,
+            bits,
             verified=scope.verified,
             field_region=here.field_region,
+            outside_excluded=here.outside_excluded,
             lowest_hz=here.lowest_hz,
         )
         scope_index = np.full(low.size, index, np.int64)
-        columns.append((sums.end_ns, scope_index, low, mean, high, decided.astype(np.int64)))
+        expanded_db = u_db * here.k_ratio
+        columns.append(
+            (sums.end_ns, scope_index, low, mean, high, expanded_db, decided.astype(np.int64))
+        )
     if not columns:
         none, nothing = np.empty(0, np.int64), np.empty(0)
-        return ExposureRows(none, none, nothing, nothing, nothing, none)
+        return ExposureRows(none, none, nothing, nothing, nothing, nothing, none)
     return ExposureRows(*(np.concatenate(column) for column in zip(*columns)))

@@ -21,6 +21,7 @@ class Flag(IntFlag):
     OUT_OF_BAND = 1024
     SUPPLY_OUT_OF_RANGE = 2048
     GAP = 4096
+    TEMPERATURE_UNKNOWN = 8192
 
 
 LOWER_BOUND = Flag.ABOVE_RANGE | Flag.CLIPPED | Flag.LOG_AVERAGED | Flag.COMPONENT_ONLY
@@ -40,6 +41,7 @@ WORDS = {
     Flag.OUT_OF_BAND: "outside the calibrated band",
     Flag.SUPPLY_OUT_OF_RANGE: "supply voltage out of range",
     Flag.GAP: "gap",
+    Flag.TEMPERATURE_UNKNOWN: "temperature of the instrument not known",
 }
 
 

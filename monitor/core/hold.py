@@ -74,6 +74,10 @@ class Pieces:
     power_w: F
     flags: I
 
+    def part(self, first: int, last: int) -> Pieces:
+        """Pieces first to last, the last one left out."""
+        return Pieces(*(getattr(self, name)[first:last] for name in Pieces.__slots__))
+
 
 def cut(segments: Segments, block_ns: int) -> Pieces:
     """Cut segments where a block ends, so that each piece lies in one block."""

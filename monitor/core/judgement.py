@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
-from monitor.core.alarms import Side, Watch, codes, follow
+from monitor.core.alarms import ENOUGH_SHARE, AlertRule, Side, Watch, codes, follow
 from monitor.core.blocks import BLOCK_NS, Blocks, Trace
 from monitor.core.figures import (
     Powers,
@@ -27,6 +28,10 @@ from monitor.core.windows import Sums, at_block_ends, inside_blocks
 F = NDArray[np.float64]
 I = NDArray[np.int64]  # noqa: E741
 MINUTE_NS = 60 * NS_PER_S
+GAPS = "gaps"
+"""Key of the alarm that too little of the time is measured."""
+GAPS_RULE = AlertRule("gaps", "", "", "", 0.0, 0.0, delay_s=360.0, return_delay_s=0.0)
+"""The delay lets the window fill after a start."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -57,6 +62,8 @@ def judge(
         n = averaging_s * NS_PER_S // BLOCK_NS
         ends = at_block_ends(closed, skip, n, BLOCK_NS)
         keep(ends.at((ends.end_ns % MINUTE_NS == 0) & ends.present), averaging_s, here, out)
+        if averaging_s == here.averagings_s[0]:
+            after[-1] = _watch_gaps(ends, averaging_s, after[-1], out)
         watched = [
             (i, watch)
             for i, watch in enumerate(here.watches)
@@ -103,23 +110,40 @@ def _points(inside: Sums, ends: Sums, averaging_s: int, here: Station) -> Points
 def _watch(
     points: Points, watch: Watch, side: Side, here: Station, crossed: set[int], out: Gathered
 ) -> Side:
-    per_watt = here.coefficients[:, watch.scope]
-    low = over_channels(points.powers.low, per_watt)
-    mean = over_channels(points.powers.mean, per_watt)
+    low = over_channels(points.powers.low, here.least[:, watch.scope])
+    mean = over_channels(points.powers.mean, here.coefficients[:, watch.scope])
     code = codes(low, mean, points.share, watch.rule)
     followed = follow(side, points.sums.end_ns, code, watch.rule)
     crossed.update(followed.crossed)
     for at, raised in followed.changes:
         crossed.add(at)
-        ratio = float(mean[at]) if np.isfinite(mean[at]) else float(low[at])
-        out.events.append(_event(int(points.sums.end_ns[at]), raised, ratio, watch))
+        figures = float(low[at]), float(mean[at]), float(points.share[at])
+        out.events.append(_event(int(points.sums.end_ns[at]), raised, figures, watch))
     return followed.side
 
 
-def _event(at_ns: int, raised: bool, ratio: float, watch: Watch) -> Event:
+def _watch_gaps(ends: Sums, averaging_s: int, side: Side, out: Gathered) -> Side:
+    """Silence needs one unbroken pause; many short ones, or one dead axis, blind as well."""
+    share = valid_share(ends, averaging_s)
+    code = np.where(share < ENOUGH_SHARE, 1, -1).astype(np.int8)
+    followed = follow(side, ends.end_ns, code, GAPS_RULE)
+    for at, raised in followed.changes:
+        body: dict[str, object] = {"raised": raised, "valid_share": float(share[at])}
+        out.events.append(Event(int(ends.end_ns[at]), "alarm", GAPS, body))
+    return followed.side
+
+
+def _event(at_ns: int, raised: bool, figures: tuple[float, float, float], watch: Watch) -> Event:
+    """exposure_ratio is the figure that crossed: the mean where enough is valid, else the low."""
+    low, mean, share = figures
+    by_mean = share >= ENOUGH_SHARE and math.isfinite(mean)
     body: dict[str, object] = {
         "raised": raised,
-        "exposure_ratio": ratio,
+        "exposure_ratio": mean if by_mean else low,
+        "figure": "mean of the valid part" if by_mean else "gaps as zero",
+        "ratio_low": low,
+        "ratio_mean": mean if math.isfinite(mean) else None,
+        "valid_share": share,
         "level": watch.rule.ratio if raised else watch.rule.returns_at,
         "scope": watch.scope,
     }

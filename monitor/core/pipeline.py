@@ -12,14 +12,18 @@ from monitor.core.alarms import Side
 from monitor.core.blocks import BLOCK_NS, Blocks, Trace, accumulate, empty_blocks, join, to_rows
 from monitor.core.gather import Gathered, nothing
 from monitor.core.hold import Pieces, Segments, complete, cut, no_segments
-from monitor.core.judgement import judge
+from monitor.core.judgement import GAPS, judge
 from monitor.core.readings import NS_PER_S, Batch
+from monitor.core.silence import KEY as SILENCE
 from monitor.core.silence import Hearing, listen
 from monitor.core.station import Station
 from monitor.core.windows import Sums, at_block_ends, inside_blocks
 
 F = NDArray[np.float64]
 I = NDArray[np.int64]  # noqa: E741
+
+MOST_CELLS = 1_000_000
+"""Blocks times readings in the fullest block that are laid out at once."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -40,8 +44,8 @@ class State:
     late: int = 0
 
 
-def start(here: Station, boot_ns: int) -> State:
-    """The state of a boot that begins with empty windows."""
+def start(here: Station, boot_ns: int, raised: frozenset[str] = frozenset()) -> State:
+    """The state of a boot that begins with empty windows. raised: keys of alarms that stand."""
     block, keep = boot_ns // BLOCK_NS, history_blocks(here)
     return State(
         no_segments(here.channels),
@@ -49,9 +53,15 @@ def start(here: Station, boot_ns: int) -> State:
         empty_blocks(block - keep, keep, here.channels),
         boot_ns,
         boot_ns - 1,
-        tuple(Side(since_ns=boot_ns) for _ in here.watches),
-        Hearing(boot_ns),
+        sides(here, boot_ns, raised),
+        Hearing(boot_ns, SILENCE in raised),
     )
+
+
+def sides(here: Station, at_ns: int, raised: frozenset[str]) -> tuple[Side, ...]:
+    """Where each watch stands when nothing is known but which alarms are raised; gaps come last."""
+    keys = [*(watch.key for watch in here.watches), GAPS]
+    return tuple(Side(0, at_ns, key in raised, key in raised) for key in keys)
 
 
 def step(state: State, batch: Batch, here: Station) -> tuple[State, Gathered]:
@@ -62,7 +72,10 @@ def step(state: State, batch: Batch, here: Station) -> tuple[State, Gathered]:
     segments, pending = complete(state.pending, times, power_w, flags, batch.now_ns, here.hold_ns)
     front = int(pending.start_ns[0]) if pending.n else max(batch.now_ns, state.front_ns)
     hearing, heard = listen(
-        state.hearing, times[~np.isnan(power_w).any(axis=1)], front, here.silence_ns
+        state.hearing,
+        times[~np.all(np.isnan(power_w), axis=1)],
+        max(front, batch.now_ns),
+        here.silence_ns,
     )
     out = nothing()
     out.events.extend(heard)
@@ -127,17 +140,25 @@ def _advance(
 
 def _close(state: State, pieces: Pieces, until: int, here: Station, out: Gathered) -> State:
     """Add pieces, close the blocks before index until, judge every point on the way."""
+    size = until - state.opened.first + 1
+    crowd = int(np.bincount(pieces.block - state.opened.first).max()) if pieces.block.size else 0
+    if size * crowd > MOST_CELLS and pieces.block[-1] > pieces.block[0]:
+        middle = int(np.searchsorted(pieces.block, (pieces.block[0] + pieces.block[-1] + 1) // 2))
+        left, right = pieces.part(0, middle), pieces.part(middle, pieces.block.size)
+        state = _close(state, left, int(right.block[0]), here, out)
+        return _close(state, right, until, here, out)
     blocks, trace = accumulate(state.opened, pieces, until)
     known = join(state.history, blocks)
     closed = known.part(0, known.size - 1)
-    out.blocks.append(to_rows(blocks.part(0, blocks.size - 1)))
-    sides = judge(known, closed, trace, state.history.size, state.sides, here, out)
+    if blocks.size > 1:
+        out.blocks.append(to_rows(blocks.part(0, blocks.size - 1)))
+    after = judge(known, closed, trace, state.history.size, state.sides, here, out)
     keep = state.history.size
     return replace(
         state,
         opened=known.part(known.size - 1, known.size),
         history=closed.part(closed.size - keep, closed.size),
-        sides=sides,
+        sides=after,
     )
 
 

@@ -6,10 +6,9 @@ from collections.abc import Sequence
 
 import numpy as np
 
-from monitor.core.alarms import Side
 from monitor.core.blocks import BLOCK_NS, accumulate, empty_blocks, from_rows
 from monitor.core.hold import Pieces, complete, cut, no_segments
-from monitor.core.pipeline import State, convert, history_blocks, start
+from monitor.core.pipeline import State, convert, history_blocks, sides, start
 from monitor.core.readings import Batch
 from monitor.core.rows import BlockRows
 from monitor.core.silence import KEY, Hearing
@@ -31,7 +30,7 @@ def resume(
     """
     batches = [batch for batch in raw if batch.n]
     if not batches:
-        return start(here, boot_ns)
+        return start(here, boot_ns, raised)
     times = np.concatenate([batch.times_ns for batch in batches])
     counts = np.concatenate([batch.counts for batch in batches])
     bits = np.concatenate([batch.flags for batch in batches])
@@ -43,7 +42,7 @@ def resume(
     )
     pieces = _from_block(cut(segments, BLOCK_NS), first)
     opened, _ = accumulate(empty_blocks(first, 1, here.channels), pieces, first)
-    whole = times[~np.isnan(power_w).any(axis=1)]
+    whole = times[~np.all(np.isnan(power_w), axis=1)]
     heard = int(whole[-1]) if whole.size else int(times[0])
     return State(
         pending,
@@ -51,7 +50,7 @@ def resume(
         from_rows(rows, first - keep, first, here.channels),
         last,
         last,
-        tuple(Side(0, last, watch.key in raised, watch.key in raised) for watch in here.watches),
+        sides(here, last, raised),
         Hearing(heard, KEY in raised),
     )
 

@@ -70,13 +70,18 @@ class FieldRows:
 
 @dataclass(frozen=True, slots=True)
 class ExposureRows:
-    """Exposure ratios of one scope over its averaging time; verdict as exposure.Verdict."""
+    """Exposure ratios of one scope over its averaging time; verdict as exposure.Verdict.
+
+    ratio_low: gaps as zero and the band's smallest response; ratio_mean, ratio_high: its largest.
+    u_db: expanded uncertainty of the ratio; the response over the band is in low and high.
+    """
 
     end_ns: I
     scope: I
     ratio_low: F
     ratio_mean: F
     ratio_high: F
+    u_db: F
     verdict: I
 
 

@@ -16,7 +16,7 @@ KEY = "silence"
 
 @dataclass(frozen=True, slots=True)
 class Hearing:
-    """last_ns: last reading valid on every channel, or the start; silent: the alarm is raised."""
+    """last_ns: last reading valid on any channel, or the start; silent: the alarm is raised."""
 
     last_ns: int
     silent: bool = False
@@ -32,6 +32,9 @@ def listen(
     times = np.concatenate([[hearing.last_ns], valid_ns, [front_ns]])
     events: list[Event] = []
     silent = hearing.silent
+    if silent and valid_ns.size and times[1] - times[0] < after_ns:  # raised in an earlier boot
+        events.append(_event(int(times[1]), False, int(times[0])))
+        silent = False
     for gap in np.flatnonzero(np.diff(times) >= after_ns).tolist():
         if not (silent and gap == 0):
             events.append(_event(int(times[gap]) + after_ns, True, int(times[gap])))

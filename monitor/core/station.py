@@ -8,11 +8,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from monitor.core.alarms import Watch
-from monitor.core.calibration import Chain, CountTable
+from monitor.core.calibration import BAND_KIND, Chain, CountTable
 from monitor.core.flags import Flag
 from monitor.core.limits import Scope
 from monitor.core.readings import NS_PER_S
-from monitor.core.uncertainty import coverage_factor
+from monitor.core.uncertainty import Contribution, coverage_factor
 
 F = NDArray[np.float64]
 
@@ -21,7 +21,10 @@ F = NDArray[np.float64]
 class Station:
     """All that judging needs to know, fixed while the daemon runs.
 
-    coefficients: f8 (c, s), exposure ratio per W at the port, channel by scope. averagings_s:
+    coefficients: f8 (c, s), exposure ratio per W at the port, channel by scope, the largest over
+    the band; least: the smallest. budget: the chain's without the response over the band, which
+    these two span; k_ratio: its coverage factor. outside_excluded: signals outside the bands are
+    kept out by filter or shown by survey to be none. averagings_s:
     every averaging time kept, whole multiples of a block. floor_w: f8 (c,), what a reading below
     the range counts as. lowest_hz: lower end of what the channels receive.
     """
@@ -29,12 +32,16 @@ class Station:
     chain: Chain
     scopes: tuple[Scope, ...]
     coefficients: F
+    least: F
     averagings_s: tuple[int, ...]
     watches: tuple[Watch, ...]
     hold_ns: int
     silence_ns: int
     field_region: str
+    outside_excluded: bool
     k: float
+    budget: tuple[tuple[Contribution, ...], ...]
+    k_ratio: float
     floor_w: F
     lowest_hz: float
 
@@ -48,24 +55,33 @@ def station(
     chain: Chain,
     scopes: tuple[Scope, ...],
     coefficients: F,
+    least: F,
     watches: tuple[Watch, ...],
     *,
     hold_s: float,
     silence_s: float,
     field_region: str,
+    outside_excluded: bool,
 ) -> Station:
     """A station that keeps 360 s and 1800 s and whatever else its scopes ask for."""
+    budget = tuple(
+        tuple(line for line in lines if line.kind != BAND_KIND) for lines in chain.contributions
+    )
     averagings = {360, 1800, *(round(scope.averaging_s) for scope in scopes)}
     return Station(
         chain,
         scopes,
         coefficients,
+        least,
         tuple(sorted(averagings)),
         watches,
         round(hold_s * NS_PER_S),
         round(silence_s * NS_PER_S),
         field_region,
+        outside_excluded,
         coverage_factor(chain.contributions),
+        budget,
+        coverage_factor(budget),
         np.array([_floor_w(table) for table in chain.tables]),
         min(float(grid.min()) for grid in chain.frequencies_hz),
     )

@@ -21,6 +21,7 @@ class Sums:
     """What windows ending at end_ns (p,) hold; the others (p, c).
 
     energy_low, energy_high: bounds where the window cuts its oldest block, else equal to energy.
+    covered_ns: valid time, the least it can be; mean_ns: valid time that energy_w_ns is for.
     present: something was read in the window, valid or not.
     """
 
@@ -28,6 +29,7 @@ class Sums:
     energy_w_ns: F
     energy_low: F
     energy_high: F
+    mean_ns: F
     covered_ns: I
     observed_ns: I
     max_w: F
@@ -72,13 +74,15 @@ def at_block_ends(blocks: Blocks, skip: int, n: int, block_ns: int) -> Sums:
     skip rows of history come first: at least n - 1, or everything since the start.
     """
     energy = last_n(blocks.energy_w_ns, n, np.add)[skip:]
+    covered = last_n(blocks.covered_ns, n, np.add)[skip:]
     rows = np.arange(skip, blocks.size)
     return Sums(
         (blocks.first + rows + 1) * block_ns,
         energy,
         energy,
         energy,
-        last_n(blocks.covered_ns, n, np.add)[skip:],
+        covered.astype(np.float64),
+        covered,
         last_n(blocks.observed_ns, n, np.add)[skip:],
         last_n(blocks.max_w, n, np.maximum)[skip:],
         last_n(blocks.flags, n, np.bitwise_or)[skip:],
@@ -89,28 +93,33 @@ def at_block_ends(blocks: Blocks, skip: int, n: int, block_ns: int) -> Sums:
 def inside_blocks(blocks: Blocks, trace: Trace, skip: int, n: int, block_ns: int) -> Sums:
     """Windows that end inside a block, at each point of trace: closed blocks plus the open one.
 
-    trace.row counts from row skip; n rows of history come first. The oldest block is cut: its
-    energy is shared by time, and the bounds assume its largest reading in or out of the window.
+    trace.row counts from row skip; n rows of history come first. The oldest block is cut, and where
+    in it its readings lay is not known: energy_w_ns and mean_ns share it by time (an estimate);
+    covered_ns takes the least that can be left of it, energy_low and energy_high its largest
+    reading out of the window or in it. high plus the missing time at max_w bounds from above.
     """
     row = trace.row + skip
     before, oldest = row - 1, row - n
     left_ns = ((blocks.first + row + 1) * block_ns - trace.end_ns)[:, None]
     share = left_ns / block_ns
     old_energy, old_max = blocks.energy_w_ns[oldest], blocks.max_w[oldest]
-    kept_ns = np.rint(share * blocks.covered_ns[oldest]).astype(np.int64)
+    old_covered = blocks.covered_ns[oldest]
+    kept_ns = np.maximum(old_covered - (block_ns - left_ns), 0)
     whole = last_n(blocks.energy_w_ns, n - 1, np.add)[before] + trace.energy_w_ns
-    covered = last_n(blocks.covered_ns, n - 1, np.add)[before] + trace.covered_ns + kept_ns
+    whole_ns = last_n(blocks.covered_ns, n - 1, np.add)[before] + trace.covered_ns
     high = np.maximum(last_n(blocks.max_w, n - 1, np.maximum)[before], trace.max_w)
+    high = np.maximum(high, old_max)
     bits = last_n(blocks.flags, n - 1, np.bitwise_or)[before] | trace.flags
     gone = np.maximum(old_energy - (block_ns - left_ns) * old_max, 0.0)
     return Sums(
         trace.end_ns,
         whole + share * old_energy,
         whole + gone,
-        whole + np.minimum(old_energy, left_ns * old_max),
-        covered,
-        covered,
-        np.maximum(high, old_max),
+        whole + np.minimum(np.minimum(old_energy, left_ns * old_max), kept_ns * high),
+        whole_ns + share * old_covered,
+        whole_ns + kept_ns,
+        whole_ns + kept_ns,
+        high,
         bits | blocks.flags[oldest],
         np.ones(row.size, np.bool_),
     )

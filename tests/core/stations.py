@@ -42,7 +42,11 @@ SCOPES = (
 
 
 def made(
-    channels: int = 3, *, ratio_per_e2: float = 1e-3, rules: tuple[AlertRule, ...] = ()
+    channels: int = 3,
+    *,
+    ratio_per_e2: float = 1e-3,
+    rules: tuple[AlertRule, ...] = (),
+    hold_s: float = 3.0,
 ) -> Station:
     """A station of two scopes with the same limit; E squared of 1 / ratio_per_e2 is the limit."""
     here = chain(channels)
@@ -51,10 +55,12 @@ def made(
         here,
         SCOPES,
         per_watt,
+        per_watt,
         watches(rules, SCOPES),
-        hold_s=3.0,
+        hold_s=hold_s,
         silence_s=30.0,
         field_region="far",
+        outside_excluded=True,
     )
 
 

@@ -101,9 +101,11 @@ def chain_of(case: Case) -> Chain:
 
 def station_of(chain: Chain) -> Station:
     scope = Scope("made-up", "1", "general_public", "local", 360.0, True, "test")
+    per_watt = np.ones((3, 1))
     return station(
-        chain, (scope,), np.ones((3, 1)), (), hold_s=3.0, silence_s=60.0, field_region="far"
-    )
+        chain, (scope,), per_watt, per_watt, (),
+        hold_s=3.0, silence_s=60.0, field_region="far", outside_excluded=True,
+    )  # fmt: skip
 
 
 def measured(here: Station, counts: np.ndarray) -> tuple[float, float]:

@@ -27,6 +27,7 @@ def arguments(**changed: Any) -> dict[str, Any]:
         "flags": 0,
         "verified": True,
         "field_region": "far",
+        "outside_excluded": True,
     }
     return plain | changed
 
@@ -121,10 +122,15 @@ def test_what_the_budget_does_not_cover_never_conforms(flag: Flag) -> None:
     assert verdict(**level(5), flags=int(flag)) is Verdict.EXCEEDS
 
 
-@pytest.mark.parametrize("flag", [Flag.SIMULATED, Flag.CLOCK_UNSYNCHRONISED, Flag.GAP])
+@pytest.mark.parametrize("flag", [Flag.SIMULATED, Flag.GAP])
 def test_flags_that_decide_nothing(flag: Flag) -> None:
     assert verdict(flags=int(flag)) is Verdict.CONFORMS
     assert verdict(**level(5), flags=int(flag)) is Verdict.EXCEEDS
+
+
+def test_signals_outside_the_band_must_be_excluded() -> None:
+    assert verdict(outside_excluded=False) is Verdict.UNDECIDED
+    assert verdict(**level(5), outside_excluded=False) is Verdict.EXCEEDS
 
 
 def test_a_limit_from_memory_never_conforms() -> None:
@@ -136,7 +142,7 @@ def test_a_limit_from_memory_never_conforms() -> None:
     ("region", "low", "high"),
     [
         ("far", Verdict.CONFORMS, Verdict.EXCEEDS),
-        ("radiating_near", Verdict.CONFORMS, Verdict.EXCEEDS),
+        ("radiating_near", Verdict.UNDECIDED, Verdict.EXCEEDS),
         ("undeclared", Verdict.UNDECIDED, Verdict.EXCEEDS),
         ("reactive_near", Verdict.UNDECIDED, Verdict.UNDECIDED),
     ],
@@ -177,10 +183,11 @@ def test_many_windows_at_once_are_judged_like_each_alone(
     windows: list[tuple[float, ...]], verified: bool, region: str
 ) -> None:
     columns = [np.array(column) for column in zip(*windows)]
-    together = verdicts(*columns, verified=verified, field_region=region)
+    site = {"verified": verified, "field_region": region, "outside_excluded": True}
+    together = verdicts(*columns, **site)
     assert together.dtype == np.int8
     for index, one in enumerate(windows):
-        assert together[index] == verdicts(*one, verified=verified, field_region=region)[0]
+        assert together[index] == verdicts(*one, **site)[0]
 
 
 @given(st.floats(0, 100), *[st.floats(0, high) for high in (6, 1)], st.integers(0, 8191))
@@ -204,6 +211,8 @@ def test_reasons_name_an_obstacle_whenever_the_figures_alone_would_decide(
         ({"verified": False}, "from memory"),
         ({"field_region": "undeclared"}, "not declared"),
         ({"field_region": "reactive_near"}, "reactive near field"),
+        ({"field_region": "radiating_near"}, "radiating near field"),
+        ({"outside_excluded": False}, "signals outside the band"),
         ({"lowest_hz": 3e6}, "below 30 MHz"),
         ({"valid_share": 0.5}, "valid for 50%"),
         ({"valid_share": math.nan}, "unknown part"),
@@ -212,9 +221,9 @@ def test_reasons_name_an_obstacle_whenever_the_figures_alone_would_decide(
         ({"flags": int(Flag.CALIBRATION_OVERDUE)}, "calibration overdue"),
         ({**level(5), "flags": int(Flag.BELOW_RANGE)}, "upper bound"),
         ({"ratio_mean": math.nan}, "no valid part"),
-        ({**level(5)}, "above 1 by more than the guard 1.64 dB"),
-        ({}, "below 1 by more than the guard 1.64 dB"),
-        ({**level(0)}, "ratio 1; 1 with gaps as zero, 1 at worst"),
+        ({**level(5)}, "at least 2.17 of the limit"),  # 10^((5 - 1.64) / 10)
+        ({}, "at most 0.146 of the limit"),  # 0.1 * 10^0.164
+        ({**level(0)}, "0.685 to 1.46 of the limit; the limit lies between"),
     ],
 )
 def test_reasons_in_plain_words(changed: dict[str, Any], word: str) -> None:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import tracemalloc
 from dataclasses import fields
 
 import numpy as np
@@ -160,6 +161,19 @@ def test_readings_below_the_range_do_not_hide_bursts_above_the_limit() -> None:
     assert rows is not None
     last = rows.verdict[(rows.end_ns == 660 * S) & (rows.scope == 0)]
     assert last.tolist() == [Verdict.EXCEEDS]
+
+
+def test_a_crowded_block_before_sparse_ones_takes_no_more_room_than_the_readings() -> None:
+    """1000 readings in ten seconds, then one each 29 min: once laid out, gigabytes."""
+    times = np.concatenate([np.arange(1000) / 100.0, 10 + 1740.0 * np.arange(1, 2600)])
+    counts = counts_of(np.full(times.size, 10.0))
+    here = made(1, rules=(RULE,))
+    tracemalloc.start()
+    whole = run(here, batch(times, counts), [times.size])
+    _, peak = tracemalloc.get_traced_memory()
+    tracemalloc.stop()
+    assert peak < 400e6
+    same(whole, run(here, batch(times, counts), [100]))
 
 
 def test_blocks_come_back_from_their_rows() -> None:

@@ -84,9 +84,7 @@ def test_factor_of_a_mixture_against_scipy() -> None:
     both = np.cumsum(2.0 * density[x.size // 2 + 1 :])
     half = step * (0.5 + np.interp(reach, both, np.arange(1, both.size + 1)))
     u = math.sqrt(float((density * x * x).sum()))
-    budget = [
-        [line(0.3), line(1.0, "rectangular"), line(0.6, "triangular"), line(0.7, "u_shaped")]
-    ]
+    budget = [[line(0.3), line(1.0, "rectangular"), line(0.6, "triangular"), line(0.7, "u_shaped")]]
     assert standard_db(budget, ONE)[0] == pytest.approx(u, rel=1e-5)
     assert coverage_factor(budget) == pytest.approx(half / u, abs=1e-3)
 
