@@ -16,6 +16,8 @@ from monitor.core.uncertainty import Contribution, Real
 
 NOTABLE_DB = 0.01
 """A rounding step whose half is larger than this enters the uncertainty budget."""
+BEYOND_DB = 20.0
+"""How far above a scale's valid levels a figure is still known as one that was too strong."""
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -76,9 +78,14 @@ class Converter:
 
 
 def stepped(step_v: float, valid_v: tuple[float, float]) -> Converter:
-    """Volts that were rounded to steps of step_v: counts over the valid voltages, no rails."""
+    """Volts that were rounded to steps of step_v: the valid ones and as many again at either end.
+
+    A voltage beyond the valid ones on the curve's strong side must be known as such.
+    """
     first, last = math.ceil(valid_v[0] / step_v), math.floor(valid_v[1] / step_v)
-    return Converter(step_v, first, last, rails=False)
+    valid = last - first + 1
+    more = max(min(valid, (MAX_TABLE - valid) // 2), 0)
+    return Converter(step_v, first - more, last + more, rails=False)
 
 
 def curve_table(
@@ -89,14 +96,16 @@ def curve_table(
 ) -> CountTable:
     """Counts to volts to power. Outside valid_v a count is no reading: an open wire has a voltage.
 
-    Inside it but beyond range_dbm (within the curve): the end of the range, flagged. A count at the
-    converter's rail on the strong side is flagged as clipped, on the weak side as below range.
+    Outside it on the strong side an overload looks the same: no reading, but flagged as above
+    range too, for such a gap must not pass as quiet. Inside it but beyond range_dbm (within the
+    curve): the end of the range, flagged. A count at the converter's rail on the strong side is
+    flagged as clipped, on the weak side as below range.
     """
     volts = _volts(converter.first, converter.last, converter)
     dbm = curve.dbm_at(volts)
-    weak, strong = (volts < curve.volts.min(), volts > curve.volts.max())
-    if not curve.rising:
-        weak, strong = strong, weak
+    low, high = (volts < curve.volts.min(), volts > curve.volts.max())
+    under, over = (volts < valid_v[0], volts > valid_v[1])
+    weak, strong, overload = (low, high, over) if curve.rising else (high, low, under)
     below, above = weak | (dbm < range_dbm[0]), strong | (dbm > range_dbm[1])
     if converter.rails:
         top = -1 if curve.rising else 0
@@ -105,7 +114,7 @@ def curve_table(
     if converter.rails:
         flags[top] |= np.int32(Flag.CLIPPED)
     power_w = w_from_dbm(np.clip(dbm, *range_dbm))
-    return _without(converter.first, power_w, flags, (volts < valid_v[0]) | (volts > valid_v[1]))
+    return _without(converter.first, power_w, flags, under | over, overload)
 
 
 def scale_table(
@@ -116,15 +125,20 @@ def scale_table(
 ) -> CountTable:
     """Counts times resolution, plus offset_db, is power in dBm; no reading outside valid_dbm.
 
-    Inside it but beyond range_dbm: the end of the range, flagged.
+    Inside it but beyond range_dbm: the end of the range, flagged. Up to BEYOND_DB above valid_dbm:
+    no reading, flagged as above range.
     """
     first = math.ceil(round((valid_dbm[0] - offset_db) / resolution, 6))
     last = math.floor(round((valid_dbm[1] - offset_db) / resolution, 6))
-    dbm = (np.arange(_size(first, last)) + first) * resolution + offset_db
+    valid = _size(first, last)
+    more = min(math.ceil(BEYOND_DB / resolution), MAX_TABLE - valid)
+    counts = np.arange(valid + more) + first
+    dbm = counts * resolution + offset_db
     # A little grace: a range of -90 dBm must hold the count that stands for -90 dBm.
     grace = 1e-6 * resolution
     flags = _range_flags(dbm < range_dbm[0] - grace, dbm > range_dbm[1] + grace)
-    return CountTable(first, w_from_dbm(np.clip(dbm, *range_dbm)), flags)
+    too_strong = counts > last
+    return _without(first, w_from_dbm(np.clip(dbm, *range_dbm)), flags, too_strong, too_strong)
 
 
 def rounding(half_step_db: float) -> tuple[Contribution, ...]:
@@ -162,11 +176,20 @@ def _range_flags(below: NDArray[np.bool_], above: NDArray[np.bool_]) -> Bits:
     return np.asarray(flags | np.where(above, np.int32(Flag.ABOVE_RANGE), np.int32(0)), np.int32)
 
 
-def _without(first: int, power_w: Real, flags: Bits, invalid: NDArray[np.bool_]) -> CountTable:
-    """The table with the invalid counts struck out; CalibrationError where none is left."""
+def _without(
+    first: int,
+    power_w: Real,
+    flags: Bits,
+    invalid: NDArray[np.bool_],
+    overload: NDArray[np.bool_],
+) -> CountTable:
+    """The table with the invalid counts struck out; CalibrationError where none is left.
+
+    overload: those among them that an overload gives as well as an open wire.
+    """
     if invalid.all():
         raise CalibrationError("no count of the converter is within the valid voltages")
-    power_w = np.where(invalid, np.nan, power_w)
-    return CountTable(
-        first, power_w, np.where(invalid, np.int32(Flag.NO_SIGNAL_WIRE), flags).astype(np.int32)
-    )
+    struck = np.where(overload, flags & int(Flag.CLIPPED) | int(Flag.ABOVE_RANGE), 0)
+    struck |= int(Flag.NO_SIGNAL_WIRE)
+    bits = np.where(invalid, struck, flags).astype(np.int32)
+    return CountTable(first, np.where(invalid, np.nan, power_w), bits)

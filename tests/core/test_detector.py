@@ -9,7 +9,7 @@ import pytest
 
 from monitor.core import detector as det
 from monitor.core.errors import CalibrationError
-from monitor.core.flags import Flag
+from monitor.core.flags import LOWER_BOUND, Flag
 from monitor.core.quantities import w_from_dbm
 
 BELOW, ABOVE = int(Flag.BELOW_RANGE), int(Flag.ABOVE_RANGE)
@@ -41,7 +41,7 @@ def looked_up(
         (1.68, -5.0, ABOVE),
         (1.9, -5.0, ABOVE),
         (0.15, math.nan, WIRE),
-        (2.04, math.nan, WIRE),
+        (2.04, math.nan, WIRE | ABOVE),  # an overload and a wire look the same
         (0.0, math.nan, WIRE),
     ],
 )
@@ -58,7 +58,19 @@ def test_an_open_wire_of_a_falling_detector_is_no_strong_field() -> None:
     """Zero volts of a falling curve would be +25 dBm: it must be no reading."""
     dbm, flags = looked_up(FALLING, 0.0)
     assert math.isnan(dbm)
-    assert flags == WIRE
+    assert flags == WIRE | ABOVE | CLIPPED
+
+
+@pytest.mark.parametrize("curve", [RISING, FALLING])
+def test_an_overload_at_the_rail_is_no_quiet_gap(curve: det.Curve) -> None:
+    """Beyond valid_v on the strong side: no figure, but flags that forbid "conforms"."""
+    made = det.curve_table(curve, TEN_BITS, (0.3, 1.9), (-55.0, -5.0))
+    ends = np.array([0, 1, 1022, 1023], np.int32)
+    power_w, flags = made.convert(ends if curve.rising else ends[::-1].copy())
+    assert np.isnan(power_w).all()
+    assert flags.tolist() == [WIRE, WIRE, WIRE | ABOVE, WIRE | ABOVE | CLIPPED]
+    assert not flags[0] & int(LOWER_BOUND)
+    assert flags[2] & int(LOWER_BOUND)
 
 
 def test_rails_inside_the_valid_voltages() -> None:
@@ -109,7 +121,15 @@ def test_scale_of_milli_decibels() -> None:
     power_w, flags = made.convert(counts)
     dbm = 10 * np.log10(power_w / 1e-3)
     np.testing.assert_allclose(dbm, [-40.565, -90, -90, -15, -15, np.nan, np.nan], atol=1e-9)
-    assert flags.tolist() == [0, 0, BELOW, 0, ABOVE, WIRE, WIRE]
+    assert flags.tolist() == [0, 0, BELOW, 0, ABOVE, WIRE, WIRE | ABOVE]
+
+
+def test_a_scale_that_is_valid_to_the_end_of_its_range_still_knows_an_overload() -> None:
+    made = det.scale_table(0.1, 0.0, (-90.0, -15.0), (-90.0, -15.0))
+    power_w, flags = made.convert(np.array([-150, -149, 50, -901], np.int32))
+    np.testing.assert_allclose(power_w[0], 10**-4.5, rtol=1e-12)
+    assert np.isnan(power_w[1:]).all()
+    assert flags.tolist() == [0, WIRE | ABOVE, WIRE | ABOVE, WIRE]
 
 
 def test_scale_with_an_offset() -> None:
@@ -139,6 +159,18 @@ def test_counts_that_never_reach_the_valid_voltages() -> None:
         det.curve_table(RISING, det.Converter(0.002, 0, 15, rails=True), (0.3, 2.0), (-55.0, -5.0))
 
 
-def test_stepped_volts_fill_the_valid_voltages() -> None:
-    made = det.stepped(0.001, (0.3, 2.0))
-    assert (made.first, made.last, made.rails) == (300, 2000, False)
+@pytest.mark.parametrize("curve", [RISING, FALLING])
+def test_stepped_volts_reach_beyond_the_valid_voltages(curve: det.Curve) -> None:
+    """A text board prints volts: 300 to 2000 mV are readings, beyond them one side is strong."""
+    steps = det.stepped(0.001, (0.3, 2.0))
+    assert (steps.first, steps.last, steps.rails) == (300 - 1701, 2000 + 1701, False)
+    made = det.curve_table(curve, steps, (0.3, 2.0), (-60.0, 0.0))
+    power_w, flags = made.convert(np.array([299, 300, 2000, 2001], np.int32))
+    assert np.isnan(power_w).tolist() == [True, False, False, True]
+    ends = [WIRE, BELOW, ABOVE, WIRE | ABOVE]
+    assert flags.tolist() == (ends if curve.rising else ends[::-1])
+
+
+def test_too_many_steps_are_refused() -> None:
+    with pytest.raises(CalibrationError, match="262144"):
+        det.curve_table(RISING, det.stepped(1e-6, (0.3, 2.0)), (0.3, 2.0), (-60.0, 0.0))
