@@ -8,6 +8,7 @@ from collections.abc import Sequence
 import numpy as np
 from numpy.typing import NDArray
 
+from monitor.core.numerals import figure
 from monitor.core.readings import MISSING, NS_PER_S
 
 NO_TIME = -(2**63)
@@ -20,6 +21,8 @@ _STAMP = re.compile(
 )
 _FURTHEST_S = 9_000_000_000
 """Seconds from 1970 (year 2255), so that ns fit in 64 bits."""
+_ORDINARY = frozenset("0123456789+-.eE nNaA\t\r")
+"""Of these characters float() takes just what figure() takes; a column of them is read at once."""
 
 
 def is_stamp(text: str) -> bool:
@@ -73,20 +76,15 @@ def _from_seconds(texts: Sequence[str]) -> NDArray[np.int64]:
 
 def floats(texts: Sequence[str]) -> tuple[NDArray[np.float64], int]:
     """Figures of the texts, nan where one is empty or none; how many were neither."""
-    filled = [text if text and not text.isspace() else "nan" for text in texts]
-    try:
-        return np.array(filled, np.str_).astype(np.float64), 0
-    except ValueError:
-        values = [_float(text) for text in filled]
-        wrong = sum(value is None for value in values)
-        return np.array([np.nan if v is None else v for v in values]), wrong
-
-
-def _float(text: str) -> float | None:
-    try:
-        return float(text)
-    except ValueError:
-        return None
+    if set().union(*texts) <= _ORDINARY:
+        filled = [text if text and not text.isspace() else "nan" for text in texts]
+        try:
+            return np.array(filled, np.str_).astype(np.float64), 0
+        except ValueError:
+            pass  # one by one, to find those that are none
+    values = [figure(text) for text in texts]
+    wrong = sum(value is None for value in values)
+    return np.array([np.nan if v is None else v for v in values]), wrong
 
 
 def counts(values: NDArray[np.float64], resolution: float) -> NDArray[np.int32]:

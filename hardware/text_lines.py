@@ -8,11 +8,13 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from hardware.overload import overload_word
 from hardware.timing import LATENESS_NS, increasing_after
 from hardware.transport import Port, check_device, url_problem
 from monitor.core.errors import ConfigError
 from monitor.core.flags import Flag
 from monitor.core.keys import Table
+from monitor.core.numerals import figure
 from monitor.core.readings import (
     MISSING,
     NS_PER_S,
@@ -34,6 +36,7 @@ class Settings:
 
     columns: one per channel, counted from 1. separator: empty stands for any blanks.
     resolution: unit per count; a count is the printed figure divided by it, rounded.
+    overload: the word that the board prints instead of a figure above its range; "" where none.
     """
 
     device: str
@@ -41,6 +44,7 @@ class Settings:
     separator: str
     columns: tuple[int, ...]
     resolution: float | None
+    overload: str
 
     def check_device(self) -> None:
         """DeviceError where the port is not there or may not be opened."""
@@ -73,12 +77,14 @@ def settings_from(table: Table) -> Settings:
     for column in columns:
         if type(column) is not int or column < 1:
             raise table.error("columns", f"{column!r} is not a column number; the first is 1")
+    separator = table.text("separator", ",").strip()
     return Settings(
         device=device,
         baud=table.whole("baud", 115_200, 300, 4_000_000),
-        separator=table.text("separator", ",").strip(),
+        separator=separator,
         columns=tuple(columns),
         resolution=table.number("resolution", low=1e-9, high=1e9),
+        overload=overload_word(table, separator),
     )
 
 
@@ -97,7 +103,8 @@ class TextLines:
         self._boot_ns = boot_ns
         self._bits = int(Flag.SIMULATED) if simulated else 0
         self._port = Port(settings.device, settings.baud, boot_ns)
-        keys = ("lines", "readings", "partial", "comments", "malformed", "too_long", "missing")
+        keys = ("lines", "readings", "partial", "comments", "malformed", "too_long", "missing",
+                "overload")  # fmt: skip
         self._counters = dict.fromkeys(keys, 0)
         self._generation = 0
         self._rest = b""
@@ -153,8 +160,8 @@ class TextLines:
             self._skip_line = True
         return [line for line in lines if line.strip()]
 
-    def _row(self, line: bytes) -> list[int] | None:
-        """The counts of a line; None where it is a comment or too short or too long."""
+    def _row(self, line: bytes) -> tuple[list[int], int] | None:
+        """Counts and flags of a line; None where it is a comment, too short, too long or empty."""
         text = line.decode("ascii", "replace").strip()
         if text.startswith("#"):
             self._counters["comments"] += 1
@@ -163,11 +170,16 @@ class TextLines:
         if len(line) > LONGEST_LINE or len(fields) < max(self._settings.columns):
             self._counters["malformed"] += 1
             return None
-        values = [_number(fields[column - 1]) for column in self._settings.columns]
+        words = [fields[column - 1].strip() for column in self._settings.columns]
+        over = [bool(word) and word == self._settings.overload for word in words]
+        values = [math.nan if o else figure(word) for word, o in zip(words, over)]
+        self._counters["overload"] += sum(over)
         if None in values:
             self._counters["malformed"] += 1
-        counts = [self._count(value) for value in values]
-        return None if all(value is None for value in values) else counts
+        if all(value is None for value in values):
+            return None
+        bits = int(Flag.ABOVE_RANGE) if any(over) else 0
+        return [self._count(value) for value in values], bits
 
     def _count(self, value: float | None) -> int:
         scaled = math.nan if value is None else value / (self._settings.resolution or 1.0)
@@ -176,7 +188,7 @@ class TextLines:
             return MISSING
         return round(scaled)
 
-    def _batch(self, rows: list[list[int]], now_ns: int) -> Batch:
+    def _batch(self, rows: list[tuple[list[int], int]], now_ns: int) -> Batch:
         n = len(rows)
         step_ns = (now_ns - self._last_ns) // n
         self._usual_ns += (step_ns - self._usual_ns) // 8
@@ -184,16 +196,6 @@ class TextLines:
         times_ns = now_ns - step_ns * np.arange(n - 1, -1, -1, dtype=np.int64)
         times_ns = increasing_after(times_ns, max(self._vouched_ns, self._last_ns))
         self._last_ns = self._vouched_ns = int(times_ns[-1])
-        flags = np.full(n, self._bits, np.int32)
-        return Batch(times_ns, np.array(rows, np.int32), flags, self._last_ns)
-
-
-def _number(field: str) -> float | None:
-    """The figure of a field, nan where it is empty; None where it is not a number."""
-    field = field.strip()
-    if not field:
-        return math.nan
-    try:
-        return float(field)
-    except ValueError:
-        return None
+        counts = np.array([counts for counts, _ in rows], np.int32)
+        flags = np.array([bits | self._bits for _, bits in rows], np.int32)
+        return Batch(times_ns, counts, flags, self._last_ns)

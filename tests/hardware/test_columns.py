@@ -10,6 +10,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from hardware.columns import NO_TIME, counts, floats, is_stamp, times_ns
+from monitor.core.numerals import figure
 from monitor.core.readings import MISSING
 
 EPOCH = datetime(1970, 1, 1, tzinfo=UTC)
@@ -59,6 +60,21 @@ def test_figures_and_what_is_none():
     assert values[0] == -40.565
     assert np.isnan(values[1:]).all()
     assert wrong == 1
+
+
+@pytest.mark.parametrize("text", ["1_0", "inf", "-Infinity", "0x1", "1e", "\u0661", "1 2", "e5"])
+def test_what_only_a_programme_would_take_for_a_number(text):
+    values, wrong = floats(["2", text, ".5e1"])
+    assert (values[0], values[2], wrong) == (2.0, 5.0, 1)
+    assert np.isnan(values[1])
+
+
+@given(st.lists(st.text("0123456789+-.eEnaA \t_", max_size=6), max_size=6))
+def test_a_column_is_read_as_its_texts_are_one_by_one(texts):
+    values, wrong = floats(texts)
+    single = [figure(text) for text in texts]
+    assert wrong == single.count(None)
+    np.testing.assert_array_equal(values, [np.nan if v is None else v for v in single])
 
 
 def test_counts_are_the_nearest_and_missing_has_no_number():

@@ -104,6 +104,73 @@ def test_disorder_across_the_pieces_of_a_long_file(tmp_path):
     assert all(b.now_ns == b.times_ns[-1] for b in batches)
 
 
+def minutes(count, first=0):
+    return [f"2030-01-{1 + i // 1440:02}T{i // 60 % 24:02}:{i % 60:02}:00Z,-{i % 50}"
+            for i in range(first, first + count)]  # fmt: skip
+
+
+@pytest.mark.parametrize("at", [0, 500, 998])
+@pytest.mark.parametrize("stray", ["2031-01-01T00:00:00Z,-7", "2029-01-01T00:00:00Z,-7"])
+def test_one_stray_stamp_costs_one_row(at, stray, tmp_path):
+    """A year late or a year early, first, in the middle or near the end: the rest stays."""
+    rows = minutes(1000)
+    front_end = series(tmp_path / "a.csv", "\n".join(["time,dbm", *rows[:at], stray, *rows[at:]]))
+    times, counts = table(all_of(front_end))
+    # A stamp that is early and stands first cannot be told from a gap of a year.
+    lost = 0 if at == 0 and stray.startswith("2029") else 1
+    assert times.size == 1001 - lost
+    assert front_end.status().counters["out_of_order"] == lost
+    if lost:
+        assert (times == np.arange(1000) * 60 * 10**9).all()
+        assert counts[:, 0].tolist() == [-1000 * (i % 50) for i in range(1000)]
+        assert front_end.clock_fix == (0, 1_893_456_000 * 10**9)
+
+
+def test_a_stray_stamp_across_the_pieces_of_a_long_file(tmp_path):
+    rows = [f"{i},{-i % 100}" for i in range(70_000)]
+    rows.insert(30_000, "99999999,-5")
+    front_end = series(tmp_path / "a.csv", "time,dbm\n" + "\n".join(rows) + "\n")
+    times, counts = table(all_of(front_end))
+    assert (times == np.arange(70_000) * 10**9).all()
+    assert (counts[:, 0] == -np.arange(70_000) % 100 * 1000).all()
+
+
+def test_many_rows_out_of_order_are_an_error_that_names_them(tmp_path):
+    """A series in two halves, the wrong way round; a share of 1 % passes, more does not."""
+    rows = minutes(200, first=300) + minutes(300)
+    path = tmp_path / "a.csv"
+    with pytest.raises(ConfigError) as caught:
+        series(path, "\n".join(["time,dbm", *rows]))
+    assert "200 of 500 times are not after the one before, first at lines 2, 3, 4;" in str(
+        caught.value
+    )
+    assert str(path) in str(caught.value)
+    few = [*minutes(500), *minutes(5)]
+    assert table(all_of(series(path, "\n".join(["time,dbm", *few]))))[0].size == 500
+    with pytest.raises(ConfigError, match="6 of 506 times"):
+        series(path, "\n".join(["time,dbm", *few, minutes(6)[5]]))
+
+
+def test_rows_written_after_the_opening_stay_in_order(tmp_path):
+    path = tmp_path / "a.csv"
+    front_end = series(path, "time,dbm\n0,-1\n1,-2\n2,-3\n")
+    with path.open("a") as file:
+        file.write("1,-9\n3,-4\n")
+    assert (table(all_of(front_end))[0] // 10**9).tolist() == [0, 1, 2, 3]
+    assert front_end.status().counters["out_of_order"] == 1
+
+
+def test_the_overload_word_is_no_level_and_above_range(tmp_path):
+    text = "time,dbm\n0,-1\n1, OL\n2,-3\n3,over\n"
+    front_end = series(tmp_path / "a.csv", text, overload="OL", simulated=True)
+    (batch,) = all_of(front_end)
+    assert batch.counts[:, 0].tolist() == [-1000, MISSING, -3000, MISSING]
+    plain, over = int(Flag.SIMULATED), int(Flag.SIMULATED | Flag.ABOVE_RANGE)
+    assert batch.flags.tolist() == [plain, over, plain, plain]
+    counters = front_end.status().counters
+    assert (counters["overload"], counters["malformed"]) == (1, 1)
+
+
 def test_real_pace_gives_rows_when_they_are_due(tmp_path):
     now = [1000]
     front_end = series(

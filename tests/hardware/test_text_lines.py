@@ -54,11 +54,25 @@ def test_blanks_of_any_number_separate(bench, separator):
 
 def test_what_is_no_number_is_counted_and_never_a_reading(bench):
     front_end = text_board(bench.path)
-    text = "\n# a comment\nt,1\nt,x,y\nt,1,zz\nt,,3\nt,nan,inf\nt,1e30,4\n"
+    text = "\n# a comment\nt,1\nt,x,y\nt,1,zz\nt,,3\nt,nan,inf\nt,1e30,4\nt,1_000,OL\n"
     batches = sent(bench, front_end, text)
     assert rows(batches) == [[1000, MISSING], [MISSING, 3000], [MISSING, MISSING], [MISSING, 4000]]
     counters = front_end.status().counters
-    assert (counters["comments"], counters["malformed"]) == (1, 3)
+    assert (counters["comments"], counters["malformed"]) == (1, 5)
+    assert not any(b.flags.any() for b in batches)
+    front_end.close()
+
+
+@pytest.mark.parametrize("word", ["OL", "inf"])
+def test_the_overload_word_is_no_reading_and_above_range(bench, word):
+    """Flagged as above range, so that what it leaves open cannot pass as quiet."""
+    front_end = text_board(bench.path, overload=word)
+    batches = sent(bench, front_end, f"\nt,1,2\nt,3, {word}\nt,{word},{word}\nt,over,4\n")
+    assert rows(batches) == [[1000, 2000], [3000, MISSING], [MISSING, MISSING], [MISSING, 4000]]
+    above = int(Flag.ABOVE_RANGE)
+    assert np.concatenate([b.flags for b in batches]).tolist() == [0, above, above, 0]
+    counters = front_end.status().counters
+    assert (counters["overload"], counters["malformed"]) == (3, 1)
     front_end.close()
 
 
@@ -121,6 +135,8 @@ def test_simulated_readings_are_marked(bench):
         ({"resolution": 0}, "sensor.resolution"),
         ({"device": "what://x"}, "sensor.device"),
         ({"seperator": ","}, "did you mean separator?"),
+        ({"overload": "99"}, "sensor.overload: '99' reads as a figure"),
+        ({"overload": "O,L"}, "sensor.overload: 'O,L' holds the separator"),
     ],
 )
 def test_wrong_options_are_one_line(options, words, tmp_path):
