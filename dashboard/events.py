@@ -5,7 +5,8 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import dataclass
 
-from dashboard import words
+from dashboard import bounds, words
+from monitor.core.alarms import ENOUGH_SHARE
 from monitor.record.types import EventRow
 
 
@@ -38,11 +39,17 @@ def _by(event: EventRow) -> str:
 
 
 def _alarm(event: EventRow, name: str) -> tuple[str, str]:
-    ratio, raised = event.body.get("exposure_ratio"), event.body.get("raised")
-    at = f" at {words.ratio_figure(float(ratio))}" if isinstance(ratio, (int, float)) else ""
-    if isinstance(ratio, (int, float)):
-        return name, f"went over{at}" if raised else f"returned below{at}"
-    return name, "alarm began" if raised else "alarm ended"
+    raised, crossed = event.body.get("raised"), bounds.number(event.body, "exposure_ratio")
+    if crossed is None:
+        return name, "alarm began" if raised else "alarm ended"
+    if not raised:
+        return name, f"returned below, at {words.ratio_figure(crossed)} of the limit"
+    share, low = bounds.number(event.body, "valid_share"), bounds.number(event.body, "ratio_low")
+    lone = "ratio_mean" in event.body and bounds.number(event.body, "ratio_mean") is None
+    if low is not None and (lone or (share is not None and not share >= ENOUGH_SHARE)):
+        part = "" if share is None else f"; {words.share(share)} of the averaging time is valid"
+        return name, f"went over, at least {words.rounded_down(low)} of the limit{part}"
+    return name, f"went over, at {words.ratio_figure(crossed)} of the limit"
 
 
 def _confirmed(event: EventRow, name: str) -> tuple[str, str]:

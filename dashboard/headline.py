@@ -4,10 +4,9 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from dashboard import words
+from dashboard import bounds, told, words
+from dashboard.bounds import Kind, Ratio
 from dashboard.models import OWN_POPULATION, Live, Snapshot, State, Station, levels_for
-from dashboard.picture import ratio_of
-from monitor.core.alarms import ENOUGH_SHARE
 
 AT_ANTENNA = "at the monitor's antenna"
 STANDING = ("unacknowledged", "acknowledged", "shelved")
@@ -15,7 +14,10 @@ STANDING = ("unacknowledged", "acknowledged", "shelved")
 
 @dataclass(frozen=True, slots=True)
 class Headline:
-    """The one sentence; kind: below, over, limit, silent, stopped, starting or no_record."""
+    """The one sentence; kind: below, open, over, undecided, limit, or without a measurement.
+
+    The kinds without one: silent, stopped, starting, no_record.
+    """
 
     kind: str
     text: str
@@ -30,13 +32,13 @@ def occupancy(live: Live, station: Station) -> str:
 
 def governing(live: Live, station: Station, wanted: int | None) -> Snapshot | None:
     """The scope that the picture draws: the one asked for, else the largest that applies here."""
-    known = [e for e in live.exposures if ratio_of(e, "ratio_mean") is not None]
+    known = [e for e in live.exposures if live.ratio(e).stands is not None]
     for exposure in known:
         if exposure["index"] == wanted:
             return exposure
     own = OWN_POPULATION.get(occupancy(live, station))
     candidates = [e for e in known if e.get("population") == own] or known
-    return max(candidates, key=lambda e: float(e["ratio_mean"]), default=None)
+    return max(candidates, key=live.rank, default=None)
 
 
 def headline(live: Live, station: Station) -> Headline:
@@ -77,53 +79,95 @@ def _device(live: Live) -> str:
 def _measuring(live: Live, station: Station) -> Headline:
     own = OWN_POPULATION.get(occupancy(live, station))
     applying = [e for e in live.exposures if e.get("population") == own] or live.exposures
-    above = [e for e in applying if e.get("verdict") == "exceeds" or _mean(e) > 1]
+    above = [e for e in applying if live.ratio(e).exceeds]
     if above:
-        worst = max(above, key=_mean)
-        figure = words.ratio_figure(_mean(worst))
-        verdict = words.verdict(str(worst.get("verdict")), ())
-        more = f"{title(worst)}: {verdict}"
-        return Headline("limit", f"Above the limit {AT_ANTENNA}: {figure} of it", (more,))
+        worst = max(above, key=live.rank)
+        figure = told.figure(live.ratio(worst))
+        text = f"Above the limit {AT_ANTENNA}: {figure} of it"
+        return Headline("limit", text, (f"{title(worst)}: exceeds", *_carried(live)))
+    near = [e for e in applying if not live.ratio(e).window.thin and live.rank(e) >= 1]
+    if near:
+        return _at_limit(max(near, key=live.rank), live)
     standing = [a for a in live.alarms if is_level(a) and a.get("state") in STANDING]
     if standing:
         names = dict.fromkeys(alarm_text(alarm) for alarm in standing)
-        return Headline("over", f"Over an alert level {AT_ANTENNA}", tuple(names))
+        return Headline("over", f"Over an alert level {AT_ANTENNA}", (*names, *_thin(live)))
     return _against_levels(live, station)
+
+
+def _at_limit(exposure: Snapshot, live: Live) -> Headline:
+    """A figure of the limit or more, of which no excess is known."""
+    ratio = live.ratio(exposure)
+    where = "Up to the limit or above it" if ratio.kind is Kind.BELOW else "At or above the limit"
+    text = f"{where} {AT_ANTENNA}: {told.figure(ratio)} of it; cannot be decided"
+    why = told.why(ratio, [str(reason) for reason in exposure.get("reasons") or ()])
+    more = f"{title(exposure)}: {words.verdict('undecided', why)}"
+    return Headline("undecided", text, (more, *_carried(live)))
 
 
 def _against_levels(live: Live, station: Station) -> Headline:
     """No alarm of a level stands; yet that alone is no proof of being below."""
-    pairs = [(lv, e) for e in live.exposures for lv in levels_for([*live.levels], e)]
+    pairs = [(lv, live.ratio(e)) for e in live.exposures for lv in levels_for([*live.levels], e)]
     carried = _carried(live)
     worst = governing(live, station, None)
     if worst is None:
         return Headline("starting", f"No average yet; this {words.NOTHING}.", carried)
-    over = [str(lv["name"]) for lv, e in pairs if _mean(e) >= float(lv["ratio"])]
+    over = [str(lv["name"]) for lv, ratio in pairs if _over(ratio, float(lv["ratio"]))]
     if over:
         text = f"Over an alert level {AT_ANTENNA}; no alarm is raised yet"
         return Headline("over", text, (*dict.fromkeys(over), *carried))
+    levels = f"the alert {'levels' if len(live.levels) > 1 else 'level'}" if pairs else "the limit"
+    open_ = _open(live.ratio(worst), [ratio for _, ratio in pairs], levels)
+    if open_:
+        return Headline("open", open_, (*_thin(live), *carried))
     if not pairs:
-        figure = words.ratio_figure(_mean(worst))
-        text = f"{figure} of the limit {AT_ANTENNA}; no alert level is set"
+        text = f"{_capital(told.of_limit(live.ratio(worst)))} {AT_ANTENNA}; no alert level is set"
         return Headline("below", text, carried)
-    below = f"Below the alert {'levels' if len(live.levels) > 1 else 'level'} {AT_ANTENNA}"
+    below = f"Below {levels} {AT_ANTENNA}"
     thin = _thin(live)
-    if thin or any((ratio_of(e, "ratio_high") or 0) >= float(lv["ratio"]) for lv, e in pairs):
-        return Headline("open", f"{below} in what was measured; gaps leave it open", thin + carried)
+    if thin or any((ratio.high or 0) >= float(lv["ratio"]) for lv, ratio in pairs):
+        text = f"{below} in what was measured; gaps leave it open"
+        return Headline("open", text, (*thin, *carried))
     return Headline("below", below, carried)
+
+
+def _open(ratio: Ratio, watched: list[Ratio], what: str) -> str:
+    """Why nothing can be said to be below; '' where something can. ratio: that of the picture."""
+    unbounded = next((one for one in [ratio, *watched] if _unbounded(one)), None)
+    if unbounded is not None:
+        bound = "a bound neither way" if unbounded.kind is Kind.OPEN else "a lower bound"
+        figure = _capital(told.of_limit(unbounded))
+        return f"{figure} {AT_ANTENNA}; {bound}: it cannot be said to be below {what}"
+    if ratio.window.thin:
+        part = f"Only {told.valid_part(ratio.window)} are valid"
+        return f"{part}; {told.of_limit(ratio)} {AT_ANTENNA}, gaps leave the rest open"
+    return ""
+
+
+def _capital(text: str) -> str:
+    return text[:1].upper() + text[1:]
+
+
+def _over(ratio: Ratio, level: float) -> bool:
+    """As the alarms count: the mean where enough is valid, gaps as nothing always."""
+    mean = None if ratio.window.thin else ratio.mean
+    return any(figure is not None and figure >= level for figure in (ratio.low, mean))
+
+
+def _unbounded(ratio: Ratio) -> bool:
+    """Whether nothing bounds a figure above."""
+    lone = ratio.mean is None and ratio.stands is not None
+    return lone or bool(ratio.window.lower)
 
 
 def _thin(live: Live) -> tuple[str, ...]:
     """The averages that stand on too small a part of their averaging time."""
+    windows = [bounds.window(field) for field in live.fields]
     return tuple(
-        f"Only {words.share(f['valid_share'])} of the {words.average(f['averaging_s'])} is valid."
-        for f in live.fields
-        if not f["valid_share"] >= ENOUGH_SHARE
+        f"Only {words.share(w.share)} of the {words.average(w.averaging_s)} is valid."
+        for w in windows
+        if w.thin
     )
-
-
-def _mean(exposure: Snapshot) -> float:
-    return ratio_of(exposure, "ratio_mean") or 0.0
 
 
 def _carried(live: Live) -> tuple[str, ...]:

@@ -9,7 +9,8 @@ from enum import StrEnum
 from pathlib import Path
 from typing import Any, Protocol
 
-from dashboard import words
+from dashboard import bounds, words
+from dashboard.bounds import Ratio
 from monitor.core.alarms import AlertRule
 from monitor.core.errors import FieldsillError
 from monitor.core.limits import Scope
@@ -107,6 +108,21 @@ class Live:
     def fields(self) -> list[Snapshot]:
         """Averages of E; empty where nothing is measured."""
         return list(self.snapshot.get("fields") or []) if self.current else []
+
+    @property
+    def flags(self) -> list[str]:
+        """The reservations that any of the figures carry."""
+        return [str(flag) for flag in self.snapshot.get("flags") or []]
+
+    def ratio(self, exposure: Snapshot) -> Ratio:
+        """What is known of an exposure ratio."""
+        return bounds.ratio(exposure, self.fields, self.flags)
+
+    def rank(self, exposure: Snapshot) -> float:
+        """The figure by which ratios are compared: a lower bound where no mean is known."""
+        known = self.ratio(exposure)
+        figures = (known.mean, known.low)
+        return next((figure for figure in figures if figure is not None), -1.0)
 
     @property
     def levels(self) -> list[Snapshot]:

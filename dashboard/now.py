@@ -6,17 +6,21 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any
 
-from dashboard import picture, words
+from dashboard import picture, told, words
 from dashboard.headline import alarm_text, is_level, occupancy, title
 from dashboard.models import OWN_POPULATION, Live, Snapshot, Station, levels_for
-from dashboard.picture import Picture, ratio_of
+from dashboard.picture import Picture
 
 FROM_MEMORY = "limit values from memory, not confirmed"
 
 
 @dataclass(frozen=True, slots=True)
 class ScopeLine:
-    """One limit set and scope in words, with its small picture."""
+    """One limit set and scope in words, with its small picture.
+
+    label, space: the words in the large picture, at the level and above it. left: what is left,
+    for a controlled place.
+    """
 
     index: int
     title: str
@@ -26,6 +30,9 @@ class ScopeLine:
     note: str
     kind: str
     picture: Picture
+    label: str
+    space: str
+    left: str
 
 
 @dataclass(frozen=True, slots=True)
@@ -50,7 +57,7 @@ def scope_lines(live: Live, station: Station) -> list[tuple[str, list[ScopeLine]
     for population in order:
         lines = [
             scope_line(e, live, station)
-            for e in sorted(live.exposures, key=lambda e: -(ratio_of(e, "ratio_mean") or -1.0))
+            for e in sorted(live.exposures, key=lambda e: -live.rank(e))
             if e.get("population") == population
         ]
         name = words.POPULATIONS.get(population, population)
@@ -61,32 +68,23 @@ def scope_lines(live: Live, station: Station) -> list[tuple[str, list[ScopeLine]
 
 def scope_line(exposure: Snapshot, live: Live, station: Station) -> ScopeLine:
     """One scope in words."""
-    mean = ratio_of(exposure, "ratio_mean")
-    verdict = str(exposure.get("verdict", "undecided"))
-    u_db = uncertainty_db(live, exposure)
+    ratio = live.ratio(exposure)
     reasons = tuple(str(r) for r in exposure.get("reasons") or ())
-    # The first reason tells what was compared; alone, it is why nothing can be decided.
-    alone = verdict == "undecided" and len(reasons) == 1
-    compared, why = ((), reasons) if alone else (reasons[:1], reasons[1:])
+    filled = occupancy(live, station) == "controlled"
+    verified = exposure.get("verified") or ratio.verdict == "undecided"
     return ScopeLine(
         index=int(exposure["index"]),
         title=title(exposure),
-        ratio=words.of_limit(mean),
-        detail="; ".join(filter(None, [_interval(exposure, u_db), *compared])),
-        verdict=words.verdict(verdict, why),
-        note=FROM_MEMORY if verdict != "undecided" and not exposure.get("verified") else "",
-        kind=verdict,
+        ratio=told.of_limit(ratio),
+        detail="; ".join(filter(None, [told.in_valid_part(ratio), told.interval(ratio)])),
+        verdict=words.verdict(ratio.verdict, told.why(ratio, reasons)),
+        note="" if verified else FROM_MEMORY,
+        kind=ratio.verdict,
         picture=drawn(exposure, live, station),
+        label=told.level_label(ratio, filled=filled),
+        space=told.space_label(ratio),
+        left=told.left(ratio, reasons),
     )
-
-
-def _interval(exposure: Snapshot, u_db: float | None) -> str:
-    low, high = ratio_of(exposure, "ratio_low"), ratio_of(exposure, "ratio_high")
-    if low is None or high is None:
-        return ""
-    bottom, top = picture.interval(low, high, u_db)
-    what = "gaps" if u_db is None else "gaps and expanded uncertainty"
-    return f"between {words.ratio_figure(bottom)} and {words.ratio_figure(top)}, by {what}"
 
 
 def drawn(exposure: Snapshot | None, live: Live, station: Station) -> Picture:
@@ -94,21 +92,24 @@ def drawn(exposure: Snapshot | None, live: Live, station: Station) -> Picture:
     controlled = occupancy(live, station) == "controlled"
     if exposure is None:
         return picture.draw(None, filled=controlled)
-    return picture.draw(
-        exposure,
-        filled=controlled,
-        u_db=uncertainty_db(live, exposure),
-        levels=levels_for(live.levels, exposure),
-    )
+    levels = levels_for(live.levels, exposure)
+    return picture.draw(live.ratio(exposure), filled=controlled, levels=levels)
 
 
-def uncertainty_db(live: Live, exposure: Snapshot) -> float | None:
-    """Expanded uncertainty of the field over the scope's averaging time, dB."""
-    for one in live.fields:
-        if one.get("averaging_s") == exposure.get("averaging_s"):
-            value = one.get("u_db")
-            return float(value) if isinstance(value, (int, float)) else None
-    return None
+@dataclass(frozen=True, slots=True)
+class FieldWords:
+    """The field strength of one averaging time and its interval in words."""
+
+    e: str
+    interval: str
+
+
+def field_words(live: Live) -> list[FieldWords]:
+    """The field strengths, in the order of the snapshot."""
+    return [
+        FieldWords(told.e_words(one, live.flags), told.e_interval(one, live.flags))
+        for one in live.fields
+    ]
 
 
 def alarm_lines(live: Live) -> list[AlarmLine]:

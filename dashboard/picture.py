@@ -6,9 +6,10 @@ and above; the ledge is always the limit.
 
 from __future__ import annotations
 
-import math
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+
+from dashboard.bounds import Ratio
 
 WIDTH, HEIGHT = 400, 452
 LEFT, RIGHT = 70, 330
@@ -34,8 +35,11 @@ class Picture:
     """One drawn recess; y grows downward. level_y is None where there is no measurement.
 
     shut: the recess is boarded up, nothing may be read from it. filled: the occupancy is
-    controlled, so the recess fills. band: (top, bottom) y of the interval of the figure.
-    label_y, left_y: where the words about the level and about what is left stand.
+    controlled, so the recess fills. over: the limit is known to be exceeded. beyond: the level
+    stands above the lintel. band: (top, bottom) y of the interval; ends: whether a cap closes it
+    there, or it goes on unbounded. unknown: (top, bottom) y of the space of which nothing may be
+    claimed, neither taken nor free. label_y, space_y: where the words about the level and about
+    the space above it stand.
     """
 
     level_y: float | None
@@ -45,21 +49,16 @@ class Picture:
     over: bool
     beyond: bool
     notches: tuple[Notch, ...]
-    left_ratio: float | None
+    ends: tuple[bool, bool] = (True, True)
+    unknown: tuple[float, float] | None = None
     label_y: float = 0.0
-    left_y: float | None = None
+    space_y: float | None = None
 
 
 def y_of(ratio: float) -> float:
     """The height at which a ratio stands, cut to the recess."""
     y = FLOOR_Y - (FLOOR_Y - LEDGE_Y) * ratio
     return round(min(FLOOR_Y, max(HEAD_Y, y)), 2)
-
-
-def interval(ratio_low: float, ratio_high: float, u_db: float | None) -> tuple[float, float]:
-    """The interval of a ratio: gaps either way, widened by the expanded uncertainty in dB."""
-    factor = 10.0 ** ((u_db or 0.0) / 10.0)
-    return ratio_low / factor, ratio_high * factor
 
 
 def notches(levels: Sequence[Mapping[str, object]]) -> tuple[Notch, ...]:
@@ -78,32 +77,63 @@ def notches(levels: Sequence[Mapping[str, object]]) -> tuple[Notch, ...]:
 
 
 def draw(
-    exposure: Mapping[str, object] | None,
+    ratio: Ratio | None,
     *,
     filled: bool,
-    u_db: float | None = None,
     levels: Sequence[Mapping[str, object]] = (),
 ) -> Picture:
     """The picture of one scope's exposure ratio; boarded up where there is none."""
-    mean = ratio_of(exposure, "ratio_mean")
     marks = notches(levels)
-    if exposure is None or mean is None:
-        return Picture(None, None, filled, True, False, False, marks, None)
-    low, high = ratio_of(exposure, "ratio_low"), ratio_of(exposure, "ratio_high")
-    upper = mean if high is None else high
-    bottom, top = interval(mean if low is None else low, upper, u_db)
+    stands = None if ratio is None else ratio.stands
+    if ratio is None or stands is None:
+        return Picture(None, None, filled, True, False, False, marks)
+    level_y = y_of(stands)
+    unknown = _unknown(ratio, level_y, filled)
     return Picture(
-        level_y=y_of(mean),
-        band=(y_of(top), y_of(bottom)),
+        level_y=level_y,
+        band=_band(ratio),
         filled=filled,
         shut=False,
-        over=mean > 1,
-        beyond=mean > TOP_RATIO,
+        over=ratio.exceeds,
+        beyond=stands > TOP_RATIO,
         notches=marks,
-        left_ratio=max(0.0, 1.0 - upper),
-        label_y=_label_y(y_of(mean)),
-        left_y=(LEDGE_Y + y_of(mean)) / 2 if y_of(mean) - LEDGE_Y > 4 * LABEL_STEP else None,
+        ends=(ratio.top is not None, ratio.bottom is not None),
+        unknown=unknown,
+        label_y=_label_y(level_y),
+        space_y=_space_y(ratio, level_y, unknown) if filled else None,
     )
+
+
+def _band(ratio: Ratio) -> tuple[float, float] | None:
+    if ratio.bottom is None and ratio.top is None:
+        return None
+    return (
+        HEAD_Y if ratio.top is None else y_of(ratio.top),
+        FLOOR_Y if ratio.bottom is None else y_of(ratio.bottom),
+    )
+
+
+def _unknown(ratio: Ratio, level_y: float, filled: bool) -> tuple[float, float] | None:
+    """Between level and ledge where nothing is decided; up to the interval's top where it is."""
+    if ratio.exceeds:
+        return None
+    if level_y <= LEDGE_Y:
+        found = (level_y, float(LEDGE_Y))
+    elif not filled:
+        return None
+    elif ratio.left is None or ratio.top is None:
+        found = (float(LEDGE_Y), level_y)
+    else:
+        found = (max(float(LEDGE_Y), y_of(ratio.top)), level_y)
+    return found if found[0] < found[1] else None
+
+
+def _space_y(ratio: Ratio, level_y: float, unknown: tuple[float, float] | None) -> float | None:
+    """In the middle of the free space, or of the unknown where nothing may be called free."""
+    bottom = level_y
+    if ratio.left is not None and unknown is not None:
+        bottom = unknown[0]
+    return (LEDGE_Y + bottom) / 2 + 6 if bottom - LEDGE_Y > 4 * LABEL_STEP else None
 
 
 def _label_y(level_y: float) -> float:
@@ -111,11 +141,3 @@ def _label_y(level_y: float) -> float:
     near_ledge = LEDGE_Y < level_y < LEDGE_Y + LEDGE_THICK + LABEL_STEP
     near_lintel = level_y < HEAD_Y + LABEL_STEP
     return level_y + LABEL_STEP if near_ledge or near_lintel else level_y - 8
-
-
-def ratio_of(exposure: Mapping[str, object] | None, key: str) -> float | None:
-    """A finite figure of an exposure, else None."""
-    value = None if exposure is None else exposure.get(key)
-    if isinstance(value, (int, float)) and math.isfinite(value):
-        return float(value)
-    return None

@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 from datetime import UTC, datetime
+from decimal import ROUND_CEILING, ROUND_FLOOR, Decimal
 
 CAUTIONS = (
     "This is an area monitor: it measures at its own antenna, at one place. Field strength changes "
@@ -14,6 +15,14 @@ CAUTIONS = (
     "Local codes, the site's own procedures and licensed or otherwise authorised practice decide "
     "what may be done here. This page decides nothing.",
 )
+
+NOT_JUDGED = (
+    "Not judged here: exposures shorter than the averaging time, pulses and peaks, nerve "
+    "stimulation below 10 MHz, currents in limbs and on contact, the magnetic field, and averaging "
+    "times that change with frequency above 10 GHz. Limits for these may apply as well; they need "
+    "other measurements."
+)
+"""What published limits ask and this monitor does not judge."""
 
 POPULATIONS = {"general_public": "general public", "occupational": "occupational"}
 SCOPES = {
@@ -71,6 +80,26 @@ def ratio_figure(ratio: float | None) -> str:
         digits += 1
         text = figure(ratio, digits)
     return text
+
+
+def rounded_down(ratio: float) -> str:
+    """A ratio of 0 or more for 'at least' and 'left': never more than it is."""
+    return _towards(ratio, ROUND_FLOOR)
+
+
+def rounded_up(ratio: float) -> str:
+    """A ratio of 0 or more for 'below' and upper ends: never less than it is."""
+    return _towards(ratio, ROUND_CEILING)
+
+
+def _towards(ratio: float, direction: str) -> str:
+    exact = Decimal(repr(float(ratio)))
+    places = 5
+    if ratio >= 1e-5:
+        digits = 3 if 0.9 <= ratio < 1.1 else 2
+        places = digits - 1 - exact.adjusted()
+    rounded = exact.quantize(Decimal(1).scaleb(-places), rounding=direction)
+    return f"{rounded:.{max(0, places)}f}" if rounded else "0"
 
 
 def percent(ratio: float) -> str:

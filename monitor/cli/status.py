@@ -9,6 +9,9 @@ from pathlib import Path
 
 import click
 
+from dashboard import bounds
+from dashboard.bounds import Kind
+from dashboard.words import NOT_JUDGED, rounded_down, rounded_up
 from monitor.cli.output import print_json
 from monitor.clock import SystemClock
 from monitor.control import ask
@@ -44,10 +47,15 @@ class Standing:
         return str(named or self.record.stem)
 
     @property
+    def largest(self) -> bounds.Ratio | None:
+        """The largest exposure ratio; by its lower bound where no mean is known."""
+        known = [one for one in _ratios(self.now) if one.stands is not None]
+        return max(known, key=_rank, default=None)
+
+    @property
     def ratio(self) -> float | None:
-        """The largest exposure ratio that is not a bound of what was missed."""
-        return max((v for row in _rows(self.now, "exposures") if (v := _mean(row)) is not None),
-                   default=None)  # fmt: skip
+        """The figure of the largest exposure ratio."""
+        return None if self.largest is None else _rank(self.largest)
 
     def document(self) -> dict[str, object]:
         """As JSON."""
@@ -59,6 +67,8 @@ class Standing:
             "answering": self.live,
             "simulated": self.simulated,
             "largest_exposure_ratio": self.ratio,
+            "largest_is": None if self.largest is None else str(self.largest.kind),
+            "not_judged": NOT_JUDGED,
             "now": dict(self.now),
         }
 
@@ -81,7 +91,7 @@ def command(folder: Path | None, record: Path | None, site: Path | None, as_json
     if as_json:
         print_json({"boxes": [box.document() for box in boxes]})
     else:
-        click.echo("\n".join(_one_line(box) for box in boxes))
+        click.echo("\n".join([*(_one_line(box) for box in boxes), NOT_JUDGED]))
 
 
 def standing_of(path: Path, utc_ns: int) -> Standing:
@@ -130,7 +140,9 @@ def _judged(now: Row) -> tuple[str, str]:
     if alarms:
         return "alarm", f"{', '.join(alarms)}, {heard}"
     if verdicts == {"conforms"}:
-        return "conforms", f"below every limit that is set, at the antenna, {heard}"
+        return "conforms", f"below each limit that is judged, at the antenna, {heard}"
+    if any(_rank(one) >= 1 and not one.window.thin for one in _ratios(now)):
+        return "undecided", f"at or above a limit, cannot be decided, {heard}"
     return "undecided", f"no limit known to be exceeded, not all can be decided, {heard}"
 
 
@@ -152,7 +164,7 @@ def _as_now(latest: Latest, simulated: bool, utc_ns: int) -> Row:
             "population": x.scope.population, "scope": x.scope.scope,
             "averaging_s": x.scope.averaging_s, "clause": x.scope.clause,
             "verified": x.scope.verified, "ratio_low": x.ratio_low, "ratio_mean": x.ratio_mean,
-            "ratio_high": x.ratio_high, "verdict": Verdict(x.verdict).name.lower(),
+            "ratio_high": x.ratio_high, "u_db": x.u_db, "verdict": Verdict(x.verdict).name.lower(),
         }
         for x in latest.exposures
     ]  # fmt: skip
@@ -182,9 +194,9 @@ def _records(folder: Path) -> list[Path]:
 
 
 def _one_line(box: Standing) -> str:
-    ratio = "ratio -" if box.ratio is None else f"ratio {box.ratio:.3g}"
+    ratio = "ratio -" if box.largest is None else f"ratio {_ratio_words(box.largest)}"
     mark = "  SIMULATED" if box.simulated else ""
-    return f"{box.state:<10} {box.name:<24} {ratio:<14} {box.text}{mark}"
+    return f"{box.state:<10} {box.name:<24} {ratio:<20} {box.text}{mark}"
 
 
 def _in_full(box: Standing) -> list[str]:
@@ -192,25 +204,28 @@ def _in_full(box: Standing) -> list[str]:
     lines += [f"  record   {box.record}", f"  state    {box.state}: {box.text}"]
     if not box.live and box.now:
         lines.append("  the last figures in the record:")
+    flags = _flags(box.now)
     for row in _rows(box.now, "fields"):
         lines.append(
-            f"  {_minutes(row)}   E {_figure(row, 'e_mean')} V/m "
-            f"({_figure(row, 'e_low')} to {_figure(row, 'e_high')}), "
+            f"  {_minutes(row)}   E {_e_words(row, flags)} V/m "
+            f"({_span(row, 'e', bounds.window(row, flags))}), "
             f"largest {_figure(row, 'e_max')}, U {_figure(row, 'u_db')} dB, "
             f"valid share {_figure(row, 'valid_share')}"
         )
-    for row in _rows(box.now, "exposures"):
+    for row, ratio in zip(_rows(box.now, "exposures"), _ratios(box.now)):
         verdict = {"undecided": "cannot be decided"}.get(str(row["verdict"]), row["verdict"])
         lines.append(
             f"  {_minutes(row)}   {row.get('set')} {row.get('population')} {row.get('scope')}: "
-            f"exposure ratio {_figure(row, 'ratio_mean')} "
-            f"({_figure(row, 'ratio_low')} to {_figure(row, 'ratio_high')}), {verdict}"
+            f"exposure ratio {_ratio_words(ratio)} "
+            f"({_span(row, 'ratio', ratio.window)}, "
+            f"U {_figure(row, 'u_db')} dB), {verdict}"
         )
+    lines += [f"  carried  {flag}" for flag in flags]
     lines += [
         f"  alarm    {row.get('text')}: {str(row.get('state')).replace('_', ' ')}"
         for row in _rows(box.now, "alarms")
     ]
-    return lines
+    return [*lines, f"  {NOT_JUDGED}"]
 
 
 def _rows(now: Row, key: str) -> list[Row]:
@@ -218,15 +233,52 @@ def _rows(now: Row, key: str) -> list[Row]:
     return [row for row in found if isinstance(row, Mapping)] if isinstance(found, list) else []
 
 
-def _mean(row: Row) -> float | None:
-    value = row.get("ratio_mean")
-    known = isinstance(value, (int, float)) and value == value  # nan: nothing was valid
-    return float(value) if known else None  # type: ignore[arg-type]
+def _flags(now: Row) -> list[str]:
+    found = now.get("flags")
+    flags = found if isinstance(found, list) else []
+    return [str(flag) for flag in flags if flag != "simulated"]
+
+
+def _ratios(now: Row) -> list[bounds.Ratio]:
+    fields, flags = _rows(now, "fields"), _flags(now)
+    return [bounds.ratio(row, fields, flags) for row in _rows(now, "exposures")]
+
+
+def _rank(ratio: bounds.Ratio) -> float:
+    figures = (ratio.mean, ratio.low)
+    return next((figure for figure in figures if figure is not None), 0.0)
+
+
+def _ratio_words(ratio: bounds.Ratio) -> str:
+    return _bound(ratio.kind, ratio.stands)
+
+
+def _e_words(row: Row, flags: list[str]) -> str:
+    low, mean, high = (bounds.number(row, key) for key in ("e_low", "e_mean", "e_high"))
+    kind = bounds.window(row, flags).kind(low, mean)
+    return _bound(kind, {Kind.AT_LEAST: low, Kind.BELOW: high}.get(kind, mean))
+
+
+def _bound(kind: Kind, figure: float | None) -> str:
+    """A figure with what it is: at least it, below it, about it, or it."""
+    if figure is None:
+        return "-"
+    if kind is Kind.AT_LEAST:
+        return f"at least {rounded_down(figure)}"
+    if kind is Kind.BELOW:
+        return f"below {rounded_up(figure)}"
+    return f"{'about ' if kind is Kind.OPEN else ''}{figure:.3g}"
 
 
 def _figure(row: Row, key: str) -> str:
     value = row.get(key)
     return f"{value:.3g}" if isinstance(value, (int, float)) and value == value else "-"
+
+
+def _span(row: Row, what: str, window: bounds.Window) -> str:
+    """From lowest to highest; '-' where the flags leave an end unbounded."""
+    low = "-" if window.upper else _figure(row, f"{what}_low")
+    return f"{low} to {'-' if window.lower else _figure(row, f'{what}_high')}"
 
 
 def _minutes(row: Row) -> str:

@@ -28,7 +28,7 @@ NOW: dict[str, object] = {
     "exposures": [
         {"set": "icnirp-2020", "population": "general_public", "scope": "local",
          "averaging_s": 360, "ratio_low": 0.1, "ratio_mean": 0.2, "ratio_high": 0.3,
-         "verdict": "conforms"}
+         "u_db": 2.1, "verdict": "conforms"}
     ],
     "alarms": [],
 }  # fmt: skip
@@ -66,7 +66,7 @@ def test_without_a_daemon_it_says_since_when(tmp_path: Path) -> None:
     assert "no measurement since 2023-11-14T22:14:59.0" in text
     assert "says nothing about the field" in text
     assert "SIMULATED" in text
-    assert "exposure ratio 0.25 (0.125 to 0.5), conforms" in text
+    assert "exposure ratio 0.25 (0.125 to 0.5, U " in text
     assert (document["state"], document["answering"], document["simulated"]) == (
         "stopped", False, True,
     )  # fmt: skip
@@ -88,7 +88,10 @@ def test_the_daemon_is_asked_first(tmp_path: Path) -> None:
     document = json.loads(_run("--record", path, "--json").output)
     server.close()
     assert text.startswith("Harrowgate Mill  SIMULATED")
-    assert "below every limit that is set, at the antenna, last reading 2 s ago" in text
+    assert "below each limit that is judged, at the antenna, last reading 2 s ago" in text
+    assert "every limit" not in text
+    assert text.count("Not judged here: exposures shorter than the averaging time") == 1
+    assert "(0.1 to 0.3, U 2.1 dB), conforms" in text
     assert "E 1.5 V/m (1 to 2), largest 3, U 2.5 dB" in text
     assert document["now"] == NOW
     assert document["largest_exposure_ratio"] == 0.2
@@ -137,10 +140,56 @@ def test_a_folder_worst_first(tmp_path: Path) -> None:
     order = [Path(box["record"]).stem for box in boxes]
     assert order == ["over", "torn", "stopped worse", "stopped", "fine"]
     assert [line.split()[0] for line in lines] == [
-        "exceeds", "unreadable", "stopped", "stopped", "conforms",
+        "exceeds", "unreadable", "stopped", "stopped", "conforms", "Not",
     ]  # fmt: skip
     assert boxes[1]["simulated"] is None
     assert "is no record" in lines[1]
+
+
+def _exposure(**changes: object) -> list[dict[str, object]]:
+    return [{**NOW["exposures"][0], "verdict": "undecided", **changes}]  # type: ignore[index]
+
+
+@pytest.mark.parametrize(
+    ("changes", "words"),
+    [
+        (
+            {"flags": ["converter clipped"]},
+            ["ratio at least 0.10 (0.1 to -,", "E at least 1.00 V/m (1 to -)"],
+        ),
+        (
+            {"flags": ["below the detector's range"]},
+            ["ratio below 0.30 (- to 0.3,", "E below 2.0 V/m (- to 2)"],
+        ),
+        (
+            {"exposures": _exposure(ratio_low=27.0, ratio_mean=None, verdict="exceeds")},
+            ["ratio at least 27 (", "a limit is exceeded"],
+        ),
+        (
+            {"exposures": _exposure(ratio_low=0.9, ratio_mean=1.1, ratio_high=1.2)},
+            ["at or above a limit, cannot be decided", "ratio 1.1 ("],
+        ),
+    ],
+)
+def test_bounds_are_said_to_be_bounds(
+    tmp_path: Path, changes: dict[str, object], words: list[str]
+) -> None:
+    path = _record(tmp_path / "mill.db")
+    server = _live(path, **changes)
+    text = _run("--record", path).output
+    server.close()
+    assert all(each in text for each in words), text
+
+
+def test_a_figure_without_a_mean_ranks_by_its_lower_bound(tmp_path: Path) -> None:
+    exposures = _exposure(ratio_low=27.0, ratio_mean=None, ratio_high=None, verdict="exceeds")
+    path = _record(tmp_path / "mill.db")
+    server = _live(path, exposures=exposures)
+    line = _run(tmp_path).output.splitlines()[0]
+    document = json.loads(_run("--record", path, "--json").output)
+    server.close()
+    assert "ratio at least 27" in line
+    assert (document["largest_exposure_ratio"], document["largest_is"]) == (27.0, "at_least")
 
 
 def test_order_of_states() -> None:

@@ -88,16 +88,37 @@ def snapshot(ratio: float = 0.31, **changes: Any) -> dict[str, Any]:
 
 
 def _exposure(index: int, scope: Scope, ratio: float) -> dict[str, Any]:
-    verdict = "exceeds" if ratio > 1.4 else "conforms" if ratio < 0.6 else "undecided"
-    reasons = ["the interval holds the limit"] if verdict == "undecided" else []
+    verdict = "exceeds" if ratio > 1.6 else "conforms" if ratio < 0.6 else "undecided"
+    holds = "; the limit lies between" if verdict == "undecided" else ""
+    reasons = [f"{ratio * 0.68:.3g} to {ratio * 1.5:.3g} of the limit{holds}"]
     if not scope.verified and verdict == "conforms":
-        verdict, reasons = "undecided", ["limit values from memory, not confirmed"]
+        verdict = "undecided"
+        reasons.append("the limit is from memory, not confirmed against the published text")
     return {
         "index": index, "scope": scope.scope, "set": scope.set_id, "edition": scope.edition,
         "population": scope.population, "averaging_s": scope.averaging_s,
         "ratio_low": ratio * 0.98, "ratio_mean": ratio, "ratio_high": ratio * 1.04,
+        "u_db": 2.0, "k": 1.96,
         "verified": scope.verified, "verdict": verdict, "reasons": reasons,
     }  # fmt: skip
+
+
+def edited(now: dict[str, Any], **changes: Any) -> dict[str, Any]:
+    """The snapshot with changed keys in every exposure, or in every field where prefixed f_."""
+    for one in now["exposures"]:
+        one.update({key: value for key, value in changes.items() if not key.startswith("f_")})
+    for one in now["fields"]:
+        one.update({key[2:]: value for key, value in changes.items() if key.startswith("f_")})
+    return now
+
+
+def dead_axis(low: float = 27.0, verdict: str = "exceeds") -> dict[str, Any]:
+    """One of three axes gives nothing: no moment is valid, but the others bound from below."""
+    return edited(
+        snapshot(), ratio_low=low, ratio_mean=None, ratio_high=None, u_db=None, verdict=verdict,
+        reasons=["no valid part in the averaging time", "valid for 0% of the time; 75% is needed"],
+        f_valid_share=0.0, f_e_low=207.8, f_e_mean=None, f_e_high=None, f_e_max=None, f_u_db=None,
+    )  # fmt: skip
 
 
 def controlled(ratio: float = 0.31, **changes: Any) -> dict[str, Any]:

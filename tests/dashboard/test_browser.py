@@ -120,7 +120,7 @@ def test_the_level_on_screen_is_proportional_between_floor_and_ledge(
         ))  # fmt: skip
 
     floor, ledge = edge(".back", "bottom"), edge(".ledge", "top")
-    level = edge("rect[fill=\"url(#strata)\"]", "top")
+    level = edge('rect[fill="url(#strata)"]', "top")
     assert (floor - level) / (floor - ledge) == pytest.approx(0.25, abs=0.01)
 
 

@@ -48,7 +48,7 @@ def test_nothing_is_drawn_across_a_gap() -> None:
     cut = _draw(_series([10, 11, 90, 91], [1, 1, 1, 1], gaps=[(11, 89)]))
     assert cut.line.count("M") == 2
     assert cut.band.count("M") == 2
-    (x, width), = cut.gaps
+    ((x, width),) = cut.gaps
     left, right = (FRAME.left + (FRAME.x1 - FRAME.left) * m / 1440 for m in (11, 89))
     assert (x, width) == (pytest.approx(left, abs=0.1), pytest.approx(right - left, abs=0.15))
 
@@ -65,7 +65,7 @@ def test_a_lone_average_is_a_dot() -> None:
 
 
 def test_a_short_gap_is_still_wide_enough_to_be_seen() -> None:
-    (_, width), = _draw(_series([10, 14], [1, 1], gaps=[(10, 11)])).gaps
+    ((_, width),) = _draw(_series([10, 14], [1, 1], gaps=[(10, 11)])).gaps
     assert width >= 2.0
 
 

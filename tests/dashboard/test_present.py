@@ -16,6 +16,7 @@ from tests.dashboard.fakes import (
     app_over,
     client_over,
     controlled,
+    edited,
     snapshot,
 )
 
@@ -61,10 +62,11 @@ def test_public_occupancy_speaks_of_nothing_left_or_taken(tmp_path: Path) -> Non
 
 
 def test_controlled_occupancy_fills_the_recess_and_says_what_is_left(tmp_path: Path) -> None:
-    markup = client_over(controlled(0.31), tmp_path).get("/").text
+    now = edited(controlled(0.31), verified=True, verdict="conforms")
+    markup = client_over(now, tmp_path).get("/").text
     page = _text(markup)
     assert "taken 0.31" in page
-    assert "left 0.68" in page
+    assert "left 0.48" in page  # 1 - 0.31 * 1.04 * 10^(2 / 10), rounded down
     assert 'fill="url(#strata)"' in markup
     assert "ICNIRP 2020, occupational, whole body, 30 min The ledge is the limit." in page
 
@@ -93,7 +95,9 @@ def test_an_average_of_little_data_is_said_in_the_heading(tmp_path: Path) -> Non
     for one in thin["fields"]:
         one["valid_share"] = 0.05
     heading = _heading(_page(thin, tmp_path))
-    assert "in what was measured; gaps leave it open" in heading
+    assert "Only 90 s of 30 min are valid; at least 0.098 of the limit" in heading
+    assert "gaps leave the rest open" in heading
+    assert "Below" not in heading
     assert "Only 5 % of the six-minute average is valid." in heading
 
 
@@ -122,26 +126,25 @@ def test_confirmed_returned_and_muted_alarms_in_plain_words(tmp_path: Path) -> N
 
 
 def test_above_the_limit(tmp_path: Path) -> None:
-    page = _page(snapshot(1.5), tmp_path)
-    assert "Above the limit at the monitor's antenna: 1.5 of it" in _heading(page)
+    page = _page(snapshot(1.7), tmp_path)
+    assert "Above the limit at the monitor's antenna: 1.7 of it" in _heading(page)
     assert "whole body, 30 min: exceeds" in _heading(page)
-    assert "1.5 of the limit (150 %) exceeds" in page
+    assert "1.7 of the limit (170 %) exceeds" in page
 
 
-def test_above_the_limit_but_not_decided_says_both(tmp_path: Path) -> None:
+def test_at_the_limit_but_not_decided_says_both(tmp_path: Path) -> None:
     heading = _heading(_page(snapshot(1.1), tmp_path))
-    assert "Above the limit at the monitor's antenna: 1.1 of it" in heading
+    assert "At or above the limit at the monitor's antenna: 1.1 of it" in heading
     assert "cannot be decided" in heading
 
 
 def test_why_nothing_can_be_decided_is_told_once(tmp_path: Path) -> None:
     one = snapshot(0.8)
-    one["exposures"][0]["reasons"] = ["ratio 0.8; guard 2 dB"]
-    assert "cannot be decided: ratio 0.8; guard 2 dB" in _page(one, tmp_path)
-    one["exposures"][0]["reasons"].append("gaps")
+    assert "(80 %) cannot be decided: the interval holds the limit" in _page(one, tmp_path)
+    one["exposures"][0]["reasons"].append("calibration overdue")
     page = _page(one, tmp_path)
-    assert "cannot be decided: gaps" in page
-    assert page.count("ratio 0.8; guard 2 dB") == 1
+    assert "cannot be decided: the interval holds the limit; calibration overdue" in page
+    assert "the limit lies between" not in page
 
 
 @pytest.mark.parametrize(

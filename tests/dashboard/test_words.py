@@ -48,8 +48,12 @@ def test_a_share_is_never_overstated(part: float) -> None:
 @pytest.mark.parametrize(
     ("value", "digits", "text"),
     [
-        (0.8249, 2, "0.82"), (61.4, 3, "61.4"), (1234.5, 2, "1200"), (9.96, 2, "10"),
-        (0.0999, 2, "0.10"), (-0.5, 2, "-0.50"),
+        (0.8249, 2, "0.82"),
+        (61.4, 3, "61.4"),
+        (1234.5, 2, "1200"),
+        (9.96, 2, "10"),
+        (0.0999, 2, "0.10"),
+        (-0.5, 2, "-0.50"),
     ],  # fmt: skip
 )
 def test_significant_digits(value: float, digits: int, text: str) -> None:
@@ -59,7 +63,11 @@ def test_significant_digits(value: float, digits: int, text: str) -> None:
 @pytest.mark.parametrize(
     ("seconds", "text"),
     [
-        (3.9, "3 s"), (119, "119 s"), (120, "2 min"), (1800, "30 min"), (11_520, "3 h 12 min"),
+        (3.9, "3 s"),
+        (119, "119 s"),
+        (120, "2 min"),
+        (1800, "30 min"),
+        (11_520, "3 h 12 min"),
         (400_000, "4 days"),
     ],  # fmt: skip
 )

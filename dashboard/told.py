@@ -1,0 +1,131 @@
+"""What a ratio or a field strength is, in words that claim no more than is known. Pure."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from typing import Any
+
+from dashboard import bounds, words
+from dashboard.bounds import Kind, Ratio, Window
+
+
+def figure(ratio: Ratio) -> str:
+    """'0.31', 'at least 27', 'below 0.02' or 'about 0.4'; 'no figure' where there is none."""
+    stands = ratio.stands
+    if stands is None:
+        return words.ratio_figure(None)
+    if ratio.kind is Kind.AT_LEAST:
+        return f"at least {words.rounded_down(stands)}"
+    if ratio.kind is Kind.BELOW:
+        return f"below {words.rounded_up(stands)}"
+    about = "about " if ratio.kind is Kind.OPEN else ""
+    return about + words.ratio_figure(stands)
+
+
+def of_limit(ratio: Ratio) -> str:
+    """The figure as a share of the limit."""
+    if ratio.kind is Kind.VALUE:
+        return words.of_limit(ratio.stands)
+    return figure(ratio) if ratio.stands is None else f"{figure(ratio)} of the limit"
+
+
+def interval(ratio: Ratio) -> str:
+    """The interval in words; '' where there is no figure."""
+    bottom, top = ratio.bottom, ratio.top
+    by = "gaps and expanded uncertainty" if ratio.u_db is not None else "gaps alone"
+    said = ""
+    if bottom is not None and top is not None:
+        said = f"between {words.rounded_down(bottom)} and {words.rounded_up(top)}, by {by}"
+    elif bottom is not None:
+        said = f"not below {words.rounded_down(bottom)}, by {by}; how much more is not known"
+    elif top is not None:
+        said = f"not above {words.rounded_up(top)}, by {by}"
+    elif ratio.stands is not None:
+        said = "a bound neither way"
+    return said + ("; the uncertainty is not stated" if said and ratio.u_db is None else "")
+
+
+def valid_part(window: Window) -> str:
+    """'5 s of 30 min', rounded down."""
+    whole = words.duration(window.averaging_s)
+    return f"{words.duration((window.share or 0.0) * window.averaging_s)} of {whole}"
+
+
+def in_valid_part(ratio: Ratio) -> str:
+    """What the valid part of a thin window says by itself; '' where that is nothing."""
+    if not ratio.window.thin or ratio.mean is None or ratio.kind is not Kind.AT_LEAST:
+        return ""
+    return f"{words.ratio_figure(ratio.mean)} in the {valid_part(ratio.window)} that are valid"
+
+
+def why(ratio: Ratio, reasons: Sequence[str]) -> list[str]:
+    """Why nothing can be decided. The first reason of the daemon tells the figures compared."""
+    found = [str(reason) for reason in reasons[1:]]
+    if ratio.mean is None and ratio.stands is not None:
+        found.insert(0, "no moment is valid on every channel")
+    elif ratio.holds_limit and (ratio.kind is not Kind.AT_LEAST or (ratio.stands or 0) >= 1):
+        found.insert(0, "the interval holds the limit")
+    return found or [str(reason) for reason in reasons[:1]]
+
+
+def left(ratio: Ratio, reasons: Sequence[str]) -> str:
+    """What is left for a person in a controlled place, or why that cannot be said."""
+    if ratio.left is not None:
+        if ratio.left > 0:
+            much = words.rounded_down(ratio.left)
+            return f"{much} of the limit is left, gaps and expanded uncertainty counted against it."
+        return "Nothing of the limit is left once gaps and expanded uncertainty are counted."
+    if ratio.exceeds:
+        return "Nothing is left: the limit is exceeded."
+    said = [] if ratio.verdict == "conforms" else why(ratio, reasons)
+    if ratio.window.lower:
+        bound = f"the figure is a lower bound: {', '.join(ratio.window.lower)}"
+        said = [bound] if bound not in said else said
+    if ratio.u_db is None:
+        said = [*said, "the uncertainty is not stated"]
+    return f"What is left cannot be said: {'; '.join(said) or 'the limit is not decided'}."
+
+
+def level_label(ratio: Ratio | None, *, filled: bool) -> str:
+    """The words beside the level in the picture."""
+    if ratio is None or ratio.stands is None:
+        return ""
+    return f"{'taken' if filled else 'level'} {figure(ratio)}"
+
+
+def space_label(ratio: Ratio | None) -> str:
+    """The words in the space above the level of a recess that fills."""
+    if ratio is None or ratio.exceeds:
+        return ""
+    return "not known" if ratio.left is None else f"left {words.rounded_down(ratio.left)}"
+
+
+def e_words(field: Mapping[str, Any], flags: Sequence[str]) -> str:
+    """The field strength of one averaging time, V/m."""
+    low, mean, high = (bounds.number(field, f"e_{which}") for which in ("low", "mean", "high"))
+    window = bounds.window(field, flags)
+    kind = window.kind(low, mean)
+    if kind is Kind.AT_LEAST and low is not None:
+        return f"at least {words.rounded_down(low)}"
+    if kind is Kind.BELOW:
+        most = mean if high is None else high
+        return words.figure(None) if most is None else f"below {words.rounded_up(most)}"
+    about = "about " if kind is Kind.OPEN else ""
+    return about + words.figure(low if mean is None and kind is not Kind.NONE else mean)
+
+
+def e_interval(field: Mapping[str, Any], flags: Sequence[str]) -> str:
+    """The interval of the field strength with U: what is said first, wider by U, in V/m."""
+    low, mean, high = (bounds.number(field, f"e_{which}") for which in ("low", "mean", "high"))
+    u_db = bounds.number(field, "u_db")
+    kind = bounds.window(field, flags).kind(low, mean)
+    if u_db is None or kind in (Kind.NONE, Kind.OPEN):
+        return "not stated"
+    factor = 10 ** (u_db / 20)
+    if kind is Kind.AT_LEAST and low is not None:
+        return f"not below {words.rounded_down(low / factor)} V/m"
+    if kind is Kind.BELOW and high is not None:
+        return f"not above {words.rounded_up(high * factor)} V/m"
+    if mean is None:
+        return "not stated"
+    return f"{words.figure(mean / factor)} to {words.figure(mean * factor)} V/m"
