@@ -4,11 +4,9 @@ from __future__ import annotations
 
 import csv
 import math
-import re
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass
-from datetime import UTC, datetime, timedelta
-from decimal import Decimal, InvalidOperation
+from decimal import Decimal
 from pathlib import Path
 from typing import Protocol
 
@@ -16,15 +14,13 @@ import numpy as np
 from numpy.typing import NDArray
 
 from monitor.core.errors import ConfigError, DeviceError
+from monitor.core.numerals import figure
 from monitor.core.readings import NS_PER_S
+from monitor.times import FURTHEST_S, is_stamp, utc_ns_of
 
 COLUMNS = ("time", "e_v_per_m")
-_STAMP = re.compile(
-    r"(\d{4}-\d\d-\d\d)[Tt ](\d\d:\d\d:\d\d)(?:\.(\d+))?([Zz]|[+-]\d\d:\d\d)", re.ASCII
-)
-_EPOCH = datetime(1970, 1, 1, tzinfo=UTC)
-_SECOND = timedelta(seconds=1)
-_LARGEST_S = 9_000_000_000
+LARGEST_E_V_PER_M = 1e9
+"""More than any field in air can be; above it a figure is a mistake, and its square overflows."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -39,34 +35,13 @@ class Series:
     in_utc: bool
 
 
-def utc_ns_from_text(text: str) -> int:
-    """Nanoseconds since 1970 of an RFC 3339 time with its offset; ValueError otherwise."""
-    match = _STAMP.fullmatch(text.strip())
-    if match is None:
-        raise ValueError(
-            f"{text!r} is not an RFC 3339 time; write for example 2031-05-01T07:12:00Z"
-        )
-    day, clock, fraction, offset = match.groups()
-    whole = datetime.fromisoformat(f"{day}T{clock}{'Z' if offset in 'zZ' else offset}")
-    return (whole - _EPOCH) // _SECOND * NS_PER_S + int(f"{fraction or '':0<9.9}")
-
-
-def text_from_utc_ns(utc_ns: int) -> str:
-    """RFC 3339 in UTC, with as many digits of a second as there are."""
-    seconds, rest = divmod(utc_ns, NS_PER_S)
-    text = f"{_EPOCH + seconds * _SECOND:%Y-%m-%dT%H:%M:%S}"
-    digits = f".{rest:09d}".rstrip("0") if rest else ""
-    return f"{text}{digits}Z"
-
-
 def _ns_from_seconds(text: str) -> int:
-    try:
-        value = Decimal(text)
-    except InvalidOperation:
-        raise ValueError(f"{text!r} is neither seconds nor an RFC 3339 time") from None
-    if not value.is_finite() or abs(value) > _LARGEST_S:
+    value = figure(text)
+    if value is None or math.isnan(value):
+        raise ValueError(f"{text!r} is neither seconds nor an RFC 3339 time")
+    if abs(value) > FURTHEST_S:
         raise ValueError(f"{text!r} is out of range for seconds")
-    return int(value * NS_PER_S)
+    return int(Decimal(text) * NS_PER_S)
 
 
 class Lines(Protocol):
@@ -106,7 +81,7 @@ def _read(path: Path, lines: Lines) -> Series:
         try:
             time_text, e_text = row[time_at].strip(), row[e_at].strip()
             if parse is None:
-                parse = utc_ns_from_text if _STAMP.fullmatch(time_text) else _ns_from_seconds
+                parse = utc_ns_of if is_stamp(time_text) else _ns_from_seconds
             times.append(parse(time_text))
             values.append(_field_strength(e_text))
             if len(times) > 1 and times[-1] <= times[-2]:
@@ -117,17 +92,14 @@ def _read(path: Path, lines: Lines) -> Series:
             raise ConfigError(f"{path}:{lines.line_num}: {error}") from error
     if not times:
         raise ConfigError(f"{path}: holds no reading")
-    return Series(np.array(times, np.int64), np.array(values), parse is utc_ns_from_text)
+    return Series(np.array(times, np.int64), np.array(values), parse is utc_ns_of)
 
 
 def _field_strength(text: str) -> float:
     """V/m; an empty field is a reading that is not there."""
-    if text == "":
-        return math.nan
-    try:
-        value = float(text)
-    except ValueError:
-        raise ValueError(f"e_v_per_m {text!r} is not a number") from None
-    if not math.isfinite(value) or value < 0.0:
-        raise ValueError(f"e_v_per_m {text} is not a finite number of 0 or above")
+    value = figure(text)
+    if value is None or (text and math.isnan(value)):
+        raise ValueError(f"e_v_per_m {text!r} is not a number")
+    if not math.isnan(value) and not 0.0 <= value <= LARGEST_E_V_PER_M:
+        raise ValueError(f"e_v_per_m {text} is not within 0 to {LARGEST_E_V_PER_M:g} V/m")
     return value

@@ -14,7 +14,8 @@ from monitor.cli import averages_record, levels
 from monitor.cli.output import print_json
 from monitor.core.errors import ConfigError
 from monitor.core.readings import NS_PER_S
-from monitor.seriesfile import Series, read_series, text_from_utc_ns
+from monitor.seriesfile import Series, read_series
+from monitor.times import text_of
 
 F = NDArray[np.float64]
 MOST_BLOCKS = 5_000_000
@@ -128,7 +129,7 @@ def _average(series: Series, steps: Steps) -> Averages:
 def _end(series: Series, end_ns: int) -> str | int | float:
     """A window's end in the file's own unit."""
     if series.in_utc:
-        return text_from_utc_ns(end_ns)
+        return text_of(end_ns)
     return end_ns // NS_PER_S if end_ns % NS_PER_S == 0 else end_ns / NS_PER_S
 
 

@@ -12,7 +12,7 @@ import click
 from monitor.cli.output import print_json
 from monitor.core import flags
 from monitor.core.errors import ConfigError
-from monitor.seriesfile import text_from_utc_ns, utc_ns_from_text
+from monitor.times import text_of, utc_ns_of
 
 if TYPE_CHECKING:
     from monitor.record.types import History
@@ -66,7 +66,7 @@ def _utc_ns(text: str | None, option: str, default: int) -> int:
     if re.fullmatch(r"\d{4}-\d\d-\d\d", text, re.ASCII):
         text += "T00:00:00Z"
     try:
-        return utc_ns_from_text(text)
+        return utc_ns_of(text)
     except ValueError as error:
         raise ConfigError(f"{option}: {error}") from error
 
@@ -83,7 +83,7 @@ def _entries(history: History) -> list[dict[str, object]]:
     rows = zip(history.utc_ns.tolist(), *(column.tolist() for column in columns.values()))
     return [
         {
-            "end": text_from_utc_ns(end_ns),
+            "end": text_of(end_ns),
             **dict(zip(columns, values)),
             "flags": flags.words(bits),
         }

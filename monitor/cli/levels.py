@@ -5,7 +5,8 @@ from __future__ import annotations
 import math
 
 from monitor.core.errors import ConfigError
-from monitor.core.quantities import frequency_hz, split_unit
+from monitor.core.quantities import Z0_OHM, frequency_hz, s_from_e, split_unit
+from monitor.seriesfile import LARGEST_E_V_PER_M
 
 UNITS = {
     "v/m": ("E", 1.0),
@@ -17,6 +18,14 @@ UNITS = {
     "mw/cm2": ("S", 10.0),
     "uw/cm2": ("S", 0.01),
 }
+LARGEST = {
+    "E": LARGEST_E_V_PER_M,
+    "H": LARGEST_E_V_PER_M / Z0_OHM,
+    "S": s_from_e(LARGEST_E_V_PER_M),
+}
+"""In V/m, A/m and W/m2; above it a level is a mistake."""
+LONGEST_S = 1e8
+"""Three years: no averaging time comes near, and its ns leave room to reckon in 64 bits."""
 KNOWN = "V/m, mV/m, A/m, mA/m, W/m2, mW/m2, mW/cm2, uW/cm2"
 
 
@@ -28,6 +37,8 @@ def level(text: str) -> tuple[str, float]:
     quantity, scale = UNITS[unit.lower() or "v/m"]
     if not math.isfinite(value) or value < 0.0:
         raise ConfigError(f"{text!r}: a level is a finite number, 0 or above")
+    if value * scale > LARGEST[quantity]:
+        raise ConfigError(f"{text!r}: no level is above {LARGEST_E_V_PER_M:g} V/m; check the unit")
     return quantity, value * scale
 
 
@@ -40,9 +51,11 @@ def level_at(text: str) -> tuple[float, str, float]:
 
 
 def duration_s(text: str) -> float:
-    """Seconds from '360', '360s', '6min' or '24h'; above 0."""
+    """Seconds from '360', '360s', '6min' or '24h'; above 0, at most LONGEST_S."""
     value, unit = split_unit(text)
     scale = {"": 1.0, "s": 1.0, "min": 60.0, "h": 3600.0}.get(unit.lower())
     if scale is None or not math.isfinite(value) or value <= 0.0:
         raise ConfigError(f"{text!r}: not a duration; write for example 360, 6min or 24h")
+    if value * scale > LONGEST_S:
+        raise ConfigError(f"{text!r}: too long; at most {LONGEST_S:g} s, about three years")
     return value * scale

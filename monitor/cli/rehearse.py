@@ -18,6 +18,7 @@ from monitor import control, rehearsal, supervise
 from monitor.core.errors import ConfigError, DeviceError, FieldsillError
 
 _SPAN = re.compile(r"^(\d+(?:\.\d+)?)(s|min|h|d)$")
+_LONGEST_S = 10 * 365 * 86_400.0
 _SECONDS = {"s": 1.0, "min": 60.0, "h": 3600.0, "d": 86400.0}
 
 
@@ -41,8 +42,7 @@ def command(
         port or rehearsal.free_port(),
         started,
     )
-    if plan.folder.exists():
-        raise ConfigError(f"--folder {plan.folder}: is there already; name a new one")
+    _make_site(plan)
     stop = threading.Event()
     signal.signal(signal.SIGTERM, lambda *_: stop.set())
     signal.signal(signal.SIGINT, lambda *_: stop.set())
@@ -50,11 +50,14 @@ def command(
 
 
 def span_s(text: str) -> float:
-    """Seconds of a span such as 90min, 24h or 90d; ConfigError otherwise."""
+    """Seconds of a span such as 90min, 24h or 90d, ten years at most; ConfigError otherwise."""
     match = _SPAN.match(text.strip())
     if match is None:
         raise ConfigError(f"--history {text!r}: not a span; write for example 30min, 24h or 90d")
-    return float(match.group(1)) * _SECONDS[match.group(2)]
+    seconds = float(match.group(1)) * _SECONDS[match.group(2)]
+    if seconds > _LONGEST_S:
+        raise ConfigError(f"--history {text!r}: too long; ten years (3650d) at most")
+    return seconds
 
 
 def _new_folder(started: datetime) -> Path:
@@ -62,8 +65,21 @@ def _new_folder(started: datetime) -> Path:
     return Path(base) / "fieldsill" / f"rehearsal-{started:%Y%m%dT%H%M%SZ}-{os.getpid()}"
 
 
+def _make_site(plan: rehearsal.Rehearsal) -> None:
+    """The folder and its site file; nothing of them stays where that fails."""
+    try:
+        rehearsal.write_site(plan)
+    except FileExistsError:
+        raise ConfigError(f"--folder {plan.folder}: is there already; name a new one") from None
+    except OSError as error:
+        # The folder was not there before: what stands in it is ours.
+        shutil.rmtree(plan.folder, ignore_errors=True)
+        raise DeviceError(
+            f"--folder {plan.folder}: cannot be made ({error.strerror}); name another"
+        ) from None
+
+
 def _run(plan: rehearsal.Rehearsal, stop: threading.Event, exit_at_end: bool) -> int:
-    rehearsal.write_site(plan)
     try:
         board = rehearsal.start_board(plan)
     except FieldsillError:

@@ -12,7 +12,7 @@ from typing import Any
 import click
 
 from monitor.config import default_site_path, load_site
-from monitor.core.errors import DeviceError
+from monitor.core.errors import ConfigError, DeviceError
 
 THREADS = 4
 
@@ -29,14 +29,7 @@ def command(site: Path | None, record: Path | None, host: str | None, port: int 
     port = settings.pop("port") if port is None else port
     settings.pop("host", None)
     settings.pop("port", None)
-    loopback = is_loopback(host)
-    if not loopback:
-        click.echo(
-            f"fieldsill: {host} can be reached by other machines: whoever reaches it reads the "
-            "pages without an account; alarms cannot be confirmed or muted there",
-            err=True,
-        )
-    _serve(settings, host, port, loopback)
+    _serve(settings, host, port)
 
 
 def _settings(site: Path | None, record: Path | None) -> dict[str, Any]:
@@ -74,12 +67,13 @@ def is_loopback(host: str) -> bool:
         return False
 
 
-def _serve(settings: dict[str, Any], host: str, port: int, loopback: bool) -> None:
+def _serve(settings: dict[str, Any], host: str, port: int) -> None:
     # Imported here: a command that serves nothing must not pay for the web server.
     from waitress.server import create_server
 
     from dashboard.app import create_app
 
+    loopback = is_loopback(host)
     app = create_app(**settings, loopback=loopback)
     try:
         server = create_server(app, host=host, port=port, threads=THREADS, ident=None)
@@ -88,6 +82,17 @@ def _serve(settings: dict[str, Any], host: str, port: int, loopback: bool) -> No
             f"{host}:{port}: cannot listen there: {error.strerror or error}; "
             "name another with --host and --port (0 takes a free one)"
         ) from error
+    except ValueError as error:
+        raise ConfigError(
+            f"--host {host}: is neither an address nor a name of this machine; "
+            "write for example 127.0.0.1"
+        ) from error
+    if not loopback:
+        click.echo(
+            f"fieldsill: {host} can be reached by other machines: whoever reaches it reads the "
+            "pages without an account; alarms cannot be confirmed or muted there",
+            err=True,
+        )
     signal.signal(signal.SIGTERM, _end)
     shown = f"[{host}]" if ":" in host else host
     click.echo(f"Pages: http://{shown}:{server.effective_port}/")

@@ -88,6 +88,9 @@ def test_for_people(capsys: pytest.CaptureFixture[str], record: Path) -> None:
     [
         (["--from", "2031-01-01", "--to", "2030-01-01"], "--from must be before --to"),
         (["--averaging", "360.5"], "whole seconds"),
+        (["--averaging", "1e19"], "'1e19': too long"),
+        (["--to", "9999-01-01"], "--to: '9999-01-01T00:00:00Z' is too far away"),
+        (["--from", "0001-01-01T00:00:00Z"], "--from: '0001-01-01T00:00:00Z' is too far away"),
         (["--to", "tomorrow"], "--to: 'tomorrow' is not an RFC 3339 time"),
     ],
 )

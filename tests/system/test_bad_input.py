@@ -52,6 +52,15 @@ def test_one_line_and_nothing_written(wrong: str, command: str, tmp_path: Path) 
     assert sorted(tmp_path.iterdir()) == before
 
 
+def test_too_long_a_rehearsal_leaves_no_folder(tmp_path: Path) -> None:
+    done = fieldsill("rehearse", "--history", "99999999d", "--folder", tmp_path / "new", "--exit")
+    assert done.returncode == 2
+    assert done.stderr.splitlines() == [
+        "fieldsill: --history '99999999d': too long; ten years (3650d) at most"
+    ]
+    assert list(tmp_path.iterdir()) == []
+
+
 @pytest.mark.parametrize(
     ("arguments", "word"),
     [
@@ -66,6 +75,8 @@ def test_one_line_and_nothing_written(wrong: str, command: str, tmp_path: Path) 
         (["status", "--record", "nowhere.db"], "nowhere.db"),
         (["run", "--site", "nowhere.toml"], "nowhere.toml"),
         (["serve", "--record", "nowhere.db", "--port", "99999"], "99999"),
+        (["serve", "--record", "nowhere.db", "--port", "0", "--host", "256.1.1.1"], "256.1.1.1"),
+        (["rehearse", "--folder", "/proc/no-such", "--exit"], "/proc/no-such"),
         (["ratio"], "--set"),
         (["no-such-command"], "no-such-command"),
     ],
