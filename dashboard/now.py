@@ -18,8 +18,8 @@ FROM_MEMORY = "limit values from memory, not confirmed"
 class ScopeLine:
     """One limit set and scope in words, with its small picture.
 
-    label, space: the words in the large picture, at the level and above it. left: what is left,
-    for a controlled place.
+    label, space: the words in the large picture, at the level and above it. line, left: what its
+    line is, and for a controlled place what is left.
     """
 
     index: int
@@ -32,6 +32,7 @@ class ScopeLine:
     picture: Picture
     label: str
     space: str
+    line: str
     left: str
 
 
@@ -83,6 +84,7 @@ def scope_line(exposure: Snapshot, live: Live, station: Station) -> ScopeLine:
         picture=drawn(exposure, live, station),
         label=told.level_label(ratio, filled=filled),
         space=told.space_label(ratio),
+        line=told.line(ratio),
         left=told.left(ratio, reasons),
     )
 
@@ -98,16 +100,23 @@ def drawn(exposure: Snapshot | None, live: Live, station: Station) -> Picture:
 
 @dataclass(frozen=True, slots=True)
 class FieldWords:
-    """The field strength of one averaging time and its interval in words."""
+    """The field strength of one averaging time in words; known: there is a figure at all."""
 
     e: str
     interval: str
+    spread: str
+    known: bool
 
 
 def field_words(live: Live) -> list[FieldWords]:
     """The field strengths, in the order of the snapshot."""
     return [
-        FieldWords(told.e_words(one, live.flags), told.e_interval(one, live.flags))
+        FieldWords(
+            told.e_words(one, live.flags),
+            told.e_interval(one, live.flags),
+            told.e_spread(one, live.flags),
+            told.e_words(one, live.flags) != words.figure(None),
+        )
         for one in live.fields
     ]
 

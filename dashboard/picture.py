@@ -105,12 +105,12 @@ def draw(
 
 
 def _band(ratio: Ratio) -> tuple[float, float] | None:
+    """None where the whole interval lies above the lintel."""
     if ratio.bottom is None and ratio.top is None:
         return None
-    return (
-        HEAD_Y if ratio.top is None else y_of(ratio.top),
-        FLOOR_Y if ratio.bottom is None else y_of(ratio.bottom),
-    )
+    top = float(HEAD_Y) if ratio.top is None else y_of(ratio.top)
+    bottom = float(FLOOR_Y) if ratio.bottom is None else y_of(ratio.bottom)
+    return (top, bottom) if top < bottom else None
 
 
 def _unknown(ratio: Ratio, level_y: float, filled: bool) -> tuple[float, float] | None:

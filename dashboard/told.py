@@ -93,6 +93,15 @@ def level_label(ratio: Ratio | None, *, filled: bool) -> str:
     return f"{'taken' if filled else 'level'} {figure(ratio)}"
 
 
+def line(ratio: Ratio) -> str:
+    """What the line of the picture is."""
+    return {
+        Kind.AT_LEAST: "The line is what is known at the least; the average may be higher.",
+        Kind.BELOW: "The line is what the average stays below.",
+        Kind.OPEN: "The line is the figure that is known; the average may be higher or lower.",
+    }.get(ratio.kind, "The line is the average over the averaging time.")
+
+
 def space_label(ratio: Ratio | None) -> str:
     """The words in the space above the level of a recess that fills."""
     if ratio is None or ratio.exceeds:
@@ -129,3 +138,18 @@ def e_interval(field: Mapping[str, Any], flags: Sequence[str]) -> str:
     if mean is None:
         return "not stated"
     return f"{words.figure(mean / factor)} to {words.figure(mean * factor)} V/m"
+
+
+def e_spread(field: Mapping[str, Any], flags: Sequence[str]) -> str:
+    """From the lowest to the highest field strength by gaps and band, as far as flags leave it."""
+    low, high = (bounds.number(field, f"e_{which}") for which in ("low", "high"))
+    window = bounds.window(field, flags)
+    low = None if window.upper else low
+    high = None if window.lower else high
+    if low is not None and high is not None:
+        return f"{words.rounded_down(low)} to {words.rounded_up(high)} V/m"
+    if low is not None:
+        return f"{words.rounded_down(low)} V/m; highest not known"
+    if high is not None:
+        return f"lowest not known; {words.rounded_up(high)} V/m"
+    return "not known"

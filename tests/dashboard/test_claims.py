@@ -125,6 +125,8 @@ def test_a_dead_axis_hides_no_excess(tmp_path: Path) -> None:
     assert "at least 27 of the limit exceeds" in page
     assert "level at least 27 ↑" in page
     assert "at least 200 V/m" in page
+    assert "200 V/m; highest not known" in page
+    assert "no figure V/m" not in page
     assert 'fill="url(#cross)"' in _markup(dead_axis(), tmp_path)
     undecided = _page(dead_axis(0.3, "undecided"), tmp_path)
     assert "At least 0.3" in undecided
@@ -151,6 +153,8 @@ def test_a_lower_bound_is_never_below_a_level(flag: str, place: str, tmp_path: P
     assert "a lower bound: it cannot be said to be below the alert levels" in heading
     assert "how much more is not known" in page
     assert "at least 22 V/m" in page
+    assert "22 V/m; highest not known" in page
+    assert "The line is what is known at the least" in page
 
 
 def test_a_lower_bound_without_levels_is_not_below_the_limit(tmp_path: Path) -> None:
@@ -164,6 +168,7 @@ def test_an_upper_bound_says_below(tmp_path: Path) -> None:
     assert "Below the alert levels" in page.split("Alarms")[0]
     assert "below 0.0021 of the limit" in page
     assert "below 1.9 V/m" in page
+    assert "lowest not known; 1.9 V/m" in page
     assert "between" not in page.split("Exposure ratios")[1].split("Instrument")[0]
 
 
