@@ -36,9 +36,11 @@ def _record(folder: Path) -> Path:
     e2 = 1600.0 * ratio
     end_ns = minutes * MINUTE
     writer.commit(boot, Commit(
-        raw=making.raw(0.0, 90 * 60), fields=making.field_rows(end_ns, e2, averaging_s=1800),
+        raw=making.raw(0.0, 90 * 60), blocks=making.blocks(0, 180),
+        fields=making.field_rows(end_ns, e2, averaging_s=1800),
         exposures=making.exposure_rows(end_ns, ratio, scope=0),
     ))  # fmt: skip
+    writer.commit(boot, Commit(blocks=making.blocks(50 * 60, 240)))
     writer.close()
     return path
 
