@@ -35,15 +35,20 @@ _ANSWERABLE = (ArithmeticError, AttributeError, LookupError, OSError, RuntimeErr
 def ask(path: Path, request: Mapping[str, object], timeout_s: float = 2.0) -> dict[str, object]:
     """Send one request and return the daemon's reply, which has "ok" in it.
 
-    DeviceError where no whole reply comes within timeout_s.
+    DeviceError where no whole reply comes within timeout_s; ConfigError where the request holds
+    what no line can.
     """
     _refuse_long(path)
+    try:
+        line = _line(request)
+    except (TypeError, ValueError, RecursionError) as error:
+        raise ConfigError(f"the request cannot be sent: {error}; correct its text") from error
     until = _now_s() + timeout_s
     try:
         with socket.socket(socket.AF_UNIX, socket.SOCK_STREAM) as connection:
             connection.settimeout(timeout_s)
             connection.connect(str(path))
-            connection.sendall(_line(request))
+            connection.sendall(line)
             reply = json.loads(_received(connection, until))
     except (OSError, ValueError) as error:
         raise DeviceError(
@@ -164,7 +169,7 @@ class Server:
         while (end := peer.taken.find(b"\n")) >= 0:
             if end > MAX_REQUEST_BYTES:
                 break
-            peer.to_send += _line(self._answer(bytes(peer.taken[:end])))
+            peer.to_send += self._answer(bytes(peer.taken[:end]))
             peer.until = _now_s() + PATIENCE_S
             del peer.taken[: end + 1]
         if len(peer.taken) > MAX_REQUEST_BYTES:
@@ -172,19 +177,24 @@ class Server:
             peer.to_send += _line(_refusal(f"a request has at most {MAX_REQUEST_BYTES} bytes"))
             peer.last = True
 
-    def _answer(self, line: bytes) -> dict[str, object]:
+    def _answer(self, line: bytes) -> bytes:
+        """The line of the reply; whatever the request holds, there is one."""
         try:
             request = json.loads(line)
+            _line({"request": request})
+        except UnicodeEncodeError:
+            return _line(_refusal("the request holds a text that is no Unicode; correct it"))
         except (ValueError, RecursionError):
-            return _refusal("the request is not JSON; send one object a line")
+            return _line(_refusal("the request is not JSON; send one object a line"))
         if not isinstance(request, dict):
-            return _refusal("the request is not a JSON object")
+            return _line(_refusal("the request is not a JSON object"))
         try:
-            return {"ok": True, **self._handler(request)}
+            return _line({"ok": True, **self._handler(request)})
         except FieldsillError as error:
-            return _refusal(str(error))
+            return _line(_refusal(str(error)))
         except _ANSWERABLE as error:
-            return _refusal(f"the request cannot be done: {type(error).__name__}: {error}")
+            text = f"the request cannot be done: {type(error).__name__}: {error}"
+            return _line(_refusal(text))
 
     def _drop(self, peer: _Peer) -> None:
         del self._peers[peer.connection.fileno()]
@@ -241,7 +251,7 @@ def _line(document: Mapping[str, object]) -> bytes:
 
 
 def _refusal(text: str) -> dict[str, object]:
-    return {"ok": False, "error": text}
+    return {"ok": False, "error": text.encode("utf-8", "backslashreplace").decode()}
 
 
 def _received(connection: socket.socket, until: float) -> bytes:

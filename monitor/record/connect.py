@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import errno
 import os
 import sqlite3
 import subprocess
@@ -13,7 +14,17 @@ from monitor.core.errors import RecordError
 
 APPLICATION_ID = 0x46534C4C
 SCHEMA_VERSION = 1
+DISK_TROUBLE = 75
+"""Exit code of the schema's process where only the disk is in the way (EX_TEMPFAIL)."""
 _BUSY_MS = 2000
+_DISK_CODES = frozenset(
+    (sqlite3.SQLITE_FULL, sqlite3.SQLITE_IOERR, sqlite3.SQLITE_BUSY, sqlite3.SQLITE_LOCKED)
+)
+_DISK_ERRNOS = frozenset((errno.ENOSPC, errno.EDQUOT, errno.EIO, errno.EFBIG))
+
+
+class DiskTroubleError(RecordError):
+    """The record may be good, but the disk is full or fails: try again later."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -28,7 +39,7 @@ def ensure(path: Path, simulated: bool) -> None:
     """Make the record, or bring an older one up to this version's schema, in a child process.
 
     RecordError where the file is no record, is newer, or bears the other simulated mark; then
-    nothing is written.
+    nothing is written. DiskTroubleError where the disk has no room or fails.
     """
     if path.exists():
         found = identify(path)
@@ -50,7 +61,8 @@ def ensure(path: Path, simulated: bool) -> None:
     )
     if done.returncode:
         last = (done.stderr.strip().splitlines() or ["no message"])[-1]
-        raise RecordError(last if last.startswith(str(path)) else f"{path}: not made: {last}")
+        kind = DiskTroubleError if done.returncode == DISK_TROUBLE else RecordError
+        raise kind(last if last.startswith(str(path)) else f"{path}: not made: {last}")
 
 
 def identify(path: Path) -> Identity:
@@ -76,7 +88,8 @@ def read_only(path: Path) -> sqlite3.Connection:
     except sqlite3.OperationalError as error:
         connection.close()
         if path.with_name(path.name + "-wal").exists():
-            raise RecordError(f"{path}: cannot be read: {error}; check its permissions") from error
+            text = f"{path}: cannot be read: {error}; check its permissions and the disk"
+            raise failure(error)(text) from error
         return _connect(path, "mode=ro&immutable=1")
     except sqlite3.DatabaseError as error:
         connection.close()
@@ -99,6 +112,15 @@ def for_writing(path: Path, simulated: bool) -> sqlite3.Connection:
     return connection
 
 
+def failure(error: OSError | sqlite3.Error) -> type[RecordError]:
+    """DiskTroubleError where the disk is full, fails or is busy; else RecordError."""
+    if isinstance(error, OSError):
+        trouble = error.errno in _DISK_ERRNOS
+    else:
+        trouble = getattr(error, "sqlite_errorcode", 0) & 0xFF in _DISK_CODES
+    return DiskTroubleError if trouble else RecordError
+
+
 def refuse_other_mark(path: Path, found: bool, wanted: bool) -> None:
     """RecordError where real data would meet simulated data."""
     if found != wanted:
@@ -119,7 +141,8 @@ def _connect(path: Path, mode: str, read_only_file: bool = True) -> sqlite3.Conn
             timeout=_BUSY_MS / 1000,
         )
     except sqlite3.OperationalError as error:
-        raise RecordError(f"{path}: cannot be opened: {error}; check its permissions") from error
+        text = f"{path}: cannot be opened: {error}; check its permissions"
+        raise failure(error)(text) from error
     if read_only_file:
         # Only the writer's connection may checkpoint (SQLite before 3.51.3 can corrupt a WAL
         # that two connections reset).
@@ -140,7 +163,7 @@ def _identity(path: Path, connection: sqlite3.Connection) -> Identity:
             )
         row = connection.execute("SELECT value FROM meta WHERE key = 'simulated'").fetchone()
     except sqlite3.DatabaseError as error:
-        raise RecordError(f"{path}: cannot be read: {error}; restore a copy") from error
+        raise failure(error)(f"{path}: cannot be read: {error}; restore a copy") from error
     if row is None or row[0] not in ("0", "1"):
         raise RecordError(f"{path}: says neither simulated nor real; restore a copy")
     return Identity(version, row[0] == "1")

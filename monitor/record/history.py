@@ -11,9 +11,10 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from monitor.record.coverage import Coverage, coverage
 from monitor.record.fetch import columns
 from monitor.record.spans import DAY_NS, HOUR_NS
-from monitor.record.types import WINDOW_EVERY_NS, Boot, History, I
+from monitor.record.types import Boot, History, I
 
 _E2 = ("e2_low", "e2_mean", "e2_high", "e2_max")
 _VALUES = "e2_low, e2_mean, e2_high, e2_max, u_db, valid_share, flags"
@@ -30,8 +31,6 @@ _HOURS = (
 _WINDOWS = (
     "SELECT {} FROM {} WHERE derivation = 0 AND boot = ?1 AND end_ns > ?2 AND end_ns <= ?3 AND {}"
 )
-_SPAN_ENDS = "end_ns, coalesce(first_ns, -1), coalesce(last_ns, -1), "
-_WINDOW_ENDS = "end_ns, end_ns, iif(valid_share > 0, end_ns, -1), iif(valid_share > 0, end_ns, -1)"
 
 
 @dataclass(frozen=True, slots=True)
@@ -44,7 +43,7 @@ class _Source:
 
 
 def _spans(unit_ns: int, query: str, key: str) -> _Source:
-    fields = query.format(f"{key}, {_SPAN_ENDS}{_VALUES}", "field_spans", "averaging_s = ?4")
+    fields = query.format(f"{key}, end_ns, {_VALUES}", "field_spans", "averaging_s = ?4")
     ratios = query.format(f"{key}, end_ns, {_RATIOS}", "exposure_spans", _OF_AVERAGING)
     return _Source(unit_ns, fields, ratios)
 
@@ -54,7 +53,7 @@ _SOURCES = (
     _spans(HOUR_NS, _HOURS, "day * 24 + hour"),
     _Source(
         0,
-        _WINDOWS.format(f"{_WINDOW_ENDS}, {_VALUES}", "fields", "averaging_s = ?4"),
+        _WINDOWS.format(f"end_ns, end_ns, {_VALUES}", "fields", "averaging_s = ?4"),
         _WINDOWS.format(f"end_ns, end_ns, {_RATIOS}", "exposures", _OF_AVERAGING),
     ),
 )
@@ -90,12 +89,11 @@ def history(
     merged = {name: _joined(tables, name) for name in names}
     order = np.argsort(merged["utc_ns"], kind="stable")
     merged = {name: column[order] for name, column in merged.items()}
-    gaps = _gaps(merged, span) if tables else [span]
     reduced = merged["utc_ns"].size > at_most
     if reduced:
         merged = _in_bins(merged, (merged["utc_ns"] - first_ns - 1) // width)
     bin_ns = width if reduced else source.unit_ns
-    return _as_history(merged, averaging_s, gaps, bin_ns)
+    return _as_history(merged, averaging_s, bin_ns, span, coverage(db, boots, span))
 
 
 def _part_with_data(
@@ -121,7 +119,7 @@ def _of_boot(
         start, end = start // source.unit_ns, (end - 1) // source.unit_ns
     values = (boot.boot, start, end, averaging_s)
     with closing(db.execute(source.fields, values)) as cursor:
-        key, ends, first, last, *fields, flags = columns(cursor, "iiiiffffffi")
+        key, ends, *fields, flags = columns(cursor, "iiffffffi")
     with closing(db.execute(source.ratios, values)) as cursor:
         judged, judged_ends, scope, *ratios = columns(cursor, "iiifff")
     keys = np.union1d(key, judged)
@@ -133,8 +131,6 @@ def _of_boot(
     for name, column in zip((*_E2, "u_db", "valid_share"), fields):
         table[name] = _placed(keys.size, place, column)
     table["flags"] = _placed(keys.size, place, flags, 0)
-    for name, column in (("first_ns", first), ("last_ns", last)):
-        table[name] = _placed(keys.size, place, np.where(column < 0, -1, column + offset), -1)
     for number in np.unique(scope).tolist():
         rows = scope == number
         place = np.searchsorted(keys, judged[rows])
@@ -168,21 +164,9 @@ def _in_bins(table: Table, bins: I) -> Table:
     return out
 
 
-def _gaps(table: Table, span: tuple[int, int]) -> list[tuple[int, int]]:
-    """Where no window with a valid part speaks for the minute before its end."""
-    good = table["first_ns"] >= 0
-    first, last = table["first_ns"][good], table["last_ns"][good]
-    free_from = np.r_[span[0], np.maximum.accumulate(last)]
-    until = np.r_[first - WINDOW_EVERY_NS, span[1]]
-    length = until - free_from
-    is_gap = length > 0
-    is_gap[-1] = length[-1] > WINDOW_EVERY_NS or not first.size  # the next row may be due still
-    return list(zip(free_from[is_gap].tolist(), until[is_gap].tolist()))
-
-
 def _as_history(
-    table: Mapping[str, Column], averaging_s: int, gaps: list[tuple[int, int]],
-    bin_ns: int,
+    table: Mapping[str, Column], averaging_s: int, bin_ns: int, span: tuple[int, int],
+    measured: Coverage,
 ) -> History:  # fmt: skip
     def column(name: str) -> Column:
         return table.get(name, np.empty(0))
@@ -203,6 +187,8 @@ def _as_history(
             n: (column(f"ratio_low {n}"), column(f"ratio_mean {n}"), column(f"ratio_high {n}"))
             for n in numbers
         },
-        gaps=gaps,
+        gaps=measured.gaps(*span),
         bin_ns=bin_ns,
+        measured_share=measured.share(span[0], min(span[1], measured.until_ns)),
+        coverage=measured,
     )

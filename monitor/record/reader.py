@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import json
 import math
 import sqlite3
 from collections.abc import Iterator
@@ -17,12 +16,14 @@ from monitor.core.errors import RecordError
 from monitor.core.limits import Scope
 from monitor.core.readings import Batch
 from monitor.core.rows import BlockRows, ExposureRows, FieldRows, WindowRows
-from monitor.record import connect, marks
+from monitor.record import connect, happened, marks
 from monitor.record.fetch import Rows, columns, kinds_of
+from monitor.record.fixes import winner
 from monitor.record.history import history
 from monitor.record.types import (
     Boot,
     ChannelRow,
+    ClockFix,
     EventRow,
     History,
     Latest,
@@ -44,6 +45,10 @@ _LATEST_FIELDS = (
 _LATEST_EXPOSURES = (
     "SELECT scope, ratio_low, ratio_mean, ratio_high, u_db, verdict FROM exposures "
     "WHERE derivation = 0 AND boot = ? AND end_ns = ?"
+)
+_FIXES = (
+    "SELECT boot, boot_ns, utc_ns - boot_ns, uncertainty_ns FROM clock_fixes "
+    "ORDER BY boot, boot_ns, source"
 )
 
 
@@ -77,11 +82,28 @@ class Record:
 
     def boots(self) -> list[Boot]:
         """Every boot, with its UTC offset by the rule of view boot_utc."""
+        with self._one_line(), closing(self._db.execute(_FIXES)) as cursor:
+            boot, boot_ns, offset, error = columns(cursor, "iiii")
+        known: dict[int, tuple[int, int]] = {}
+        for part in np.split(np.arange(boot.size), np.flatnonzero(np.diff(boot)) + 1):
+            if part.size:
+                at = part[winner(boot_ns[part], offset[part], error[part])]
+                known[int(boot[at])] = int(offset[at]), int(error[at])
+        rows = self._all("SELECT boot, boot_id, kind FROM boots ORDER BY boot")
+        return [Boot(*row, *known.get(row[0], (None, None))) for row in rows]
+
+    def boot_number(self, boot_id: str, kind: str) -> int | None:
+        """The boot's number; None where it was never here."""
+        rows = self._all("SELECT boot FROM boots WHERE boot_id = ? AND kind = ?", boot_id, kind)
+        return int(rows[0][0]) if rows else None
+
+    def clock_fixes(self, boot: int) -> list[ClockFix]:
+        """Every clock fix of a boot in the order of time."""
         query = (
-            "SELECT boot, boot_id, kind, offset_ns, uncertainty_ns "
-            "FROM boots LEFT JOIN boot_utc USING (boot) ORDER BY boot"
+            "SELECT boot_ns, utc_ns, source, uncertainty_ns FROM clock_fixes "
+            "WHERE boot = ? ORDER BY boot_ns, source"
         )
-        return [Boot(*row) for row in self._all(query)]
+        return [ClockFix(*row) for row in self._all(query, boot)]
 
     def channels(self) -> list[ChannelRow]:
         """The channels in the order of the raw counts' columns."""
@@ -175,17 +197,19 @@ class Record:
 
         Events of a boot without a clock fix are given only where no span is asked for.
         """
-        query = (
-            "SELECT boot_ns + offset_ns, boot, boot_ns, kind, name, body "
-            "FROM events LEFT JOIN boot_utc USING (boot) "
-            "WHERE (?1 IS NULL OR boot_ns + offset_ns >= ?1) "
-            "AND (?2 IS NULL OR boot_ns + offset_ns < ?2) ORDER BY event DESC LIMIT ?3"
-        )
-        rows = self._all(query, start_utc_ns, end_utc_ns, limit)
-        return [
-            EventRow(utc_ns, boot, boot_ns, kind, name, json.loads(body))
-            for utc_ns, boot, boot_ns, kind, name, body in reversed(rows)
-        ]
+        boots = self.boots()
+        with self._one_line():
+            return happened.between(self._db, boots, (start_utc_ns, end_utc_ns), limit)
+
+    def alarm_events(self) -> list[EventRow]:
+        """The few events that leave every alarm as all events would, oldest first.
+
+        Of each name: the newest alarm event, the newest that raised it, and the newest confirmed
+        and muted events; a confirmed one only where it came after the alarm was last raised.
+        """
+        boots = self.boots()
+        with self._one_line():
+            return happened.of_alarms(self._db, boots)
 
     def last_reading_ns(self, boot: int) -> int | None:
         """Boot time of the last raw reading; None before the first."""

@@ -69,7 +69,8 @@ def create(path: Path, simulated: bool) -> None:
             connection.close()
         _appear(draft, path)
     except (OSError, sqlite3.Error) as error:
-        raise RecordError(f"{path}: cannot be made: {error}; check folder and space") from error
+        text = f"{path}: cannot be made: {error}; check folder and space"
+        raise connect.failure(error)(text) from error
     finally:
         draft.unlink(missing_ok=True)
 
@@ -85,7 +86,8 @@ def _migrate(path: Path) -> None:
     try:
         migrations.apply(Database(connection, execute_plugins=False))
     except sqlite3.Error as error:
-        raise RecordError(f"{path}: cannot be migrated: {error}; nothing was changed") from error
+        text = f"{path}: cannot be migrated: {error}; nothing was changed"
+        raise connect.failure(error)(text) from error
     finally:
         connection.close()
 
@@ -102,7 +104,7 @@ def _appear(draft: Path, path: Path) -> None:
 
 
 def main(argv: list[str] | None = None) -> int:
-    """Exit code 0, or 3 with one line on stderr."""
+    """Exit code 0; else 3, or 75 where only the disk is in the way, with one line on stderr."""
     parser = argparse.ArgumentParser(prog="python -m monitor.record.schema")
     parser.add_argument("path", type=Path)
     parser.add_argument("--simulated", choices=("0", "1"), required=True)
@@ -111,7 +113,8 @@ def main(argv: list[str] | None = None) -> int:
         create(arguments.path, arguments.simulated == "1")
     except RecordError as error:
         sys.stderr.write(f"{error}\n")
-        return error.exit_code
+        trouble = isinstance(error, connect.DiskTroubleError)
+        return connect.DISK_TROUBLE if trouble else error.exit_code
     return 0
 
 

@@ -17,7 +17,6 @@ from monitor.core.rows import ExposureRows, FieldRows
 HOUR_NS = 3_600_000_000_000
 DAY_NS = 24 * HOUR_NS
 WHOLE_DAY = 24
-NEVER = np.iinfo(np.int64).max
 
 Order = NDArray[np.intp]
 Whole = NDArray[np.int64]
@@ -45,8 +44,8 @@ def _upsert(table: str, key: str, smallest: str, largest: str, joined: str = "")
 FIELD_SQL = _upsert(
     "field_spans",
     "averaging_s",
-    "first_ns e2_low valid_share",
-    "last_ns end_ns e2_mean e2_high e2_max u_db",
+    "e2_low valid_share",
+    "end_ns e2_mean e2_high e2_max u_db",
     "flags",
 )
 EXPOSURE_SQL = _upsert("exposure_spans", "scope", "ratio_low", "end_ns ratio_mean ratio_high")
@@ -54,13 +53,9 @@ EXPOSURE_SQL = _upsert("exposure_spans", "scope", "ratio_low", "end_ns ratio_mea
 
 def of_fields(derivation: int, boot: int, rows: FieldRows) -> Iterator[tuple[object, ...]]:
     """Parameters of FIELD_SQL; rows: at least one."""
-    good = rows.valid_share > 0
-    first = np.where(good, rows.end_ns, NEVER)
-    last = np.where(good, rows.end_ns, -1)
     for order, starts, day, hour, kind in _groups(rows.end_ns, rows.averaging_s):
-        least = [np.minimum.reduceat(first[order], starts)]
-        least += [np.fmin.reduceat(c[order], starts) for c in (rows.e2_low, rows.valid_share)]
-        most = [np.maximum.reduceat(c[order], starts) for c in (last, rows.end_ns)]
+        least = [np.fmin.reduceat(c[order], starts) for c in (rows.e2_low, rows.valid_share)]
+        most = [np.maximum.reduceat(rows.end_ns[order], starts)]
         most += [
             np.fmax.reduceat(c[order], starts)
             for c in (rows.e2_mean, rows.e2_high, rows.e2_max, rows.u_db)
@@ -68,8 +63,7 @@ def of_fields(derivation: int, boot: int, rows: FieldRows) -> Iterator[tuple[obj
         bits = np.bitwise_or.reduceat(rows.flags[order], starts)
         columns = (day, hour, kind, *least, *most, bits)
         for values in zip(*(c.tolist() for c in columns)):
-            known = values if values[3] != NEVER else _without(values, 3, 6)
-            yield (derivation, boot, *known)
+            yield (derivation, boot, *values)
 
 
 def of_exposures(
@@ -100,7 +94,3 @@ def _groups(end_ns: Whole, key: Whole) -> Iterator[tuple[Order, Order, Whole, Wh
             yield order, starts, index, np.full(index.size, WHOLE_DAY), keys[starts]
         else:
             yield order, starts, index // 24, index % 24, keys[starts]
-
-
-def _without(values: tuple[object, ...], *places: int) -> tuple[object, ...]:
-    return tuple(None if i in places else value for i, value in enumerate(values))

@@ -55,8 +55,7 @@ CREATE TABLE exposures (
   PRIMARY KEY (derivation, boot, end_ns, scope)) STRICT, WITHOUT ROWID;
 CREATE TABLE field_spans (
   derivation INTEGER NOT NULL, boot INTEGER NOT NULL, day INTEGER NOT NULL,
-  hour INTEGER NOT NULL, averaging_s INTEGER NOT NULL, first_ns INTEGER, last_ns INTEGER,
-  end_ns INTEGER NOT NULL,
+  hour INTEGER NOT NULL, averaging_s INTEGER NOT NULL, end_ns INTEGER NOT NULL,
   e2_low REAL, e2_mean REAL, e2_high REAL, e2_max REAL, u_db REAL, valid_share REAL NOT NULL,
   flags INTEGER NOT NULL,
   PRIMARY KEY (derivation, boot, day, hour, averaging_s)) STRICT, WITHOUT ROWID;
@@ -65,22 +64,40 @@ CREATE TABLE exposure_spans (
   hour INTEGER NOT NULL, scope INTEGER NOT NULL, end_ns INTEGER NOT NULL,
   ratio_low REAL, ratio_mean REAL, ratio_high REAL,
   PRIMARY KEY (derivation, boot, day, hour, scope)) STRICT, WITHOUT ROWID;
+CREATE TABLE measured_hours (
+  derivation INTEGER NOT NULL, boot INTEGER NOT NULL, hour INTEGER NOT NULL,
+  measured_ns INTEGER NOT NULL, minutes INTEGER NOT NULL,
+  PRIMARY KEY (derivation, boot, hour)) STRICT, WITHOUT ROWID;
 CREATE TABLE events (
   event INTEGER PRIMARY KEY, boot INTEGER NOT NULL, boot_ns INTEGER NOT NULL,
   kind TEXT NOT NULL, name TEXT NOT NULL, body TEXT NOT NULL) STRICT;
+CREATE INDEX alarm_events ON events (kind, name)
+  WHERE kind IN ('alarm', 'confirmed', 'muted');
 """
 
 _UTC = "strftime('%Y-%m-%dT%H:%M:%fZ', ({} + offset_ns) / 1e9, 'unixepoch')"
 _DBM = "round(10 * log10({} * 1000), 3)"
 
 V1_VIEWS = {
-    # The one rule by which UTC is found; the reader uses this view too.
+    # The one rule by which UTC is found; fixes.winner is its twin, for the reader.
     "boot_utc": """
-SELECT boot, utc_ns - boot_ns AS offset_ns, uncertainty_ns FROM (
+SELECT boot, offset_ns, uncertainty_ns FROM (
   SELECT *, row_number() OVER (
     PARTITION BY boot ORDER BY boot_ns DESC, uncertainty_ns, source) AS place
-  FROM clock_fixes AS f WHERE uncertainty_ns <=
-    2 * (SELECT min(uncertainty_ns) FROM clock_fixes AS best WHERE best.boot = f.boot))
+  FROM (
+    SELECT *, min(uncertainty_ns) OVER (PARTITION BY boot) AS smallest
+    FROM (
+      SELECT *,
+        max(iif(uncertainty_ns < 86400000000000, offset_ns - uncertainty_ns, NULL))
+          OVER later AS at_least,
+        min(iif(uncertainty_ns < 86400000000000, offset_ns + uncertainty_ns, NULL))
+          OVER later AS at_most
+      FROM (SELECT *, utc_ns - boot_ns AS offset_ns FROM clock_fixes)
+      WINDOW later AS (PARTITION BY boot ORDER BY boot_ns DESC
+        GROUPS BETWEEN UNBOUNDED PRECEDING AND 1 PRECEDING))
+    WHERE offset_ns + uncertainty_ns >= ifnull(at_least, offset_ns)
+      AND offset_ns - uncertainty_ns <= ifnull(at_most, offset_ns))
+  WHERE uncertainty_ns <= 2 * smallest)
 WHERE place = 1""",
     "block_levels": f"""
 SELECT {_UTC.format("start_ns")} AS start_utc, derivation, boot, name, axis, band,

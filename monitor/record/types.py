@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -11,6 +12,7 @@ from numpy.typing import NDArray
 
 from monitor.core.readings import Batch
 from monitor.core.rows import BlockRows, Event, ExposureRows, FieldRows, WindowRows
+from monitor.record.coverage import Coverage
 
 if TYPE_CHECKING:
     from monitor.core.limits import Scope
@@ -137,12 +139,13 @@ class History:
     """Averages over a span of UTC, one array each of shape (n,), ordered by utc_ns.
 
     utc_ns: window ends. e_*: V/m rms, nan where nothing is valid. ratios: scope index to
-    (low, mean, high) of shape (n,). gaps: [(start, end)] in UTC ns where nothing was valid;
-    no line may be drawn across one. bin_ns: 0 where each point is one window, else the width of
-    the bins that the points were reduced to: then e_low, valid_share and the low ratio are the
-    smallest in the bin, all else the largest, and flags are those of any window in it. A gap
-    inside one hour (one day) is not told where bins are an hour (a day) or wider: then
-    valid_share is 0.
+    (low, mean, high) of shape (n,). gaps: [(start, end)] in UTC ns in which no minute has a valid
+    reading, whatever the averaging time (a window that reaches into one has a valid_share below
+    1); the longest coverage.MOST_GAPS of them. bin_ns: 0 where each point is one window, else the
+    width of the bins that the points were reduced to: then e_low, valid_share and the low ratio
+    are the smallest in the bin, all else the largest, and flags are those of any window in it.
+    measured_share: of the span up to the last sign of life in the record; coverage answers the
+    same for any part of the span.
     """
 
     averaging_s: int
@@ -157,3 +160,5 @@ class History:
     ratios: Mapping[int, tuple[F, F, F]]
     gaps: list[tuple[int, int]]
     bin_ns: int
+    measured_share: float = math.nan
+    coverage: Coverage = field(default_factory=Coverage)

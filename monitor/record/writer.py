@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import fcntl
 import hashlib
-import json
 import os
 import sqlite3
 import threading
@@ -21,8 +20,9 @@ from numpy.typing import NDArray
 from monitor.core.errors import RecordError
 from monitor.core.flags import Flag
 from monitor.core.readings import Batch
-from monitor.core.rows import BlockRows, Event, ExposureRows, FieldRows, WindowRows, count
-from monitor.record import connect, marks, spans
+from monitor.core.rows import BlockRows, ExposureRows, FieldRows, WindowRows, count
+from monitor.record import connect, coverage, marks, spans
+from monitor.record.eventrows import event_row
 from monitor.record.packing import pack
 from monitor.record.types import BOOT_KINDS, ClockFix, Commit
 
@@ -153,7 +153,7 @@ class Writer:
             if commit.exposures is not None:
                 self._put_exposures(derivation, boot, commit.exposures)
             self._db.executemany(_FIX, (_fix_row(boot, fix) for fix in commit.clock_fixes))
-            self._db.executemany(_EVENT, (_event_row(boot, event) for event in commit.events))
+            self._db.executemany(_EVENT, (event_row(boot, event) for event in commit.events))
         if ends is not None:
             self._ends[boot] = ends
         self._bound_wal()
@@ -210,7 +210,12 @@ class Writer:
         return (int(batch.times_ns[-1]) if batch.n else last), max(end, batch.now_ns)
 
     def _put_blocks(self, derivation: int, boot: int, rows: BlockRows, commit: Commit) -> None:
+        if not count(rows):
+            return
         calibration = self._calibration(commit.calibration)
+        reach = (derivation, boot, int(rows.start_ns.min()), int(rows.start_ns.max()))
+        known = {start for (start,) in self._db.execute(coverage.KNOWN_SQL, reach)}
+        self._db.executemany(coverage.SQL, coverage.of_blocks(derivation, boot, rows, known))
         self._put(_BLOCK, derivation, boot, rows, repeat(commit.temperature_c), repeat(calibration))
 
     def _put_fields(self, derivation: int, boot: int, rows: FieldRows) -> None:
@@ -274,8 +279,3 @@ def _claim(path: Path) -> int:
 
 def _fix_row(boot: int, fix: ClockFix) -> tuple[object, ...]:
     return boot, fix.boot_ns, fix.utc_ns, fix.source, fix.uncertainty_ns
-
-
-def _event_row(boot: int, event: Event) -> tuple[object, ...]:
-    body = json.dumps(event.body, ensure_ascii=False, allow_nan=False, sort_keys=True)
-    return boot, event.boot_ns, event.kind, event.name, body

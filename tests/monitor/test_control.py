@@ -226,3 +226,33 @@ def test_closing_drops_who_is_still_connected(path: Path) -> None:
     assert client.recv(1) == b""
     client.close()
     assert len(os.listdir("/proc/self/fd")) < files
+
+
+def test_a_text_that_is_no_unicode_is_refused_and_the_server_lives(
+    server: Server, path: Path
+) -> None:
+    with _client(path) as client:
+        client.sendall(b'{"do": "note", "text": "\\ud800 hello"}\n')
+        reply = _line(client)
+    assert reply == {
+        "ok": False,
+        "error": "the request holds a text that is no Unicode; correct it",
+    }
+    with pytest.raises(ConfigError, match="cannot be sent"):
+        ask(path, {"do": "note", "text": "\ud800"})
+    assert ask(path, {})["ok"] is True
+
+
+def test_a_reply_that_no_line_can_hold_is_told_and_the_server_lives(path: Path) -> None:
+    def handler(request: Request) -> Request:
+        if request.get("do") == "raise":
+            raise ConfigError("no alarm \udc80")
+        return {"object": object()} if request.get("do") == "object" else {"text": "\udc80"}
+
+    server = Server(path, handler)
+    try:
+        for do in ("object", "text"):
+            assert "cannot be done" in str(ask(path, {"do": do})["error"])
+        assert ask(path, {"do": "raise"})["error"] == "no alarm \\udc80"
+    finally:
+        server.close()

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import sqlite3
 import threading
+import time
 from dataclasses import replace
 from pathlib import Path
 
@@ -142,3 +143,68 @@ def test_close_does_not_wait_for_ever(writer: Writer) -> None:
     other.close()
     assert _names(writer.path) == []
     Writer(writer.path, simulated=True).close()  # it has let the record go
+
+
+def _refuse_bodies(writer: Writer, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Make the writer fail on any event named bad, as on one that nobody foresaw."""
+    commit = Writer.commit
+
+    def fails(self: Writer, boot: int, given: Commit, derivation: int = 0) -> None:
+        if any(event.name == "bad" for event in given.events):
+            raise KeyError("nobody foresaw this")
+        commit(self, boot, given, derivation)
+
+    monkeypatch.setattr(Writer, "commit", fails)
+
+
+def test_an_unforeseen_error_costs_the_events_and_nothing_else(
+    writer: Writer, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    _refuse_bodies(writer, monkeypatch)
+    thread = WriterThread(writer, 8)
+    thread.put(1, replace(_commit(0), events=(Event(0, "note", "bad", {}),)), block=True)
+    thread.put(1, _commit(1), block=True)
+    assert thread.flush(WAIT_S)
+    assert thread.alive
+    assert (thread.refused, thread.written, thread.error) == (1, 2, "")
+    assert thread.refusal == "KeyError: 'nobody foresaw this'"
+    with Record.open(writer.path) as record:
+        told, note = record.events()
+        assert [batch.n for batch in record.raw_batches(1)] == [100, 100]
+        assert record.blocks(1).n.size == 6
+    assert (told.kind, told.name, note.name) == ("fault", "commit not whole", "n1")
+    assert told.body == {"why": thread.refusal}
+    assert thread.close()
+    assert not thread.alive
+
+
+def test_readings_and_events_are_kept_where_the_figures_cannot_be(writer: Writer) -> None:
+    good = _commit(0)
+    assert good.blocks is not None
+    broken = replace(good.blocks, energy_w_ns=np.full(3, np.nan))
+    thread = WriterThread(writer, 8)
+    thread.put(1, replace(good, blocks=broken), block=True)
+    assert thread.flush(WAIT_S)
+    assert _names(writer.path) == ["n0", "commit not whole"]
+    with Record.open(writer.path) as record:
+        assert [batch.n for batch in record.raw_batches(1)] == [100]
+    assert thread.refused == 1
+    assert thread.close()
+
+
+def test_put_waits_no_longer_than_it_is_told(writer: Writer) -> None:
+    writer._db.execute("PRAGMA busy_timeout=10")  # noqa: SLF001
+    other = sqlite3.connect(writer.path, isolation_level=None)
+    other.execute("BEGIN IMMEDIATE")
+    thread = WriterThread(writer, 1)
+    assert thread.put(1, _commit(0), block=True)
+    began = time.perf_counter()
+    assert not thread.put(1, _commit(1), block=True, timeout_s=0.2)
+    assert 0.2 <= time.perf_counter() - began < 2
+    stuck = threading.Thread(target=thread.put, args=(1, _commit(2), True))
+    stuck.start()  # without a limit: let go by close()
+    assert not thread.close(timeout_s=0.5)
+    stuck.join(WAIT_S)
+    assert not stuck.is_alive()
+    other.execute("ROLLBACK")
+    other.close()

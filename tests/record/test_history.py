@@ -7,10 +7,22 @@ from pathlib import Path
 import numpy as np
 import pytest
 
+from monitor.core.rows import BlockRows
+from monitor.record.coverage import MOST_GAPS
 from monitor.record.reader import Record
 from monitor.record.types import Commit
 from monitor.record.writer import Writer
-from tests.record.making import MINUTE, UTC0, S, exposure_rows, field_rows, fix, writer_of
+from tests.record.making import (
+    MINUTE,
+    UTC0,
+    S,
+    blocks,
+    exposure_rows,
+    field_rows,
+    fix,
+    heard,
+    writer_of,
+)
 
 HOUR = 60 * MINUTE
 DAY = 24 * HOUR
@@ -30,7 +42,8 @@ def _minutes(first: int, last: int) -> np.ndarray:
 
 def _put(writer: Writer, ends: np.ndarray, e2: np.ndarray, boot: int = 1) -> None:
     rows = exposure_rows(ends, e2 / 100)
-    writer.commit(boot, Commit(fields=field_rows(ends, e2), exposures=rows))
+    known = heard(ends[~np.isnan(e2)])
+    writer.commit(boot, Commit(blocks=known, fields=field_rows(ends, e2), exposures=rows))
 
 
 def test_every_window_where_they_fit(writer: Writer) -> None:
@@ -48,7 +61,7 @@ def test_every_window_where_they_fit(writer: Writer) -> None:
     assert list(found.ratios) == [1]
     assert found.gaps == []
     assert other.utc_ns.size == 0
-    assert other.gaps == [(UTC0, UTC0 + 100 * MINUTE)]
+    assert other.gaps == []  # a gap is one whatever the averaging time
 
 
 @pytest.mark.parametrize("at_most", [1, 20, 40, 399])
@@ -174,13 +187,86 @@ def test_hours_are_the_same_however_the_commits_are_cut(tmp_path: Path) -> None:
             found.append(
                 record._all("SELECT * FROM field_spans")  # noqa: SLF001
                 + record._all("SELECT * FROM exposure_spans")  # noqa: SLF001
+                + record._all("SELECT * FROM measured_hours")  # noqa: SLF001
             )
         writer.close()
     assert found[0] == found[1]
-    assert len(found[0]) == 22  # ten hours and a day, of a field and of a ratio
+    assert len(found[0]) == 32  # ten hours and a day of a field and a ratio, ten hours measured
 
 
 @pytest.mark.parametrize("bad", [(5, 5, 10), (6, 5, 10), (0, 5, 0)])
 def test_an_impossible_span_is_refused(writer: Writer, bad: tuple[int, int, int]) -> None:
     with Record.open(writer.path) as record, pytest.raises(ValueError, match="start < end"):
         record.history(bad[0], bad[1], 360, bad[2])
+
+
+def test_gaps_and_measured_time_do_not_hang_on_the_averaging_time(writer: Writer) -> None:
+    """Five minutes heard of every thirty: each half hour has valid parts, five sixths have none."""
+    ends = _minutes(1, 12 * 60 + 1)
+    on = ends[(ends // MINUTE - 1) % 30 < 5]
+    known = heard(on)
+    for averaging_s in (360, 1800):
+        fields = field_rows(ends, np.ones(ends.size), averaging_s=averaging_s)
+        writer.commit(1, Commit(blocks=known, fields=fields))
+    with Record.open(writer.path) as record:
+        for averaging_s in (360, 1800):
+            found = record.history(UTC0, UTC0 + 12 * HOUR, averaging_s, 5000)
+            assert len(found.gaps) == 24
+            assert found.gaps[0] == (UTC0 + 5 * MINUTE, UTC0 + 30 * MINUTE)
+            assert sum(end - start for start, end in found.gaps) == 10 * HOUR
+            assert found.measured_share == pytest.approx(1 / 6, abs=1e-12)
+        year = record.history(UTC0, UTC0 + 3650 * DAY, 1800, 40)
+    assert len(year.gaps) == 24
+    assert year.measured_share == pytest.approx(1 / 6, abs=1e-12)
+    assert found.coverage.measured_s(UTC0 + HOUR, UTC0 + HOUR + 2 * MINUTE) == 120.0
+    assert found.coverage.measured_s(UTC0 + HOUR, UTC0 + 2 * HOUR) == 600.0
+    assert found.coverage.measured_s(UTC0 + 6 * MINUTE, UTC0 + 20 * MINUTE) == 0.0
+
+
+def test_valid_time_is_that_of_the_poorest_channel_and_counted_once(writer: Writer) -> None:
+    """Against the plain sum over the blocks, whatever is committed again."""
+    rng = np.random.default_rng(3)
+    rows = blocks(0, 720, seed=3)
+    keep = np.repeat(rng.random(720) < 0.7, 3)
+    rows = BlockRows(*(getattr(rows, name)[keep] for name in BlockRows.__slots__))
+    half = rows.start_ns.size // 6 * 3
+    parts = [
+        BlockRows(*(getattr(rows, name)[at] for name in BlockRows.__slots__))
+        for at in (slice(half, None), slice(0, half + 30), slice(None))
+    ]
+    for part in parts:
+        writer.commit(1, Commit(blocks=part))
+    expected = rows.covered_ns.reshape(-1, 3).min(axis=1)
+    last_ns = int(rows.start_ns[-1]) + 10 * S
+    with Record.open(writer.path) as record:
+        found = record.history(UTC0, UTC0 + last_ns, 360, 100)
+        stored = record._all("SELECT sum(measured_ns) FROM measured_hours")  # noqa: SLF001
+    assert stored == [(int(expected.sum()),)]
+    assert found.coverage.measured_s(UTC0, UTC0 + last_ns) == pytest.approx(expected.sum() / 1e9)
+    assert found.measured_share == pytest.approx(expected.sum() / last_ns)
+
+
+def test_a_quiet_station_that_lives_is_not_taken_for_measured(writer: Writer) -> None:
+    """The hourly clock fix tells that the box was there, and that nothing came."""
+    _put(writer, _minutes(1, 61), np.ones(60))
+    with Record.open(writer.path) as record:
+        assert record.history(UTC0, UTC0 + DAY, 360, 100).measured_share == pytest.approx(1)
+    writer.commit(1, fix(2 * HOUR, UTC0 + 2 * HOUR))
+    with Record.open(writer.path) as record:
+        found = record.history(UTC0, UTC0 + DAY, 360, 100)
+    assert found.measured_share == pytest.approx(1 / 2)
+    assert found.coverage.until_ns == UTC0 + 2 * HOUR
+
+
+def test_only_the_longest_gaps_are_listed_where_there_are_too_many(writer: Writer) -> None:
+    every_third = _minutes(1, 9001)[::3]
+    keep = (every_third < 600 * MINUTE) | (every_third > 700 * MINUTE)
+    writer.commit(1, Commit(blocks=heard(every_third[keep])))
+    with Record.open(writer.path) as record:
+        found = record.history(UTC0, UTC0 + 9000 * MINUTE, 360, 100)
+    assert len(found.gaps) == MOST_GAPS
+    assert max(end - start for start, end in found.gaps) > 100 * MINUTE
+    assert found.gaps == sorted(found.gaps)
+    assert found.coverage.share(UTC0, UTC0 + 9000 * MINUTE) == pytest.approx(
+        keep.sum() / 9000, abs=1e-9
+    )

@@ -16,7 +16,7 @@ from monitor.core.errors import RecordError
 from monitor.core.readings import empty_batch
 from monitor.core.rows import Event
 from monitor.record.reader import Record
-from monitor.record.types import ClockFix, Commit
+from monitor.record.types import Commit
 from tests.record.making import (
     CHANNELS,
     MINUTE,
@@ -76,30 +76,6 @@ def test_raw_counts_are_cut_to_the_span(path: Path) -> None:
     assert cut.now_ns == last
     assert [b.n for b in everything] == [50, 0]  # silence is kept, once
     assert everything[1].now_ns == 60 * S
-
-
-@pytest.mark.parametrize(
-    ("fixes", "offset_ns"),
-    [
-        ([], None),
-        ([(0, 100, 5)], 100),
-        ([(0, 100, 5), (10, 117, 5)], 107),  # equal: the latest
-        ([(0, 100, 5), (10, 117, 11)], 100),  # more than twice as uncertain: not good enough
-        ([(0, 100, 5), (10, 117, 10)], 107),
-        ([(0, 1, 10**18), (10, 117, 10), (20, 99, 10**18)], 107),  # a wrong clock before and after
-    ],
-)
-def test_utc_follows_the_latest_good_fix(
-    path: Path, fixes: list[tuple[int, int, int]], offset_ns: int | None
-) -> None:
-    writer = writer_of(path)
-    boot = writer.begin_boot("b", "machine")
-    for boot_ns, utc_ns, uncertainty_ns in fixes:
-        found = (ClockFix(boot_ns, utc_ns, "test", uncertainty_ns),)
-        writer.commit(boot, Commit(clock_fixes=found, events=()))
-    writer.close()
-    with Record.open(path) as record:
-        assert record.boots()[0].utc_offset_ns == offset_ns
 
 
 def test_latest_is_of_the_boot_written_last(path: Path) -> None:

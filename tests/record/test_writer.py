@@ -223,15 +223,40 @@ def test_a_derivation_stands_beside_the_live_figures(path: Path) -> None:
         check_same(record.blocks(boot), blocks(0, 3, seed=1))
 
 
-def test_an_event_that_json_cannot_hold_is_refused(path: Path) -> None:
+@pytest.mark.parametrize(
+    "bad",
+    [
+        Event(1, "fault", "f", {"value": float("nan")}),
+        Event(1, "fault", "f", {"value": object()}),
+        Event(2**70, "fault", "f", {}),
+    ],
+)
+def test_an_event_that_cannot_be_kept_becomes_a_fault_and_costs_nothing_else(
+    path: Path, bad: Event
+) -> None:
     writer = writer_of(path)
     boot = writer.begin_boot("b", "machine")
-    with pytest.raises(ValueError, match="JSON"):
-        writer.commit(boot, Commit(events=(Event(1, "fault", "f", {"value": float("nan")}),)))
-    writer.commit(boot, Commit(events=(Event(1, "fault", "f", {"value": 1.5}),)))
+    good = Event(1, "note", "n", {"value": 1.5})
+    writer.commit(boot, Commit(raw=raw(0, 9), events=(bad, good)))
     writer.close()
     with Record.open(path) as record:
-        assert [event.body for event in record.events()] == [{"value": 1.5}]
+        fault, kept = record.events()
+        assert sum(batch.n for batch in record.raw_batches(boot)) == 9
+    assert (fault.kind, fault.name) == ("fault", "event not kept")
+    assert fault.body["why"]
+    assert kept.body == {"value": 1.5}
+
+
+def test_what_is_no_character_is_mended(path: Path) -> None:
+    writer = writer_of(path)
+    boot = writer.begin_boot("b", "machine")
+    body = {"text": "\ud800 hello \ud83d\ude00 ü"}
+    writer.commit(boot, Commit(events=(Event(1, "note", "me\udc80", body),)))
+    writer.close()
+    with Record.open(path) as record:
+        (event,) = record.events()
+    assert event.name == "me\ufffd"
+    assert event.body == {"text": "\ufffd hello \U0001f600 ü"}
 
 
 def test_the_log_is_cut_back_once_a_long_reader_has_gone(path: Path) -> None:
