@@ -7,6 +7,8 @@ from collections.abc import Sequence
 from datetime import UTC, datetime
 from decimal import ROUND_CEILING, ROUND_FLOOR, Decimal
 
+from monitor.core.alarms import INSTRUMENT_TEXTS
+
 CAUTIONS = (
     "This is an area monitor: it measures at its own antenna, at one place. Field strength changes "
     "within an arm's length; where a person stands it may be higher.",
@@ -169,7 +171,7 @@ def alarm_text(key: str) -> str:
     name, bar, scope = key.partition(" | ")
     parts = scope.removesuffix(" s").split(" ")
     if not bar or len(parts) != 4 or not parts[3].isdecimal():
-        return key
+        return INSTRUMENT_TEXTS.get(key, key)
     return f"{name}: {scope_title(parts[0], parts[1], parts[2], int(parts[3]))}"
 
 

@@ -194,7 +194,7 @@ class Daemon:
         if self._spool.empty:
             return
         commit = self._spool.commit(self._status.temperature_c, self._here.chain.identity)
-        if self._writer.put(commit, wait_s):
+        if self._writer.put(None, commit, wait_s > 0, wait_s):
             self._spool.clear()
         else:
             self._stuck = True

@@ -9,7 +9,7 @@ from datetime import UTC, datetime, timedelta
 
 from monitor.config import Site
 from monitor.core import figures
-from monitor.core.alarms import Alarm, AlertRule
+from monitor.core.alarms import INSTRUMENT_TEXTS, Alarm, AlertRule
 from monitor.core.exposure import Verdict, reasons
 from monitor.core.flags import Flag, words
 from monitor.core.pipeline import State, live
@@ -26,7 +26,7 @@ class View:
 
     state: State
     device: DeviceStatus
-    boot: int
+    boot: int | None
     utc_offset_ns: int | None
     last_reading_age_s: float | None
     alarms: Mapping[str, Alarm]
@@ -165,7 +165,7 @@ def _shown(alarms: Iterable[Alarm], now_ns: int) -> list[Alarm]:
 def _alarm(alarm: Alarm, view: View) -> dict[str, object]:
     return {
         "key": alarm.key,
-        "text": alarm.key,
+        "text": INSTRUMENT_TEXTS.get(alarm.key, alarm.key),
         "state": alarm.state(view.state.front_ns),
         "since_utc": rfc3339(_utc(view, alarm.since_ns)),
         "muted_until_utc": (

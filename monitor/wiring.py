@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import hashlib
+from collections.abc import Sequence
 from pathlib import Path
 
 import numpy as np
@@ -10,20 +12,22 @@ from hardware.registry import Settings, open_front_end, settings_for
 from monitor import limitsets
 from monitor.alarm_desk import AlarmDesk
 from monitor.calfile import load_chain
-from monitor.checks import Finding
+from monitor.checks import Finding, compare_bands
 from monitor.clock import SystemClock
 from monitor.config import Site
 from monitor.core import pipeline
-from monitor.core.alarms import watches
+from monitor.core.alarms import AlertRule, watches
 from monitor.core.calibration import Chain
 from monitor.core.errors import ConfigError
-from monitor.core.exposure import scope_coefficients
+from monitor.core.exposure import least_coefficient, scope_coefficients
+from monitor.core.judgement import GAPS
 from monitor.core.limits import Scope, ratio_per_e2, scopes
 from monitor.core.readings import FrontEnd
 from monitor.core.resume import resume, since_ns
 from monitor.core.rows import Event
+from monitor.core.silence import KEY as SILENCE
 from monitor.core.station import Station, station
-from monitor.daemon import Daemon
+from monitor.daemon import RECORD, Daemon
 from monitor.record import connect
 from monitor.record.background import WriterThread
 from monitor.record.reader import Record
@@ -31,11 +35,14 @@ from monitor.record.writer import Writer
 from monitor.snapshot import rfc3339
 
 QUEUE_DEPTH = 8
+RECORDED = ("level_series", "iq_file")
 
 
 def sensor_settings(site: Site) -> Settings:
-    """The front end's settings; its counts must be those of the calibration file."""
-    return settings_for(site.sensor_kind, site.sensor_options, site.path.parent)
+    """The front end's settings; the bands that it receives must be those of the site file."""
+    settings = settings_for(site.sensor_kind, site.sensor_options, site.path.parent)
+    compare_bands(site, getattr(settings, "bands_hz", None), getattr(settings, "bin_hz", 0.0))
+    return settings
 
 
 def chain_for(site: Site, settings: Settings) -> Chain:
@@ -54,18 +61,16 @@ def station_for(site: Site, chain: Chain) -> Station:
     low = min(float(grid.min()) for grid in chain.frequencies_hz)
     high = max(float(grid.max()) for grid in chain.frequencies_hz)
     found: list[Scope] = []
-    columns: list[list[float]] = []
+    most: list[list[float]] = []
+    least: list[list[float]] = []
     for set_id in site.limit_sets:
         limit_set = limitsets.load(set_id)
         for scope in scopes(limit_set, low, high):
             found.append(scope)
-            columns.append(
-                [
-                    scope_coefficients(k, ratio_per_e2(limit_set, scope, grid))
-                    for k, grid in zip(chain.k, chain.frequencies_hz)
-                ]
-            )
-    watched = watches(site.alerts, found)
+            rates = [ratio_per_e2(limit_set, scope, grid) for grid in chain.frequencies_hz]
+            most.append([scope_coefficients(k, rate) for k, rate in zip(chain.k, rates)])
+            least.append([least_coefficient(k, rate) for k, rate in zip(chain.k, rates)])
+    watched = watches((*site.alerts, *limit_rules(site, found)), found)
     for rule in site.alerts:
         if not any(watch.rule == rule for watch in watched):
             raise ConfigError(
@@ -76,12 +81,33 @@ def station_for(site: Site, chain: Chain) -> Station:
     return station(
         chain,
         tuple(found),
-        np.array(columns).T,
+        np.array(most).T,
+        np.array(least).T,
         watched,
         hold_s=site.hold_s,
         silence_s=site.silence_after_s,
         field_region=site.field_region,
+        outside_excluded=all(band.outside != "undeclared" for band in site.bands.values()),
     )
+
+
+def limit_rules(site: Site, found: Sequence[Scope]) -> list[AlertRule]:
+    """The limits of the place's own population are alert levels, said or not."""
+    own = "occupational" if site.occupancy == "controlled" else "general_public"
+    rules = []
+    for scope in found:
+        said = any(
+            rule.ratio == 1.0
+            and rule.set_id in ("", scope.set_id)
+            and rule.population in ("", scope.population)
+            and rule.scope in ("", scope.scope)
+            for rule in site.alerts
+        )
+        if scope.population == own and not said:
+            rules.append(
+                AlertRule("the limit", scope.set_id, own, scope.scope, 1.0, 0.9, 0.0, 60.0)
+            )
+    return list(dict.fromkeys(rules))
 
 
 def check(site: Site) -> list[Finding]:
@@ -104,58 +130,82 @@ def daemon_for(site: Site, *, history_s: float | None = None) -> Daemon:
     chain = chain_for(site, settings)
     here = station_for(site, chain)
     # A box in service waits for a device that is away, and says so; a first start needs it.
-    if site.sensor_kind in ("level_series", "iq_file") or not site.record_path.exists():
+    if site.sensor_kind in RECORDED or not site.record_path.exists():
         settings.check_device()
     connect.ensure(site.record_path, site.simulated)
-    writer = Writer(site.record_path, simulated=site.simulated)
     front = open_front_end(
         settings, len(site.channels), clock.boot_ns, clock.utc_ns, site.simulated
     )
-    boot = writer.begin_boot(*_boot(site, front, clock))
-    writer.put_channels([(i, c.name, c.axis, c.band) for i, c in enumerate(site.channels)])
-    writer.put_scopes(here.scopes)
-    documents = _documents(site, chain, writer)
+    boot_id, kind = _boot(site, front, clock)
+    documents = _documents(site, chain)
+
+    def prepare(writer: Writer) -> int:
+        boot = writer.begin_boot(boot_id, kind)
+        writer.put_channels([(i, c.name, c.axis, c.band) for i, c in enumerate(site.channels)])
+        writer.put_scopes(here.scopes)
+        for _, document_kind, body in documents:
+            writer.put_document(document_kind, body)
+        return boot
+
+    thread = WriterThread.opening(site.record_path, site.simulated, prepare, QUEUE_DEPTH)
     boot_ns = 0 if front.owns_clock else clock.boot_ns()
-    state, desk = _resumed(site.record_path, boot, here, boot_ns)
-    daemon = Daemon(
-        site, here, front, WriterThread(writer, QUEUE_DEPTH), clock, boot, state, desk,
-        history_s=history_s,
-    )  # fmt: skip
-    daemon.note(Event(state.front_ns, "start", "daemon", documents))
+    state, desk = _resumed(site.record_path, boot_id, kind, here, boot_ns)
+    daemon = Daemon(site, here, front, thread, clock, state, desk, history_s=history_s)
+    hashes: dict[str, object] = {
+        name: hashlib.sha256(body).hexdigest() for name, _, body in documents
+    }
+    daemon.note(Event(state.front_ns, "start", "daemon", hashes))
+    for event in _orphans(here, desk, state.front_ns):
+        desk.apply(event)
+        daemon.note(event)
     return daemon
 
 
 def _boot(site: Site, front: FrontEnd, clock: SystemClock) -> tuple[str, str]:
-    """Identity and kind of the boot: the machine's, or one of its own for a recorded series."""
+    """Identity and kind of the boot: the machine's, or one of its own for a recorded series.
+
+    A recorded series is known by its content: the same name may hold another one tomorrow.
+    """
     if not front.owns_clock:
         return clock.boot_id(), "machine"
-    kind = "rehearsal" if site.sensor_kind == "detector_board" else "series"
-    source = site.sensor_options.get("file", site.sensor_options.get("device", ""))
-    fix = front.clock_fix
-    return f"{Path(str(source)).name} from {rfc3339(fix[1] if fix else None)}", kind
+    began = rfc3339(front.clock_fix[1] if front.clock_fix else None)
+    if site.sensor_kind not in RECORDED:
+        return f"{site.sensor_options.get('device', '')} from {began}", "rehearsal"
+    path = site.path.parent / str(site.sensor_options["file"])
+    with path.open("rb") as file:
+        digest = hashlib.file_digest(file, "sha256").hexdigest()
+    return f"{path.name} from {began} sha256 {digest}", "series"
 
 
-def _documents(site: Site, chain: Chain, writer: Writer) -> dict[str, object]:
-    """Put the files that the figures rest on in the record; their hashes."""
-    hashes: dict[str, object] = {
-        "calibration": writer.put_document("calibration", chain.document),
-        "site": writer.put_document("site", site.path.read_bytes()),
-    }
-    for set_id in site.limit_sets:
-        hashes[set_id] = writer.put_document("limit set", limitsets.document(set_id))
-    for channel, table in zip(site.channels, chain.tables):
-        hashes[f"counts {channel.name}"] = writer.put_document("count table", table.to_bytes())
-    return hashes
+def _documents(site: Site, chain: Chain) -> list[tuple[str, str, bytes]]:
+    """(name, kind, body) of the files that the figures rest on."""
+    documents = [("calibration", "calibration", chain.document)]
+    documents.append(("site", "site", site.path.read_bytes()))
+    documents += [(name, "limit set", limitsets.document(name)) for name in site.limit_sets]
+    documents += [
+        (f"counts {channel.name}", "count table", table.to_bytes())
+        for channel, table in zip(site.channels, chain.tables)
+    ]
+    return documents
 
 
 def _resumed(
-    path: Path, boot: int, here: Station, boot_ns: int
+    path: Path, boot_id: str, kind: str, here: Station, boot_ns: int
 ) -> tuple[pipeline.State, AlarmDesk]:
     """State and alarms as the record has them; a new boot begins with empty windows."""
     with Record.open(path) as record:
-        desk = AlarmDesk.from_events(record.events(limit=10_000), boot)
-        last_ns = record.last_reading_ns(boot)
+        found = [b.boot for b in record.boots() if (b.boot_id, b.kind) == (boot_id, kind)]
+        boot = found[0] if found else -1
+        desk = AlarmDesk.from_events(record.alarm_events(), boot)
+        last_ns = record.last_reading_ns(boot) if found else None
         if last_ns is None:
-            return pipeline.start(here, boot_ns), desk
+            return pipeline.start(here, boot_ns, desk.raised()), desk
         rows, raw = record.resume(boot, since_ns(last_ns, here))
     return resume(here, rows, raw, boot_ns, desk.raised()), desk
+
+
+def _orphans(here: Station, desk: AlarmDesk, at_ns: int) -> list[Event]:
+    """Alarms that nothing watches any more return, or they would stand for ever."""
+    watched = {watch.key for watch in here.watches} | {SILENCE, GAPS, RECORD}
+    body: dict[str, object] = {"raised": False, "why": "no longer watched"}
+    return [Event(at_ns, "alarm", key, body) for key in sorted(desk.raised() - watched)]

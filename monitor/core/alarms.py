@@ -129,6 +129,14 @@ def follow(side: Side, times_ns: I, code: NDArray[np.int8], rule: AlertRule) -> 
     return Followed(side, crossed, changes)
 
 
+INSTRUMENT_TEXTS = {
+    "silence": "no valid reading",
+    "gaps": "less than three quarters of the last six minutes is measured",
+    "record": "the record cannot be written",
+}
+"""What the alarms about the monitor itself say, by key."""
+
+
 @dataclass(frozen=True, slots=True)
 class Alarm:
     """An alarm as people meet it; state words after IEC 62682 / ISA-18.2 (names from memory).

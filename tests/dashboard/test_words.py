@@ -93,7 +93,7 @@ def test_alarm_states_in_words() -> None:
 def test_an_alarms_key_in_words() -> None:
     key = "half | icnirp-2020 general_public whole_body 1800 s"
     assert words.alarm_text(key) == "half: ICNIRP 2020, general public, whole body, 30 min"
-    assert words.alarm_text("silence") == "silence"
+    assert words.alarm_text("silence") == "no valid reading"
     assert words.alarm_text("a | b") == "a | b"
 
 

@@ -68,7 +68,7 @@ class Writer:
         self.commits: list[Commit] = []
         self.error, self.refused, self.refusal = "", 0, ""
 
-    def put(self, commit: Commit, wait_s: float) -> bool:
+    def put(self, boot: None, commit: Commit, block: bool, timeout_s: float) -> bool:
         if self.error:
             return False
         self.commits.append(commit)
