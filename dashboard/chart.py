@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
@@ -16,6 +16,7 @@ from numpy.typing import NDArray
 from dashboard import ticks
 from dashboard.span import Span
 from monitor.core.alarms import ENOUGH_SHARE
+from monitor.record.coverage import Coverage
 
 F = NDArray[np.float64]
 I = NDArray[np.int64]  # noqa: E741
@@ -27,7 +28,10 @@ SPREAD_NS = 3 * 60_000_000_000
 
 @dataclass(frozen=True, slots=True)
 class Series:
-    """What is drawn: times (UTC ns) and figures of shape (n,); nan where there is no figure."""
+    """What is drawn: times (UTC ns) and figures of shape (n,); nan where there is no figure.
+
+    coverage: how much of any part of the span was measured.
+    """
 
     utc_ns: I
     low: F
@@ -36,6 +40,7 @@ class Series:
     valid_share: F
     gaps: Sequence[tuple[int, int]]
     bin_ns: int = 0
+    coverage: Coverage = field(default_factory=Coverage)
 
 
 @dataclass(frozen=True, slots=True)

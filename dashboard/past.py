@@ -55,7 +55,9 @@ def series_of(history: History, scope: int | None, now_ns: int) -> Series:
         else history.ratios.get(scope, (np.full(history.utc_ns.size, np.nan),) * 3)
     )
     gaps = gaps_until(history.gaps, now_ns)
-    return Series(history.utc_ns, low, mean, high, history.valid_share, gaps, history.bin_ns)
+    return Series(
+        history.utc_ns, low, mean, high, history.valid_share, gaps, history.bin_ns, history.coverage
+    )
 
 
 def gaps_until(gaps: Sequence[tuple[int, int]], now_ns: int) -> list[tuple[int, int]]:
@@ -69,18 +71,31 @@ def gap_seconds(gaps: Sequence[tuple[int, int]], start_ns: int, end_ns: int) -> 
     return sum(max(0, min(end, end_ns) - max(start, start_ns)) for start, end in gaps) / NS
 
 
+def measured_share(series: Series, start_ns: int, end_ns: int) -> float:
+    """Part of [start, end) with valid readings. Short pauses are no gaps, but they count here.
+
+    The last moments may still be on their way into the record: they are not held against it.
+    """
+    if not series.coverage.start_ns.size:  # only the gaps are known
+        return max(0.0, 1.0 - gap_seconds(series.gaps, start_ns, end_ns) * NS / (end_ns - start_ns))
+    until = series.coverage.until_ns
+    if until and end_ns - until <= DUE_NS:
+        end_ns = max(min(end_ns, until), start_ns + 1)
+    return series.coverage.share(start_ns, end_ns)
+
+
 def summary(series: Series, span: Span, now_ns: int) -> Summary:
     """Summary of a series over the part of the span that has passed."""
     end_ns = max(span.start_ns + NS, min(span.end_ns, now_ns))
     gap_s = gap_seconds(series.gaps, span.start_ns, end_ns)
     length_s = (end_ns - span.start_ns) / NS
+    measured = measured_share(series, span.start_ns, end_ns)
     inside = sum(1 for a, b in series.gaps if a < end_ns and b > span.start_ns)
-    share = max(0.0, 1.0 - gap_s / length_s)
     if not np.isfinite(series.mean).any():
         return Summary(None, None, None, 0.0, length_s, inside)
     index = int(np.nanargmax(series.mean))
     return Summary(
-        float(series.mean[index]), int(series.utc_ns[index]), index, share, gap_s, inside
+        float(series.mean[index]), int(series.utc_ns[index]), index, measured, gap_s, inside
     )
 
 
@@ -106,7 +121,7 @@ def _row(series: Series, part: Span, now_ns: int) -> Row:
     inside = (series.utc_ns > part.start_ns) & (series.utc_ns <= part.end_ns)
     inside &= np.isfinite(series.mean)
     gap_s = gap_seconds(series.gaps, part.start_ns, end_ns)
-    measured = max(0.0, 1.0 - gap_s / max(1e-9, (end_ns - part.start_ns) / NS))
+    measured = measured_share(series, part.start_ns, end_ns)
     if not inside.any():
         return Row(part, None, None, None, 0.0, gap_s)
     means = series.mean[inside]
