@@ -17,6 +17,7 @@ SCHEMA_VERSION = 1
 DISK_TROUBLE = 75
 """Exit code of the schema's process where only the disk is in the way (EX_TEMPFAIL)."""
 _BUSY_MS = 2000
+_SHM_BYTES = 32768  # the least that a wal-index in use has (SQLite file format, section 4)
 _DISK_CODES = frozenset(
     (sqlite3.SQLITE_FULL, sqlite3.SQLITE_IOERR, sqlite3.SQLITE_BUSY, sqlite3.SQLITE_LOCKED)
 )
@@ -77,8 +78,9 @@ def identify(path: Path) -> Identity:
 def read_only(path: Path) -> sqlite3.Connection:
     """A connection that only reads; it works beside the daemon, after it and after its crash.
 
-    A reader without write permission cannot make the side files that WAL needs once the
-    writer has closed cleanly: then, and only where no WAL is left, the file is read as it is.
+    Without write permission, or on a full disk, nobody can make the side files that WAL needs
+    once the writer has closed cleanly: then, and only where they hold nothing, the file is read
+    as it is.
     """
     if not path.is_file():
         raise RecordError(f"{path}: no such record; start fieldsill measure, or name another")
@@ -87,7 +89,7 @@ def read_only(path: Path) -> sqlite3.Connection:
         connection.execute("SELECT count(*) FROM sqlite_master").fetchone()
     except sqlite3.OperationalError as error:
         connection.close()
-        if path.with_name(path.name + "-wal").exists():
+        if _size(path, "-wal") > 0 or _size(path, "-shm") >= _SHM_BYTES:
             text = f"{path}: cannot be read: {error}; check its permissions and the disk"
             raise failure(error)(text) from error
         return _connect(path, "mode=ro&immutable=1")
@@ -148,6 +150,11 @@ def _connect(path: Path, mode: str, read_only_file: bool = True) -> sqlite3.Conn
         # that two connections reset).
         connection.execute("PRAGMA wal_autocheckpoint=0")
     return connection
+
+
+def _size(path: Path, end: str) -> int:
+    side = path.with_name(path.name + end)
+    return side.stat().st_size if side.exists() else 0
 
 
 def _identity(path: Path, connection: sqlite3.Connection) -> Identity:

@@ -129,3 +129,24 @@ def test_a_disk_on_which_nothing_can_be_written(tmp_path: Path, there: bool) -> 
     )
     assert done.stderr == ""
     assert done.stdout.split() == ["None", "True", "True", "True"]
+
+
+def test_a_closed_record_is_read_on_a_full_disk(tmp_path: Path) -> None:
+    """SQLite may leave empty side files there, and no room for what belongs in them."""
+    path = tmp_path / "site.db"
+    writer = writer_of(path)
+    writer.commit(_prepare(writer), _commit(7))
+    writer.close()
+    code = (
+        "import resource, signal, sys; from monitor.record.reader import Record\n"
+        "signal.signal(signal.SIGXFSZ, signal.SIG_IGN)\n"
+        "resource.setrlimit(resource.RLIMIT_FSIZE, (99, 99))\n"
+        "for _ in range(2):\n"
+        "    with Record.open(sys.argv[1]) as record:\n"
+        "        print(record.boot_number('b', 'machine'), record.events()[0].name)\n"
+    )
+    done = subprocess.run(
+        [sys.executable, "-c", code, str(path)], capture_output=True, text=True, check=False
+    )
+    assert done.stderr == ""
+    assert done.stdout.split() == ["1", "n7"] * 2
