@@ -14,6 +14,11 @@ UNSYNCHRONISED_US = 16_000_000
 _MAXERROR_AT = 3  # modes, offset, freq, maxerror: struct timex of a 64-bit Linux
 
 
+def steady_s() -> float:
+    """Seconds of a clock that only runs forward, for time-outs."""
+    return time.monotonic()
+
+
 class SystemClock:
     """CLOCK_BOOTTIME and UTC of this machine."""
 

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import threading
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import replace
 
 from monitor.alarm_desk import AlarmDesk, text_of
@@ -17,6 +17,7 @@ from monitor.core.station import Station
 from monitor.fixes import Clock, Fixes
 from monitor.marking import marked
 from monitor.record.background import WriterThread
+from monitor.record.types import ClockFix
 from monitor.snapshot import View, snapshot
 from monitor.spool import Spool
 
@@ -45,6 +46,7 @@ class Daemon:
         desk: AlarmDesk,
         *,
         history_s: float | None = None,
+        fixes: Sequence[ClockFix] = (),
     ) -> None:
         self._site, self._here, self._front, self._writer = site, here, front, writer
         self._clock, self._state, self._desk = clock, state, desk
@@ -53,7 +55,7 @@ class Daemon:
         self._spool = Spool()
         self._lock = threading.Lock()
         self._asked: list[Event] = []
-        self._fixes = Fixes(clock, front.clock_fix, front.owns_clock)
+        self._fixes = Fixes(clock, front.clock_fix, front.owns_clock, fixes)
         self._heard_ns: int | None = None
         self._committed_ns = self._well_ns = clock.boot_ns()
         self._stuck = False

@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from typing import Protocol
 
 from monitor.core.readings import NS_PER_S
+from monitor.record.fixes import best
 from monitor.record.types import ClockFix
 
 FIX_EVERY_NS = 3600 * NS_PER_S
@@ -30,14 +32,20 @@ class Clock(Protocol):
 class Fixes:
     """The mapping from boot time to UTC as it is known now.
 
-    own: the one fix of a front end that owns its clock, else None.
+    own: the one fix of a front end that owns its clock, else None. known: fixes of this boot that
+    the record holds already; page and record find UTC by the same rule.
     """
 
-    def __init__(self, clock: Clock, own: tuple[int, int] | None, owns_clock: bool) -> None:
+    def __init__(
+        self, clock: Clock, own: tuple[int, int] | None, owns_clock: bool,
+        known: Sequence[ClockFix] = (),
+    ) -> None:  # fmt: skip
         self._clock = clock
         self._owns = owns_clock
         self._fix_ns = self._look_ns = -FIX_EVERY_NS
         self._own = own
+        self._known = list(known)
+        self._seen_ns: int | None = None
         self.synchronised = True
         self.offset_ns: int | None = None
 
@@ -47,7 +55,7 @@ class Fixes:
             own, self._own = self._own, None
             return None if own is None else self._kept(ClockFix(*own, "front end", 0))
         boot_ns, utc_ns = self._clock.boot_ns(), self._clock.utc_ns()
-        jumped = self.offset_ns is None or abs(utc_ns - boot_ns - self.offset_ns) > JUMP_NS
+        jumped = self._seen_ns is None or abs(utc_ns - boot_ns - self._seen_ns) > JUMP_NS
         if not jumped and boot_ns - self._look_ns < LOOK_EVERY_NS:
             return None
         self._look_ns = boot_ns
@@ -62,5 +70,8 @@ class Fixes:
         )
 
     def _kept(self, fix: ClockFix) -> ClockFix:
-        self.offset_ns, self._fix_ns = fix.utc_ns - fix.boot_ns, fix.boot_ns
+        self._seen_ns, self._fix_ns = fix.utc_ns - fix.boot_ns, fix.boot_ns
+        self._known.append(fix)
+        holds = best(self._known)
+        self.offset_ns = None if holds is None else holds.utc_ns - holds.boot_ns
         return fix

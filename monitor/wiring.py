@@ -31,6 +31,7 @@ from monitor.daemon import RECORD, Daemon
 from monitor.record import connect
 from monitor.record.background import WriterThread
 from monitor.record.reader import Record
+from monitor.record.types import ClockFix
 from monitor.record.writer import Writer
 from monitor.snapshot import rfc3339
 
@@ -132,7 +133,6 @@ def daemon_for(site: Site, *, history_s: float | None = None) -> Daemon:
     # A box in service waits for a device that is away, and says so; a first start needs it.
     if site.sensor_kind in RECORDED or not site.record_path.exists():
         settings.check_device()
-    connect.ensure(site.record_path, site.simulated)
     front = open_front_end(
         settings, len(site.channels), clock.boot_ns, clock.utc_ns, site.simulated
     )
@@ -149,8 +149,8 @@ def daemon_for(site: Site, *, history_s: float | None = None) -> Daemon:
 
     thread = WriterThread.opening(site.record_path, site.simulated, prepare, QUEUE_DEPTH)
     boot_ns = 0 if front.owns_clock else clock.boot_ns()
-    state, desk = _resumed(site.record_path, boot_id, kind, here, boot_ns)
-    daemon = Daemon(site, here, front, thread, clock, state, desk, history_s=history_s)
+    state, desk, fixes = _resumed(site.record_path, boot_id, kind, here, boot_ns)
+    daemon = Daemon(site, here, front, thread, clock, state, desk, history_s=history_s, fixes=fixes)
     hashes: dict[str, object] = {
         name: hashlib.sha256(body).hexdigest() for name, _, body in documents
     }
@@ -191,17 +191,25 @@ def _documents(site: Site, chain: Chain) -> list[tuple[str, str, bytes]]:
 
 def _resumed(
     path: Path, boot_id: str, kind: str, here: Station, boot_ns: int
-) -> tuple[pipeline.State, AlarmDesk]:
-    """State and alarms as the record has them; a new boot begins with empty windows."""
-    with Record.open(path) as record:
-        found = [b.boot for b in record.boots() if (b.boot_id, b.kind) == (boot_id, kind)]
-        boot = found[0] if found else -1
-        desk = AlarmDesk.from_events(record.alarm_events(), boot)
-        last_ns = record.last_reading_ns(boot) if found else None
-        if last_ns is None:
-            return pipeline.start(here, boot_ns, desk.raised()), desk
-        rows, raw = record.resume(boot, since_ns(last_ns, here))
-    return resume(here, rows, raw, boot_ns, desk.raised()), desk
+) -> tuple[pipeline.State, AlarmDesk, list[ClockFix]]:
+    """State, alarms and clock fixes as the record has them; a new boot has empty windows.
+
+    So has one whose record cannot be read for want of room on the disk.
+    """
+    if not path.exists():
+        return pipeline.start(here, boot_ns), AlarmDesk(), []
+    try:
+        with Record.open(path) as record:
+            boot = record.boot_number(boot_id, kind)
+            desk = AlarmDesk.from_events(record.alarm_events(), -1 if boot is None else boot)
+            last_ns = None if boot is None else record.last_reading_ns(boot)
+            if boot is None or last_ns is None:
+                return pipeline.start(here, boot_ns, desk.raised()), desk, []
+            rows, raw = record.resume(boot, since_ns(last_ns, here))
+            fixes = record.clock_fixes(boot)
+    except connect.DiskTroubleError:
+        return pipeline.start(here, boot_ns), AlarmDesk(), []
+    return resume(here, rows, raw, boot_ns, desk.raised()), desk, fixes
 
 
 def _orphans(here: Station, desk: AlarmDesk, at_ns: int) -> list[Event]:

@@ -4,13 +4,13 @@ from __future__ import annotations
 
 import sqlite3
 import threading
-import time
 from collections import deque
 from collections.abc import Callable, Iterator
 from dataclasses import replace
 from functools import partial
 from pathlib import Path
 
+from monitor.clock import steady_s
 from monitor.core.errors import RecordError
 from monitor.core.rows import Event
 from monitor.record import connect
@@ -109,7 +109,7 @@ class WriterThread:
 
         Where the disk holds the thread for longer, thread and record are left to the process's end.
         """
-        until = time.monotonic() + timeout_s
+        until = steady_s() + timeout_s
         with self._change:
             self._closing = True
             self._change.notify_all()
@@ -118,7 +118,7 @@ class WriterThread:
             with self._change:
                 self._queue.clear()
                 self._change.notify_all()
-        self._thread.join(max(0.0, until - time.monotonic()))
+        self._thread.join(max(0.0, until - steady_s()))
         if self._thread.is_alive():
             return False
         if self._writer is not None:
