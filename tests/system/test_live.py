@@ -2,12 +2,7 @@
 
 from __future__ import annotations
 
-import json
-import subprocess
-import sys
 from collections.abc import Iterator
-from contextlib import contextmanager
-from dataclasses import dataclass
 from pathlib import Path
 
 import numpy as np
@@ -16,68 +11,16 @@ import pytest
 from monitor import control, wiring
 from monitor.config import load_site
 from monitor.core import pipeline
-from monitor.core.errors import DeviceError
 from monitor.core.gather import nothing, stack
 from monitor.record.reader import Record
-from tests.system.commands import filled, start, wait_for
-
-DATA = Path(__file__).parents[2] / "simulators" / "data"
-
-
-@dataclass
-class Desk:
-    """A simulated board at ten readings a second, and a site file over it."""
-
-    folder: Path
-
-    def now(self) -> dict:
-        try:
-            return control.ask(self.folder / "record.sock", {"do": "now"})["now"]
-        except DeviceError:
-            return {}
-
-    def fault(self, *arguments: object) -> None:
-        command = [sys.executable, "-m", "simulators", "fault", "--control", self.folder / "faults"]
-        subprocess.run([*map(str, command), *map(str, arguments)], check=True, capture_output=True)
-
-    @contextmanager
-    def measuring(self) -> Iterator[subprocess.Popen[bytes]]:
-        daemon = start("measure", "--site", self.folder / "site.toml")
-        try:
-            wait_for(lambda: (self.now().get("device") or {}).get("connected"))
-            yield daemon
-        finally:
-            daemon.terminate()
-            daemon.wait(20)
-
-    def readings(self) -> int:
-        with Record.open(self.folder / "record.db") as record:
-            return sum(b.n for boot in record.boots() for b in record.raw_batches(boot.boot))
+from tests.system.commands import wait_for
+from tests.system.desk import Desk, live
 
 
 @pytest.fixture
 def desk(tmp_path: Path) -> Iterator[Desk]:
-    text = (DATA / "rehearsal-site.toml.in").read_text()
-    values = {
-        "{device}": str(tmp_path / "board"),
-        "{record}": str(tmp_path / "record.db"),
-        "{port}": "0",
-        "{calibration}": str(DATA / "board-calibration.toml"),
-        'clock = "board"\nclock_start = "{clock_start}"\n': 'clock = "arrival"\n',
-        "after_s = 60": "after_s = 3",
-        "commit_s = 10": "commit_s = 1",
-    }
-    (tmp_path / "site.toml").write_text(filled(text, values))
-    board = subprocess.Popen(
-        [sys.executable, "-m", "simulators", "board", "--link", tmp_path / "board", "--rate", "10",
-         "--control", tmp_path / "faults"],
-        stdout=subprocess.PIPE, text=True,
-    )  # fmt: skip
-    assert board.stdout is not None
-    assert json.loads(board.stdout.readline())["simulated"] is True
-    yield Desk(tmp_path)
-    board.terminate()
-    board.wait(10)
+    with live(tmp_path, tmp_path) as made:
+        yield made
 
 
 def test_killed_and_started_again_within_a_boot_the_windows_go_on(desk: Desk) -> None:
