@@ -24,6 +24,8 @@ from monitor.tomlfile import TopTable, pair, rows
 
 ELEMENTS = ("antenna", "cable", "attenuator", "filter")
 AXES = ("x", "y", "z")
+EXAMPLE_TEXTS = ("name of the laboratory", "number of the certificate", "serial number")
+"""What the examples say where a certificate is to be named: nothing stands behind it."""
 NS_PER_S = 1_000_000_000
 
 
@@ -37,12 +39,16 @@ A = TypeVar("A", bound=_OfAxis)
 
 @dataclass(frozen=True, slots=True)
 class Element:
-    """An antenna, cable, attenuator or filter; axis '' serves every axis."""
+    """An antenna, cable, attenuator or filter; axis '' serves every axis.
+
+    nameless: serial or certificate is still an example's text.
+    """
 
     where: Table
     kind: str
     name: str
     axis: str
+    nameless: bool
     curve: cal.FrequencyTable
 
 
@@ -64,9 +70,10 @@ def load_chain(path: Path, channels: Sequence[Channel], bands: Mapping[str, Band
 def _chain(
     top: TopTable, body: bytes, channels: Sequence[Channel], bands: Mapping[str, Band]
 ) -> cal.Chain:
-    due_utc_ns, valid_temperature_c = _certificate(top.table("calibration"))
+    due_utc_ns, valid_temperature_c, invented = _certificate(top.table("calibration"))
     detectors = _detectors(top)
     elements = [_element(table) for table in top.tables("element")]
+    invented |= any(element.nameless for element in elements)
     lines = [_contribution(table) for table in top.tables("contribution", [])]
     top.finish()
     if not lines:
@@ -87,7 +94,7 @@ def _chain(
         k=tuple(k for _, k in responses),
         k_mid=np.array([cal.middle(k) for _, k in responses]),
         contributions=contributions,
-        flags=_flags(channels, chosen),
+        flags=_flags(channels, chosen, invented),
         valid_temperature_c=valid_temperature_c,
         due_utc_ns=due_utc_ns,
         resolution=chosen[0].resolution,
@@ -96,10 +103,22 @@ def _chain(
     )
 
 
-def _certificate(table: Table) -> tuple[int, tuple[float, float]]:
-    """UTC ns from which the calibration is overdue (the end of its due day); valid temperatures."""
+def dated(chain: cal.Chain) -> datetime.date:
+    """The day on which a chain's file says that it was calibrated."""
+    top = tomlfile.parse(chain.document, "calibration file", "calibration file")
+    return _date(top.table("calibration"), "date")
+
+
+def _certificate(table: Table) -> tuple[int, tuple[float, float], bool]:
+    """UTC ns from which the calibration is overdue (the end of its due day); valid temperatures.
+
+    The last: whether the figures are said, or seen by an example's texts, to be invented.
+    """
+    invented = table.flag("invented", False)
     for key in ("id", "laboratory", "certificate"):
-        if not table.text(key).strip():
+        text = table.text(key).strip()
+        invented |= text in EXAMPLE_TEXTS
+        if not text:
             raise table.error(key, "is empty; write 'none' where there is none")
     date, due = _date(table, "date"), _date(table, "due")
     temperature_c = pair(table, "valid_temperature_c")
@@ -107,7 +126,7 @@ def _certificate(table: Table) -> tuple[int, tuple[float, float]]:
     if due <= date:
         raise table.error("due", f"{due} is not after date, {date}")
     end = datetime.datetime.combine(due, datetime.time(), datetime.UTC) + datetime.timedelta(days=1)
-    return int(end.timestamp()) * NS_PER_S, temperature_c
+    return int(end.timestamp()) * NS_PER_S, temperature_c, invented
 
 
 def _date(table: Table, key: str) -> datetime.date:
@@ -135,7 +154,7 @@ def _detectors(top: TopTable) -> list[Detector]:
 
 def _element(table: Table) -> Element:
     kind = table.text("type", choices=ELEMENTS)
-    serial, _ = table.text("serial"), table.text("certificate")
+    serial, certificate = table.text("serial").strip(), table.text("certificate").strip()
     axis = table.text("axis", "", AXES)
     values = rows(table, "table", "[frequency, dB]", frequency=True)
     table.finish()
@@ -145,7 +164,8 @@ def _element(table: Table) -> Element:
         curve = cal.FrequencyTable(values[:, 0], values[:, 1])
     except CalibrationError as error:
         raise table.error("table", str(error)) from None
-    return Element(table, kind, f"{kind} {serial}", axis, curve)
+    nameless = serial in EXAMPLE_TEXTS or certificate in EXAMPLE_TEXTS
+    return Element(table, kind, f"{kind} {serial}", axis, nameless, curve)
 
 
 def _response(
@@ -201,10 +221,12 @@ def _budget(
     return mine
 
 
-def _flags(channels: Sequence[Channel], detectors: Sequence[Detector]) -> int:
-    """What holds for every figure: fewer than three axes in a band, logs averaged."""
+def _flags(channels: Sequence[Channel], detectors: Sequence[Detector], invented: bool) -> int:
+    """What holds for every figure: fewer than three axes in a band, logs averaged, invented."""
     axes = Counter(channel.band for channel in channels)
     flags = Flag.COMPONENT_ONLY if min(axes.values()) < len(AXES) else Flag(0)
     if any(detector.averages == "log" for detector in detectors):
         flags |= Flag.LOG_AVERAGED
+    if invented:
+        flags |= Flag.INVENTED_CALIBRATION
     return int(flags)

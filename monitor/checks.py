@@ -10,11 +10,11 @@ from datetime import UTC, datetime, timedelta
 import numpy as np
 
 from monitor import limitsets
-from monitor.calfile import load_chain
+from monitor.calfile import dated, load_chain
 from monitor.config import Site
 from monitor.core.alarms import watches
 from monitor.core.calibration import Chain, CountTable
-from monitor.core.errors import ConfigError, LimitError
+from monitor.core.errors import CalibrationError, ConfigError, LimitError
 from monitor.core.exposure import CAP_DB, E_ALONE_FROM_HZ, scope_coefficients
 from monitor.core.flags import Flag
 from monitor.core.limits import Scope, frequency_text, ratio_per_e2, scopes
@@ -22,6 +22,8 @@ from monitor.core.quantities import dbm_from_w
 from monitor.core.uncertainty import coverage_factor, standard_db
 
 DUE_SOON_DAYS = 60
+AHEAD_OF_UTC = timedelta(hours=14)
+"""Where the day begins first, a certificate may bear tomorrow's date of UTC (RFC 3339 offsets)."""
 TELL_NO_TEMPERATURE = ("text_lines", "level_series", "iq_file")
 OUTSIDE_TEXTS = {
     "filter": "a filter keeps out signals outside it",
@@ -48,6 +50,7 @@ def findings(
     DeviceError (3), one line each.
     """
     chain = load_chain(site.calibration, site.channels, site.bands)
+    _refuse_future(site, chain, now_utc_ns)
     tops = [(scope, _top(site, chain, scope)) for scope in _scopes(site)]
     yield from _site(site)
     yield from _calibration(chain, now_utc_ns)
@@ -60,6 +63,21 @@ def findings(
         n = len(watches([rule], [scope for scope, _ in tops]))
         text = f"{rule.name}: raised at an exposure ratio of {rule.ratio:g}, in {n} scopes"
         yield Finding("alert", text, n > 0)
+
+
+def refuse_future(site: Site, now_utc_ns: int) -> None:
+    """CalibrationError where the site's calibration is dated in the future."""
+    chain = load_chain(site.calibration, site.channels, site.bands)
+    _refuse_future(site, chain, now_utc_ns)
+
+
+def _refuse_future(site: Site, chain: Chain, now_utc_ns: int) -> None:
+    now, date = _EPOCH + timedelta(microseconds=now_utc_ns // 1000), dated(chain)
+    if date > (now + AHEAD_OF_UTC).date():
+        raise CalibrationError(
+            f"{site.calibration.name}: calibration.date: {date} lies in the future, this machine's "
+            f"clock says {now:%Y-%m-%d}; look at the date or the clock"
+        )
 
 
 def _site(site: Site) -> Iterator[Finding]:
@@ -84,6 +102,13 @@ def _calibration(chain: Chain, now_utc_ns: int) -> Iterator[Finding]:
             yield Finding("calibration", f"{text}, in {int(days)} days", ok=False)
         else:
             yield Finding("calibration", text)
+    if chain.flags & Flag.INVENTED_CALIBRATION:
+        yield Finding(
+            "calibration",
+            "figures of an example, invented: nothing will ever conform; once every figure and "
+            "every name is yours, take out invented = true",
+            ok=False,
+        )
     if chain.flags & Flag.LOG_AVERAGED:
         yield Finding(
             "calibration", "the board averages logs: every figure is a lower bound", ok=False

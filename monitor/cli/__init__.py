@@ -31,10 +31,17 @@ class LazyGroup(click.Group):
         return command
 
 
-@click.group(cls=LazyGroup, context_settings={"help_option_names": ["-h", "--help"]})
+@click.group(
+    cls=LazyGroup,
+    invoke_without_command=True,
+    context_settings={"help_option_names": ["-h", "--help"]},
+)
 @click.version_option(package_name="fieldsill")
-def group() -> None:
+@click.pass_context
+def group(context: click.Context) -> None:
     """Unattended, logging monitor of radio-frequency exposure."""
+    if context.invoked_subcommand is None:
+        click.echo(context.get_help())
 
 
 def main(argv: list[str] | None = None) -> None:

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 import click
 
 from monitor import limitsets
@@ -9,7 +11,7 @@ from monitor.cli import levels
 from monitor.cli.output import print_json
 from monitor.core.errors import ConfigError
 from monitor.core.limits import POPULATIONS, UNITS, frequency_text
-from monitor.core.total import Level, Term, Total, totals
+from monitor.core.total import H_NEEDED_BELOW_HZ, Level, Term, Total, totals
 
 CAUTION = (
     "The levels are taken as means over the averaging time, as they were given. Which limits"
@@ -31,20 +33,32 @@ def command(set_id: str, population: str, at: tuple[str, ...], as_json: bool) ->
     found = totals(held, population, given)
     if not found:
         raise ConfigError(f"{set_id}: nothing to compare for {population}; give E or S levels")
+    alone = _alone(given)
     if as_json:
         print_json(
             {
                 "set": held.id,
                 "edition": held.edition,
                 "population": population,
+                "cannot_be_decided": alone or None,
                 "totals": [_document(total) for total in found],
             }
         )
         return
     click.echo(f"{held.id}, edition {held.edition}, {population.replace('_', ' ')}")
     for total in found:
-        _print(total)
+        _print(total, _beside(total, alone, len(given)))
     click.echo(CAUTION)
+
+
+def _alone(given: Sequence[Level]) -> str:
+    """Why no sum decides anything: "E alone" below 30 MHz; "" where nothing stands in the way."""
+    low = [level for level in given if level.frequency_hz < H_NEEDED_BELOW_HZ]
+    lone = set()
+    for hz in {level.frequency_hz for level in low}:
+        have = {level.quantity for level in low if level.frequency_hz == hz}
+        lone |= set() if have >= {"E", "H"} else have
+    return f"{' or '.join(sorted(lone))} alone" if lone else ""
 
 
 def _document(total: Total) -> dict[str, object]:
@@ -71,7 +85,7 @@ def _document(total: Total) -> dict[str, object]:
     }
 
 
-def _print(total: Total) -> None:
+def _print(total: Total, beside: str) -> None:
     if total.averaging_s is None:
         time = "averaging times differ"
     elif total.averaging_s == 0.0:
@@ -80,7 +94,7 @@ def _print(total: Total) -> None:
         time = f"mean over {total.averaging_s / 60.0:.4g} min"
     click.echo(
         f"\n{total.scope.replace('_', '-')}, {time}: total exposure ratio"
-        f" {total.exposure_ratio:.4g} ({_beside(total.exposure_ratio)})"
+        f" {total.exposure_ratio:.4g} ({beside})"
     )
     for term in total.terms:
         click.echo("  " + _line(term))
@@ -90,10 +104,15 @@ def _print(total: Total) -> None:
         click.echo("  Note: figures from memory; not confirmed against the published text")
 
 
-def _beside(ratio: float) -> str:
-    if ratio > 1.0:
-        return "above the limit"
-    return "at the limit" if ratio == 1.0 else "below the limit"
+def _beside(total: Total, alone: str, given: int) -> str:
+    """Where the sum stands, and no more than the levels given allow to say."""
+    whole = len(total.terms) == given or total.scope == "instantaneous"
+    what = "sum" if whole else "sum of a part"
+    at = "above" if total.exposure_ratio > 1.0 else "at" if total.exposure_ratio == 1.0 else "below"
+    if not alone:
+        return f"{what} {at} 1, without uncertainty"
+    unsure = f"cannot be decided ({alone})"
+    return f"{what} above 1; {unsure}" if at == "above" else unsure
 
 
 def _line(term: Term) -> str:

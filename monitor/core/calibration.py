@@ -15,6 +15,7 @@ from monitor.core.errors import CalibrationError
 from monitor.core.flags import Flag
 from monitor.core.limits import frequency_text
 from monitor.core.quantities import PORT_OHM
+from monitor.core.readings import MISSING
 from monitor.core.uncertainty import Contribution, Real
 
 Bits = NDArray[np.int32]
@@ -45,12 +46,16 @@ class CountTable:
             raise CalibrationError(f"a count table has {n} entries; 1 to {MAX_TABLE} are possible")
 
     def convert(self, counts: NDArray[np.int32]) -> tuple[Real, Bits]:
-        """Power in W (nan: no reading) and flags of raw counts; both of the shape of counts."""
+        """Power in W (nan: no reading) and flags of raw counts; both of the shape of counts.
+
+        A count beyond the table on its strong side is above range, too: such a gap is not quiet.
+        """
         index = counts.astype(np.int64) - self.first_count
-        inside = (index >= 0) & (index < self.power_w.size)
-        index = np.where(inside, index, 0)
-        power_w = np.where(inside, self.power_w[index], np.nan)
-        flags = np.where(inside, self.flags[index], np.int32(Flag.NO_SIGNAL_WIRE))
+        nearest = np.clip(index, 0, self.power_w.size - 1)
+        inside = index == nearest
+        power_w = np.where(inside, self.power_w[nearest], np.nan)
+        strong = np.where(counts == MISSING, 0, self.flags[nearest] & int(Flag.ABOVE_RANGE))
+        flags = np.where(inside, self.flags[nearest], strong | int(Flag.NO_SIGNAL_WIRE))
         return power_w, flags.astype(np.int32)
 
     def to_bytes(self) -> bytes:

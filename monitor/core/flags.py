@@ -22,6 +22,7 @@ class Flag(IntFlag):
     SUPPLY_OUT_OF_RANGE = 2048
     GAP = 4096
     TEMPERATURE_UNKNOWN = 8192
+    INVENTED_CALIBRATION = 16384  # figures of an example: no certificate stands behind them
 
 
 LOWER_BOUND = Flag.ABOVE_RANGE | Flag.CLIPPED | Flag.LOG_AVERAGED | Flag.COMPONENT_ONLY
@@ -42,6 +43,7 @@ WORDS = {
     Flag.SUPPLY_OUT_OF_RANGE: "supply voltage out of range",
     Flag.GAP: "gap",
     Flag.TEMPERATURE_UNKNOWN: "temperature of the instrument not known",
+    Flag.INVENTED_CALIBRATION: "calibration figures are invented",
 }
 
 

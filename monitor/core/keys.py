@@ -35,9 +35,15 @@ class Table:
         self._known.append(key)
         if key not in self._values:
             if default is REQUIRED:
-                raise self.error(key, f"missing; add {key} = ...")
+                raise self.error(key, self._missing(key))
             return default
         return self._values[key]
+
+    def _missing(self, key: str) -> str:
+        """What to do about a required key: the one that nothing asked for may be meant."""
+        unread = [other for other in self._values if other not in self._known]
+        near = difflib.get_close_matches(key, unread, 1, 0.79)
+        return f"missing; did you mean {key} by {near[0]}?" if near else f"missing; add {key} = ..."
 
     def text(self, key: str, default: Any = REQUIRED, choices: Sequence[str] = ()) -> str:
         """A text, one of choices where they are given."""

@@ -18,6 +18,8 @@ EXAMPLES = Path(__file__).parents[2] / "hardware" / "examples"
 SITE = "level-series-site.toml"
 CALIBRATION = "level-series-calibration.toml"
 NS_PER_DAY = 86_400_000_000_000
+NOW_NS = 1_790_000_000_000_000_000
+"""In September 2026."""
 
 
 @pytest.fixture
@@ -100,7 +102,7 @@ def test_what_limits_a_verdict_is_noted(folder: Path) -> None:
     change(folder / CALIBRATION, 'averages = "power"', 'averages = "log"')
     change(folder / CALIBRATION, "value = 2.0", "value = 5.0")
     change(folder / SITE, '"undeclared"', '"reactive_near"')
-    notes = [f.text for f in findings(load_site(folder / SITE), 0, lambda _: []) if not f.ok]
+    notes = [f.text for f in findings(load_site(folder / SITE), NOW_NS, lambda _: []) if not f.ok]
     assert any("averages logs" in text for text in notes)
     assert any("above 4 dB nothing will conform" in text for text in notes)
     assert any("no verdict from E alone" in text for text in notes)
@@ -117,7 +119,24 @@ def test_what_limits_a_verdict_is_noted(folder: Path) -> None:
             2,
             "element[1].table: antenna serial number covers",
         ),
-        (SITE, "hold_s = 60", "hold = 60", 2, "site.toml: sensor.hold_s: missing"),
+        (
+            SITE,
+            "hold_s = 60",
+            "hold = 60",
+            2,
+            "site.toml: sensor.hold_s: missing; did you mean hold_s by hold?",
+        ),
+        (
+            SITE,
+            "occupancy",
+            "ocupancy",
+            2,
+            "site.occupancy: missing; did you mean occupancy by ocupancy?",
+        ),
+        (SITE, 'occupancy = "public"', "", 2, "site.occupancy: missing; add occupancy = ..."),
+        (CALIBRATION, "date = 2024", "date = 2084", 2, "due"),
+        (CALIBRATION, "2024-02-01\ndue = 2027", "2084-02-01\ndue = 2085", 2, "look at the date"),
+        (CALIBRATION, "invented = true", "invented = 1", 2, "calibration.invented: 1 is neither"),
         (SITE, "[silence]", "[silense]", 2, "silense: unknown key; did you mean silence?"),
         (SITE, 'pace = "full"', 'speed = "full"', 2, "sensor.speed: unknown key"),
         (SITE, '"icnirp-2020"', '"icnirp-2021"', 2, "'icnirp-2021' is not known; known: "),

@@ -28,7 +28,7 @@ def test_keys_and_sum(capsys: pytest.CaptureFixture[str]) -> None:
 def test_above_a_limit_is_an_answer_and_not_a_failure(capsys: pytest.CaptureFixture[str]) -> None:
     found = run(capsys, [*PUBLIC, "--at", "900MHz=100"])
     assert found.code == 0
-    assert "above the limit" in found.out
+    assert "(sum above 1, without uncertainty)" in found.out
 
 
 def test_bare_numbers_are_hz_and_v_per_m(capsys: pytest.CaptureFixture[str]) -> None:
@@ -51,10 +51,44 @@ def test_units(capsys: pytest.CaptureFixture[str], text: str, same: str) -> None
 
 def test_for_people(capsys: pytest.CaptureFixture[str]) -> None:
     out = run(capsys, [*PUBLIC, "--at", "3.5GHz=6V/m"]).out
-    assert "whole-body, mean over 30 min: total exposure ratio 0.009556 (below the limit)" in out
+    assert "whole-body, mean over 30 min: total exposure ratio 0.009556" in out
+    assert "(sum below 1, without uncertainty)" in out
     assert "3.5 GHz: S 0.09556 W/m2 against 10 W/m2 (Table 5): 0.009556" in out
     assert "E taken as S of a plane wave" in out
     assert "local codes" in out
+
+
+@pytest.mark.parametrize(
+    ("at", "words"),
+    [
+        (["10MHz=20V/m"], "(cannot be decided (E alone))"),
+        (["10MHz=200V/m"], "(sum above 1; cannot be decided (E alone))"),
+        (["10MHz=5mA/m"], "(cannot be decided (H alone))"),
+        (["10MHz=20V/m", "900MHz=3V/m"], "(cannot be decided (E alone))"),
+        (["10MHz=20V/m", "10MHz=5mA/m"], "(sum below 1, without uncertainty)"),
+        (["30MHz=3V/m"], "(sum below 1, without uncertainty)"),
+    ],
+)
+def test_below_30_mhz_one_field_alone_decides_nothing(
+    capsys: pytest.CaptureFixture[str], at: list[str], words: str
+) -> None:
+    """ICNIRP 2020, notes to the reference levels."""
+    levels = [part for level in at for part in ("--at", level)]
+    out = run(capsys, [*PUBLIC, *levels]).out
+    assert words in out.split("whole-body")[1].splitlines()[0]
+    assert "below the limit" not in out
+    said = run(capsys, [*PUBLIC, *levels, "--json"]).document["cannot_be_decided"]
+    assert said == ("E alone" if "E alone" in words else "H alone" if "H alone" in words else None)
+
+
+def test_a_sum_that_lacks_a_level_is_one_of_a_part(capsys: pytest.CaptureFixture[str]) -> None:
+    """The set holds local levels above 6 GHz only; at 5 MHz it has some that are not averaged."""
+    arguments = ["ratio", "--set", "ieee-c95.1-2019", "--population", "general_public"]
+    levels = ["900MHz=3V/m", "200GHz=0.1W/m2"]
+    out = run(capsys, [*arguments, *(part for level in levels for part in ("--at", level))]).out
+    whole, local = (line for line in out.splitlines() if "total exposure ratio" in line)
+    assert "(sum below 1, without uncertainty)" in whole
+    assert "(sum of a part below 1, without uncertainty)" in local
 
 
 def test_figures_from_memory_say_so(capsys: pytest.CaptureFixture[str]) -> None:

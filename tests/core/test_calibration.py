@@ -35,6 +35,22 @@ def test_convert_keeps_the_shape_and_knows_what_is_no_reading() -> None:
     assert flags.dtype == np.int32
 
 
+def test_beyond_the_strong_end_of_the_table_is_above_range() -> None:
+    """There an overload looks like a broken wire; what is missing altogether is neither."""
+    over = WIRE | int(Flag.ABOVE_RANGE)
+    power = np.array([np.nan, 2e-6, np.nan])
+    counts = np.array([4, 5, 6, 7, 8, 2**31 - 1, MISSING], np.int32)
+    rising = cal.CountTable(5, power, np.array([WIRE, 0, over], np.int32))
+    np.testing.assert_array_equal(
+        rising.convert(counts)[1], [WIRE, WIRE, 0, over, over, over, WIRE]
+    )
+    falling = cal.CountTable(5, power, np.array([over, 0, WIRE], np.int32))
+    np.testing.assert_array_equal(
+        falling.convert(counts)[1], [over, over, 0, WIRE, WIRE, WIRE, WIRE]
+    )
+    assert np.isnan(falling.convert(counts)[0][[0, 4, 5, 6]]).all()
+
+
 def test_convert_of_nothing_is_nothing() -> None:
     power_w, flags = small().convert(np.empty((0, 3), np.int32))
     assert power_w.shape == flags.shape == (0, 3)

@@ -247,3 +247,9 @@ def test_the_coefficient_covers_every_frequency(pairs: list[tuple[float, float]]
     worst = scope_coefficients(k, per_e2)
     assert all(worst >= a * b for a, b in pairs)
     assert any(worst == a * b for a, b in pairs)
+
+
+def test_invented_calibration_figures_never_conform() -> None:
+    assert verdict(flags=int(Flag.INVENTED_CALIBRATION)) is Verdict.UNDECIDED
+    said = reasons(**arguments(flags=int(Flag.INVENTED_CALIBRATION)))
+    assert "the stated uncertainty does not cover this: calibration figures are invented" in said

@@ -248,3 +248,32 @@ def test_every_example_has_a_chain(path: Path) -> None:
     chain = load_chain(site.calibration, site.channels, site.bands)
     assert len(chain.tables) == len(site.channels)
     assert chain.resolution == site.sensor_options.get("resolution", chain.resolution)
+
+
+@pytest.mark.parametrize(
+    ("old", "new", "invented"),
+    [
+        ("", "", False),
+        ('id = "board 7"', 'id = "board 7"\ninvented = false', False),
+        ('id = "board 7"', 'id = "board 7"\ninvented = true', True),
+        ('laboratory = "none"', 'laboratory = "name of the laboratory"', True),
+        ('certificate = "none"', 'certificate = "number of the certificate "', True),
+        ('serial = "a1"', 'serial = "serial number"', True),
+        ('serial = "c1"\ncertificate = "none"', 'serial = "c1"\ncertificate = "number of the'
+         ' certificate"', True),
+    ],
+)  # fmt: skip
+def test_figures_without_a_certificate_are_invented(
+    tmp_path: Path, old: str, new: str, invented: bool
+) -> None:
+    assert old in FILE
+    path = tmp_path / "calibration.toml"
+    path.write_text(FILE.replace(old, new, 1), encoding="utf-8")
+    channels = [Channel(axis, axis, "b") for axis in "xyz"]
+    chain = load_chain(path, channels, {"b": Band("b", 8e8, 2e9)})
+    assert bool(chain.flags & Flag.INVENTED_CALIBRATION) is invented
+
+
+@pytest.mark.parametrize("path", sorted(EXAMPLES.glob("*-calibration.toml")), ids=lambda p: p.name)
+def test_the_examples_say_that_they_are_invented(path: Path) -> None:
+    assert "\ninvented = true\n" in path.read_text(encoding="utf-8")

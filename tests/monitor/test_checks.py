@@ -9,12 +9,14 @@ from pathlib import Path
 import pytest
 
 from hardware import settings_for
-from monitor.checks import Finding, compare_bands, findings
+from monitor.checks import Finding, compare_bands, findings, refuse_future
 from monitor.config import Site, load_site
-from monitor.core.errors import ConfigError
+from monitor.core.errors import CalibrationError, ConfigError
 
 EXAMPLES = Path(__file__).parents[2] / "hardware" / "examples"
 BINS_HZ = 1.92e6 / 1024
+NOW_NS = 1_790_000_000_000_000_000
+"""In September 2026."""
 
 
 def example(kind: str) -> Site:
@@ -24,7 +26,7 @@ def example(kind: str) -> Site:
 
 def noted(site: Site, where: str) -> list[Finding]:
     """What is found about one thing; the front end is left out."""
-    return [found for found in findings(site, 0, lambda _: []) if found.where == where]
+    return [found for found in findings(site, NOW_NS, lambda _: []) if found.where == where]
 
 
 @pytest.mark.parametrize(
@@ -108,3 +110,31 @@ def test_a_channel_without_a_band_of_its_own_is_refused() -> None:
 
 def test_a_sensor_without_bands_has_none_to_compare() -> None:
     assert compare_bands(example("detector-board"), None, 0.0) is None
+
+
+def test_an_examples_figures_are_noted_as_invented(tmp_path: Path) -> None:
+    texts = [found.text for found in noted(example("detector-board"), "calibration")]
+    assert [text for text in texts if "invented" in text] == [
+        "figures of an example, invented: nothing will ever conform; once every figure and every"
+        " name is yours, take out invented = true"
+    ]
+
+
+@pytest.mark.parametrize("hours", [-14.5, -13.5])
+def test_a_calibration_of_tomorrow_is_one_of_today_elsewhere_and_of_later_none(
+    hours: float,
+) -> None:
+    """It is dated 2024-09-14; the earliest time zone is 14 h ahead of UTC."""
+    now_ns = 1_726_272_000_000_000_000 + round(hours * 3600e9)
+    site = example("detector-board")
+    if hours > -14:
+        assert refuse_future(site, now_ns) is None
+        return
+    with pytest.raises(CalibrationError) as caught:
+        refuse_future(site, now_ns)
+    assert str(caught.value) == (
+        "detector-board-calibration.toml: calibration.date: 2024-09-14 lies in the future, this"
+        " machine's clock says 2024-09-13; look at the date or the clock"
+    )
+    with pytest.raises(CalibrationError, match="lies in the future"):
+        list(findings(site, now_ns, lambda _: []))
