@@ -49,6 +49,14 @@ def data_folder() -> Path:
     return Path(next(iter(spec.submodule_search_locations))) / "data"
 
 
+def scenarios() -> list[str]:
+    """Names of the scenes that are shipped; none where the simulators are not installed."""
+    try:
+        return sorted(path.stem for path in (data_folder() / "scenes").glob("*.toml"))
+    except ConfigError:
+        return []
+
+
 def free_port(host: str = "127.0.0.1") -> int:
     """A port of the loopback that nothing listens on now."""
     with socket.socket() as probe:

@@ -28,6 +28,7 @@ from monitor.core.rows import Event
 from monitor.core.silence import KEY as SILENCE
 from monitor.core.station import Station, station
 from monitor.daemon import RECORD, Daemon
+from monitor.listening import heard, left_alone
 from monitor.record import connect
 from monitor.record.background import WriterThread
 from monitor.record.reader import Record
@@ -122,6 +123,21 @@ def check(site: Site) -> list[Finding]:
         connect.refuse_other_mark(site.record_path, mark, site.simulated)
         found.append(Finding("record", f"{site.record_path}: will be continued"))
     return found
+
+
+def listen(site: Site, seconds: float) -> Finding:
+    """What the sensor's line gives within that time; the line is let go afterwards."""
+    alone = left_alone(site)
+    if alone is not None:
+        return alone
+    clock, settings = SystemClock(), sensor_settings(site)
+    front = open_front_end(
+        settings, len(site.channels), clock.boot_ns, clock.utc_ns, site.simulated
+    )
+    try:
+        return heard(front, site, seconds, clock.boot_ns)
+    finally:
+        front.close()
 
 
 def daemon_for(site: Site, *, history_s: float | None = None) -> Daemon:

@@ -12,8 +12,16 @@ from monitor.config import default_site_path, load_site
 
 @click.command("check")
 @click.option("--site", "site_file", help="Site file; else $FIELDSILL_SITE, ./site.toml, /etc.")
+@click.option(
+    "--listen",
+    "listen_s",
+    type=click.FloatRange(0.0, 600.0),
+    default=3.0,
+    show_default=True,
+    help="Seconds to listen to a serial line; 0: not at all.",
+)
 @click.option("--json", "as_json", is_flag=True, help="One JSON document.")
-def command(site_file: str | None, as_json: bool) -> None:
+def command(site_file: str | None, listen_s: float, as_json: bool) -> None:
     """Read the site file and all that it names; say what fits and what cannot be judged.
 
     Ends with 0 where the site can run, with 2 or 3 and one line where it cannot.
@@ -23,6 +31,8 @@ def command(site_file: str | None, as_json: bool) -> None:
     from monitor import wiring
 
     found = list(findings(site, SystemClock().utc_ns(), wiring.check))
+    if listen_s and site.sensor_kind not in wiring.RECORDED:
+        found.append(wiring.listen(site, listen_s))
     if as_json:
         rows = [{"where": f.where, "text": f.text, "ok": f.ok} for f in found]
         judged = all(f.ok for f in found)

@@ -23,7 +23,12 @@ _SECONDS = {"s": 1.0, "min": 60.0, "h": 3600.0, "d": 86400.0}
 
 
 @click.command("rehearse")
-@click.option("--scenario", default="busy-day", show_default=True, help="Scene, or a file of one.")
+@click.option(
+    "--scenario",
+    default="busy-day",
+    show_default=True,
+    help=f"{', '.join(rehearsal.scenarios())}, or a file of one.",
+)
 @click.option("--history", default="24h", show_default=True, help="Made at full speed: 24h, 90d.")
 @click.option("--seed", default=1, show_default=True, help="The same seed, the same readings.")
 @click.option("--port", type=click.IntRange(0, 65535), default=0, help="Pages; 0: a free one.")
@@ -112,6 +117,8 @@ def _run(plan: rehearsal.Rehearsal, stop: threading.Event, exit_at_end: bool) ->
         supervise.end(children)
         board.terminate()
         board.wait()
+        if stop.is_set():
+            click.echo(supervise.stopped(plan.record_path))
 
 
 def _announce(plan: rehearsal.Rehearsal, exit_at_end: bool) -> None:
@@ -119,7 +126,7 @@ def _announce(plan: rehearsal.Rehearsal, exit_at_end: bool) -> None:
     click.echo(f"Scenario {plan.scenario}, seed {plan.seed}; board simulated on {plan.device}")
     click.echo(f"Record: {plan.record_path}   Truth: {plan.folder / 'truth.csv'}")
     if not exit_at_end:
-        click.echo(f"Pages: http://127.0.0.1:{plan.port}/ (this machine only, no account)")
+        click.echo("The pages are for this machine only and ask for no account.")
     click.echo(f"Stop: Ctrl-C.   Delete: rm -r {plan.folder}")
 
 

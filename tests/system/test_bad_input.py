@@ -44,12 +44,44 @@ def test_one_line_and_nothing_written(wrong: str, command: str, tmp_path: Path) 
     before = sorted(tmp_path.iterdir())
     done = fieldsill(command, "--site", tmp_path / SITE)
     assert done.returncode == code, done.stderr
+    assert done.stdout == ""
     lines = done.stderr.splitlines()
     assert len(lines) == 1, done.stderr
     assert lines[0].startswith("fieldsill: ")
     for word in words:
         assert word in lines[0]
     assert sorted(tmp_path.iterdir()) == before
+
+
+@pytest.mark.parametrize("command", ["check", "run"])
+def test_a_calibration_of_the_future_is_refused(command: str, tmp_path: Path) -> None:
+    for each in (SITE, CALIBRATION):
+        text = (EXAMPLES / each).read_text()
+        text = text.replace("date = 2024", "date = 2124").replace("due = 2027", "due = 2127")
+        (tmp_path / each).write_text(text)
+    done = fieldsill(command, "--site", tmp_path / SITE)
+    assert (done.returncode, done.stdout) == (2, "")
+    (line,) = done.stderr.splitlines()
+    assert line.startswith(f"fieldsill: {CALIBRATION}: calibration.date: 2124-09-14 lies in the")
+    assert line.endswith("look at the date or the clock")
+    assert len(list(tmp_path.iterdir())) == 2
+
+
+def test_without_a_command_the_help_is_printed_as_it_is_laid_out() -> None:
+    done = fieldsill()
+    assert (done.returncode, done.stderr) == (0, "")
+    assert done.stdout == fieldsill("--help").stdout
+    assert "\n  rehearse " in done.stdout
+
+
+def test_rehearse_names_its_scenes() -> None:
+    words = fieldsill("rehearse", "--help").stdout.split()
+    assert {"busy-day,", "over-limit,", "quiet,"} <= set(words)
+    done = fieldsill("rehearse", "--scenario", "storm", "--exit")
+    assert done.returncode == 2
+    (line,) = done.stderr.splitlines()
+    assert "'storm'" in line
+    assert "busy-day, over-limit, quiet" in line
 
 
 def test_too_long_a_rehearsal_leaves_no_folder(tmp_path: Path) -> None:
