@@ -87,8 +87,11 @@ def _site(site: Site) -> Iterator[Finding]:
         yield Finding("site.field_region", "undeclared: nothing will ever conform", ok=False)
     elif site.field_region == "reactive_near":
         yield Finding("site.field_region", "reactive near field: no verdict from E alone", ok=False)
+    elif site.field_region == "radiating_near":
+        text = "radiating near field: nothing will conform, for E alone does not show it there"
+        yield Finding("site.field_region", text, ok=False)
     else:
-        yield Finding("site.field_region", site.field_region.replace("_", " ") + " field")
+        yield Finding("site.field_region", "far field")
 
 
 def _calibration(chain: Chain, now_utc_ns: int) -> Iterator[Finding]:
@@ -128,7 +131,8 @@ def _temperature(site: Site, chain: Chain) -> Iterator[Finding]:
         low, high = chain.valid_temperature_c
         yield Finding(
             "sensor",
-            f"tells no temperature: that it was between {low:g} and {high:g} °C is assumed",
+            f"tells no temperature; whether it is between {low:g} and {high:g} °C is not known: "
+            "nothing will conform",
             ok=False,
         )
 

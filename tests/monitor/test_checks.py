@@ -54,7 +54,9 @@ def test_each_band_is_asked() -> None:
 )
 def test_a_sensor_that_tells_no_temperature_is_noted(kind: str, span: str) -> None:
     (found,) = noted(example(kind), "sensor")
-    assert found.text == f"tells no temperature: that it was between {span} °C is assumed"
+    assert found.text == (
+        f"tells no temperature; whether it is between {span} °C is not known: nothing will conform"
+    )
     assert not found.ok
 
 
@@ -138,3 +140,18 @@ def test_a_calibration_of_tomorrow_is_one_of_today_elsewhere_and_of_later_none(
     )
     with pytest.raises(CalibrationError, match="lies in the future"):
         list(findings(site, now_ns, lambda _: []))
+
+
+@pytest.mark.parametrize(
+    ("region", "words", "ok"),
+    [
+        ("far", "far field", True),
+        ("radiating_near", "nothing will conform", False),
+        ("reactive_near", "no verdict from E alone", False),
+        ("undeclared", "nothing will ever conform", False),
+    ],
+)
+def test_only_the_far_field_lets_anything_conform(region: str, words: str, ok: bool) -> None:
+    (found,) = noted(replace(example("detector-board"), field_region=region), "site.field_region")
+    assert words in found.text
+    assert found.ok is ok
