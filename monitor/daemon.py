@@ -10,6 +10,7 @@ from monitor.alarm_desk import AlarmDesk, text_of
 from monitor.config import Site
 from monitor.core import pipeline
 from monitor.core.errors import ConfigError
+from monitor.core.gather import Gathered
 from monitor.core.judgement import MINUTE_NS
 from monitor.core.readings import NS_PER_S, Batch, DeviceStatus, FrontEnd
 from monitor.core.rows import Event
@@ -47,12 +48,15 @@ class Daemon:
         *,
         history_s: float | None = None,
         fixes: Sequence[ClockFix] = (),
+        rows: Gathered | None = None,
     ) -> None:
         self._site, self._here, self._front, self._writer = site, here, front, writer
         self._clock, self._state, self._desk = clock, state, desk
         self._history_ns = None if history_s is None else round(history_s * NS_PER_S)
         self._bulk_ns = state.front_ns
         self._spool = Spool()
+        if rows is not None:
+            self._spool.add_rows(rows)
         self._lock = threading.Lock()
         self._asked: list[Event] = []
         self._fixes = Fixes(clock, front.clock_fix, front.owns_clock, fixes)
@@ -82,7 +86,7 @@ class Daemon:
         finally:
             self.note(Event(self._state.front_ns, "stop", "daemon", {}))
             self._take_asked()
-            self._commit(wait_s=LAST_WORDS_S)
+            self._commit(wait_s=LAST_WORDS_S, all_rows=True)
             self._front.close()
             self._writer.close(LAST_WORDS_S)
 
@@ -173,7 +177,7 @@ class Daemon:
             due = due or self._state.front_ns - self._bulk_ns >= BULK_NS or self._caught_up()
         over = self._status.ended and not self.ended.is_set()
         if due or (over and not came.n):
-            self._commit(wait_s=READ_S if self._front.owns_clock else 0.0)
+            self._commit(wait_s=READ_S if self._front.owns_clock else 0.0, all_rows=over)
         if over and self._spool.empty and self._writer.flush(READ_S):
             self.ended.set()
 
@@ -189,15 +193,18 @@ class Daemon:
         """Why something is not in the record, or ""."""
         return self._writer.error or self._writer.refusal
 
-    def _commit(self, wait_s: float) -> None:
+    def _commit(self, wait_s: float, all_rows: bool = False) -> None:
         self._committed_ns = self._clock.boot_ns()
         self._bulk_ns = self._state.front_ns
         self._stuck = False
         if self._spool.empty:
             return
-        commit = self._spool.commit(self._status.temperature_c, self._here.chain.identity)
+        with_rows = all_rows or self._front.owns_clock or self._spool.minute
+        commit = self._spool.commit(
+            self._status.temperature_c, self._here.chain.identity, with_rows
+        )
         if self._writer.put(None, commit, wait_s > 0, wait_s):
-            self._spool.clear()
+            self._spool.clear(with_rows)
         else:
             self._stuck = True
             self._spool.give_up(self._state.front_ns)

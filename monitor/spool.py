@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 
 import numpy as np
 
@@ -22,6 +23,7 @@ class Spool:
     """Gathers the output of steps until a commit takes it."""
 
     def __init__(self) -> None:
+        self._rows = nothing()
         self.clear()
 
     def add(self, batch: Batch, rows: Gathered) -> None:
@@ -44,10 +46,23 @@ class Spool:
         """Whether there is nothing to write."""
         return not (self._raw or self._rows.blocks or self._rows.events or self._fixes)
 
-    def commit(self, temperature_c: float | None, calibration: str) -> Commit:
-        """All that is here as one commit; it stays here until clear()."""
-        rows = self._rows
-        events = sorted(rows.events, key=lambda event: event.boot_ns)
+    def add_rows(self, rows: Gathered) -> None:
+        """Rows without readings: what a run before had not written yet."""
+        self._rows.extend(rows)
+
+    @property
+    def minute(self) -> bool:
+        """Whether a minute's windows are here: time to write rows."""
+        return bool(self._rows.windows)
+
+    def commit(self, temperature_c: float | None, calibration: str, with_rows: bool) -> Commit:
+        """What is here as one commit; it stays here until clear().
+
+        Blocks and windows go once a minute: they can be made again of the raw counts, and written
+        each time they would wear the medium by a third more.
+        """
+        rows = self._rows if with_rows else nothing()
+        events = sorted(self._rows.events, key=lambda event: event.boot_ns)
         return Commit(
             _joined(self._raw),
             stack(rows.blocks),
@@ -60,10 +75,11 @@ class Spool:
             calibration,
         )
 
-    def clear(self) -> None:
+    def clear(self, with_rows: bool = True) -> None:
         """Forget what has been handed over."""
+        kept = nothing() if with_rows else replace(self._rows, events=[])
         self._raw: list[Batch] = []
-        self._rows = nothing()
+        self._rows = kept
         self._fixes: list[ClockFix] = []
         self._readings = 0
 

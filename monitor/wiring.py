@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import hashlib
 from collections.abc import Sequence
-from pathlib import Path
 
 import numpy as np
 
@@ -15,7 +14,6 @@ from monitor.calfile import load_chain
 from monitor.checks import Finding, compare_bands
 from monitor.clock import SystemClock
 from monitor.config import Site
-from monitor.core import pipeline
 from monitor.core.alarms import AlertRule, watches
 from monitor.core.calibration import Chain
 from monitor.core.errors import ConfigError
@@ -23,7 +21,6 @@ from monitor.core.exposure import least_coefficient, scope_coefficients
 from monitor.core.judgement import GAPS
 from monitor.core.limits import Scope, ratio_per_e2, scopes
 from monitor.core.readings import FrontEnd
-from monitor.core.resume import resume, since_ns
 from monitor.core.rows import Event
 from monitor.core.silence import KEY as SILENCE
 from monitor.core.station import Station, station
@@ -31,9 +28,8 @@ from monitor.daemon import RECORD, Daemon
 from monitor.listening import heard, left_alone
 from monitor.record import connect
 from monitor.record.background import WriterThread
-from monitor.record.reader import Record
-from monitor.record.types import ClockFix
 from monitor.record.writer import Writer
+from monitor.recovery import recovered
 from monitor.snapshot import rfc3339
 
 QUEUE_DEPTH = 8
@@ -165,14 +161,19 @@ def daemon_for(site: Site, *, history_s: float | None = None) -> Daemon:
 
     thread = WriterThread.opening(site.record_path, site.simulated, prepare, QUEUE_DEPTH)
     boot_ns = 0 if front.owns_clock else clock.boot_ns()
-    state, desk, fixes = _resumed(site.record_path, boot_id, kind, here, boot_ns)
-    daemon = Daemon(site, here, front, thread, clock, state, desk, history_s=history_s, fixes=fixes)
+    found = recovered(site.record_path, boot_id, kind, here, boot_ns)
+    if found.ended is not None:
+        thread.put(*found.ended, block=False)
+    daemon = Daemon(
+        site, here, front, thread, clock, found.state, found.desk,
+        history_s=history_s, fixes=found.fixes, rows=found.rows,
+    )  # fmt: skip
     hashes: dict[str, object] = {
         name: hashlib.sha256(body).hexdigest() for name, _, body in documents
     }
-    daemon.note(Event(state.front_ns, "start", "daemon", hashes))
-    for event in _orphans(here, desk, state.front_ns):
-        desk.apply(event)
+    daemon.note(Event(found.state.front_ns, "start", "daemon", hashes))
+    for event in _orphans(here, found.desk, found.state.front_ns):
+        found.desk.apply(event)
         daemon.note(event)
     return daemon
 
@@ -203,29 +204,6 @@ def _documents(site: Site, chain: Chain) -> list[tuple[str, str, bytes]]:
         for channel, table in zip(site.channels, chain.tables)
     ]
     return documents
-
-
-def _resumed(
-    path: Path, boot_id: str, kind: str, here: Station, boot_ns: int
-) -> tuple[pipeline.State, AlarmDesk, list[ClockFix]]:
-    """State, alarms and clock fixes as the record has them; a new boot has empty windows.
-
-    So has one whose record cannot be read for want of room on the disk.
-    """
-    if not path.exists():
-        return pipeline.start(here, boot_ns), AlarmDesk(), []
-    try:
-        with Record.open(path) as record:
-            boot = record.boot_number(boot_id, kind)
-            desk = AlarmDesk.from_events(record.alarm_events(), -1 if boot is None else boot)
-            last_ns = None if boot is None else record.last_reading_ns(boot)
-            if boot is None or last_ns is None:
-                return pipeline.start(here, boot_ns, desk.raised()), desk, []
-            rows, raw = record.resume(boot, since_ns(last_ns, here))
-            fixes = record.clock_fixes(boot)
-    except connect.DiskTroubleError:
-        return pipeline.start(here, boot_ns), AlarmDesk(), []
-    return resume(here, rows, raw, boot_ns, desk.raised()), desk, fixes
 
 
 def _orphans(here: Station, desk: AlarmDesk, at_ns: int) -> list[Event]:

@@ -127,7 +127,7 @@ def _advance(
     until = until_ns // BLOCK_NS
     busy = int(pieces.block[-1]) if pieces.block.size else state.opened.first
     drained = busy + state.history.size + 1
-    state = _close(state, pieces, min(until, drained), here, out)
+    state = close(state, pieces, min(until, drained), here, out)
     if until > drained:
         keep, channels = state.history.size, here.channels
         state = replace(
@@ -138,15 +138,18 @@ def _advance(
     return replace(state, front_ns=until_ns)
 
 
-def _close(state: State, pieces: Pieces, until: int, here: Station, out: Gathered) -> State:
-    """Add pieces, close the blocks before index until, judge every point on the way."""
+def close(state: State, pieces: Pieces, until: int, here: Station, out: Gathered) -> State:
+    """Add pieces, close the blocks before index until, judge every point on the way.
+
+    No piece lies before the open block. What belongs in the record goes into out.
+    """
     size = until - state.opened.first + 1
     crowd = int(np.bincount(pieces.block - state.opened.first).max()) if pieces.block.size else 0
     if size * crowd > MOST_CELLS and pieces.block[-1] > pieces.block[0]:
         middle = int(np.searchsorted(pieces.block, (pieces.block[0] + pieces.block[-1] + 1) // 2))
         left, right = pieces.part(0, middle), pieces.part(middle, pieces.block.size)
-        state = _close(state, left, int(right.block[0]), here, out)
-        return _close(state, right, until, here, out)
+        state = close(state, left, int(right.block[0]), here, out)
+        return close(state, right, until, here, out)
     blocks, trace = accumulate(state.opened, pieces, until)
     known = join(state.history, blocks)
     closed = known.part(0, known.size - 1)

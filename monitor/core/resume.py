@@ -3,56 +3,72 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 
 import numpy as np
 
-from monitor.core.blocks import BLOCK_NS, accumulate, empty_blocks, from_rows
+from monitor.core.blocks import BLOCK_NS, empty_blocks, from_rows
+from monitor.core.gather import Gathered, nothing
 from monitor.core.hold import Pieces, complete, cut, no_segments
-from monitor.core.pipeline import State, convert, history_blocks, sides, start
+from monitor.core.pipeline import State, close, convert, history_blocks, sides, start
 from monitor.core.readings import Batch
 from monitor.core.rows import BlockRows
 from monitor.core.silence import KEY, Hearing
 from monitor.core.station import Station
 
+LATE_BLOCKS = 12
+"""Rows may reach the record so many blocks after the raw counts that they are made of."""
+
 
 def since_ns(last_ns: int, here: Station) -> int:
     """From where the record's blocks and raw counts are needed, given its last reading."""
-    return (last_ns // BLOCK_NS - history_blocks(here)) * BLOCK_NS - here.hold_ns
+    blocks = last_ns // BLOCK_NS - history_blocks(here) - LATE_BLOCKS
+    return blocks * BLOCK_NS - here.hold_ns
 
 
 def resume(
     here: Station, rows: BlockRows, raw: Sequence[Batch], boot_ns: int, raised: frozenset[str]
-) -> State:
-    """The state after the last reading kept, equal to the bit to the one that was lost.
+) -> tuple[State, Gathered]:
+    """The state after the last reading kept, equal to the bit to the one that was lost, and the
+    blocks and windows that had not reached the record.
 
     rows, raw: from since_ns on. boot_ns: where to begin if there is no reading. raised: keys of
     the alarms that stood; their delays begin anew.
     """
     batches = [batch for batch in raw if batch.n]
     if not batches:
-        return start(here, boot_ns, raised)
+        return start(here, boot_ns, raised), nothing()
     times = np.concatenate([batch.times_ns for batch in batches])
     counts = np.concatenate([batch.counts for batch in batches])
     bits = np.concatenate([batch.flags for batch in batches])
     power_w, flags = convert(counts, bits, here)
     last = int(times[-1])
-    first, keep = last // BLOCK_NS, history_blocks(here)
     segments, pending = complete(
         no_segments(here.channels), times, power_w, flags, last, here.hold_ns
     )
-    pieces = _from_block(cut(segments, BLOCK_NS), first)
-    opened, _ = accumulate(empty_blocks(first, 1, here.channels), pieces, first)
+    first, keep, channels = last // BLOCK_NS, history_blocks(here), here.channels
+    base = _first_missing(rows, int(times[0]) // BLOCK_NS, first)
     whole = times[~np.all(np.isnan(power_w), axis=1)]
     heard = int(whole[-1]) if whole.size else int(times[0])
-    return State(
+    state = State(
         pending,
-        opened,
-        from_rows(rows, first - keep, first, here.channels),
+        empty_blocks(base, 1, channels),
+        from_rows(rows, base - keep, base, channels),
         last,
         last,
-        sides(here, last, raised),
+        sides(here, base * BLOCK_NS, raised),
         Hearing(heard, KEY in raised),
     )
+    out = nothing()
+    state = close(state, _from_block(cut(segments, BLOCK_NS), base), first, here, out)
+    out.events.clear()  # they went with the raw counts
+    return replace(state, sides=sides(here, last, raised)), out
+
+
+def _first_missing(rows: BlockRows, begin: int, opened: int) -> int:
+    """The first block after those in the record; begin: that of the first reading."""
+    known = int(rows.start_ns.max()) // BLOCK_NS + 1 if rows.start_ns.size else begin
+    return max(min(known, opened), opened - LATE_BLOCKS)
 
 
 def _from_block(pieces: Pieces, first: int) -> Pieces:
