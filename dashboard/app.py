@@ -106,13 +106,21 @@ def _add_headers(response: Response) -> Response:
     return response
 
 
+_OWN_WORDS = {
+    404: "There is no page at this address. The pages of this monitor are Now and History.",
+    405: "This address takes no such request; follow a link instead.",
+    413: "That is more than a form of these pages holds; open the page again and repeat.",
+    500: "The pages have met a fault of their own; open the page again. The monitor goes on.",
+}
+
+
 def _expected_error(error: FieldsillError) -> Response:
     code = 400 if error.exit_code == 2 else 503
     return _error(code, str(error))
 
 
 def _http_error(error: HTTPException) -> Response:
-    return _error(error.code or 500, error.description or error.name)
+    return _error(error.code or 500, _OWN_WORDS.get(error.code or 500, error.description or ""))
 
 
 def _error(code: int, text: str) -> Response:

@@ -171,6 +171,18 @@ def draw(
     )
 
 
+def pennants(began: Sequence[tuple[int, int]], span: Span, frame: Frame) -> list[tuple[float, str]]:
+    """(x, number) of alarms that began, given (UTC ns, number); '' where it has no room."""
+    placed: list[tuple[float, str]] = []
+    free = 0.0
+    for utc_ns, number in sorted(began):
+        x = round(float(_x(np.array([utc_ns]), span, frame)[0]), 1)
+        room = x >= free and x <= frame.x1 - 24
+        placed.append((x, str(number) if room else ""))
+        free = x + 28 if room else free
+    return placed
+
+
 def _x(utc_ns: I, span: Span, frame: Frame) -> F:
     part = (utc_ns - span.start_ns) / (span.end_ns - span.start_ns)
     return frame.left + (frame.x1 - frame.left) * np.clip(part, 0.0, 1.0)

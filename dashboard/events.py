@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
-from dataclasses import dataclass
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, replace
 
 from dashboard import bounds, words
 from monitor.core.alarms import ENOUGH_SHARE
@@ -12,11 +12,27 @@ from monitor.record.types import EventRow
 
 @dataclass(frozen=True, slots=True)
 class EventLine:
-    """An event: when in words, what it is about, and what there is to say of it."""
+    """An event: when in words, what it is about, and what there is to say of it.
+
+    began_ns: UTC of an alarm that began then, with its number in the drawing.
+    """
 
     when: str
     what: str
     text: str
+    began_ns: int | None = None
+    number: int = 0
+
+
+def numbered(found: Sequence[EventRow]) -> list[EventLine]:
+    """The lines of events; alarms that begin are counted, for the drawing marks them."""
+    lines, number = [], 0
+    for event in found:
+        began = event.kind == "alarm" and event.body.get("raised") and event.utc_ns is not None
+        number += bool(began)
+        one = line(event)
+        lines.append(replace(one, began_ns=event.utc_ns, number=number) if began else one)
+    return lines
 
 
 def line(event: EventRow) -> EventLine:

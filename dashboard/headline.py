@@ -2,26 +2,16 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import replace
 
 from dashboard import bounds, told, words
 from dashboard.bounds import Kind, Ratio
-from dashboard.models import OWN_POPULATION, Live, Snapshot, State, Station, levels_for
+from dashboard.models import OWN_POPULATION, Live, Snapshot, Station, levels_for, stands
+from dashboard.standstill import Headline, without_measurement
+from monitor.core.alarms import INSTRUMENT_TEXTS
 
 AT_ANTENNA = "at the monitor's antenna"
 STANDING = ("unacknowledged", "acknowledged", "shelved")
-
-
-@dataclass(frozen=True, slots=True)
-class Headline:
-    """The one sentence; kind: below, open, over, undecided, limit, or without a measurement.
-
-    The kinds without one: silent, stopped, starting, no_record.
-    """
-
-    kind: str
-    text: str
-    more: tuple[str, ...] = ()
 
 
 def occupancy(live: Live, station: Station) -> str:
@@ -43,37 +33,14 @@ def governing(live: Live, station: Station, wanted: int | None) -> Snapshot | No
 
 def headline(live: Live, station: Station) -> Headline:
     """The sentence at the head of the page."""
-    since = words.moment(live.since, live.drawn)
-    if live.state is State.STOPPED:
-        known = f"No measurement since {since}" if live.since else "No measurement"
-        return Headline("stopped", f"{known}; this {words.NOTHING}.", (_why(live),))
-    if live.state is State.NO_RECORD:
-        return Headline(
-            "no_record",
-            f"No measurement and no record yet; this {words.NOTHING}.",
-            ("Start the monitor: fieldsill run, or fieldsill rehearse for invented data.",),
-        )
-    if live.state is State.STARTING:
-        return Headline("starting", f"No reading yet; this {words.NOTHING}.", (_device(live),))
-    if live.state is State.SILENT and (live.snapshot.get("device") or {}).get("ended"):
-        text = f"The recorded series ended at {since}; this {words.NOTHING} since then."
-        return Headline("silent", text, (_device(live),))
-    if live.state is State.SILENT:
-        age = words.duration(live.age_s or 0)
-        text = f"No reading since {since}, for {age}; this {words.NOTHING}."
-        return Headline("silent", text, (_device(live),))
-    return _measuring(live, station)
-
-
-def _why(live: Live) -> str:
-    return f"The measuring part of the monitor does not answer ({live.trouble})."
-
-
-def _device(live: Live) -> str:
-    device = live.snapshot.get("device") or {}
-    state = "connected" if device.get("connected") else "not connected"
-    text = device.get("text")
-    return f"Sensor: {state}{f' ({text})' if text else ''}."
+    if not live.current:
+        return without_measurement(live)
+    said = _measuring(live, station)
+    troubles = [text for key, text in INSTRUMENT_TEXTS.items() if stands(live.snapshot, key)]
+    if not troubles:
+        return said
+    kind = "open" if said.kind == "below" else said.kind
+    return replace(said, kind=kind, text=f"{said.text}; {' and '.join(troubles)}")
 
 
 def _measuring(live: Live, station: Station) -> Headline:
@@ -91,7 +58,10 @@ def _measuring(live: Live, station: Station) -> Headline:
     standing = [a for a in live.alarms if is_level(a) and a.get("state") in STANDING]
     if standing:
         names = dict.fromkeys(alarm_text(alarm) for alarm in standing)
-        return Headline("over", f"Over an alert level {AT_ANTENNA}", (*names, *_thin(live)))
+        known = [words.parse_utc(alarm.get("since_utc")) for alarm in standing]
+        began = min((when for when in known if when is not None), default=None)
+        since = f" since {words.moment(began, live.drawn)}" if began else ""
+        return Headline("over", f"Over an alert level {AT_ANTENNA}{since}", (*names, *_thin(live)))
     return _against_levels(live, station)
 
 

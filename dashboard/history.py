@@ -10,9 +10,9 @@ from typing import Any
 
 import numpy as np
 
-from dashboard import chart, events, past, span, words
-from dashboard.models import OWN_POPULATION, Doors, RecordLike, Station, levels_for, levels_of
-from dashboard.wish import Wish, read_wish
+from dashboard import asked, chart, events, outline, past, reservations, span, words
+from dashboard.models import Doors, RecordLike, Station, levels_for, levels_of
+from dashboard.wish import Wish, read_wish, whole_number
 from monitor.core import flags
 from monitor.core.errors import ConfigError, RecordError
 from monitor.core.limits import Scope
@@ -58,14 +58,16 @@ def page(station: Station, doors: Doors, args: Mapping[str, str]) -> dict[str, A
     with opened(station, doors) as record:
         now_ns = _now_ns(record, doors)
         wish = read_wish(args, _fallback_day(record, now_ns))
-        scopes = dict(record.scopes())
+        wish = asked.settled(wish, args, record, station.occupancy)
+        scopes, scope = dict(record.scopes()), wish.scope
         found = record.history(wish.span.start_ns, wish.span.end_ns, wish.averaging_s, AT_MOST)
+        series = past.series_of(found, scope if wish.show == "ratio" else None, now_ns)
+        summary = past.summary(series, wish.span, now_ns)
+        said = outline.sentences(summary, wish, found, record, now_ns)
         happened = record.events(wish.span.start_ns, wish.span.end_ns, MAX_EVENTS)
         simulated = record.simulated
-    scope = _scope(wish, scopes, OWN_POPULATION.get(station.occupancy))
-    series = past.series_of(found, scope if wish.show == "ratio" else None, now_ns)
     marks = _marks(wish, found, scopes, scope, station)
-    summary = past.summary(series, wish.span, now_ns)
+    lines = events.numbered(happened)
     return {
         "simulated": simulated,
         "name": station.name,
@@ -75,36 +77,45 @@ def page(station: Station, doors: Doors, args: Mapping[str, str]) -> dict[str, A
         "unit": "V/m" if wish.show == "e" else "of the limit",
         "scope_title": _title(scopes[scope]) if scope is not None else "",
         "scope_links": _scope_links(wish, scopes, scope),
-        "charts": [
-            (css, chart.draw(series, wish.span, marks, frame, wish.logarithmic, now_ns))
-            for css, frame in (("wide", WIDE), ("narrow", NARROW))
-        ],
+        "charts": _charts(series, wish, marks, lines, now_ns),
         "bin_words": words.duration(found.bin_ns / 1e9) if found.bin_ns else "",
         "summary": summary,
-        "summary_words": _summary_words(summary, wish, found),
+        "summary_words": said,
         "marks": marks,
         "gaps": past.gap_words(series.gaps, wish.span),
         "rows": past.rows(series, wish.span, now_ns),
+        "u_words": outline.uncertainty(found),
+        "ahead": wish.span.start_ns >= now_ns,
         "flags": _reservations(found),
         "levels": _levels(scopes, scope, station),
         "whole": not found.bin_ns,
-        "events": [events.line(event) for event in happened],
+        "events": lines,
         "more_events": len(happened) >= MAX_EVENTS,
         "links": _links(wish, now_ns),
     }
 
 
+def _charts(
+    series: chart.Series,
+    wish: Wish,
+    marks: Sequence[chart.Mark],
+    lines: Sequence[events.EventLine],
+    now_ns: int,
+) -> list[tuple[str, chart.Chart, list[tuple[float, str]]]]:
+    """(name, drawing, alarms that began) for wide and for narrow pages."""
+    began = [(line.began_ns, line.number) for line in lines if line.began_ns is not None]
+    return [
+        (
+            css,
+            chart.draw(series, wish.span, marks, frame, wish.logarithmic, now_ns),
+            chart.pennants(began, wish.span, frame),
+        )
+        for css, frame in (("wide", WIDE), ("narrow", NARROW))
+    ]
+
+
 def _title(scope: Scope) -> str:
     return words.scope_title(scope.set_id, scope.population, scope.scope, scope.averaging_s)
-
-
-def _scope(wish: Wish, scopes: Mapping[int, Scope], own: str | None) -> int | None:
-    """The limit whose ledge is drawn: the wished one if it has this averaging time, else one
-    of the population of the place."""
-    fitting = [i for i, s in scopes.items() if int(s.averaging_s) == wish.averaging_s]
-    if wish.scope in fitting:
-        return wish.scope
-    return min(fitting, key=lambda i: (scopes[i].population != own, i), default=None)
 
 
 def _scope_links(
@@ -140,32 +151,7 @@ def _levels(
 def _reservations(found: History) -> list[str]:
     """What any average in the span has to say about itself; simulated stands on every page."""
     bits = int(np.bitwise_or.reduce(found.flags)) if found.flags.size else 0
-    return flags.words(bits & ~int(flags.Flag.SIMULATED | flags.Flag.GAP))
-
-
-def _summary_words(summary: past.Summary, wish: Wish, found: History) -> list[str]:
-    name = words.average(wish.averaging_s)
-    if summary.most is None or summary.at_ns is None or summary.index is None:
-        return [f"No {name} in this span: no measurement, which {words.NOTHING}."]
-    when = words.moment(words.utc_of(summary.at_ns))
-    if wish.show == "ratio":
-        figure = words.of_limit(summary.most)
-    else:
-        figure = f"{words.figure(summary.most)} V/m"
-    lines = [f"Largest {name}: {figure}, ending {when}."]
-    u_db = float(found.u_db[summary.index])
-    if math.isfinite(u_db):
-        lines.append(f"Expanded uncertainty there: {words.figure(u_db)} dB.")
-    share = words.share(summary.measured_share)
-    if summary.gap_count:
-        lines.append(
-            f"Measured for {share} of the span so far; {summary.gap_count} "
-            f"gap{'s' if summary.gap_count > 1 else ''}, {words.duration(summary.gap_s)} in all, "
-            f"{'say' if summary.gap_count > 1 else 'says'} nothing about the field."
-        )
-    else:
-        lines.append(f"Measured for {share} of the span so far, without a gap.")
-    return lines
+    return reservations.sentences(flags.words(bits & ~int(flags.Flag.GAP)))
 
 
 def _links(wish: Wish, now_ns: int) -> dict[str, str]:
@@ -191,13 +177,16 @@ def _links(wish: Wish, now_ns: int) -> dict[str, str]:
 def document(station: Station, doors: Doors, args: Mapping[str, str]) -> dict[str, Any]:
     """History as JSON; a figure that is not there is null."""
     text = args.get("at_most") or str(AT_MOST)
-    if not text.isdecimal() or not 1 <= int(text) <= MAX_API_POINTS:
-        raise ConfigError(f"at_most: {text!r} is not a whole number from 1 to {MAX_API_POINTS}")
+    if not whole_number(text) or not 1 <= int(text) <= MAX_API_POINTS:
+        raise ConfigError(
+            f"at_most: {text[:20]!r} is not a whole number from 1 to {MAX_API_POINTS}"
+        )
     with opened(station, doors) as record:
         now_ns = _now_ns(record, doors)
         wish = read_wish(args, _fallback_day(record, now_ns))
         found = record.history(wish.span.start_ns, wish.span.end_ns, wish.averaging_s, int(text))
         scopes = dict(record.scopes())
+        asked.named(wish, args, scopes)
         simulated = record.simulated
     return {
         "from_utc": words.rfc3339(wish.span.start_ns),

@@ -84,7 +84,11 @@ class State(StrEnum):
 
 @dataclass(frozen=True, slots=True)
 class Live:
-    """The moment as a page tells it. snapshot: only where the daemon answered."""
+    """The moment as a page tells it. snapshot: only where the daemon answered.
+
+    since: last valid reading that is known of; recorded: the last in the record; unheard_s: how
+    long the daemon has not answered, None where it never did since the pages began.
+    """
 
     state: State
     drawn: datetime
@@ -93,6 +97,8 @@ class Live:
     since: datetime | None = None
     age_s: float | None = None
     trouble: str = ""
+    recorded: datetime | None = None
+    unheard_s: float | None = None
 
     @property
     def current(self) -> bool:
@@ -135,50 +141,90 @@ class Live:
         return [a for a in self.snapshot.get("alarms") or [] if a.get("state") != "normal"]
 
 
-def read_live(station: Station, doors: Doors) -> Live:
-    """Ask the daemon; where it does not answer, say since when there is no measurement."""
+@dataclass(slots=True)
+class Heard:
+    """The daemon's last answer: when it came, and the last reading it knew of."""
+
+    at: datetime | None = None
+    since: datetime | None = None
+
+
+def stands(snapshot: Snapshot, key: str) -> bool:
+    """Whether an alarm is known to stand; a muted one is not known to."""
+    states = ("unacknowledged", "acknowledged")
+    return any(
+        a.get("key") == key and a.get("state") in states for a in snapshot.get("alarms") or []
+    )
+
+
+def read_live(station: Station, doors: Doors, heard: Heard | None = None) -> Live:
+    """Ask the daemon; where it does not answer, say since when there is no measurement.
+
+    heard: what the last call knew, kept for the next.
+    """
+    heard = heard or Heard()
     drawn = words.utc_of(doors.utc_ns())
     try:
         answer = doors.ask(station.control_path, {"do": "now"}, ASK_TIMEOUT_S)
         snapshot = answer.get("now")
     except UNREACHABLE as error:
-        return _from_record(station, doors, drawn, str(error))
+        return _from_record(station, doors, drawn, str(error), heard)
     if not isinstance(snapshot, Mapping):
         trouble = str(answer.get("error", "the daemon gave no figures"))
-        return _from_record(station, doors, drawn, trouble)
+        return _from_record(station, doors, drawn, trouble, heard)
     age = snapshot.get("last_reading_age_s")
-    device = snapshot.get("device") or {}
-    state = State.MEASURING
-    if age is None:
-        state = State.STARTING
-    elif age > station.silence_after_s or (not device.get("connected", True) and age > 5):
-        state = State.SILENT
+    since = words.parse_utc(snapshot.get("last_reading_utc"))
+    heard.at, heard.since = drawn, since
     return Live(
-        state=state,
+        state=_state(snapshot, age, station.silence_after_s),
         drawn=drawn,
         simulated=bool(snapshot.get("simulated")),
         snapshot=snapshot,
-        since=words.parse_utc(snapshot.get("last_reading_utc")),
+        since=since,
         age_s=age,
     )
 
 
-def _from_record(station: Station, doors: Doors, drawn: datetime, trouble: str) -> Live:
+def _state(snapshot: Snapshot, age_s: float | None, silence_after_s: float) -> State:
+    """age_s: of the last valid reading. The alarm counts as well as the age."""
+    connected = (snapshot.get("device") or {}).get("connected", True)
+    if stands(snapshot, "silence"):
+        return State.SILENT
+    if age_s is None:
+        return State.STARTING
+    if age_s > silence_after_s or (not connected and age_s > 5):
+        return State.SILENT
+    return State.MEASURING
+
+
+def _from_record(
+    station: Station, doors: Doors, drawn: datetime, trouble: str, heard: Heard
+) -> Live:
     """The daemon does not answer: the record knows the last reading, and nothing of the present."""
     if not station.record_path.exists():
         return Live(State.NO_RECORD, drawn, False, trouble=trouble)
     try:
         record = doors.open_record(station.record_path)
     except UNREACHABLE as error:
-        return Live(State.STOPPED, drawn, False, trouble=f"{trouble}; {error}")
+        trouble = f"{trouble}; {error}"
+        return Live(State.STOPPED, drawn, False, since=heard.since, trouble=trouble)
     try:
         latest = record.latest()
         simulated = record.simulated
     finally:
         record.close()
     last_ns = None if latest is None else latest.last_reading_utc_ns or latest.utc_ns
-    since = None if last_ns is None else words.utc_of(last_ns)
-    return Live(State.STOPPED, drawn, simulated, since=since, trouble=trouble)
+    recorded = None if last_ns is None else words.utc_of(last_ns)
+    return Live(
+        State.STOPPED,
+        drawn,
+        simulated,
+        # What was told already is not taken back, though the record may not have it.
+        since=max((when for when in (recorded, heard.since) if when), default=None),
+        trouble=trouble,
+        recorded=recorded,
+        unheard_s=None if heard.at is None else max(0.0, (drawn - heard.at).total_seconds()),
+    )
 
 
 def levels_of(alerts: Sequence[AlertRule]) -> list[dict[str, object]]:

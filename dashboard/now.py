@@ -48,6 +48,7 @@ class AlarmLine:
     can_confirm: bool
     can_mute: bool
     can_unmute: bool
+    history: dict[str, str]
 
 
 def scope_lines(live: Live, station: Station) -> list[tuple[str, list[ScopeLine]]]:
@@ -139,19 +140,13 @@ def _alarm(alarm: Mapping[str, Any], live: Live) -> AlarmLine:
         can_confirm=state in ("unacknowledged", "returned_unacknowledged"),
         can_mute=state in ("unacknowledged", "acknowledged"),
         can_unmute=state == "shelved",
+        history=_in_history(alarm),
     )
 
 
-@dataclass(frozen=True, slots=True)
-class Counters:
-    """The device's counters in words: those that counted something, and the names of the rest."""
-
-    some: list[tuple[str, int]]
-    none: list[str]
-
-
-def counters(live: Live) -> Counters:
-    """Every counter of the device, bad frames among them."""
-    found = (live.snapshot.get("device") or {}).get("counters") or {}
-    named = [(str(key).replace("_", " "), int(count)) for key, count in found.items()]
-    return Counters([c for c in named if c[1]], [name for name, count in named if not count])
+def _in_history(alarm: Mapping[str, Any]) -> dict[str, str]:
+    """What the history is asked for to show an alarm: its day and its limit."""
+    since = words.parse_utc(alarm.get("since_utc"))
+    day = {"from": since.date().isoformat(), "to": since.date().isoformat()} if since else {}
+    limit = words.scope_of(str(alarm.get("key")))
+    return {**day, "show": "ratio", "limit": " ".join(limit)} if limit else day

@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 from dashboard.chart import Mark, Series
 from dashboard.span import Span
 from dashboard.words import figure, utc_of
+from monitor.core.alarms import ENOUGH_SHARE
 from monitor.record.types import WINDOW_EVERY_NS, History
 
 F = NDArray[np.float64]
@@ -25,7 +26,10 @@ DUE_NS = 2 * WINDOW_EVERY_NS + 10 * NS
 
 @dataclass(frozen=True, slots=True)
 class Row:
-    """A line of the table: a part of the span; figures are None where there is no measurement."""
+    """A line of the table: a part of the span; figures are None where there is no measurement.
+
+    most_thin, least_thin: too little of that average's time is valid.
+    """
 
     part: Span
     least: float | None
@@ -33,6 +37,8 @@ class Row:
     most_at_ns: int | None
     valid_share: float
     gap_s: float
+    most_thin: bool = False
+    least_thin: bool = False
 
 
 @dataclass(frozen=True, slots=True)
@@ -49,15 +55,19 @@ class Summary:
 
 def series_of(history: History, scope: int | None, now_ns: int) -> Series:
     """The field in V/m (scope None), or the exposure ratio of a scope, as a series."""
-    low, mean, high = (
-        (history.e_low, history.e_mean, history.e_high)
-        if scope is None
-        else history.ratios.get(scope, (np.full(history.utc_ns.size, np.nan),) * 3)
-    )
+    low, mean, high = figures(history, scope)
     gaps = gaps_until(history.gaps, now_ns)
     return Series(
         history.utc_ns, low, mean, high, history.valid_share, gaps, history.bin_ns, history.coverage
     )
+
+
+def figures(history: History, scope: int | None) -> tuple[F, F, F]:
+    """Lowest, mean and highest: E in V/m (scope None), or the exposure ratio of a scope."""
+    if scope is None:
+        return history.e_low, history.e_mean, history.e_high
+    nothing = np.full(history.utc_ns.size, np.nan)
+    return history.ratios.get(scope, (nothing, nothing, nothing))
 
 
 def gaps_until(gaps: Sequence[tuple[int, int]], now_ns: int) -> list[tuple[int, int]]:
@@ -125,9 +135,17 @@ def _row(series: Series, part: Span, now_ns: int) -> Row:
     if not inside.any():
         return Row(part, None, None, None, 0.0, gap_s)
     means = series.mean[inside]
-    at = int(np.argmax(means))
+    thin = ~(series.valid_share[inside] >= ENOUGH_SHARE)
+    at, least = int(np.argmax(means)), int(np.argmin(means))
     return Row(
-        part, float(means.min()), float(means[at]), int(series.utc_ns[inside][at]), measured, gap_s
+        part,
+        float(means[least]),
+        float(means[at]),
+        int(series.utc_ns[inside][at]),
+        measured,
+        gap_s,
+        bool(thin[at]),
+        bool(thin[least]),
     )
 
 

@@ -18,6 +18,8 @@ LEDGE_THICK = 14
 TOP_RATIO = (FLOOR_Y - HEAD_Y) / (FLOOR_Y - LEDGE_Y)
 """The ratio at the lintel; what is above it is named in words."""
 LABEL_STEP = 19
+LABEL_HEIGHT, LABEL_DEPTH = 16, 7
+"""How far a label reaches above and below where it stands."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -61,8 +63,13 @@ def y_of(ratio: float) -> float:
     return round(min(FLOOR_Y, max(HEAD_Y, y)), 2)
 
 
-def notches(levels: Sequence[Mapping[str, object]]) -> tuple[Notch, ...]:
-    """The alert levels below the ledge, from the top down, labels at least a line apart."""
+def notches(
+    levels: Sequence[Mapping[str, object]], level_y: float | None = None
+) -> tuple[Notch, ...]:
+    """The alert levels below the ledge, from the top down, labels at least a line apart.
+
+    level_y: the line of the level, which no label may stand on.
+    """
     known: dict[float, list[str]] = {}
     for level in levels:
         known.setdefault(float(str(level["ratio"])), []).append(str(level["name"]))
@@ -70,10 +77,18 @@ def notches(levels: Sequence[Mapping[str, object]]) -> tuple[Notch, ...]:
     free = float(LEDGE_Y + LEDGE_THICK + LABEL_STEP)
     for ratio, names in sorted(known.items(), reverse=True):
         if 0 < ratio < 1:
-            label_y = max(y_of(ratio) + 5, free)
+            label_y = _beside(max(y_of(ratio) + 5, free), level_y, free)
             found.append(Notch(y_of(ratio), label_y, ratio, tuple(dict.fromkeys(names))))
             free = label_y + LABEL_STEP
     return tuple(found)
+
+
+def _beside(label_y: float, level_y: float | None, free: float) -> float:
+    """A label's place moved off the level's line: below it, or above it at the floor."""
+    if level_y is None or not label_y - LABEL_HEIGHT < level_y < label_y + LABEL_DEPTH:
+        return label_y
+    below, above = level_y + LABEL_HEIGHT, level_y - LABEL_DEPTH
+    return above if below > FLOOR_Y and above >= free else below
 
 
 def draw(
@@ -83,8 +98,8 @@ def draw(
     levels: Sequence[Mapping[str, object]] = (),
 ) -> Picture:
     """The picture of one scope's exposure ratio; boarded up where there is none."""
-    marks = notches(levels)
     stands = None if ratio is None else ratio.stands
+    marks = notches(levels, None if stands is None else y_of(stands))
     if ratio is None or stands is None:
         return Picture(None, None, filled, True, False, False, marks)
     level_y = y_of(stands)

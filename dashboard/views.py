@@ -3,14 +3,23 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 from flask import Blueprint, current_app, redirect, render_template, request, url_for
 from flask.typing import ResponseReturnValue
 
-from dashboard import headline, history, now, words
-from dashboard.models import ASK_TIMEOUT_S, UNREACHABLE, Doors, Live, State, Station, read_live
+from dashboard import headline, history, now, reservations, wish, words
+from dashboard.models import (
+    ASK_TIMEOUT_S,
+    UNREACHABLE,
+    Doors,
+    Heard,
+    Live,
+    State,
+    Station,
+    read_live,
+)
 from monitor.core.errors import ConfigError, DeviceError
 
 pages = Blueprint("pages", __name__)
@@ -25,6 +34,7 @@ class Context:
     doors: Doors
     token: str
     may_act: bool
+    heard: Heard = field(default_factory=Heard)
 
 
 def _context() -> Context:
@@ -34,21 +44,19 @@ def _context() -> Context:
 
 def _live() -> Live:
     context = _context()
-    return read_live(context.station, context.doors)
+    return read_live(context.station, context.doors, context.heard)
 
 
 def _wanted_scope() -> int | None:
-    text = request.args.get("scope", "")
-    if not text:
-        return None
-    if not text.isdecimal():
-        raise ConfigError(f"scope: {text!r} is not the number of a limit; follow a link instead")
-    return int(text)
+    return wish.scope_number(request.args.get("scope", ""))
 
 
 def _now_values(live: Live) -> dict[str, Any]:
     context = _context()
     wanted = _wanted_scope()
+    known = {e.get("index") for e in live.snapshot.get("exposures") or []}
+    if wanted is not None and known and wanted not in known:
+        raise ConfigError(f"scope: there is no limit number {wanted}; follow a link instead")
     chosen = headline.governing(live, context.station, wanted)
     site = live.snapshot.get("site") or {}
     return {
@@ -64,7 +72,8 @@ def _now_values(live: Live) -> dict[str, Any]:
         "field_words": now.field_words(live),
         "groups": now.scope_lines(live, context.station),
         "alarms": now.alarm_lines(live),
-        "counters": now.counters(live),
+        "counters": reservations.counters(live.snapshot),
+        "reservations": reservations.sentences(live.flags),
         "device": live.snapshot.get("device") or {},
         "token": context.token,
         "may_act": context.may_act,

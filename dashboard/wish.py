@@ -42,15 +42,26 @@ def _choice(args: Mapping[str, str], key: str, choices: tuple[str, ...]) -> str:
     return text
 
 
+def scope_number(text: str) -> int | None:
+    """The number of a limit as a request writes it; None where it writes none."""
+    if not text:
+        return None
+    if not whole_number(text):
+        raise ConfigError(f"scope: {text[:20]!r} is not the number of a limit; follow a link")
+    return int(text)
+
+
+def whole_number(text: str) -> bool:
+    """Whether a text is a whole number of a size that a request may ask for."""
+    return text.isascii() and text.isdecimal() and len(text) <= 9
+
+
 def read_wish(args: Mapping[str, str], fallback: date) -> Wish:
     """The wish of a request; ConfigError names the key that is wrong."""
-    scope = args.get("scope") or ""
-    if scope and not scope.isdecimal():
-        raise ConfigError(f"scope: {scope!r} is not the number of a limit")
     return Wish(
         span=span.read(args.get("from") or "", args.get("to") or "", fallback),
         averaging_s=int(_choice(args, "averaging", tuple(str(a) for a in AVERAGES))),
         show=_choice(args, "show", ("e", "ratio")),
-        scope=int(scope) if scope else None,
+        scope=scope_number(args.get("scope") or ""),
         logarithmic=_choice(args, "scale", ("log", "straight")) == "log",
     )

@@ -168,11 +168,18 @@ def alarm_state(state: str, *, is_level: bool, muted_until: str = "") -> str:
 
 def alarm_text(key: str) -> str:
     """An alarm's key in words: 'name: scope' for one of an alert level, else as it stands."""
-    name, bar, scope = key.partition(" | ")
-    parts = scope.removesuffix(" s").split(" ")
-    if not bar or len(parts) != 4 or not parts[3].isdecimal():
+    parts = scope_of(key)
+    if not parts:
         return INSTRUMENT_TEXTS.get(key, key)
+    name = key.partition(" | ")[0]
     return f"{name}: {scope_title(parts[0], parts[1], parts[2], int(parts[3]))}"
+
+
+def scope_of(key: str) -> list[str]:
+    """Set, population, scope and seconds of an alarm's key; none where it is about no limit."""
+    _, bar, scope = key.partition(" | ")
+    parts = scope.removesuffix(" s").split(" ")
+    return parts if bar and len(parts) == 4 and parts[3].isdecimal() else []
 
 
 def parse_utc(text: str | None) -> datetime | None:
@@ -194,6 +201,11 @@ def moment(when: datetime | None, today: datetime | None = None, *, seconds: boo
     if today is not None and when.date() == today.date():
         return f"{clock} UTC"
     return f"{when.date().isoformat()} {clock} UTC"
+
+
+def dated(when: datetime) -> str:
+    """'Saturday 1 March 2025, 12:00:00 UTC'."""
+    return f"{when:%A} {when.day} {when:%B %Y, %H:%M:%S} UTC"
 
 
 def utc_of(utc_ns: int) -> datetime:

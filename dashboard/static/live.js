@@ -25,6 +25,14 @@
     }
   };
 
+  // The reader's own time beside UTC, where it is another.
+  const local = () => {
+    for (const one of document.querySelectorAll("[data-utc]")) {
+      const when = new Date(one.dataset.utc);
+      if (when.getTimezoneOffset() !== 0) one.textContent = " (" + when.toLocaleTimeString() + " where you are)";
+    }
+  };
+
   // A choice that a person is making is not taken away while they make it.
   const busy = (part) => part.contains(document.activeElement) && document.activeElement.matches("select");
 
@@ -34,12 +42,16 @@
     if (!parts.some((part) => part.id === "head")) throw new Error("not the monitor's answer");
     for (const part of parts) {
       const old = document.getElementById(part.id);
+      for (const fold of part.querySelectorAll("details[id]")) {
+        fold.open = document.getElementById(fold.id)?.open ?? false;
+      }
       if (!old || old.outerHTML === part.outerHTML || busy(old)) continue;
       const focus = old.contains(document.activeElement) ? document.activeElement.id : "";
       old.replaceWith(document.adoptNode(part));
       if (focus) document.getElementById(focus)?.focus({ preventScroll: true });
     }
     shown = Date.now();
+    local();
     const text = document.getElementById("head").dataset.spoken;
     if (spoken.textContent !== text) spoken.textContent = text;
   };
@@ -67,6 +79,8 @@
     }
     setTimeout(round, EVERY_MS);
   };
+
+  local();
 
   // After sleep of the machine or the tab the old figures must not pass for new ones.
   setInterval(() => {

@@ -9,10 +9,15 @@ from pathlib import Path
 
 import click
 
-from dashboard import bounds
-from dashboard.bounds import Kind
-from dashboard.words import NOT_JUDGED, rounded_down, rounded_up
+from dashboard import bounds, told
+from dashboard.models import stands
+from dashboard.reservations import sentences
+from dashboard.standstill import nothing_valid, sensor
+from dashboard.words import NOT_JUDGED
+from monitor.cli import status_lines
 from monitor.cli.output import print_json
+from monitor.cli.status_lines import ratios as _ratios
+from monitor.cli.status_lines import rows as _rows
 from monitor.clock import SystemClock
 from monitor.control import ask
 from monitor.core.errors import ConfigError, DeviceError, FieldsillError
@@ -126,14 +131,17 @@ def _of_folder(path: Path, utc_ns: int) -> Standing:
 
 def _judged(now: Row) -> tuple[str, str]:
     """State and words of a box whose daemon answers."""
-    age_s = now.get("last_reading_age_s")
-    if not isinstance(age_s, (int, float)):
+    age_s = bounds.number(now, "last_reading_age_s")
+    if stands(now, "silence") or (age_s is not None and age_s > SILENT_AFTER_S):
+        ago = "" if age_s is None else f"{age_s:.0f} s ago"
+        said = nothing_valid(now, str(now.get("last_reading_utc") or ago), status_lines.flags(now))
+        return "silent", said[:1].lower() + said[1:].removesuffix(".")
+    if age_s is None:
         return "silent", "no reading yet"
-    if age_s > SILENT_AFTER_S:
-        since = now.get("last_reading_utc") or f"{age_s:.0f} s ago"
-        return "silent", _NOTHING_SINCE.format(since)
     verdicts = {str(row.get("verdict")) for row in _rows(now, "exposures")}
-    alarms = [str(row.get("text")) for row in _rows(now, "alarms") if row.get("state") != "normal"]
+    alarms = [
+        status_lines.alarm_text(row) for row in _rows(now, "alarms") if row.get("state") != "normal"
+    ]
     heard = f"last reading {age_s:.0f} s ago"
     if "exceeds" in verdicts:
         return "exceeds", f"a limit is exceeded, {heard}"
@@ -194,7 +202,7 @@ def _records(folder: Path) -> list[Path]:
 
 
 def _one_line(box: Standing) -> str:
-    ratio = "ratio -" if box.largest is None else f"ratio {_ratio_words(box.largest)}"
+    ratio = "ratio -" if box.largest is None else f"ratio {told.figure(box.largest)}"
     mark = "  SIMULATED" if box.simulated else ""
     return f"{box.state:<10} {box.name:<24} {ratio:<20} {box.text}{mark}"
 
@@ -202,88 +210,25 @@ def _one_line(box: Standing) -> str:
 def _in_full(box: Standing) -> list[str]:
     lines = [box.name + ("  SIMULATED: the data are invented" if box.simulated else "")]
     lines += [f"  record   {box.record}", f"  state    {box.state}: {box.text}"]
-    if not box.live and box.now:
-        lines.append("  the last figures in the record:")
-    flags = _flags(box.now)
-    for row in _rows(box.now, "fields"):
-        lines.append(
-            f"  {_minutes(row)}   E {_e_words(row, flags)} V/m "
-            f"({_span(row, 'e', bounds.window(row, flags))}), "
-            f"largest {_figure(row, 'e_max')}, U {_figure(row, 'u_db')} dB, "
-            f"valid share {_figure(row, 'valid_share')}"
-        )
-    for row, ratio in zip(_rows(box.now, "exposures"), _ratios(box.now)):
-        verdict = {"undecided": "cannot be decided"}.get(str(row["verdict"]), row["verdict"])
-        lines.append(
-            f"  {_minutes(row)}   {row.get('set')} {row.get('population')} {row.get('scope')}: "
-            f"exposure ratio {_ratio_words(ratio)} "
-            f"({_span(row, 'ratio', ratio.window)}, "
-            f"U {_figure(row, 'u_db')} dB), {verdict}"
-        )
-    lines += [f"  carried  {flag}" for flag in flags]
+    if box.live and "device" in box.now:
+        lines.append(f"  device   {sensor(box.now).removeprefix('Sensor: ')}")
+    silent = box.state == "silent"
+    if silent or (not box.live and box.now):
+        lines.append("  the last figures, none of the present:")
+    carried = status_lines.flags(box.now)
+    lines += [f"  {status_lines.field(row, carried)}" for row in _rows(box.now, "fields")]
     lines += [
-        f"  alarm    {row.get('text')}: {str(row.get('state')).replace('_', ' ')}"
-        for row in _rows(box.now, "alarms")
+        f"  {status_lines.exposure(row, ratio)}"
+        for row, ratio in zip(_rows(box.now, "exposures"), _ratios(box.now), strict=True)
     ]
+    lines += [f"  carried  {line}" for line in sentences(carried)]
+    lines += [f"  alarm    {status_lines.alarm(row)}" for row in _rows(box.now, "alarms")]
     return [*lines, f"  {NOT_JUDGED}"]
-
-
-def _rows(now: Row, key: str) -> list[Row]:
-    found = now.get(key)
-    return [row for row in found if isinstance(row, Mapping)] if isinstance(found, list) else []
-
-
-def _flags(now: Row) -> list[str]:
-    found = now.get("flags")
-    flags = found if isinstance(found, list) else []
-    return [str(flag) for flag in flags if flag != "simulated"]
-
-
-def _ratios(now: Row) -> list[bounds.Ratio]:
-    fields, flags = _rows(now, "fields"), _flags(now)
-    return [bounds.ratio(row, fields, flags) for row in _rows(now, "exposures")]
 
 
 def _rank(ratio: bounds.Ratio) -> float:
     figures = (ratio.mean, ratio.low)
     return next((figure for figure in figures if figure is not None), 0.0)
-
-
-def _ratio_words(ratio: bounds.Ratio) -> str:
-    return _bound(ratio.kind, ratio.stands)
-
-
-def _e_words(row: Row, flags: list[str]) -> str:
-    low, mean, high = (bounds.number(row, key) for key in ("e_low", "e_mean", "e_high"))
-    kind = bounds.window(row, flags).kind(low, mean)
-    return _bound(kind, {Kind.AT_LEAST: low, Kind.BELOW: high}.get(kind, mean))
-
-
-def _bound(kind: Kind, figure: float | None) -> str:
-    """A figure with what it is: at least it, below it, about it, or it."""
-    if figure is None:
-        return "-"
-    if kind is Kind.AT_LEAST:
-        return f"at least {rounded_down(figure)}"
-    if kind is Kind.BELOW:
-        return f"below {rounded_up(figure)}"
-    return f"{'about ' if kind is Kind.OPEN else ''}{figure:.3g}"
-
-
-def _figure(row: Row, key: str) -> str:
-    value = row.get(key)
-    return f"{value:.3g}" if isinstance(value, (int, float)) and value == value else "-"
-
-
-def _span(row: Row, what: str, window: bounds.Window) -> str:
-    """From lowest to highest; '-' where the flags leave an end unbounded."""
-    low = "-" if window.upper else _figure(row, f"{what}_low")
-    return f"{low} to {'-' if window.lower else _figure(row, f'{what}_high')}"
-
-
-def _minutes(row: Row) -> str:
-    value = row.get("averaging_s")
-    return f"{value / 60:>2.0f} min" if isinstance(value, (int, float)) else "  -   "
 
 
 def _last_ns(latest: Latest) -> int | None:

@@ -66,7 +66,8 @@ def test_without_a_daemon_it_says_since_when(tmp_path: Path) -> None:
     assert "no measurement since 2023-11-14T22:14:59.0" in text
     assert "says nothing about the field" in text
     assert "SIMULATED" in text
-    assert "exposure ratio 0.25 (0.125 to 0.5, U " in text
+    said = "exposure ratio 0.25 (between 0.088 and 0.71, by gaps and expanded uncertainty)"
+    assert said in text  # 0.125 / 10^(1.5 / 10) and 0.5 * 10^(1.5 / 10)
     assert (document["state"], document["answering"], document["simulated"]) == (
         "stopped", False, True,
     )  # fmt: skip
@@ -91,8 +92,8 @@ def test_the_daemon_is_asked_first(tmp_path: Path) -> None:
     assert "below each limit that is judged, at the antenna, last reading 2 s ago" in text
     assert "every limit" not in text
     assert text.count("Not judged here: exposures shorter than the averaging time") == 1
-    assert "(0.1 to 0.3, U 2.1 dB), conforms" in text
-    assert "E 1.5 V/m (1 to 2), largest 3, U 2.5 dB" in text
+    assert "(between 0.061 and 0.49, by gaps and expanded uncertainty), conforms" in text
+    assert "E 1.5 V/m, with U 1.1 to 2.0 V/m, largest reading 3.0 V/m, U 2.5 dB" in text
     assert document["now"] == NOW
     assert document["largest_exposure_ratio"] == 0.2
 
@@ -101,13 +102,13 @@ def test_the_daemon_is_asked_first(tmp_path: Path) -> None:
     ("changes", "state", "words"),
     [
         ({"last_reading_age_s": None}, "silent", "no reading yet"),
-        ({"last_reading_age_s": 95.0}, "silent", "no measurement since 2026-01-01T00:00:00"),
+        ({"last_reading_age_s": 95.0}, "silent", "no valid reading since 2026-01-01T00:00:00"),
         ({"exposures": [{"verdict": "exceeds", "ratio_mean": 2.0}]}, "exceeds", "limit is exceed"),
         ({"exposures": [{"verdict": "undecided"}]}, "undecided", "not all can be decided"),
         ({"exposures": []}, "undecided", "not all can be decided"),
         (
             {"alarms": [{"text": "half the limit", "state": "returned_unacknowledged"}]},
-            "alarm", "half the limit: returned unacknowledged",
+            "alarm", "half the limit: was present, gone now, not yet confirmed",
         ),
     ],
 )  # fmt: skip
@@ -155,11 +156,14 @@ def _exposure(**changes: object) -> list[dict[str, object]]:
     [
         (
             {"flags": ["converter clipped"]},
-            ["ratio at least 0.10 (0.1 to -,", "E at least 1.00 V/m (1 to -)"],
+            [
+                "ratio at least 0.10 (not below 0.061,",
+                "E at least 1.00 V/m, with U not below 0.74 V/m",
+            ],
         ),
         (
             {"flags": ["below the detector's range"]},
-            ["ratio below 0.30 (- to 0.3,", "E below 2.0 V/m (- to 2)"],
+            ["ratio below 0.30 (not above 0.49,", "E below 2.0 V/m, with U not above 2.7 V/m"],
         ),
         (
             {"exposures": _exposure(ratio_low=27.0, ratio_mean=None, verdict="exceeds")},
@@ -190,6 +194,46 @@ def test_a_figure_without_a_mean_ranks_by_its_lower_bound(tmp_path: Path) -> Non
     server.close()
     assert "ratio at least 27" in line
     assert (document["largest_exposure_ratio"], document["largest_is"]) == (27.0, "at_least")
+
+
+def _told(tmp_path: Path, **changes: object) -> str:
+    path = _record(tmp_path / "mill.db")
+    server = _live(path, **changes)
+    text = _run("--record", path).output
+    server.close()
+    return text
+
+
+@pytest.mark.parametrize(
+    ("device", "flags", "why"),
+    [
+        ({"connected": True, "text": "board A"}, ["detector voltage outside its valid window"],
+         "detector voltage outside its valid window (open or shorted wire?)"),
+        ({"connected": False, "text": "port gone"}, [], "the sensor is not connected"),
+    ],
+)  # fmt: skip
+def test_a_silent_box_says_why_and_what_its_device_says(
+    tmp_path: Path, device: dict[str, object], flags: list[str], why: str
+) -> None:
+    silence = {"key": "silence", "text": "no valid reading", "state": "acknowledged"}
+    text = _told(tmp_path, last_reading_age_s=1.0, alarms=[silence], device=device, flags=flags)
+    assert f"silent: no valid reading since 2026-01-01T00:00:00.000Z: {why}" in text
+    state = "connected" if device["connected"] else "not connected"
+    assert f"device   {state} ({device['text']})." in text
+
+
+def test_its_words_are_those_of_the_pages(tmp_path: Path) -> None:
+    alarms = [
+        {"key": "half | fcc-1.1310 general_public local 360 s", "state": state, "level": 0.5}
+        for state in ("unacknowledged", "shelved")
+    ]
+    exposures = _exposure(set="fcc-1.1310", verdict="conforms")
+    text = _told(tmp_path, alarms=alarms, exposures=exposures)
+    assert "47 CFR 1.1310, general public, local, 6 min: exposure ratio 0.20" in text
+    assert "half: 47 CFR 1.1310, general public, local, 6 min: over, not yet confirmed" in text
+    assert "general public, local, 6 min: muted" in text
+    for machine in ("fcc-1.1310", "shelved", "acknowledged", "general_public"):
+        assert machine not in text
 
 
 def test_order_of_states() -> None:

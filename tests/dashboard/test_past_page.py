@@ -36,7 +36,7 @@ def test_the_summary_names_the_largest_average_and_when(tmp_path: Path) -> None:
     page = _get(tmp_path, "?show=ratio&averaging=1800")
     said = f"0.49 of the limit (49 %), ending 2025-03-01 {at:%H:%M} UTC."
     assert f"Largest thirty-minute average: {said}" in page
-    assert "Expanded uncertainty there: 2.6 dB." in page
+    assert "Expanded uncertainty of E there: 2.6 dB." in page
 
 
 def test_gaps_are_drawn_counted_and_named(tmp_path: Path) -> None:
@@ -135,7 +135,8 @@ def test_events_are_told_in_words_and_escaped(tmp_path: Path) -> None:
     "query",
     [
         "?from=2025-13-01", "?from=x&to=y", "?from=2025-03-02&to=2025-03-01", "?averaging=7",
-        "?show=db", "?scale=cubic", "?scope=-1", "?from=%00", "?from=99999-01-01",
+        "?show=db", "?scale=cubic", "?scope=-1",
+        "?scope=99", "?limit=none", "?scope=" + "9" * 5000, "?from=%00", "?from=99999-01-01",
     ],
 )  # fmt: skip
 def test_wrong_questions_are_one_line_with_a_remedy(query: str, tmp_path: Path) -> None:

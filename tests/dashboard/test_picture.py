@@ -113,3 +113,13 @@ def test_words_about_the_level_stay_in_the_recess_and_off_the_ledge(ratio: float
     drawn = picture.draw(_ratio(ratio), filled=True)
     assert HEAD_Y + 10 <= drawn.label_y <= FLOOR_Y
     assert not LEDGE_Y < drawn.label_y < LEDGE_Y + 14
+
+
+@pytest.mark.parametrize("ratio", [0.02, 0.05, 0.2, 0.23, 0.25, 0.27, 0.5])
+def test_no_label_of_a_level_stands_on_the_line(ratio: float) -> None:
+    levels = [{"name": "a", "ratio": 0.25}, {"name": "b", "ratio": 0.02}]
+    drawn = picture.draw(_ratio(ratio), filled=False, levels=levels)
+    for notch in drawn.notches:
+        top, bottom = notch.label_y - 13, notch.label_y + 4  # 14 px words: above and below
+        assert drawn.level_y is not None
+        assert not top < drawn.level_y < bottom, notch

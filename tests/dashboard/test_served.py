@@ -75,8 +75,8 @@ def test_over_a_record_without_a_daemon(tmp_path: Path) -> None:
         assert address.startswith("http" + "://127.0.0.1:")
         code, page = _get(address)
         assert code == 200
-        assert "No measurement since 2023-11-14 23:43 UTC; this says nothing" in page
-        assert "Invented data: rehearsal." in page
+        assert "No measurement since 2023-11-14 23:43:19 UTC; this says nothing" in page
+        assert "Invented data." in page
         span = "from=2023-11-14T22:13:20Z&to=2023-11-14T23:43:20Z"
         code, text = _get(f"{address}/api/history?averaging=1800&{span}")
         found = json.loads(text)
