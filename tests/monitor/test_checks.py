@@ -114,7 +114,7 @@ def test_a_sensor_without_bands_has_none_to_compare() -> None:
     assert compare_bands(example("detector-board"), None, 0.0) is None
 
 
-def test_an_examples_figures_are_noted_as_invented(tmp_path: Path) -> None:
+def test_an_examples_figures_are_noted_as_invented() -> None:
     texts = [found.text for found in noted(example("detector-board"), "calibration")]
     assert [text for text in texts if "invented" in text] == [
         "figures of an example, invented: nothing will ever conform; once every figure and every"

@@ -86,3 +86,27 @@ def test_check_hears_the_board(folder: Path) -> None:
     heard = fieldsill("check", "--site", real).stdout.splitlines()[-1]
     assert re.match(r"note +sensor +no reading came in 3 s: .*says that it is simulated", heard)
     assert not (folder / "record.db").exists()
+
+
+def test_a_rehearsal_says_its_address_twice_and_where_its_record_is(tmp_path: Path) -> None:
+    folder, out, err = tmp_path / "new", tmp_path / "out", tmp_path / "err"
+    with out.open("w") as to_out, err.open("w") as to_err:
+        rehearse = subprocess.Popen(
+            [sys.executable, "-m", "monitor", "rehearse", "--history", "60s", "--folder", folder],
+            stdout=to_out, stderr=to_err,
+        )  # fmt: skip
+    try:
+        wait_for(lambda: len(re.findall("http://", out.read_text())) == 2)
+        wait_for(lambda: "written in" in out.read_text())
+        _, measure, serve = children(rehearse.pid)
+        subprocess.run(["kill", str(measure)], check=True)
+        wait_for(lambda: "fieldsill: measure ended; again in 1 s\n" in err.read_text())
+        wait_for(lambda: len(set(children(rehearse.pid)) - {measure}) == 3)
+        assert serve in children(rehearse.pid)
+    finally:
+        rehearse.terminate()
+        code = rehearse.wait(40)
+    assert code == 0
+    lines = out.read_text().splitlines()
+    assert lines[-1] == f"Stopped; record kept at {folder / 'record.db'}"
+    assert len([line for line in lines if "http://" in line]) == 2
