@@ -95,7 +95,7 @@ def test_alarms_are_marked_on_the_curve_by_the_number_of_their_line(tmp_path: Pa
     assert page.count('class="pennant"') == 2  # one in each of the two drawings
     assert len(re.findall(r'class="pennant-text"[^>]*>1</text>', page)) == 2
     assert '<span class="number">1</span> <span class="when">2025-03-01 01:00 UTC' in page
-    assert "A numbered pennant: an alarm began" in page
+    assert "A numbered pennant: an alarm began, named under What happened. Limits" in page
 
 
 def test_pennants_stand_at_their_time_and_numbers_keep_off_each_other() -> None:

@@ -176,7 +176,7 @@ def test_confirming_and_muting_are_explained_where_they_can_be_done(tmp_path: Pa
     now = snapshot(0.72, alarms=[alarm("unacknowledged")])
     here = _text(client_over(now, tmp_path).get("/").text)
     assert "Confirm: you have seen the alarm." in here
-    assert "Mute: the alarm waits for nobody for that time." in here
+    assert "Mute: the alarm asks for nobody during that time." in here
     away = _text(client_over(now, tmp_path, loopback=False).get("/").text)
     assert "Mute:" not in away
 
