@@ -57,7 +57,9 @@ def _cause(snapshot: Snapshot, flags: list[str]) -> str:
     if not (snapshot.get("device") or {}).get("connected", True):
         return "the sensor is not connected"
     if NO_WIRE in flags:
-        return f"{NO_WIRE} (open or shorted wire?)"
+        # At the strong end an overload gives the same voltage: it must not pass for a bad wire.
+        overload = "too strong a field, or an " if WORDS[Flag.ABOVE_RANGE] in flags else ""
+        return f"{NO_WIRE} ({overload}open or shorted wire?)"
     return "the sensor is connected, but sends none"
 
 

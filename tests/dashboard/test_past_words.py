@@ -9,7 +9,7 @@ from pathlib import Path
 
 import numpy as np
 
-from dashboard import chart, span
+from dashboard import chart, events, span
 from dashboard.words import utc_of
 from monitor.core.flags import Flag
 from monitor.record.types import EventRow, History, Latest, LatestExposure
@@ -107,8 +107,6 @@ def test_pennants_stand_at_their_time_and_numbers_keep_off_each_other() -> None:
 
 
 def test_alarms_that_end_are_not_numbered() -> None:
-    from dashboard import events
-
     found = [
         EventRow(DAY_NS, 3, 0, "alarm", KEY, {"raised": raised, "exposure_ratio": 0.5})
         for raised in (True, False, True)

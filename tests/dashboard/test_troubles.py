@@ -10,7 +10,7 @@ from typing import Any
 import pytest
 
 from dashboard import reservations
-from dashboard.models import Heard, Station, read_live
+from dashboard.models import Doors, Heard, Station, read_live
 from dashboard.words import utc_of
 from monitor.core.alarms import INSTRUMENT_TEXTS
 from monitor.core.flags import WORDS, Flag
@@ -67,6 +67,14 @@ def test_a_dead_wire_is_no_valid_reading_with_its_cause(
     assert health.json["state"] == "silent"
 
 
+def test_a_voltage_that_an_overload_gives_too_is_not_called_a_bad_wire_alone(
+    tmp_path: Path,
+) -> None:
+    now = snapshot(flags=[WORDS[Flag.ABOVE_RANGE], NO_WIRE], alarms=[_instrument("silence")])
+    heading = _heading(client_over(now, tmp_path).get("/").text)
+    assert "(too strong a field, or an open or shorted wire?)" in heading
+
+
 def test_a_sensor_that_is_gone_is_the_cause_before_an_old_flag(tmp_path: Path) -> None:
     device = {"connected": False, "text": "port gone", "counters": {}}
     now = snapshot(flags=[NO_WIRE], device=device, last_reading_age_s=31.0)
@@ -120,8 +128,6 @@ def test_how_long_it_has_not_answered_is_counted_from_its_last_answer(tmp_path: 
     record = tmp_path / "r.db"
     record.touch()
     daemon, at = FakeDaemon(snapshot()), [NOON_NS]
-    from dashboard.models import Doors
-
     doors = Doors(daemon.ask, lambda _: FakeRecord(), lambda: at[0])
     station, heard = Station(record, tmp_path / "r.sock"), Heard()
     assert read_live(station, doors, heard).unheard_s is None
