@@ -57,6 +57,7 @@ class AlarmDesk:
         if key not in self._alarms:
             raise ConfigError(f"no alarm {key!r}; reload the page")
         who = text_of(wanted, "by", 200, "")
+        now_ns = max(now_ns, self._alarms[key].since_ns)  # events are kept in the order of time
         if do == "acknowledge":
             return Event(now_ns, "confirmed", key, {"by": who})
         if do == "unshelve":

@@ -40,6 +40,7 @@ class Child:
     wait_s: float = FIRST_WAIT_S
     started_s: float = 0.0
     again_s: float = field(default=0.0)
+    lived: bool = False
 
     def start(self, now_s: float) -> None:
         """Start the process; its output goes where ours goes."""
@@ -54,20 +55,24 @@ class Child:
 def look(child: Child, now_s: float, tell: Callable[[str], None]) -> int | None:
     """Start a child that has ended once more, later each time; its code where it may not be.
 
-    A wrong site file (2) or what is missing (3) is final soon after a start: trying again would
-    hide it.
+    A wrong site file (2) or what is missing (3) is final soon after the first start: trying again
+    would hide it. One that has once lived is always started again.
     """
     code = child.code()
     if child.process is not None and code is None:
         if now_s - child.started_s > LONGEST_WAIT_S:
-            child.wait_s = FIRST_WAIT_S
+            child.wait_s, child.lived = FIRST_WAIT_S, True
         return None
     if child.process is None:
         if now_s >= child.again_s and (child.started_s or child.may_start()):
-            child.start(now_s)
+            try:
+                child.start(now_s)
+            except OSError as error:
+                tell(f"fieldsill: {child.name} cannot be started: {error}; again soon")
+                child.again_s = now_s + LONGEST_WAIT_S
         return None
-    soon = now_s - child.started_s < SOON_S
-    if (code == 0 and child.finishes) or (code in (2, 3) and soon):
+    child.lived = child.lived or now_s - child.started_s >= SOON_S
+    if (code == 0 and child.finishes) or (code in (2, 3) and not child.lived):
         return code
     ended = f"fieldsill: {child.name} ended" + (f" with {code}" if code else "")
     if not child.lasting:

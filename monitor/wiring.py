@@ -18,7 +18,7 @@ from monitor.core.alarms import AlertRule, watches
 from monitor.core.calibration import Chain
 from monitor.core.errors import ConfigError
 from monitor.core.exposure import least_coefficient, scope_coefficients
-from monitor.core.judgement import GAPS
+from monitor.core.judgement import INSTRUMENT_KEYS
 from monitor.core.limits import Scope, ratio_per_e2, scopes
 from monitor.core.readings import FrontEnd
 from monitor.core.rows import Event
@@ -29,7 +29,7 @@ from monitor.listening import heard, left_alone
 from monitor.record import connect
 from monitor.record.background import WriterThread
 from monitor.record.writer import Writer
-from monitor.recovery import recovered
+from monitor.recovery import Run, recovered
 from monitor.snapshot import rfc3339
 
 QUEUE_DEPTH = 8
@@ -161,7 +161,8 @@ def daemon_for(site: Site, *, history_s: float | None = None) -> Daemon:
 
     thread = WriterThread.opening(site.record_path, site.simulated, prepare, QUEUE_DEPTH)
     boot_ns = 0 if front.owns_clock else clock.boot_ns()
-    found = recovered(site.record_path, boot_id, kind, here, boot_ns)
+    run = Run(boot_id, kind, boot_ns, chain_identity(chain))
+    found = recovered(site.record_path, run, here)
     if found.ended is not None:
         thread.put(*found.ended, block=False)
     daemon = Daemon(
@@ -171,7 +172,11 @@ def daemon_for(site: Site, *, history_s: float | None = None) -> Daemon:
     hashes: dict[str, object] = {
         name: hashlib.sha256(body).hexdigest() for name, _, body in documents
     }
+    hashes["chain"] = run.chain
     daemon.note(Event(found.state.front_ns, "start", "daemon", hashes))
+    if found.trouble:
+        why: dict[str, object] = {"why": found.trouble}
+        daemon.note(Event(found.state.front_ns, "fault", "windows begin empty", why))
     for event in _orphans(here, found.desk, found.state.front_ns):
         found.desk.apply(event)
         daemon.note(event)
@@ -194,6 +199,13 @@ def _boot(site: Site, front: FrontEnd, clock: SystemClock) -> tuple[str, str]:
     return f"{path.name} from {began} sha256 {digest}", "series"
 
 
+def chain_identity(chain: Chain) -> str:
+    """What power and E squared per watt are made of: equal where figures may be added."""
+    arrays = [*chain.frequencies_hz, *chain.k]
+    parts = [table.to_bytes() for table in chain.tables] + [array.tobytes() for array in arrays]
+    return hashlib.sha256(b"".join(parts)).hexdigest()
+
+
 def _documents(site: Site, chain: Chain) -> list[tuple[str, str, bytes]]:
     """(name, kind, body) of the files that the figures rest on."""
     documents = [("calibration", "calibration", chain.document)]
@@ -208,6 +220,6 @@ def _documents(site: Site, chain: Chain) -> list[tuple[str, str, bytes]]:
 
 def _orphans(here: Station, desk: AlarmDesk, at_ns: int) -> list[Event]:
     """Alarms that nothing watches any more return, or they would stand for ever."""
-    watched = {watch.key for watch in here.watches} | {SILENCE, GAPS, RECORD}
+    watched = {watch.key for watch in here.watches} | {SILENCE, RECORD, *INSTRUMENT_KEYS}
     body: dict[str, object] = {"raised": False, "why": "no longer watched"}
     return [Event(at_ns, "alarm", key, body) for key in sorted(desk.raised() - watched)]

@@ -69,15 +69,18 @@ class Side:
     raised: bool = False
 
 
-def codes(ratio_low: F, ratio_mean: F, valid_share: F, rule: AlertRule) -> NDArray[np.int8]:
+def codes(
+    ratio_low: F, ratio_mean: F, valid_share: F, at_least: NDArray[np.bool_], rule: AlertRule
+) -> NDArray[np.int8]:
     """Code of each point (p,), UNKNOWN where too little is valid to tell.
 
     The mean of the valid part counts from a valid share of 0.75; gaps as zero count always.
+    at_least: the window holds readings above the range: it may be over, never under.
     """
     enough = valid_share >= ENOUGH_SHARE
     over = (ratio_low >= rule.ratio) | (enough & (ratio_mean >= rule.ratio))
-    under = enough & (ratio_mean < rule.returns_at)
-    rest = np.where(enough & ~np.isnan(ratio_mean), 0, UNKNOWN)
+    under = enough & ~at_least & (ratio_mean < rule.returns_at)
+    rest = np.where(enough & ~at_least & ~np.isnan(ratio_mean), 0, UNKNOWN)
     return np.where(over, 1, np.where(under, -1, rest)).astype(np.int8)
 
 
@@ -131,6 +134,7 @@ def follow(side: Side, times_ns: I, code: NDArray[np.int8], rule: AlertRule) -> 
 
 INSTRUMENT_TEXTS = {
     "silence": "no valid reading",
+    "overload": "readings above the detector's range",
     "gaps": "less than three quarters of the last six minutes is measured",
     "record": "the record cannot be written",
 }

@@ -19,6 +19,7 @@ from monitor.core.figures import (
     valid_share,
     windows,
 )
+from monitor.core.flags import Flag
 from monitor.core.gather import Gathered
 from monitor.core.readings import NS_PER_S
 from monitor.core.rows import Event
@@ -32,6 +33,10 @@ GAPS = "gaps"
 """Key of the alarm that too little of the time is measured."""
 GAPS_RULE = AlertRule("gaps", "", "", "", 0.0, 0.0, delay_s=360.0, return_delay_s=0.0)
 """The delay lets the window fill after a start."""
+OVERLOAD = "overload"
+"""Key of the alarm that readings lay above the range: the strongest field of all may be a gap."""
+OVERLOAD_RULE = AlertRule("overload", "", "", "", 0.0, 0.0, delay_s=0.0, return_delay_s=0.0)
+INSTRUMENT_KEYS = (GAPS, OVERLOAD)
 
 
 @dataclass(frozen=True, slots=True)
@@ -63,7 +68,7 @@ def judge(
         ends = at_block_ends(closed, skip, n, BLOCK_NS)
         keep(ends.at((ends.end_ns % MINUTE_NS == 0) & ends.present), averaging_s, here, out)
         if averaging_s == here.averagings_s[0]:
-            after[-1] = _watch_gaps(ends, averaging_s, after[-1], out)
+            after[-2:] = _watch_instrument(ends, averaging_s, after[-2:], out)
         watched = [
             (i, watch)
             for i, watch in enumerate(here.watches)
@@ -112,7 +117,7 @@ def _watch(
 ) -> Side:
     low = over_channels(points.powers.low, here.least[:, watch.scope])
     mean = over_channels(points.powers.mean, here.coefficients[:, watch.scope])
-    code = codes(low, mean, points.share, watch.rule)
+    code = codes(low, mean, points.share, overloaded(points.sums), watch.rule)
     followed = follow(side, points.sums.end_ns, code, watch.rule)
     crossed.update(followed.crossed)
     for at, raised in followed.changes:
@@ -122,15 +127,32 @@ def _watch(
     return followed.side
 
 
-def _watch_gaps(ends: Sums, averaging_s: int, side: Side, out: Gathered) -> Side:
-    """Silence needs one unbroken pause; many short ones, or one dead axis, blind as well."""
+def overloaded(sums: Sums) -> NDArray[np.bool_]:
+    """Whether a window (p,) holds readings above the range: then only a lower bound is known."""
+    bits = int(Flag.ABOVE_RANGE | Flag.CLIPPED)
+    found: NDArray[np.bool_] = np.bitwise_or.reduce(sums.flags & bits, axis=1) != 0
+    return found
+
+
+def _watch_instrument(
+    ends: Sums, averaging_s: int, before: list[Side], out: Gathered
+) -> list[Side]:
+    """Sides of gaps and overload after these windows.
+
+    Silence needs one unbroken pause; many short ones, or one dead axis, blind as well.
+    """
     share = valid_share(ends, averaging_s)
-    code = np.where(share < ENOUGH_SHARE, 1, -1).astype(np.int8)
-    followed = follow(side, ends.end_ns, code, GAPS_RULE)
-    for at, raised in followed.changes:
-        body: dict[str, object] = {"raised": raised, "valid_share": float(share[at])}
-        out.events.append(Event(int(ends.end_ns[at]), "alarm", GAPS, body))
-    return followed.side
+    after = []
+    for key, rule, bad, side in (
+        (GAPS, GAPS_RULE, share < ENOUGH_SHARE, before[0]),
+        (OVERLOAD, OVERLOAD_RULE, overloaded(ends), before[1]),
+    ):
+        followed = follow(side, ends.end_ns, np.where(bad, 1, -1).astype(np.int8), rule)
+        for at, raised in followed.changes:
+            body: dict[str, object] = {"raised": raised, "valid_share": float(share[at])}
+            out.events.append(Event(int(ends.end_ns[at]), "alarm", key, body))
+        after.append(followed.side)
+    return after
 
 
 def _event(at_ns: int, raised: bool, figures: tuple[float, float, float], watch: Watch) -> Event:

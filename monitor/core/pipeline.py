@@ -12,7 +12,7 @@ from monitor.core.alarms import Side
 from monitor.core.blocks import BLOCK_NS, Blocks, Trace, accumulate, empty_blocks, join, to_rows
 from monitor.core.gather import Gathered, nothing
 from monitor.core.hold import Pieces, Segments, complete, cut, no_segments
-from monitor.core.judgement import GAPS, judge
+from monitor.core.judgement import INSTRUMENT_KEYS, judge
 from monitor.core.readings import NS_PER_S, Batch
 from monitor.core.silence import KEY as SILENCE
 from monitor.core.silence import Hearing, listen
@@ -59,8 +59,9 @@ def start(here: Station, boot_ns: int, raised: frozenset[str] = frozenset()) -> 
 
 
 def sides(here: Station, at_ns: int, raised: frozenset[str]) -> tuple[Side, ...]:
-    """Where each watch stands when nothing is known but which alarms are raised; gaps come last."""
-    keys = [*(watch.key for watch in here.watches), GAPS]
+    """Where each watch stands when nothing is known but which alarms are raised; those of the
+    instrument come last."""
+    keys = [*(watch.key for watch in here.watches), *INSTRUMENT_KEYS]
     return tuple(Side(0, at_ns, key in raised, key in raised) for key in keys)
 
 

@@ -7,11 +7,13 @@ from dataclasses import replace
 
 import numpy as np
 
-from monitor.core.blocks import BLOCK_NS, empty_blocks, from_rows
+from monitor.core.alarms import Side
+from monitor.core.blocks import BLOCK_NS, Blocks, Trace, empty_blocks, from_rows, join
 from monitor.core.gather import Gathered, nothing
 from monitor.core.hold import Pieces, complete, cut, no_segments
+from monitor.core.judgement import judge
 from monitor.core.pipeline import State, close, convert, history_blocks, sides, start
-from monitor.core.readings import Batch
+from monitor.core.readings import NS_PER_S, Batch
 from monitor.core.rows import BlockRows
 from monitor.core.silence import KEY, Hearing
 from monitor.core.station import Station
@@ -56,13 +58,39 @@ def resume(
         from_rows(rows, base - keep, base, channels),
         last,
         last,
-        sides(here, base * BLOCK_NS, raised),
+        _stood(from_rows(rows, base - keep, base, channels), here, raised),
         Hearing(heard, KEY in raised),
     )
     out = nothing()
     state = close(state, _from_block(cut(segments, BLOCK_NS), base), first, here, out)
     out.events.clear()  # they went with the raw counts
-    return replace(state, sides=sides(here, last, raised)), out
+    return replace(state, sides=_as_told(state.sides, here, raised)), out
+
+
+def _stood(history: Blocks, here: Station, raised: frozenset[str]) -> tuple[Side, ...]:
+    """Where each watch stood at the end of history, so that no delay begins anew.
+
+    Judged from where the shortest window has filled after the first reading.
+    """
+    full = here.averagings_s[0] * NS_PER_S // BLOCK_NS
+    seen = np.flatnonzero(history.n.sum(axis=1))
+    begun = int(seen[0]) if seen.size else history.size
+    history = history.part(begun, history.size)
+    if history.size <= full:
+        return sides(here, (history.first + history.size) * BLOCK_NS, raised)
+    none = np.empty((0, here.channels))
+    nowhere = np.empty(0, np.int64)
+    counts = none.astype(np.int64)
+    trace = Trace(nowhere, nowhere, none, counts, none, counts)
+    known = join(history, empty_blocks(history.first + history.size, 1, here.channels))
+    begin = sides(here, (history.first + full) * BLOCK_NS, raised)
+    return judge(known, history, trace, full, begin, here, nothing())
+
+
+def _as_told(after: tuple[Side, ...], here: Station, raised: frozenset[str]) -> tuple[Side, ...]:
+    """The sides with the alarms that people were told of: their events are in the record."""
+    told = sides(here, 0, raised)
+    return tuple(replace(side, raised=t.raised) for side, t in zip(after, told))
 
 
 def _first_missing(rows: BlockRows, begin: int, opened: int) -> int:

@@ -134,8 +134,18 @@ def coverage(db: sqlite3.Connection, boots: Sequence[Boot], span: tuple[int, int
     if not parts:
         return Coverage(until_ns=until_ns)
     start, end, measured = (np.concatenate(part) for part in zip(*parts))
+    return Coverage(*once(start, end, measured), until_ns)
+
+
+def once(start: I, end: I, measured: F) -> tuple[I, I, F]:
+    """Stretches in order, none over another: time measured in two boots counts once."""
     order = np.argsort(start, kind="stable")
-    return Coverage(start[order], end[order], measured[order], until_ns)
+    start, end, measured = start[order], end[order], measured[order]
+    before = np.r_[np.int64(-(2**62)), np.maximum.accumulate(end)[:-1]]
+    free = np.maximum(start, before)
+    kept = free < end
+    share = (end - free)[kept] / np.maximum((end - start)[kept], 1)
+    return free[kept], end[kept], measured[kept] * share
 
 
 def _stretches(hour: I, measured_ns: I, minutes: I) -> tuple[I, I, F]:

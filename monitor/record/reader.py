@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 import math
 import sqlite3
 from collections.abc import Iterator
@@ -200,6 +201,12 @@ class Record:
         boots = self.boots()
         with self._one_line():
             return happened.between(self._db, boots, (start_utc_ns, end_utc_ns), limit)
+
+    def starts(self, boot: int) -> list[tuple[int, str]]:
+        """(boot_ns, identity of the chain) of each start of the daemon in a boot, in order."""
+        query = "SELECT boot_ns, body FROM events WHERE boot = ? AND kind = 'start' ORDER BY event"
+        rows = self._all(query, boot)
+        return [(boot_ns, str(json.loads(body).get("chain", ""))) for boot_ns, body in rows]
 
     def alarm_events(self) -> list[EventRow]:
         """The few events that leave every alarm as all events would, oldest first.

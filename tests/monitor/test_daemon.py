@@ -6,10 +6,13 @@ import numpy as np
 import pytest
 
 from monitor.alarm_desk import AlarmDesk
+from monitor.core import pipeline
 from monitor.core.alarms import AlertRule
 from monitor.core.errors import ConfigError
 from monitor.core.flags import Flag
-from monitor.core.readings import MISSING
+from monitor.core.gather import stack
+from monitor.core.readings import MISSING, Batch
+from monitor.core.resume import resume
 from monitor.core.rows import Event
 from monitor.record.types import EventRow
 from tests.core.stations import made
@@ -160,3 +163,57 @@ def test_a_desk_restored_from_events_stands_as_before() -> None:
     assert same.raised() == new.raised() == {"a", "b"}
     same.apply(Event(60, "alarm", "a", {"raised": False}))
     assert same.alarms()["a"].state(61) == "normal"
+
+
+def test_an_overload_is_an_alarm_at_once_and_nothing_returns_meanwhile() -> None:
+    """24 s in each 100 s at the rail, which reads as a gap: the valid share of 0.76 is enough."""
+    here = made(1, ratio_per_e2=1.0, rules=(LEVEL,))
+    desk = Desk(here)
+    desk.feed(range(400), [OVER] * 400)
+    key = here.watches[0].key
+    assert desk.states() == {key: "unacknowledged"}
+    times = np.arange(400, 2000)
+    rail = times % 100 < 24
+    for first in range(0, times.size, 10):
+        part = slice(first, first + 10)
+        counts = np.where(rail[part], MISSING, UNDER).astype(np.int32)[:, None]
+        flags = np.where(rail[part], int(Flag.ABOVE_RANGE), 0).astype(np.int32)
+        now = int(times[part][-1]) * 1_000_000_000
+        batch = Batch(times[part].astype(np.int64) * 1_000_000_000, counts, flags, now)
+        desk.front.batches.append(batch)
+        desk.daemon.turn()
+    assert desk.states() == {key: "unacknowledged", "overload": "unacknowledged"}
+    desk.feed(range(2000, 2800), [UNDER] * 800)
+    assert set(desk.states().values()) == {"returned_unacknowledged"}
+
+
+def test_restarts_do_not_put_the_gaps_alarm_off() -> None:
+    """One axis is dead and the daemon is started again every five minutes."""
+    here = made(2, ratio_per_e2=1.0)
+    kept, rows, raised = [], [], frozenset[str]()
+    state = pipeline.start(here, 0)
+    events = []
+    for run in range(8):
+        for first in range(run * 300, run * 300 + 300, 10):
+            times = np.arange(first, first + 10, dtype=np.int64) * 1_000_000_000
+            counts = np.tile(np.array([UNDER, MISSING], np.int32), (10, 1))
+            batch = Batch(times, counts, np.zeros(10, np.int32), int(times[-1]))
+            state, out = pipeline.step(state, batch, here)
+            kept.append(batch)
+            rows += out.blocks
+            events += [event.name for event in out.events]
+        blocks = stack(rows)
+        assert blocks is not None
+        state, missing = resume(here, blocks, kept, 0, raised)
+        rows += missing.blocks
+    assert "gaps" in events
+
+
+def test_a_confirmation_comes_after_what_it_confirms() -> None:
+    desk = Desk(made(1, hold_s=600.0))
+    desk.feed(range(2), [UNDER] * 2)
+    desk.idle(45)
+    desk.daemon.answer({"do": "acknowledge", "key": "silence"})
+    desk.idle(60)
+    events = [e for c in desk.writer.commits for e in c.events if e.name == "silence"]
+    assert [e.kind for e in events] == ["alarm", "confirmed"]

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import sqlite3
 from dataclasses import fields
 from pathlib import Path
 
@@ -11,11 +12,12 @@ import pytest
 from monitor.core import pipeline
 from monitor.core.gather import Gathered, nothing, stack
 from monitor.core.readings import Batch
+from monitor.core.rows import Event
 from monitor.record import connect
 from monitor.record.reader import Record
 from monitor.record.types import Commit
 from monitor.record.writer import Writer
-from monitor.recovery import recovered
+from monitor.recovery import EVER_NS, Run, recovered, same_chain_since
 from tests.core.stations import SCOPES, made
 
 S = 1_000_000_000
@@ -35,6 +37,7 @@ def killed(path: Path, boot_id: str, until_s: int, rows_until_s: int) -> Gathere
     boot = writer.begin_boot(boot_id, "machine")
     writer.put_channels([(0, "x", "x", "all"), (1, "y", "y", "all")])
     writer.put_scopes(SCOPES)
+    writer.commit(boot, Commit(events=(Event(0, "start", "daemon", {"chain": "one"}),)))
     state, out = pipeline.start(HERE, 0), nothing()
     for first in range(0, until_s, 10):
         part = batch(first, min(first + 10, until_s))
@@ -59,7 +62,7 @@ def test_within_a_boot_nothing_is_missing_afterwards(
 ) -> None:
     path = tmp_path / "record.db"
     whole = killed(path, "a", until_s, rows_until_s)
-    found = recovered(path, "a", "machine", HERE, 0)
+    found = recovered(path, Run("a", "machine", 0, "one"), HERE)
     writer = Writer(path, simulated=False)
     boot = writer.begin_boot("a", "machine")
     writer.put_scopes(SCOPES)
@@ -93,7 +96,7 @@ def _straight(until_s: int) -> pipeline.State:
 def test_the_last_minute_of_a_boot_that_was_cut_off_is_made_good(tmp_path: Path) -> None:
     path = tmp_path / "record.db"
     whole = killed(path, "a", 2147, 2090)
-    found = recovered(path, "b", "machine", HERE, 0)
+    found = recovered(path, Run("b", "machine", 0, "one"), HERE)
     assert found.state.history.n.sum() == 0  # a new boot has empty windows
     assert found.ended is not None
     number, commit = found.ended
@@ -110,6 +113,38 @@ def test_the_last_minute_of_a_boot_that_was_cut_off_is_made_good(tmp_path: Path)
 
 
 def test_a_record_that_is_not_there_yet_is_a_new_boot(tmp_path: Path) -> None:
-    found = recovered(tmp_path / "none.db", "a", "machine", HERE, 5 * S)
+    found = recovered(tmp_path / "none.db", Run("a", "machine", 5 * S, "one"), HERE)
     assert found.state.front_ns == 5 * S
     assert found.ended is None
+
+
+def test_power_of_another_calibration_is_not_refilled(tmp_path: Path) -> None:
+    """Blocks hold power at the port: weighed by another antenna they would be another field."""
+    path = tmp_path / "record.db"
+    killed(path, "a", 2147, 2090)
+    found = recovered(path, Run("a", "machine", 3000 * S, "two"), HERE)
+    assert found.state.history.n.sum() == 0
+    assert found.state.front_ns == 3000 * S
+    assert "calibration" in found.trouble
+    assert not found.rows.blocks
+    assert recovered(path, Run("b", "machine", 0, "two"), HERE).ended is None
+
+
+def test_the_same_chain_counts_back_to_where_it_began() -> None:
+    assert same_chain_since([], "a") is None
+    assert same_chain_since([(1, "a"), (5, "b")], "a") is None
+    assert same_chain_since([(1, "a"), (5, "a")], "a") == EVER_NS
+    assert same_chain_since([(1, "b"), (5, "a"), (9, "a")], "a") == 5
+
+
+def test_a_damaged_row_costs_the_windows_and_not_the_start(tmp_path: Path) -> None:
+    path = tmp_path / "record.db"
+    killed(path, "a", 2147, 2147)
+    db = sqlite3.connect(path)
+    db.execute("UPDATE raw SET body = x'0102' WHERE seq = (SELECT max(seq) - 3 FROM raw)")
+    db.commit()
+    db.close()
+    for boot_id in ("a", "b"):
+        found = recovered(path, Run(boot_id, "machine", 3000 * S, "one"), HERE)
+        assert found.state.front_ns == 3000 * S
+        assert "damaged" in found.trouble
