@@ -9,7 +9,6 @@ import numpy as np
 
 from hardware.registry import Settings, open_front_end, settings_for
 from monitor import limitsets
-from monitor.alarm_desk import AlarmDesk
 from monitor.calfile import load_chain
 from monitor.checks import Finding, compare_bands
 from monitor.clock import SystemClock
@@ -29,7 +28,7 @@ from monitor.listening import heard, left_alone
 from monitor.record import connect
 from monitor.record.background import WriterThread
 from monitor.record.writer import Writer
-from monitor.recovery import Run, recovered
+from monitor.recovery import Recovered, Run, recovered
 from monitor.snapshot import rfc3339
 
 QUEUE_DEPTH = 8
@@ -169,18 +168,29 @@ def daemon_for(site: Site, *, history_s: float | None = None) -> Daemon:
         site, here, front, thread, clock, found.state, found.desk,
         history_s=history_s, fixes=found.fixes, rows=found.rows,
     )  # fmt: skip
-    hashes: dict[str, object] = {
-        name: hashlib.sha256(body).hexdigest() for name, _, body in documents
-    }
-    hashes["chain"] = run.chain
-    daemon.note(Event(found.state.front_ns, "start", "daemon", hashes))
-    if found.trouble:
-        why: dict[str, object] = {"why": found.trouble}
-        daemon.note(Event(found.state.front_ns, "fault", "windows begin empty", why))
-    for event in _orphans(here, found.desk, found.state.front_ns):
+    for event in _first_events(here, found, run, documents):
         found.desk.apply(event)
         daemon.note(event)
     return daemon
+
+
+def _first_events(
+    here: Station, found: Recovered, run: Run, documents: Sequence[tuple[str, str, bytes]]
+) -> list[Event]:
+    """That a run starts and on what files it rests; what it could not go on from; alarms that
+    nothing watches any more return, or they would stand for ever."""
+    at_ns = found.state.front_ns
+    body: dict[str, object] = {
+        name: hashlib.sha256(document).hexdigest() for name, _, document in documents
+    }
+    events = [Event(at_ns, "start", "daemon", body | {"chain": run.chain})]
+    if found.trouble:
+        events.append(Event(at_ns, "fault", "windows begin empty", {"why": found.trouble}))
+    watched = {watch.key for watch in here.watches} | {SILENCE, RECORD, *INSTRUMENT_KEYS}
+    gone: dict[str, object] = {"raised": False, "why": "no longer watched"}
+    return events + [
+        Event(at_ns, "alarm", key, gone) for key in sorted(found.desk.raised() - watched)
+    ]
 
 
 def _boot(site: Site, front: FrontEnd, clock: SystemClock) -> tuple[str, str]:
@@ -216,10 +226,3 @@ def _documents(site: Site, chain: Chain) -> list[tuple[str, str, bytes]]:
         for channel, table in zip(site.channels, chain.tables)
     ]
     return documents
-
-
-def _orphans(here: Station, desk: AlarmDesk, at_ns: int) -> list[Event]:
-    """Alarms that nothing watches any more return, or they would stand for ever."""
-    watched = {watch.key for watch in here.watches} | {SILENCE, RECORD, *INSTRUMENT_KEYS}
-    body: dict[str, object] = {"raised": False, "why": "no longer watched"}
-    return [Event(at_ns, "alarm", key, body) for key in sorted(desk.raised() - watched)]

@@ -53,13 +53,13 @@ def test_one_line_and_nothing_written(wrong: str, command: str, tmp_path: Path) 
     assert sorted(tmp_path.iterdir()) == before
 
 
-@pytest.mark.parametrize("command", ["check", "run"])
-def test_a_calibration_of_the_future_is_refused(command: str, tmp_path: Path) -> None:
+def test_a_calibration_of_the_future_is_refused(tmp_path: Path) -> None:
+    """By check; run refuses it only where something has set the machine's clock."""
     for each in (SITE, CALIBRATION):
         text = (EXAMPLES / each).read_text()
         text = text.replace("date = 2024", "date = 2124").replace("due = 2027", "due = 2127")
         (tmp_path / each).write_text(text)
-    done = fieldsill(command, "--site", tmp_path / SITE)
+    done = fieldsill("check", "--site", tmp_path / SITE)
     assert (done.returncode, done.stdout) == (2, "")
     (line,) = done.stderr.splitlines()
     assert line.startswith(f"fieldsill: {CALIBRATION}: calibration.date: 2124-09-14 lies in the")
