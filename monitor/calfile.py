@@ -88,6 +88,12 @@ class Parts:
         return self.certificate.invented or any(element.nameless for element in self.elements)
 
 
+def chain_of(body: bytes, channels: Sequence[Channel], bands: Mapping[str, Band]) -> cal.Chain:
+    """The chain of a calibration file's text that is kept elsewhere; errors as load_chain."""
+    top = tomlfile.parse(body, "calibration file", "calibration file")
+    return _chain(_parts(top, body), channels, bands)
+
+
 def load_parts(path: Path) -> Parts:
     """The tables of a calibration file; errors as load_chain."""
     try:
