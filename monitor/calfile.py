@@ -48,8 +48,60 @@ class Element:
     kind: str
     name: str
     axis: str
+    certificate: str
     nameless: bool
     curve: cal.FrequencyTable
+
+
+@dataclass(frozen=True, slots=True)
+class Certificate:
+    """The [calibration] table. due_utc_ns: overdue from here on, the end of its due day.
+
+    invented: its figures are said, or seen by an example's texts, to be invented.
+    """
+
+    id: str
+    number: str
+    date: datetime.date
+    due_utc_ns: int
+    valid_temperature_c: tuple[float, float]
+    invented: bool
+
+
+@dataclass(frozen=True, slots=True)
+class Parts:
+    """A calibration file, read and checked, before a channel chooses among its tables.
+
+    lines: the axis that each budget line is for ('': every one), and the line.
+    """
+
+    top: TopTable
+    body: bytes
+    certificate: Certificate
+    detectors: tuple[Detector, ...]
+    elements: tuple[Element, ...]
+    lines: tuple[tuple[str, Contribution], ...]
+
+    @property
+    def invented(self) -> bool:
+        """Whether any of its figures are an example's."""
+        return self.certificate.invented or any(element.nameless for element in self.elements)
+
+
+def chain_of(body: bytes, channels: Sequence[Channel], bands: Mapping[str, Band]) -> cal.Chain:
+    """The chain of a calibration file's text that is kept elsewhere; errors as load_chain."""
+    top = tomlfile.parse(body, "calibration file", "calibration file")
+    return _chain(_parts(top, body), channels, bands)
+
+
+def load_parts(path: Path) -> Parts:
+    """The tables of a calibration file; errors as load_chain."""
+    try:
+        return _parts(*tomlfile.read(Path(path), "calibration file"))
+    except CalibrationError:
+        raise
+    except ConfigError as error:
+        raise CalibrationError(str(error)) from None
 
 
 def load_chain(path: Path, channels: Sequence[Channel], bands: Mapping[str, Band]) -> cal.Chain:
@@ -59,31 +111,32 @@ def load_chain(path: Path, channels: Sequence[Channel], bands: Mapping[str, Band
     DeviceError where the file cannot be read.
     """
     try:
-        top, body = tomlfile.read(Path(path), "calibration file")
-        return _chain(top, body, channels, bands)
+        return _chain(load_parts(path), channels, bands)
     except CalibrationError:
         raise
     except ConfigError as error:
         raise CalibrationError(str(error)) from None
 
 
-def _chain(
-    top: TopTable, body: bytes, channels: Sequence[Channel], bands: Mapping[str, Band]
-) -> cal.Chain:
-    due_utc_ns, valid_temperature_c, invented = _certificate(top.table("calibration"))
+def _parts(top: TopTable, body: bytes) -> Parts:
+    certificate = _certificate(top.table("calibration"))
     detectors = _detectors(top)
     elements = [_element(table) for table in top.tables("element")]
-    invented |= any(element.nameless for element in elements)
     lines = [_contribution(table) for table in top.tables("contribution", [])]
     top.finish()
     if not lines:
         raise top.error(
             "contribution", "none given; a figure needs its uncertainty; add at least one"
         )
-    chosen = [_one(top, "detector", detectors, channel, "detector") for channel in channels]
-    responses = [_response(top, elements, channel, bands[channel.band]) for channel in channels]
+    return Parts(top, body, certificate, tuple(detectors), tuple(elements), tuple(lines))
+
+
+def _chain(parts: Parts, channels: Sequence[Channel], bands: Mapping[str, Band]) -> cal.Chain:
+    top, certificate = parts.top, parts.certificate
+    chosen = [detector_of(parts, channel) for channel in channels]
+    responses = [_response(parts, channel, bands[channel.band]) for channel in channels]
     contributions = tuple(
-        _budget(top, lines, channel) + cal.spread(k, channel.band) + detector.rounding
+        budget_of(parts, channel) + cal.spread(k, channel.band) + detector.rounding
         for channel, detector, (_, k) in zip(channels, chosen, responses)
     )
     if len({detector.resolution for detector in chosen}) > 1:
@@ -94,12 +147,12 @@ def _chain(
         k=tuple(k for _, k in responses),
         k_mid=np.array([cal.middle(k) for _, k in responses]),
         contributions=contributions,
-        flags=_flags(channels, chosen, invented),
-        valid_temperature_c=valid_temperature_c,
-        due_utc_ns=due_utc_ns,
+        flags=_flags(channels, chosen, parts.invented),
+        valid_temperature_c=certificate.valid_temperature_c,
+        due_utc_ns=certificate.due_utc_ns,
         resolution=chosen[0].resolution,
-        identity=hashlib.sha256(body).hexdigest(),
-        document=body,
+        identity=hashlib.sha256(parts.body).hexdigest(),
+        document=parts.body,
     )
 
 
@@ -109,14 +162,10 @@ def dated(chain: cal.Chain) -> datetime.date:
     return _date(top.table("calibration"), "date")
 
 
-def _certificate(table: Table) -> tuple[int, tuple[float, float], bool]:
-    """UTC ns from which the calibration is overdue (the end of its due day); valid temperatures.
-
-    The last: whether the figures are said, or seen by an example's texts, to be invented.
-    """
+def _certificate(table: Table) -> Certificate:
     invented = table.flag("invented", False)
-    for key in ("id", "laboratory", "certificate"):
-        text = table.text(key).strip()
+    said = {key: table.text(key).strip() for key in ("id", "laboratory", "certificate")}
+    for key, text in said.items():
         invented |= text in EXAMPLE_TEXTS
         if not text:
             raise table.error(key, "is empty; write 'none' where there is none")
@@ -126,7 +175,8 @@ def _certificate(table: Table) -> tuple[int, tuple[float, float], bool]:
     if due <= date:
         raise table.error("due", f"{due} is not after date, {date}")
     end = datetime.datetime.combine(due, datetime.time(), datetime.UTC) + datetime.timedelta(days=1)
-    return int(end.timestamp()) * NS_PER_S, temperature_c, invented
+    due_utc_ns = int(end.timestamp()) * NS_PER_S
+    return Certificate(said["id"], said["certificate"], date, due_utc_ns, temperature_c, invented)
 
 
 def _date(table: Table, key: str) -> datetime.date:
@@ -165,15 +215,24 @@ def _element(table: Table) -> Element:
     except CalibrationError as error:
         raise table.error("table", str(error)) from None
     nameless = serial in EXAMPLE_TEXTS or certificate in EXAMPLE_TEXTS
-    return Element(table, kind, f"{kind} {serial}", axis, nameless, curve)
+    return Element(table, kind, f"{kind} {serial}", axis, certificate, nameless, curve)
 
 
-def _response(
-    top: TopTable, elements: Sequence[Element], channel: Channel, band: Band
-) -> tuple[Real, Real]:
+def detector_of(parts: Parts, channel: Channel) -> Detector:
+    """The detector of the channel's axis; ConfigError unless there is one, and one only."""
+    return _one(parts.top, "detector", parts.detectors, channel, "detector")
+
+
+def elements_of(parts: Parts, channel: Channel) -> tuple[Element, list[Element]]:
+    """The antenna of the channel's axis, and all of its elements in the file's order."""
+    mine = [element for element in parts.elements if element.axis in ("", channel.axis)]
+    antennas = [element for element in mine if element.kind == "antenna"]
+    return _one(parts.top, "element", antennas, channel, "antenna"), mine
+
+
+def _response(parts: Parts, channel: Channel, band: Band) -> tuple[Real, Real]:
     """Frequencies (m,) over the band and E squared per watt (m,) of one channel."""
-    mine = [element for element in elements if element.axis in ("", channel.axis)]
-    antenna = _one(top, "element", [e for e in mine if e.kind == "antenna"], channel, "antenna")
+    antenna, mine = elements_of(parts, channel)
     frequencies_hz = cal.band_grid(band.low_hz, band.high_hz, [e.curve for e in mine])
     for element in mine:
         try:
@@ -210,14 +269,13 @@ def _contribution(table: Table) -> tuple[str, Contribution]:
     return axis, line
 
 
-def _budget(
-    top: TopTable, lines: Sequence[tuple[str, Contribution]], channel: Channel
-) -> tuple[Contribution, ...]:
-    mine = tuple(line for axis, line in lines if axis in ("", channel.axis))
+def budget_of(parts: Parts, channel: Channel) -> tuple[Contribution, ...]:
+    """The file's budget lines for the channel's axis; ConfigError where one stands twice."""
+    mine = tuple(line for axis, line in parts.lines if axis in ("", channel.axis))
     names = [line.name for line in mine]
     for name in names:
         if names.count(name) > 1:
-            raise top.error("contribution", f"{name!r} twice for channel {channel.name!r}")
+            raise parts.top.error("contribution", f"{name!r} twice for channel {channel.name!r}")
     return mine
 
 

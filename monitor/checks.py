@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections import Counter
 from collections.abc import Callable, Iterable, Iterator, Sequence
 from dataclasses import dataclass
-from datetime import UTC, datetime, timedelta
+from datetime import UTC, date, datetime, timedelta
 
 import numpy as np
 
@@ -50,7 +50,7 @@ def findings(
     DeviceError (3), one line each.
     """
     chain = load_chain(site.calibration, site.channels, site.bands)
-    _refuse_future(site, chain, now_utc_ns)
+    refuse_future_date(site.calibration.name, dated(chain), now_utc_ns)
     tops = [(scope, _top(site, chain, scope)) for scope in _scopes(site)]
     yield from _site(site)
     yield from _calibration(chain, now_utc_ns)
@@ -68,14 +68,15 @@ def findings(
 def refuse_future(site: Site, now_utc_ns: int) -> None:
     """CalibrationError where the site's calibration is dated in the future."""
     chain = load_chain(site.calibration, site.channels, site.bands)
-    _refuse_future(site, chain, now_utc_ns)
+    refuse_future_date(site.calibration.name, dated(chain), now_utc_ns)
 
 
-def _refuse_future(site: Site, chain: Chain, now_utc_ns: int) -> None:
-    now, date = _EPOCH + timedelta(microseconds=now_utc_ns // 1000), dated(chain)
+def refuse_future_date(name: str, date: date, now_utc_ns: int) -> None:
+    """CalibrationError where the calibration file of that name is dated in the future."""
+    now = _EPOCH + timedelta(microseconds=now_utc_ns // 1000)
     if date > (now + AHEAD_OF_UTC).date():
         raise CalibrationError(
-            f"{site.calibration.name}: calibration.date: {date} lies in the future, this machine's "
+            f"{name}: calibration.date: {date} lies in the future, this machine's "
             f"clock says {now:%Y-%m-%d}; look at the date or the clock"
         )
 

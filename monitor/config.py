@@ -96,7 +96,15 @@ def load_site(path: Path | str) -> Site:
     path = Path(path).absolute()
     if not path.is_file():
         raise ConfigError(f"no site file {path}; write one from hardware/examples")
-    top, _ = tomlfile.read(path, "site file")
+    return _read(tomlfile.read(path, "site file")[0], path)
+
+
+def site_of(body: bytes, path: Path) -> Site:
+    """The site of a text that is kept elsewhere; path: where its relative paths begin."""
+    return _read(tomlfile.parse(body, path.name, "site file"), path)
+
+
+def _read(top: TopTable, path: Path) -> Site:
     values: dict[str, object] = {"path": path}
     values |= _site(top.table("site")) | _record(top.table("record"), path.parent)
     values |= _sensor(top, path.parent) | _pages(top.table("pages", {}))

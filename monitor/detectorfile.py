@@ -8,6 +8,7 @@ from monitor.core import detector as det
 from monitor.core.calibration import CountTable
 from monitor.core.errors import CalibrationError
 from monitor.core.keys import Table
+from monitor.core.law import CurveLaw, Law, ScaleLaw
 from monitor.core.uncertainty import Contribution
 from monitor.tomlfile import pair, rows
 
@@ -19,13 +20,17 @@ SCALE_MARGIN_DB = 20.0
 
 @dataclass(frozen=True, slots=True)
 class Detector:
-    """A detector's count table. resolution: what a count stands for; None for converter counts."""
+    """A detector's count table, and the law that it was made from.
+
+    resolution: what a count stands for; None for converter counts.
+    """
 
     axis: str
     averages: str
     table: CountTable
     resolution: float | None
     rounding: tuple[Contribution, ...]
+    law: Law
 
 
 def read_detector(table: Table) -> Detector:
@@ -34,12 +39,12 @@ def read_detector(table: Table) -> Detector:
     kind = table.text("kind", choices=("log", "rms", "scale"))
     averages = table.text("averages", choices=AVERAGES)
     read = _scale if kind == "scale" else _curve
-    counts, resolution, half_db = read(table, kind)
+    counts, resolution, half_db, law = read(table, kind)
     table.finish()
-    return Detector(axis, averages, counts, resolution, det.rounding(half_db))
+    return Detector(axis, averages, counts, resolution, det.rounding(half_db), law)
 
 
-def _scale(table: Table, kind: str) -> tuple[CountTable, float | None, float]:
+def _scale(table: Table, kind: str) -> tuple[CountTable, float | None, float, Law]:
     quantity = table.text("quantity", "dbm", ("dbm", "dbfs"))
     resolution = table.number("resolution", low=1e-6, high=10.0)
     range_dbm = pair(table, "range_dbm")
@@ -52,10 +57,10 @@ def _scale(table: Table, kind: str) -> tuple[CountTable, float | None, float]:
         counts = det.scale_table(resolution, offset_db, valid_dbm, range_dbm)
     except CalibrationError as error:
         raise table.error("resolution", str(error)) from None
-    return counts, resolution, resolution / 2.0
+    return counts, resolution, resolution / 2.0, ScaleLaw(quantity, offset_db, valid_dbm, range_dbm)
 
 
-def _curve(table: Table, kind: str) -> tuple[CountTable, float | None, float]:
+def _curve(table: Table, kind: str) -> tuple[CountTable, float | None, float, Law]:
     points = rows(table, "curve", "[dBm, volts]")
     try:
         curve = det.Curve(points[:, 0], points[:, 1], "dbm" if kind == "log" else "amplitude")
@@ -79,7 +84,8 @@ def _curve(table: Table, kind: str) -> tuple[CountTable, float | None, float]:
         half_db = det.half_step_db(curve, converter, range_dbm)
     except CalibrationError as error:
         raise table.error("bits" if converter.rails else "volts_per_count", str(error)) from None
-    return counts, None if converter.rails else converter.volts_per_count, half_db
+    law = CurveLaw(curve, converter.volts_per_count, valid_v, range_dbm)
+    return counts, None if converter.rails else law.volts_per_count, half_db, law
 
 
 def _converter(table: Table, valid_v: tuple[float, float]) -> det.Converter:

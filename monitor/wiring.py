@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import hashlib
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 
 import numpy as np
 
@@ -18,7 +18,7 @@ from monitor.core.calibration import Chain
 from monitor.core.errors import ConfigError
 from monitor.core.exposure import least_coefficient, scope_coefficients
 from monitor.core.judgement import INSTRUMENT_KEYS
-from monitor.core.limits import Scope, ratio_per_e2, scopes
+from monitor.core.limits import LimitSet, Scope, ratio_per_e2, scopes
 from monitor.core.readings import FrontEnd
 from monitor.core.rows import Event
 from monitor.core.silence import KEY as SILENCE
@@ -53,15 +53,17 @@ def chain_for(site: Site, settings: Settings) -> Chain:
     return chain
 
 
-def station_for(site: Site, chain: Chain) -> Station:
-    """Chain, every scope of the site's limit sets, and the alert levels on them."""
+def station_for(
+    site: Site, chain: Chain, load: Callable[[str], LimitSet] = limitsets.load
+) -> Station:
+    """Chain, every scope of the site's limit sets (from load), and the alert levels on them."""
     low = min(float(grid.min()) for grid in chain.frequencies_hz)
     high = max(float(grid.max()) for grid in chain.frequencies_hz)
     found: list[Scope] = []
     most: list[list[float]] = []
     least: list[list[float]] = []
     for set_id in site.limit_sets:
-        limit_set = limitsets.load(set_id)
+        limit_set = load(set_id)
         for scope in scopes(limit_set, low, high):
             found.append(scope)
             rates = [ratio_per_e2(limit_set, scope, grid) for grid in chain.frequencies_hz]

@@ -28,14 +28,14 @@ def show(
     """Print the windows of that averaging time that end in (start, end] of UTC."""
     from monitor.record.reader import Record
 
-    first, last = _utc_ns(start, "--from", FIRST_NS), _utc_ns(end, "--to", LAST_NS)
+    first, last = utc_ns_asked(start, "--from", FIRST_NS), utc_ns_asked(end, "--to", LAST_NS)
     if not first < last:
         raise ConfigError("--from must be before --to")
     if averaging_s != int(averaging_s):
         raise ConfigError(
             f"--averaging {averaging_s:g}: a record holds whole seconds, 360 and 1800"
         )
-    with Record.open(record or _site_record()) as held:
+    with Record.open(record or site_record()) as held:
         history = held.history(first, last, int(averaging_s), MOST_POINTS)
         simulated = held.simulated
     rows = _entries(history)
@@ -54,13 +54,15 @@ def show(
         click.echo(f"no window of {averaging_s:g} s ends in that span")
 
 
-def _site_record() -> Path:
+def site_record() -> Path:
+    """The record of the site file in use."""
     from monitor.config import default_site_path, load_site
 
     return load_site(default_site_path(None)).record_path
 
 
-def _utc_ns(text: str | None, option: str, default: int) -> int:
+def utc_ns_asked(text: str | None, option: str, default: int) -> int:
+    """UTC in ns of what stands after an option, a time or a day; ConfigError names the option."""
     if text is None:
         return default
     if re.fullmatch(r"\d{4}-\d\d-\d\d", text, re.ASCII):

@@ -102,19 +102,33 @@ def curve_table(
     flagged as clipped, on the weak side as below range.
     """
     volts = _volts(converter.first, converter.last, converter)
+    power_w, flags, invalid, overload = _levels(curve, volts, valid_v, range_dbm)
+    if converter.rails:
+        top = -1 if curve.rising else 0
+        flags[-1 - top] |= np.int32(Flag.BELOW_RANGE)
+        flags[top] |= np.int32(Flag.CLIPPED)
+    if invalid.all():
+        raise CalibrationError("no count of the converter is within the valid voltages")
+    return CountTable(converter.first, *_without(power_w, flags, invalid, overload))
+
+
+def levels_at(
+    curve: Curve, volts: Real, valid_v: tuple[float, float], range_dbm: tuple[float, float]
+) -> tuple[Real, Bits]:
+    """Power (n,), W, nan where there is no reading, and flags (n,) at volts, as in curve_table."""
+    return _without(*_levels(curve, volts, valid_v, range_dbm))
+
+
+def _levels(
+    curve: Curve, volts: Real, valid_v: tuple[float, float], range_dbm: tuple[float, float]
+) -> tuple[Real, Bits, NDArray[np.bool_], NDArray[np.bool_]]:
+    """Power in W, range flags, where no reading is, and where an overload looks the same."""
     dbm = curve.dbm_at(volts)
     low, high = (volts < curve.volts.min(), volts > curve.volts.max())
     under, over = (volts < valid_v[0], volts > valid_v[1])
     weak, strong, overload = (low, high, over) if curve.rising else (high, low, under)
-    below, above = weak | (dbm < range_dbm[0]), strong | (dbm > range_dbm[1])
-    if converter.rails:
-        top = -1 if curve.rising else 0
-        below[-1 - top] = True
-    flags = _range_flags(below, above)
-    if converter.rails:
-        flags[top] |= np.int32(Flag.CLIPPED)
-    power_w = w_from_dbm(np.clip(dbm, *range_dbm))
-    return _without(converter.first, power_w, flags, under | over, overload)
+    flags = _range_flags(weak | (dbm < range_dbm[0]), strong | (dbm > range_dbm[1]))
+    return w_from_dbm(np.clip(dbm, *range_dbm)), flags, under | over, overload
 
 
 def scale_table(
@@ -138,7 +152,8 @@ def scale_table(
     grace = 1e-6 * resolution
     flags = _range_flags(dbm < range_dbm[0] - grace, dbm > range_dbm[1] + grace)
     too_strong = counts > last
-    return _without(first, w_from_dbm(np.clip(dbm, *range_dbm)), flags, too_strong, too_strong)
+    power_w = w_from_dbm(np.clip(dbm, *range_dbm))
+    return CountTable(first, *_without(power_w, flags, too_strong, too_strong))
 
 
 def rounding(half_step_db: float) -> tuple[Contribution, ...]:
@@ -177,19 +192,13 @@ def _range_flags(below: NDArray[np.bool_], above: NDArray[np.bool_]) -> Bits:
 
 
 def _without(
-    first: int,
-    power_w: Real,
-    flags: Bits,
-    invalid: NDArray[np.bool_],
-    overload: NDArray[np.bool_],
-) -> CountTable:
-    """The table with the invalid counts struck out; CalibrationError where none is left.
+    power_w: Real, flags: Bits, invalid: NDArray[np.bool_], overload: NDArray[np.bool_]
+) -> tuple[Real, Bits]:
+    """Powers and flags with the invalid readings struck out.
 
     overload: those among them that an overload gives as well as an open wire.
     """
-    if invalid.all():
-        raise CalibrationError("no count of the converter is within the valid voltages")
     struck = np.where(overload, flags & int(Flag.CLIPPED) | int(Flag.ABOVE_RANGE), 0)
     struck |= int(Flag.NO_SIGNAL_WIRE)
     bits = np.where(invalid, struck, flags).astype(np.int32)
-    return CountTable(first, np.where(invalid, np.nan, power_w), bits)
+    return np.where(invalid, np.nan, power_w), bits

@@ -1,0 +1,134 @@
+"""What fieldsill explain prints for people, of its JSON document."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator
+from typing import Any
+
+from monitor.core.limits import frequency_text
+
+Document = dict[str, Any]
+VERDICTS = {"exceeds": "exceeds", "conforms": "conforms", "undecided": "cannot be decided"}
+CAUTION = (
+    "At this instrument's place. Which limits bind is for local codes and licensed practice to say."
+)
+
+
+def lines(told: Document) -> Iterator[str]:
+    """From the raw counts to the verdicts, then what it rests on and whether it comes out again."""
+    if told["simulated"]:
+        yield "SIMULATED: these figures are invented"
+    if told["end"] is None:
+        when = f"up to {told['end_boot_ns'] / 1e9:.10g} s of boot {told['boot']}, UTC not known"
+    else:
+        when = f"{told['start']} to {told['end']}"
+    yield f"Mean over {told['averaging_s']} s, {when}"
+    yield f"\n1. Raw counts: {told['readings']} readings"
+    for channel in told["channels"]:
+        yield f"  {_counts(channel)}"
+    yield "\n2. Power at the detector's port, by each channel's count table, in blocks of 10 s"
+    for channel in told["channels"]:
+        yield f"  {_power(channel)}"
+    yield "\n3. Response: E squared per watt over the band, V2/m2 per W"
+    for channel in told["channels"]:
+        yield f"  {_response(channel)}"
+    yield from _field(told["field"])
+    yield from _budget(told["uncertainty"], told["field"])
+    yield "\n6. Against the limits"
+    for exposure in told["exposures"]:
+        yield from _exposure(exposure)
+    if not told["exposures"]:
+        yield f"  no limit is averaged over {told['averaging_s']} s"
+    yield "\n7. Files it rests on, by their SHA-256"
+    for name, digest in told["documents"].items():
+        yield f"  {name:<24} {digest}"
+    yield ""
+    yield from _recomputed(told["recomputed"])
+    yield CAUTION
+
+
+def _counts(channel: Document) -> str:
+    axis = f" (axis {channel['axis']})" if channel["axis"] else ""
+    missing = f", {channel['missing']} without a figure" if channel["missing"] else ""
+    span = "none" if channel["count_min"] is None else f"{channel['count_min']} to "
+    span += "" if channel["count_max"] is None else f"{channel['count_max']}"
+    return f"{channel['channel']}{axis}: n = {channel['n']}, {span}{missing}"
+
+
+def _power(channel: Document) -> str:
+    table = channel["count_table"]
+    mean = "no valid part" if channel["mean_dbm"] is None else f"{channel['mean_dbm']:.3f} dBm"
+    return (
+        f"{channel['channel']}: {channel['blocks']} blocks, {channel['blocks_valid_s']:.10g} s"
+        f" valid in them; mean of the window {mean} over {channel['valid_s']:.10g} s"
+        f" (table {table[:12] if table else 'unknown'})"
+    )
+
+
+def _response(channel: Document) -> str:
+    if channel["low_hz"] is None:
+        return f"{channel['channel']}: unknown"
+    low, mid, high = (channel[f"k_{name}_v2_per_m2_w"] for name in ("low", "mid", "high"))
+    band = " to ".join(frequency_text(channel[key]) for key in ("low_hz", "high_hz"))
+    return f"{channel['channel']}, {band}: {low:.5g} low, {mid:.5g} middle, {high:.5g} high"
+
+
+def _field(field: Document) -> Iterator[str]:
+    yield "\n4. Field strength: power times response, summed over the axes"
+    for name, what in (
+        ("low", "gaps as nothing, smallest response"),
+        ("mean", "valid part, middle response"),
+        ("high", "gaps at the highest reading, largest response"),
+        ("max", "largest readings of the axes together"),
+    ):
+        e2, e = field[f"e2_{name}_v2_per_m2"], field[f"e_{name}_v_per_m"]
+        yield f"  {name:<5} E2 {_number(e2):>10} V2/m2   E {_number(e):>8} V/m   {what}"
+    yield f"  valid for {field['valid_share']:.1%} of the time"
+    for word in field["flags"]:
+        yield f"  Note: {word}"
+
+
+def _budget(budget: list[Document] | None, field: Document) -> Iterator[str]:
+    yield "\n5. Uncertainty budget, dB"
+    if budget is None:
+        yield "  its lines are not known"
+    for line in budget or []:
+        shared = "shared by" if line["shared"] else "each of"
+        yield (
+            f"  {line['name']:<44} {line['value_db']:>7.3f} {line['distribution']:<12}"
+            f" u {line['u_db']:.3f}  {shared} {', '.join(line['channels'])}"
+        )
+    u_db = _number(field["expanded_uncertainty_db"])
+    yield f"  expanded uncertainty of the mean {u_db} dB at 95 %, k = {_number(field['k'])}"
+
+
+def _exposure(exposure: Document) -> Iterator[str]:
+    population, scope = (exposure[key].replace("_", " ") for key in ("population", "scope"))
+    verdict = VERDICTS[exposure["verdict"]]
+    yield f"  {exposure['set']}, {population}, {scope} ({exposure['clause']}): {verdict}"
+    low, high = exposure["limit_low_v_per_m"], exposure["limit_high_v_per_m"]
+    if low is not None:
+        yield f"    limit over the band {low:.4g} to {high:.4g} V/m"
+    ratios = " / ".join(_number(exposure[f"ratio_{name}"]) for name in ("low", "mean", "high"))
+    u_db = _number(exposure["expanded_uncertainty_db"])
+    yield f"    exposure ratio low / mean / high {ratios}; U {u_db} dB, the band apart"
+    for reason in exposure["reasons"] or ["why is not known"]:
+        yield f"    {reason}"
+
+
+def _recomputed(recomputed: Document) -> Iterator[str]:
+    tables = recomputed["count_tables_of_another_version"]
+    if recomputed["equal"]:
+        yield "Worked out again from the raw counts: equal to the bit."
+    elif recomputed["equal"] is None:
+        yield f"NOT worked out again: {recomputed['why']}"
+    else:
+        why = f" ({recomputed['why']})" if recomputed["why"] else ""
+        yield f"Worked out again: NOT EQUAL in {', '.join(recomputed['differs'])}{why}"
+    if tables:
+        yield f"Count tables as stored; this version makes others for {', '.join(tables)}."
+
+
+def _number(value: float) -> str:
+    return f"{value:.4g}" if math.isfinite(value) else "-"

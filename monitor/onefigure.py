@@ -1,0 +1,211 @@
+"""One detector figure through a calibration file, at one frequency, to field strength."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from monitor.calfile import (
+    Certificate,
+    Element,
+    Parts,
+    budget_of,
+    detector_of,
+    elements_of,
+)
+from monitor.config import Channel
+from monitor.core.calibration import e2_per_w
+from monitor.core.errors import ConfigError
+from monitor.core.flags import LOWER_BOUND, UPPER_BOUND, Flag
+from monitor.core.law import CurveLaw, ScaleLaw
+from monitor.core.limits import frequency_text
+from monitor.core.quantities import dbm_from_w, s_from_e, w_from_dbm
+from monitor.core.uncertainty import Contribution, expanded_db
+from monitor.detectorfile import Detector
+
+FORMS = ("counts", "volts", "dbm", "dbfs")
+
+
+@dataclass(frozen=True, slots=True)
+class Asked:
+    """A figure in one of FORMS, and the circumstances. axis '': the file knows one only."""
+
+    form: str
+    value: float
+    frequency_hz: float
+    axis: str = ""
+    temperature_c: float | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class Link:
+    """One line of the chain, detector first, then the elements as the file lists them.
+
+    gain_db: what it adds to a level on its way down: minus its loss, of an antenna minus its
+    antenna factor (dB/m); None where it changes none. u_db: standard uncertainty of the budget
+    lines of its kind, once for all elements of a kind; the squares of all lines add up.
+    """
+
+    element: str
+    kind: str
+    gain_db: float | None
+    u_db: float | None
+    certificate: str | None
+
+
+@dataclass(frozen=True, slots=True)
+class Figure:
+    """Power at the port and what it stands for; nan where the figure is no reading.
+
+    e_low, e_high: bounds at 95 %; 0 where the reading is an upper bound, inf where a lower one.
+    """
+
+    p_dbm: float
+    e_v_per_m: float
+    s_w_per_m2: float
+    u_db: float
+    k: float
+    e_low_v_per_m: float
+    e_high_v_per_m: float
+    flags: int
+    chain: tuple[Link, ...]
+    certificate: Certificate
+    volts: float | None
+
+    @property
+    def expanded_db(self) -> float:
+        """Expanded uncertainty at 95 %, dB."""
+        return self.k * self.u_db
+
+
+def through(parts: Parts, asked: Asked, now_utc_ns: int) -> Figure:
+    """Field strength of one axis for one detector figure, with bounds at 95 %.
+
+    The response is that at the frequency; its variation over a band is no part of U. ConfigError
+    for a form that the detector does not have, for an axis that must be named, and for a frequency
+    outside a table, naming the element. now_utc_ns: for whether the calibration is overdue.
+    """
+    channel = Channel("the axis", _axis(parts, asked.axis), "")
+    detector = detector_of(parts, channel)
+    antenna, elements = elements_of(parts, channel)
+    at = np.array([asked.frequency_hz])
+    for element in elements:
+        _covers(element, asked.frequency_hz)
+    losses = [element.curve for element in elements if element.kind != "antenna"]
+    p_dbm, bits = _port_dbm(parts, detector, asked)
+    per_w = float(e2_per_w(at, antenna.curve, losses)[0])
+    e = math.nan if math.isnan(p_dbm) else math.sqrt(w_from_dbm(p_dbm) * per_w)
+    lines = (*budget_of(parts, channel), *detector.rounding)
+    expanded, k = expanded_db([lines], np.ones((1, 1)))
+    bits |= _circumstances(parts, detector, asked, now_utc_ns)
+    low, high = _bounds(e, float(expanded[0]), bits)
+    return Figure(
+        p_dbm, e, s_from_e(e), float(expanded[0]) / k, k, low, high, bits,
+        _links(parts, elements, asked.frequency_hz, lines), parts.certificate,
+        _volts(detector, asked),
+    )  # fmt: skip
+
+
+def _axis(parts: Parts, axis: str) -> str:
+    """The axis, which must be named where a table is for one axis only."""
+    named = {d.axis for d in parts.detectors} | {e.axis for e in parts.elements}
+    known = sorted((named | {line_axis for line_axis, _ in parts.lines}) - {""})
+    if known and not axis:
+        raise ConfigError(
+            f"{parts.top.where}: has tables of its own for {', '.join(known)}; say which --axis"
+        )
+    return axis
+
+
+def _covers(element: Element, frequency_hz: float) -> None:
+    low, high = (float(element.curve.frequencies_hz[i]) for i in (0, -1))
+    if not low <= frequency_hz <= high:
+        raise element.where.error(
+            "table",
+            f"{element.name} covers {frequency_text(low)} to {frequency_text(high)}, not "
+            f"{frequency_text(frequency_hz)}; nothing is extrapolated; calibrate further",
+        )
+
+
+def _port_dbm(parts: Parts, detector: Detector, asked: Asked) -> tuple[float, int]:
+    """Power at the detector's port, dBm (nan: no reading), and flags."""
+    law = detector.law
+    if asked.form == "counts":
+        power_w, bits = detector.table.convert(np.array([int(asked.value)], np.int32))
+        p_w = float(power_w[0])
+        return (math.nan if math.isnan(p_w) else dbm_from_w(p_w)), int(bits[0])
+    if asked.form == "dbm":
+        return law.at_dbm(asked.value)
+    if asked.form == "volts" and isinstance(law, CurveLaw):
+        return law.at_volts(asked.value)
+    if asked.form == "dbfs" and isinstance(law, ScaleLaw) and law.quantity == "dbfs":
+        return law.at_dbm(asked.value + law.offset_db)
+    gives = "volts" if isinstance(law, CurveLaw) else {"dbm": "dBm", "dbfs": "dBFS"}[law.quantity]
+    raise ConfigError(
+        f"--{asked.form}: the detector of {parts.top.where} gives {gives}; give --counts, --dbm"
+        + ("" if gives == "dBm" else f" or --{gives.lower()}")
+    )
+
+
+def _volts(detector: Detector, asked: Asked) -> float | None:
+    """Volts at the detector, where counts or volts were given and it has any."""
+    if not isinstance(detector.law, CurveLaw):
+        return None
+    if asked.form == "counts":
+        return asked.value * detector.law.volts_per_count
+    return asked.value if asked.form == "volts" else None
+
+
+def _circumstances(parts: Parts, detector: Detector, asked: Asked, now_utc_ns: int) -> int:
+    """Flags of the calibration, the time and the temperature; one axis is a component."""
+    bits = Flag.COMPONENT_ONLY
+    if detector.averages == "log":
+        bits |= Flag.LOG_AVERAGED
+    if parts.invented:
+        bits |= Flag.INVENTED_CALIBRATION
+    if now_utc_ns >= parts.certificate.due_utc_ns:
+        bits |= Flag.CALIBRATION_OVERDUE
+    low, high = parts.certificate.valid_temperature_c
+    if asked.temperature_c is None:
+        bits |= Flag.TEMPERATURE_UNKNOWN
+    elif not low <= asked.temperature_c <= high:
+        bits |= Flag.OUT_OF_TEMPERATURE
+    return int(bits)
+
+
+def _bounds(e: float, expanded_db: float, bits: int) -> tuple[float, float]:
+    """The component's bounds: a reading at an end of the range, or of averaged logs, has one."""
+    if math.isnan(e):
+        return math.nan, math.nan
+    factor = 10.0 ** (expanded_db / 20.0)
+    one_sided = LOWER_BOUND & ~Flag.COMPONENT_ONLY
+    low = 0.0 if bits & UPPER_BOUND else e / factor
+    return low, math.inf if bits & one_sided else e * factor
+
+
+def _links(
+    parts: Parts, elements: Sequence[Element], frequency_hz: float, lines: Sequence[Contribution]
+) -> tuple[Link, ...]:
+    """Detector, elements, and what of the budget belongs to neither."""
+    squares: dict[str, float] = {}
+    kinds = {"detector", *(element.kind for element in elements)}
+    rest = [line for line in lines if line.kind not in kinds]
+    for line in lines:
+        if line.kind in kinds:
+            squares[line.kind] = squares.get(line.kind, 0.0) + line.u_db**2
+    u_db = {kind: math.sqrt(square) for kind, square in squares.items()}
+    links = [
+        Link("detector", "detector", None, u_db.pop("detector", None), parts.certificate.number)
+    ]
+    for element in elements:
+        gain_db = -float(element.curve.at(np.array([frequency_hz]))[0])
+        links.append(
+            Link(
+                element.name, element.kind, gain_db, u_db.pop(element.kind, None),
+                element.certificate,
+            )
+        )  # fmt: skip
+    return (*links, *(Link(line.name, line.kind, None, line.u_db, None) for line in rest))

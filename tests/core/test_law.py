@@ -1,0 +1,68 @@
+"""One figure by a detector's law: the count table's own answer, unrounded."""
+
+from __future__ import annotations
+
+import math
+from pathlib import Path
+
+import numpy as np
+import pytest
+
+from monitor.calfile import load_parts
+from monitor.core.flags import Flag
+from monitor.core.law import CurveLaw, ScaleLaw
+from monitor.core.quantities import w_from_dbm
+
+ROOT = Path(__file__).parents[2]
+CURVES = (
+    ROOT / "hardware/examples/detector-board-calibration.toml",
+    ROOT / "hardware/examples/text-lines-calibration.toml",
+    ROOT / "simulators/data/board-calibration.toml",
+)
+SCALES = (
+    ROOT / "hardware/examples/iq-file-calibration.toml",
+    ROOT / "hardware/examples/level-series-calibration.toml",
+)
+
+
+@pytest.mark.parametrize("path", CURVES, ids=lambda path: path.name)
+def test_volts_of_a_count_give_what_the_count_gives(path: Path) -> None:
+    """The count table is the reference: every entry but the converter's rails, 1e-12."""
+    (detector,) = load_parts(path).detectors
+    law, table = detector.law, detector.table
+    assert isinstance(law, CurveLaw)
+    seen = 0
+    for i in range(1, table.power_w.size - 1, max(table.power_w.size // 500, 1)):
+        dbm, flags = law.at_volts((table.first_count + i) * law.volts_per_count)
+        assert flags == table.flags[i]
+        seen |= flags
+        assert math.isnan(dbm) == math.isnan(table.power_w[i])
+        if not math.isnan(dbm):
+            assert w_from_dbm(dbm) == pytest.approx(table.power_w[i], rel=1e-12)
+    assert seen & Flag.NO_SIGNAL_WIRE
+    assert seen & Flag.ABOVE_RANGE
+
+
+@pytest.mark.parametrize("path", SCALES, ids=lambda path: path.name)
+def test_a_scales_figure_gives_what_its_count_gives(path: Path) -> None:
+    """The count table is the reference, over its whole length and beyond both ends."""
+    (detector,) = load_parts(path).detectors
+    law, table = detector.law, detector.table
+    assert isinstance(law, ScaleLaw)
+    assert detector.resolution is not None
+    first, n = table.first_count, table.power_w.size
+    counts = np.unique(np.linspace(first - 900, first + n + 900, 700).astype(np.int32))
+    power_w, flags = table.convert(counts)
+    for count, p_w, bits in zip(counts.tolist(), power_w.tolist(), flags.tolist()):
+        dbm, found = law.at_dbm(count * detector.resolution + law.offset_db)
+        assert found == bits, count
+        assert math.isnan(dbm) == math.isnan(p_w), count
+        if not math.isnan(dbm):
+            assert w_from_dbm(dbm) == pytest.approx(p_w, rel=1e-9)
+
+
+def test_a_power_beyond_the_range_is_the_ranges_end() -> None:
+    (detector,) = load_parts(CURVES[0]).detectors
+    assert detector.law.at_dbm(-80.0) == (-58.0, int(Flag.BELOW_RANGE))
+    assert detector.law.at_dbm(20.0) == (5.0, int(Flag.ABOVE_RANGE))
+    assert detector.law.at_dbm(-30.5) == (-30.5, 0)
