@@ -4,7 +4,7 @@ Memory and processor time are read from /proc. Bytes written are counted at the 
 filesystem of its own (ext4 with 4 KiB blocks on a loop device, its journal included, mounted as
 hardware/deploy/README.md advises) where one may be mounted, else by the kernel's account of the
 process, which leaves the journal out. Until the record's log has its full length, after about
-twenty minutes, each commit also lengthens a file, which costs more: hence the long warm-up.
+forty minutes, each commit also lengthens a file, which costs more: hence the long warm-up.
 
 FIELDSILL_BENCH_S, FIELDSILL_BENCH_WARM_UP_S: seconds measured, and waited before.
 FIELDSILL_BENCH_MOUNT: other options of mount(8), for example "defaults".
@@ -24,7 +24,7 @@ from pathlib import Path
 from tests.bench.measure import Figure
 
 MEASURE_S = float(os.environ.get("FIELDSILL_BENCH_S", "600"))
-WARM_UP_S = float(os.environ.get("FIELDSILL_BENCH_WARM_UP_S", "1300"))
+WARM_UP_S = float(os.environ.get("FIELDSILL_BENCH_WARM_UP_S", "2400"))
 MOUNT = os.environ.get("FIELDSILL_BENCH_MOUNT", "noatime,lazytime,commit=60")
 DAY_S = 86_400
 SECTOR_BYTES = 512
