@@ -5,10 +5,10 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from monitor.core import detector as det
+from monitor.core.budget import Contribution
 from monitor.core.calibration import CountTable
 from monitor.core.errors import CalibrationError
 from monitor.core.keys import Table
-from monitor.core.uncertainty import Contribution
 from monitor.tomlfile import pair, rows
 
 AVERAGES = ("none", "log", "power")
@@ -22,6 +22,7 @@ class Detector:
     """A detector's count table. resolution: what a count stands for; None for converter counts."""
 
     axis: str
+    kind: str
     averages: str
     table: CountTable
     resolution: float | None
@@ -36,7 +37,7 @@ def read_detector(table: Table) -> Detector:
     read = _scale if kind == "scale" else _curve
     counts, resolution, half_db = read(table, kind)
     table.finish()
-    return Detector(axis, averages, counts, resolution, det.rounding(half_db))
+    return Detector(axis, kind, averages, counts, resolution, det.rounding(half_db))
 
 
 def _scale(table: Table, kind: str) -> tuple[CountTable, float | None, float]:

@@ -13,7 +13,7 @@ from monitor.core.errors import FieldsillError
 
 COMMANDS = (
     "run", "measure", "serve", "rehearse", "check", "status",
-    "limits", "averages", "ratio", "iq",
+    "limits", "averages", "ratio", "iq", "calibration",
 )  # fmt: skip
 
 

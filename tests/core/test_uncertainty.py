@@ -8,8 +8,9 @@ import numpy as np
 import pytest
 from scipy import signal, stats
 
+from monitor.core.budget import Contribution
 from monitor.core.errors import CalibrationError
-from monitor.core.uncertainty import Contribution, coverage_factor, expanded_db, standard_db
+from monitor.core.uncertainty import coverage_factor, expanded_db, standard_db
 
 ONE = np.ones((1, 1))
 
@@ -32,7 +33,7 @@ def line(value: float, distribution: str = "normal", **more: object) -> Contribu
 )
 def test_standard_uncertainty_of_each_distribution(made: Contribution, u_db: float) -> None:
     """Divisors of GUM 4.3.7, 4.3.9 and, for the U-shape, H.1.3.4."""
-    assert made.u_db == pytest.approx(u_db, rel=1e-12)
+    assert made.u == pytest.approx(u_db, rel=1e-12)
     assert standard_db([[made]], ONE)[0] == pytest.approx(u_db, rel=1e-12)
 
 
