@@ -99,8 +99,14 @@ def independent(budget: Budget) -> list[Independent]:
     own: list[Independent] = []
     for channel, lines in enumerate(budget):
         for line in lines:
-            new = Independent(line.name, line.shape, line.degrees_of_freedom, np.zeros(len(budget)))
-            error = shared.setdefault(line.name, new) if line.shared else new
+            error = shared.get(line.name) if line.shared else None
+            if error is None:
+                effects = np.zeros(len(budget))
+                error = Independent(line.name, line.shape, line.degrees_of_freedom, effects)
+                if line.shared:
+                    shared[line.name] = error
+                else:
+                    own.append(error)
             if error.shape != line.shape:
                 raise CalibrationError(
                     f"{line.name}: shared, but as {error.shape} and as {line.shape}"
@@ -110,8 +116,6 @@ def independent(budget: Budget) -> list[Independent]:
                     f"{line.name}: shared, but with {error.degrees_of_freedom:g} and with"
                     f" {line.degrees_of_freedom:g} degrees of freedom"
                 )
-            if not line.shared:
-                own.append(error)
             error.effects[channel] += line.effect
     return [*shared.values(), *own]
 
