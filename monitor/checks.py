@@ -7,19 +7,18 @@ from collections.abc import Callable, Iterable, Iterator, Sequence
 from dataclasses import dataclass
 from datetime import UTC, date, datetime, timedelta
 
-import numpy as np
-
 from monitor import limitsets
-from monitor.calfile import dated, load_chain
+from monitor.calfile import load_chain
+from monitor.calparts import dated
 from monitor.config import Site
 from monitor.core.alarms import watches
-from monitor.core.calibration import Chain, CountTable
+from monitor.core.calibration import Chain
 from monitor.core.errors import CalibrationError, ConfigError, LimitError
 from monitor.core.exposure import CAP_DB, E_ALONE_FROM_HZ, scope_coefficients
 from monitor.core.flags import Flag
 from monitor.core.limits import Scope, frequency_text, ratio_per_e2, scopes
 from monitor.core.quantities import dbm_from_w
-from monitor.core.uncertainty import coverage_factor, standard_db
+from monitor.core.uncertainty import equal_shares, expanded_db
 
 DUE_SOON_DAYS = 60
 AHEAD_OF_UTC = timedelta(hours=14)
@@ -50,7 +49,7 @@ def findings(
     DeviceError (3), one line each.
     """
     chain = load_chain(site.calibration, site.channels, site.bands)
-    refuse_future_date(site.calibration.name, dated(chain), now_utc_ns)
+    refuse_future_date(site.calibration.name, dated(chain.document), now_utc_ns)
     tops = [(scope, _top(site, chain, scope)) for scope in _scopes(site)]
     yield from _site(site)
     yield from _calibration(chain, now_utc_ns)
@@ -68,7 +67,7 @@ def findings(
 def refuse_future(site: Site, now_utc_ns: int) -> None:
     """CalibrationError where the site's calibration is dated in the future."""
     chain = load_chain(site.calibration, site.channels, site.bands)
-    refuse_future_date(site.calibration.name, dated(chain), now_utc_ns)
+    refuse_future_date(site.calibration.name, dated(chain.document), now_utc_ns)
 
 
 def refuse_future_date(name: str, date: date, now_utc_ns: int) -> None:
@@ -117,7 +116,8 @@ def _calibration(chain: Chain, now_utc_ns: int) -> Iterator[Finding]:
         yield Finding(
             "calibration", "the board averages logs: every figure is a lower bound", ok=False
         )
-    u_db, k = _expanded(chain)
+    expanded, k = expanded_db(chain.contributions, equal_shares(len(chain.tables))[None, :])
+    u_db = float(expanded[0])
     over = u_db > CAP_DB
     yield Finding(
         "calibration",
@@ -136,12 +136,6 @@ def _temperature(site: Site, chain: Chain) -> Iterator[Finding]:
             "nothing will conform",
             ok=False,
         )
-
-
-def _expanded(chain: Chain) -> tuple[float, float]:
-    channels = len(chain.tables)
-    k = coverage_factor(chain.contributions)
-    return k * float(standard_db(chain.contributions, np.full((1, channels), 1 / channels))[0]), k
 
 
 def _channels(site: Site, chain: Chain) -> Iterator[Finding]:
@@ -164,18 +158,10 @@ def _channels(site: Site, chain: Chain) -> Iterator[Finding]:
         if band.low_hz < E_ALONE_FROM_HZ:
             yield Finding("band", f"{name}: no verdict from E alone below 30 MHz", ok=False)
     for channel, table, k_mid in zip(site.channels, chain.tables, chain.k_mid):
-        low_w, high_w = _range_w(table)
+        low_w, high_w = table.range_w()
         low, high = ((p_w * float(k_mid)) ** 0.5 for p_w in (low_w, high_w))
         levels = f"{dbm_from_w(low_w):.1f} to {dbm_from_w(high_w):.1f} dBm"
         yield Finding("channel", f"{channel.name}: {levels}, {low:.3g} to {high:.3g} V/m")
-
-
-def _range_w(table: CountTable) -> tuple[float, float]:
-    """Smallest and largest power that carry no flag, W; ConfigError where there is none."""
-    good = table.power_w[(table.flags == 0) & np.isfinite(table.power_w)]
-    if not good.size:
-        raise ConfigError("detector: no count lies within the range; correct bits and curve")
-    return float(good.min()), float(good.max())
 
 
 def compare_bands(
@@ -243,5 +229,5 @@ def _top(site: Site, chain: Chain, scope: Scope) -> float:
             per_e2 = ratio_per_e2(limit_set, scope, frequencies_hz)
         except LimitError as error:
             raise LimitError(f"{site.path.name}: limits.sets: {error}; take it out") from None
-        tops.append(_range_w(table)[1] * scope_coefficients(k, per_e2))
+        tops.append(table.range_w()[1] * scope_coefficients(k, per_e2))
     return min(tops)

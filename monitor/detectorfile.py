@@ -5,11 +5,11 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from monitor.core import detector as det
+from monitor.core.budget import Contribution
 from monitor.core.calibration import CountTable
 from monitor.core.errors import CalibrationError
 from monitor.core.keys import Table
 from monitor.core.law import CurveLaw, Law, ScaleLaw
-from monitor.core.uncertainty import Contribution
 from monitor.tomlfile import pair, rows
 
 AVERAGES = ("none", "log", "power")
@@ -26,6 +26,7 @@ class Detector:
     """
 
     axis: str
+    kind: str
     averages: str
     table: CountTable
     resolution: float | None
@@ -41,7 +42,7 @@ def read_detector(table: Table) -> Detector:
     read = _scale if kind == "scale" else _curve
     counts, resolution, half_db, law = read(table, kind)
     table.finish()
-    return Detector(axis, averages, counts, resolution, det.rounding(half_db), law)
+    return Detector(axis, kind, averages, counts, resolution, det.rounding(half_db), law)
 
 
 def _scale(table: Table, kind: str) -> tuple[CountTable, float | None, float, Law]:

@@ -8,22 +8,17 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from monitor.calfile import (
-    Certificate,
-    Element,
-    Parts,
-    budget_of,
-    detector_of,
-    elements_of,
-)
+from monitor.calfile import antenna_of, budget_of, detector_of
+from monitor.calparts import CalibrationFile, Certificate, Element, elements_of
 from monitor.config import Channel
+from monitor.core.budget import Contribution
 from monitor.core.calibration import e2_per_w
 from monitor.core.errors import ConfigError
 from monitor.core.flags import LOWER_BOUND, UPPER_BOUND, Flag
 from monitor.core.law import CurveLaw, ScaleLaw
 from monitor.core.limits import frequency_text
 from monitor.core.quantities import dbm_from_w, s_from_e, w_from_dbm
-from monitor.core.uncertainty import Contribution, expanded_db
+from monitor.core.uncertainty import expanded_db
 from monitor.detectorfile import Detector
 
 FORMS = ("counts", "volts", "dbm", "dbfs")
@@ -81,41 +76,41 @@ class Figure:
         return self.k * self.u_db
 
 
-def through(parts: Parts, asked: Asked, now_utc_ns: int) -> Figure:
+def through(file: CalibrationFile, asked: Asked, now_utc_ns: int) -> Figure:
     """Field strength of one axis for one detector figure, with bounds at 95 %.
 
     The response is that at the frequency; its variation over a band is no part of U. ConfigError
     for a form that the detector does not have, for an axis that must be named, and for a frequency
     outside a table, naming the element. now_utc_ns: for whether the calibration is overdue.
     """
-    channel = Channel("the axis", _axis(parts, asked.axis), "")
-    detector = detector_of(parts, channel)
-    antenna, elements = elements_of(parts, channel)
+    channel = Channel("the axis", _axis(file, asked.axis), "")
+    detector = detector_of(file, channel)
+    antenna, elements = antenna_of(file, channel), elements_of(file, channel.axis)
     at = np.array([asked.frequency_hz])
     for element in elements:
         _covers(element, asked.frequency_hz)
     losses = [element.curve for element in elements if element.kind != "antenna"]
-    p_dbm, bits = _port_dbm(parts, detector, asked)
+    p_dbm, bits = _port_dbm(file, detector, asked)
     per_w = float(e2_per_w(at, antenna.curve, losses)[0])
     e = math.nan if math.isnan(p_dbm) else math.sqrt(w_from_dbm(p_dbm) * per_w)
-    lines = (*budget_of(parts, channel), *detector.rounding)
+    lines = (*budget_of(file, channel), *detector.rounding)
     expanded, k = expanded_db([lines], np.ones((1, 1)))
-    bits |= _circumstances(parts, detector, asked, now_utc_ns)
+    bits |= _circumstances(file, detector, asked, now_utc_ns)
     low, high = _bounds(e, float(expanded[0]), bits)
     return Figure(
         p_dbm, e, s_from_e(e), float(expanded[0]) / k, k, low, high, bits,
-        _links(parts, elements, asked.frequency_hz, lines), parts.certificate,
+        _links(file, elements, asked.frequency_hz, lines), file.certificate,
         _volts(detector, asked),
     )  # fmt: skip
 
 
-def _axis(parts: Parts, axis: str) -> str:
+def _axis(file: CalibrationFile, axis: str) -> str:
     """The axis, which must be named where a table is for one axis only."""
-    named = {d.axis for d in parts.detectors} | {e.axis for e in parts.elements}
-    known = sorted((named | {line_axis for line_axis, _ in parts.lines}) - {""})
+    named = {d.axis for d in file.detectors} | {e.axis for e in file.elements}
+    known = sorted((named | {line_axis for line_axis, _ in file.lines}) - {""})
     if known and not axis:
         raise ConfigError(
-            f"{parts.top.where}: has tables of its own for {', '.join(known)}; say which --axis"
+            f"{file.top.where}: has tables of its own for {', '.join(known)}; say which --axis"
         )
     return axis
 
@@ -130,7 +125,7 @@ def _covers(element: Element, frequency_hz: float) -> None:
         )
 
 
-def _port_dbm(parts: Parts, detector: Detector, asked: Asked) -> tuple[float, int]:
+def _port_dbm(file: CalibrationFile, detector: Detector, asked: Asked) -> tuple[float, int]:
     """Power at the detector's port, dBm (nan: no reading), and flags."""
     law = detector.law
     if asked.form == "counts":
@@ -145,7 +140,7 @@ def _port_dbm(parts: Parts, detector: Detector, asked: Asked) -> tuple[float, in
         return law.at_dbm(asked.value + law.offset_db)
     gives = "volts" if isinstance(law, CurveLaw) else {"dbm": "dBm", "dbfs": "dBFS"}[law.quantity]
     raise ConfigError(
-        f"--{asked.form}: the detector of {parts.top.where} gives {gives}; give --counts, --dbm"
+        f"--{asked.form}: the detector of {file.top.where} gives {gives}; give --counts, --dbm"
         + ("" if gives == "dBm" else f" or --{gives.lower()}")
     )
 
@@ -159,16 +154,16 @@ def _volts(detector: Detector, asked: Asked) -> float | None:
     return asked.value if asked.form == "volts" else None
 
 
-def _circumstances(parts: Parts, detector: Detector, asked: Asked, now_utc_ns: int) -> int:
+def _circumstances(file: CalibrationFile, detector: Detector, asked: Asked, now_utc_ns: int) -> int:
     """Flags of the calibration, the time and the temperature; one axis is a component."""
     bits = Flag.COMPONENT_ONLY
     if detector.averages == "log":
         bits |= Flag.LOG_AVERAGED
-    if parts.invented:
+    if file.invented:
         bits |= Flag.INVENTED_CALIBRATION
-    if now_utc_ns >= parts.certificate.due_utc_ns:
+    if now_utc_ns >= file.certificate.due_utc_ns:
         bits |= Flag.CALIBRATION_OVERDUE
-    low, high = parts.certificate.valid_temperature_c
+    low, high = file.certificate.valid_temperature_c
     if asked.temperature_c is None:
         bits |= Flag.TEMPERATURE_UNKNOWN
     elif not low <= asked.temperature_c <= high:
@@ -187,7 +182,10 @@ def _bounds(e: float, expanded_db: float, bits: int) -> tuple[float, float]:
 
 
 def _links(
-    parts: Parts, elements: Sequence[Element], frequency_hz: float, lines: Sequence[Contribution]
+    file: CalibrationFile,
+    elements: Sequence[Element],
+    frequency_hz: float,
+    lines: Sequence[Contribution],
 ) -> tuple[Link, ...]:
     """Detector, elements, and what of the budget belongs to neither."""
     squares: dict[str, float] = {}
@@ -195,10 +193,10 @@ def _links(
     rest = [line for line in lines if line.kind not in kinds]
     for line in lines:
         if line.kind in kinds:
-            squares[line.kind] = squares.get(line.kind, 0.0) + line.u_db**2
+            squares[line.kind] = squares.get(line.kind, 0.0) + line.u**2
     u_db = {kind: math.sqrt(square) for kind, square in squares.items()}
     links = [
-        Link("detector", "detector", None, u_db.pop("detector", None), parts.certificate.number)
+        Link("detector", "detector", None, u_db.pop("detector", None), file.certificate.number)
     ]
     for element in elements:
         gain_db = -float(element.curve.at(np.array([frequency_hz]))[0])
@@ -208,4 +206,4 @@ def _links(
                 element.certificate,
             )
         )  # fmt: skip
-    return (*links, *(Link(line.name, line.kind, None, line.u_db, None) for line in rest))
+    return (*links, *(Link(line.name, line.kind, None, line.u, None) for line in rest))

@@ -9,8 +9,7 @@ from pathlib import Path
 
 import numpy as np
 
-from monitor import limitsets, wiring
-from monitor.calfile import chain_of
+from monitor import calfile, calparts, limitsets, wiring
 from monitor.config import Site, site_of
 from monitor.core.calibration import CountTable
 from monitor.core.errors import ConfigError, FieldsillError
@@ -166,7 +165,8 @@ def _basis(record: Record, kept: Kept) -> Basis:
     """Site, limit sets and station of the stored documents; an error where one is missing."""
     site = site_of(_document(record, kept, "site"), record.path.with_name("site.toml"))
     sets = {name: limitsets.parse(_document(record, kept, name), name) for name in site.limit_sets}
-    chain = chain_of(_document(record, kept, "calibration"), site.channels, site.bands)
+    calibration = calparts.parse(_document(record, kept, "calibration"))
+    chain = calfile.chain(calibration, site.channels, site.bands)
     names = [channel.name for channel in site.channels]
     tables = tuple(
         CountTable.from_bytes(_document(record, kept, f"counts {name}")) for name in names

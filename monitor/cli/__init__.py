@@ -13,7 +13,7 @@ from monitor.core.errors import FieldsillError
 
 COMMANDS = (
     "run", "measure", "serve", "rehearse", "check", "status",
-    "limits", "field", "averages", "explain", "ratio", "iq",
+    "limits", "field", "averages", "explain", "ratio", "iq", "calibration",
 )  # fmt: skip
 
 

@@ -12,6 +12,7 @@ import numpy as np
 from monitor.cli.averages_record import site_record, utc_ns_asked
 from monitor.cli.explain_lines import lines
 from monitor.cli.output import print_json
+from monitor.core.budget import Contribution
 from monitor.core.exposure import Verdict, reasons
 from monitor.core.flags import Flag, words
 from monitor.core.limits import ratio_per_e2
@@ -125,20 +126,21 @@ def _field(kept: Kept) -> Document:
 
 def _budget(basis: Basis) -> list[Document]:
     """The uncertainty budget; one that all channels have alike stands once."""
-    found: dict[tuple[object, ...], Document] = {}
+    found: dict[Contribution, Document] = {}
     for channel, budget in zip(basis.site.channels, basis.here.chain.contributions):
         for line in budget:
-            key = line.name, line.value_db, line.distribution, line.k, line.shared
             entry = {
                 "name": line.name,
-                "value_db": line.value_db,
+                "value": line.value,
+                "sensitivity": line.sensitivity,
                 "distribution": line.distribution,
-                "u_db": line.u_db,
+                "degrees_of_freedom": line.degrees_of_freedom,
+                "u_db": line.u,
                 "shared": line.shared,
                 "kind": line.kind or None,
                 "channels": [],
             }
-            found.setdefault(key, entry)["channels"].append(channel.name)
+            found.setdefault(line, entry)["channels"].append(channel.name)
     return list(found.values())
 
 

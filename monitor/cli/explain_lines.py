@@ -96,11 +96,21 @@ def _budget(budget: list[Document] | None, field: Document) -> Iterator[str]:
     for line in budget or []:
         shared = "shared by" if line["shared"] else "each of"
         yield (
-            f"  {line['name']:<44} {line['value_db']:>7.3f} {line['distribution']:<12}"
-            f" u {line['u_db']:.3f}  {shared} {', '.join(line['channels'])}"
+            f"  {line['name']:<44} {line['value']:>7.3f} {line['distribution']:<12}"
+            f" u {line['u_db']:.3f}  {shared} {', '.join(line['channels'])}{_known(line)}"
         )
     u_db = _number(field["expanded_uncertainty_db"])
     yield f"  expanded uncertainty of the mean {u_db} dB at 95 %, k = {_number(field['k'])}"
+
+
+def _known(line: Document) -> str:
+    """What makes a line other than one in dB whose value is exactly known."""
+    said = ""
+    if line["sensitivity"] != 1.0:
+        said += f"; {line['sensitivity']:.4g} dB per unit of its value"
+    if math.isfinite(line["degrees_of_freedom"]):
+        said += f"; {line['degrees_of_freedom']:.4g} degrees of freedom"
+    return said
 
 
 def _exposure(exposure: Document) -> Iterator[str]:

@@ -7,8 +7,7 @@ from pathlib import Path
 
 import click
 
-from monitor import tomlfile
-from monitor.calfile import load_parts
+from monitor import calparts, tomlfile
 from monitor.checks import refuse_future_date
 from monitor.cli.output import print_json
 from monitor.clock import SystemClock
@@ -60,9 +59,9 @@ def command(
         None if temperature_c is None else _number("temperature_c", temperature_c),
     )
     now_utc_ns = SystemClock().utc_ns()
-    parts = load_parts(Path(calibration))
-    refuse_future_date(parts.top.where, parts.certificate.date, now_utc_ns)
-    found = through(parts, asked, now_utc_ns)
+    file = calparts.read(Path(calibration))
+    refuse_future_date(file.top.where, file.certificate.date, now_utc_ns)
+    found = through(file, asked, now_utc_ns)
     if as_json:
         print_json(_document(asked, found))
         return

@@ -11,12 +11,13 @@ from dataclasses import dataclass, field
 import numpy as np
 from numpy.typing import NDArray
 
+from monitor.core.budget import Contribution
+from monitor.core.distributions import Real
 from monitor.core.errors import CalibrationError
 from monitor.core.flags import Flag
 from monitor.core.limits import frequency_text
 from monitor.core.quantities import PORT_OHM
 from monitor.core.readings import MISSING
-from monitor.core.uncertainty import Contribution, Real
 
 Bits = NDArray[np.int32]
 
@@ -57,6 +58,15 @@ class CountTable:
         strong = np.where(counts == MISSING, 0, self.flags[nearest] & int(Flag.ABOVE_RANGE))
         flags = np.where(inside, self.flags[nearest], strong | int(Flag.NO_SIGNAL_WIRE))
         return power_w, flags.astype(np.int32)
+
+    def range_w(self) -> tuple[float, float]:
+        """Smallest and largest power that carry no flag, W; CalibrationError where none does."""
+        good = self.power_w[(self.flags == 0) & np.isfinite(self.power_w)]
+        if not good.size:
+            raise CalibrationError(
+                "detector: no count lies within the range; correct bits and curve"
+            )
+        return float(good.min()), float(good.max())
 
     def to_bytes(self) -> bytes:
         """Exact image, little end first: FSCOUNT1, first count, n (i8), powers (f8), flags (i4)."""

@@ -8,11 +8,12 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from monitor.core.budget import Contribution
 from monitor.core.calibration import MAX_TABLE, Bits, CountTable
+from monitor.core.distributions import Real
 from monitor.core.errors import CalibrationError
 from monitor.core.flags import Flag
 from monitor.core.quantities import w_from_dbm
-from monitor.core.uncertainty import Contribution, Real
 
 NOTABLE_DB = 0.01
 """A rounding step whose half is larger than this enters the uncertainty budget."""

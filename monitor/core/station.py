@@ -8,11 +8,12 @@ import numpy as np
 from numpy.typing import NDArray
 
 from monitor.core.alarms import Watch
+from monitor.core.budget import Contribution
 from monitor.core.calibration import BAND_KIND, Chain, CountTable
 from monitor.core.flags import Flag
 from monitor.core.limits import Scope
 from monitor.core.readings import NS_PER_S
-from monitor.core.uncertainty import Contribution, coverage_factor
+from monitor.core.uncertainty import coverage_factor
 
 F = NDArray[np.float64]
 

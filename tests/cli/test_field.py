@@ -200,3 +200,20 @@ def test_an_axis_with_a_table_of_its_own(
     said = ask(capsys, tmp_path, *asked, more=OF_AXIS)
     assert said.code == 2
     assert "tables of its own for y; say which --axis" in said.one_line
+
+
+DRIFT = '[[contribution]]\nname = "drift"\nvalue = 15\nsensitivity = -0.04\n'
+DRIFT += 'degrees_of_freedom = 3\ndistribution = "normal"\nshared = false\nkind = "detector"\n'
+
+
+def test_a_line_in_another_unit_of_few_degrees_of_freedom(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path
+) -> None:
+    """By hand: 15 times 0.04 is 0.6 dB (GUM 5.1.3); k is above the normal one (GUM G.3.2)."""
+    asked = ("--frequency", "2GHz", "--dbm", "-30")
+    plain = figures(capsys, tmp_path, *asked)
+    found = figures(capsys, tmp_path, *asked, more=DRIFT)
+    u_db = math.hypot(plain["standard_uncertainty_db"], 0.6)
+    assert found["standard_uncertainty_db"] == pytest.approx(u_db)
+    assert found["chain"][0]["u_db"] == pytest.approx(math.hypot(0.6, 1 / 22 / 2 / math.sqrt(3)))
+    assert found["k"] > 2.1 > plain["k"]

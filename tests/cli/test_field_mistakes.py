@@ -54,3 +54,13 @@ def test_a_calibration_of_the_future(capsys: pytest.CaptureFixture[str], tmp_pat
     found = run(capsys, arguments)
     assert found.code == 2
     assert "lies in the future" in found.one_line
+
+
+def test_a_calibration_without_a_budget(capsys: pytest.CaptureFixture[str], tmp_path: Path) -> None:
+    path = tmp_path / "calibration.toml"
+    text = FILE.format(due="2099-12-31", averages="none", af=30, loss=0, more="")
+    path.write_text(text[: text.index("[[contribution]]")], encoding="utf-8")
+    arguments = ["field", "--calibration", path, "--frequency", "2GHz", "--dbm", "-30"]
+    found = run(capsys, arguments)
+    assert found.code == 2
+    assert "contribution: none given; a figure needs its uncertainty" in found.one_line

@@ -5,11 +5,11 @@ from __future__ import annotations
 import numpy as np
 
 from monitor.core.alarms import AlertRule, watches
+from monitor.core.budget import Contribution
 from monitor.core.calibration import Chain, CountTable
 from monitor.core.flags import Flag
 from monitor.core.limits import Scope
 from monitor.core.station import Station, station
-from monitor.core.uncertainty import Contribution
 
 FIRST, LAST = -80_000, 10_000
 

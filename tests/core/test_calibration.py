@@ -140,7 +140,7 @@ def test_middle_and_spread_of_a_band() -> None:
     k = np.array([1e6, 1e6 * 10**0.1, 1e6 * 10**0.2])
     assert cal.middle(k) == pytest.approx(1e6 * 10**0.1, rel=1e-12)
     (line,) = cal.spread(k, "main")
-    assert line.value_db == pytest.approx(1.0, rel=1e-12)
+    assert line.value == pytest.approx(1.0, rel=1e-12)
     assert (line.distribution, line.shared) == ("rectangular", True)
     assert "main" in line.name
     assert cal.spread(np.array([3.0, 3.0]), "main") == ()

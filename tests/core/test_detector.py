@@ -150,7 +150,7 @@ def test_half_a_count_where_the_curve_is_flattest() -> None:
     half = det.half_step_db(RISING, TEN_BITS, (-55.0, -5.0))
     assert half == pytest.approx(0.05, rel=1e-9)
     (line,) = det.rounding(half)
-    assert (line.value_db, line.distribution, line.shared) == (half, "rectangular", False)
+    assert (line.value, line.distribution, line.shared) == (half, "rectangular", False)
     assert det.rounding(0.005) == ()
 
 

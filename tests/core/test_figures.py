@@ -8,12 +8,12 @@ import numpy as np
 import pytest
 
 from monitor.core import pipeline
+from monitor.core.budget import Contribution
 from monitor.core.calibration import BAND_KIND
 from monitor.core.exposure import Verdict
 from monitor.core.figures import exposures, fields
 from monitor.core.readings import MISSING, Batch
 from monitor.core.station import Station, station
-from monitor.core.uncertainty import Contribution
 from tests.core.stations import SCOPES, chain, made
 
 S = 1_000_000_000

@@ -8,7 +8,7 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from monitor.calfile import load_parts
+from monitor import calparts
 from monitor.core.flags import Flag
 from monitor.core.law import CurveLaw, ScaleLaw
 from monitor.core.quantities import w_from_dbm
@@ -28,7 +28,7 @@ SCALES = (
 @pytest.mark.parametrize("path", CURVES, ids=lambda path: path.name)
 def test_volts_of_a_count_give_what_the_count_gives(path: Path) -> None:
     """The count table is the reference: every entry but the converter's rails, 1e-12."""
-    (detector,) = load_parts(path).detectors
+    (detector,) = calparts.read(path).detectors
     law, table = detector.law, detector.table
     assert isinstance(law, CurveLaw)
     seen = 0
@@ -46,7 +46,7 @@ def test_volts_of_a_count_give_what_the_count_gives(path: Path) -> None:
 @pytest.mark.parametrize("path", SCALES, ids=lambda path: path.name)
 def test_a_scales_figure_gives_what_its_count_gives(path: Path) -> None:
     """The count table is the reference, over its whole length and beyond both ends."""
-    (detector,) = load_parts(path).detectors
+    (detector,) = calparts.read(path).detectors
     law, table = detector.law, detector.table
     assert isinstance(law, ScaleLaw)
     assert detector.resolution is not None
@@ -62,7 +62,7 @@ def test_a_scales_figure_gives_what_its_count_gives(path: Path) -> None:
 
 
 def test_a_power_beyond_the_range_is_the_ranges_end() -> None:
-    (detector,) = load_parts(CURVES[0]).detectors
+    (detector,) = calparts.read(CURVES[0]).detectors
     assert detector.law.at_dbm(-80.0) == (-58.0, int(Flag.BELOW_RANGE))
     assert detector.law.at_dbm(20.0) == (5.0, int(Flag.ABOVE_RANGE))
     assert detector.law.at_dbm(-30.5) == (-30.5, 0)

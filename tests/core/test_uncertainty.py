@@ -3,13 +3,17 @@
 from __future__ import annotations
 
 import math
+from pathlib import Path
 
 import numpy as np
 import pytest
 from scipy import signal, stats
 
+from monitor.calfile import load_chain
+from monitor.config import Band, Channel
+from monitor.core.budget import Contribution
 from monitor.core.errors import CalibrationError
-from monitor.core.uncertainty import Contribution, coverage_factor, expanded_db, standard_db
+from monitor.core.uncertainty import coverage_factor, expanded_db, standard_db
 
 ONE = np.ones((1, 1))
 
@@ -32,7 +36,7 @@ def line(value: float, distribution: str = "normal", **more: object) -> Contribu
 )
 def test_standard_uncertainty_of_each_distribution(made: Contribution, u_db: float) -> None:
     """Divisors of GUM 4.3.7, 4.3.9 and, for the U-shape, H.1.3.4."""
-    assert made.u_db == pytest.approx(u_db, rel=1e-12)
+    assert made.u == pytest.approx(u_db, rel=1e-12)
     assert standard_db([[made]], ONE)[0] == pytest.approx(u_db, rel=1e-12)
 
 
@@ -126,6 +130,16 @@ def test_factor_covers_a_field_on_one_axis_and_on_all() -> None:
 
 def test_without_any_uncertainty_the_factor_is_the_normal_one() -> None:
     assert coverage_factor([[line(0.0)]]) == pytest.approx(stats.norm.ppf(0.975))
+
+
+def test_example_without_degrees_of_freedom_keeps_its_figures() -> None:
+    """k and u of the board's example over 700 MHz to 2.7 GHz as they were before there were any."""
+    path = Path(__file__).parents[2] / "hardware/examples/detector-board-calibration.toml"
+    channels = [Channel(axis, axis, "main") for axis in "xyz"]
+    chain = load_chain(path, channels, {"main": Band("main", 7e8, 2.7e9)})
+    found = standard_db(chain.contributions, np.array([[0.5, 0.3, 0.2]]))
+    assert coverage_factor(chain.contributions) == pytest.approx(1.930194203803123, rel=1e-12)
+    assert found[0] == pytest.approx(1.1428670592625971, rel=1e-12)
 
 
 @pytest.mark.parametrize(

@@ -92,7 +92,7 @@ def test_the_chain_of_a_file(tmp_path: Path) -> None:
     half = (db(2e9) - db(8e8)) / 2
     assert chain.k_mid[0] == pytest.approx(50 * 10 ** ((db(8e8) + half) / 10), rel=1e-12)
     spread = next(line for line in chain.contributions[0] if "response" in line.name)
-    assert spread.value_db == pytest.approx(half, rel=1e-9)
+    assert spread.value == pytest.approx(half, rel=1e-9)
     assert [line.name for line in chain.contributions[0]][:2] == ["antenna", "mismatch"]
 
 

@@ -1,0 +1,218 @@
+"""A calibration file as a document: what it holds, its response over a band, its budget.
+
+Keys carry their units. Degrees of freedom without end are math.inf, null in JSON.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import asdict, dataclass
+
+import numpy as np
+
+from monitor.calfile import chain
+from monitor.calparts import AXES, CalibrationFile, elements_of
+from monitor.config import Band, Channel
+from monitor.core.budget import combined, factors, table
+from monitor.core.calibration import Chain
+from monitor.core.distributions import Real
+from monitor.core.errors import CalibrationError, ConfigError
+from monitor.core.flags import words
+from monitor.core.limits import frequency_text
+from monitor.core.montecarlo import errors_db, spread
+from monitor.core.quantities import PORT_OHM, dbm_from_w
+from monitor.core.uncertainty import equal_shares, expanded_db
+
+Document = dict[str, object]
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class View:
+    """A file, the axes and the band that it is looked at for, and the chain that this gives."""
+
+    file: CalibrationFile
+    axes: str
+    band: Band
+    chain: Chain
+
+
+def view(file: CalibrationFile, axes: str | None, band_hz: tuple[float, float] | None) -> View:
+    """The chain for the axes (default: all that it serves) and the band (default: all of it).
+
+    CalibrationError where the file has no chain for them.
+    """
+    axes = axes or axes_of(file)
+    low_hz, high_hz = band_hz or span_hz(file, axes)
+    text = f"{frequency_text(low_hz)} to {frequency_text(high_hz)}"
+    band = Band(text, low_hz, high_hz)
+    channels = [Channel(axis, axis, band.name) for axis in axes]
+    return View(file, axes, band, chain(file, channels, {band.name: band}))
+
+
+def axes_of(file: CalibrationFile) -> str:
+    """The axes that have a detector and an antenna, of 'xyz'; all where none has."""
+    served = [
+        axis
+        for axis in AXES
+        if any(e.kind == "antenna" for e in elements_of(file, axis))
+        and any(detector.axis in ("", axis) for detector in file.detectors)
+    ]
+    return "".join(served or AXES)
+
+
+def span_hz(file: CalibrationFile, axes: str) -> tuple[float, float]:
+    """The frequencies that every table of every one of the axes covers.
+
+    CalibrationError where there are none.
+    """
+    tables = [element.curve.frequencies_hz for a in axes for element in elements_of(file, a)]
+    low = max((float(f[0]) for f in tables), default=0.0)
+    high = min((float(f[-1]) for f in tables), default=0.0)
+    if not low < high:
+        raise CalibrationError(
+            f"{file.top.where}: element: no band lies in all tables; calibrate further"
+        )
+    return low, high
+
+
+def knots_hz(shown: View, axis: str) -> Real:
+    """Ends of the band and the frequencies of the axis' tables inside it, rising (m,)."""
+    low, high = shown.band.low_hz, shown.band.high_hz
+    knots = [element.curve.frequencies_hz for element in elements_of(shown.file, axis)]
+    inside = [f[(f > low) & (f < high)] for f in knots]
+    return np.unique(np.concatenate([[low, high], *inside]))
+
+
+def response_db(shown: View, axis: str, frequencies_hz: Real) -> Real:
+    """Antenna factor and losses (m,), dB/m, within the band."""
+    at = shown.axes.index(axis)
+    grid, k = shown.chain.frequencies_hz[at], shown.chain.k[at]
+    return np.interp(np.log(frequencies_hz), np.log(grid), 10.0 * np.log10(k / PORT_OHM))
+
+
+def document(shown: View, shares: Real, now_utc_ns: int) -> Document:
+    """All of it. shares: (c,), each axis' part of E squared."""
+    file, certificate = shown.file, shown.file.certificate
+    return {
+        "file": file.top.where,
+        "identity": shown.chain.identity,
+        "id": certificate.id,
+        "laboratory": certificate.laboratory,
+        "certificate": certificate.number,
+        "date": certificate.date.isoformat(),
+        "due": certificate.due.isoformat(),
+        "overdue": now_utc_ns >= certificate.due_utc_ns,
+        "invented": file.invented,
+        "valid_temperature_c": list(certificate.valid_temperature_c),
+        "flags": words(shown.chain.flags),
+        "axes": list(shown.axes),
+        "detectors": _detectors(shown),
+        "elements": _elements(file),
+        "band": {"low_hz": shown.band.low_hz, "high_hz": shown.band.high_hz},
+        "response": _response(shown),
+        "shares": shares.tolist(),
+        "contributions": [asdict(row) for row in table(shown.chain.contributions, shares)],
+        "uncertainty": uncertainty(shown.chain, shares),
+    }
+
+
+def _detectors(shown: View) -> list[Document]:
+    out: list[Document] = []
+    for detector in shown.file.detectors:
+        range_dbm = [dbm_from_w(power_w) for power_w in detector.table.range_w()]
+        out.append(
+            {
+                "axis": detector.axis or None,
+                "kind": detector.kind,
+                "averages": detector.averages,
+                "range_dbm": range_dbm,
+                "resolution": detector.resolution,
+            }
+        )
+    return out
+
+
+def _elements(file: CalibrationFile) -> list[Document]:
+    return [
+        {
+            "type": element.kind,
+            "axis": element.axis or None,
+            "serial": element.serial,
+            "certificate": element.certificate,
+            "low_hz": float(element.curve.frequencies_hz[0]),
+            "high_hz": float(element.curve.frequencies_hz[-1]),
+            "smallest_db": float(element.curve.db.min()),
+            "largest_db": float(element.curve.db.max()),
+        }
+        for element in file.elements
+    ]
+
+
+def _response(shown: View) -> list[Document]:
+    out: list[Document] = []
+    for axis in shown.axes:
+        f = knots_hz(shown, axis)
+        for hz, db in zip(f, response_db(shown, axis, f)):
+            e2_per_w = PORT_OHM * 10.0 ** (float(db) / 10.0)
+            row = {"axis": axis, "frequency_hz": float(hz), "factor_db_per_m": float(db)}
+            out.append({**row, "e2_per_w": e2_per_w})
+    return out
+
+
+def uncertainty(held: Chain, shares: Real) -> Document:
+    """Standard and expanded uncertainty of E squared, dB, and the bounds that they mean."""
+    expanded, k = expanded_db(held.contributions, shares[None, :])
+    here = combined(held.contributions, shares)
+    return {
+        "standard_db": here.u,
+        "effective_degrees_of_freedom": here.degrees_of_freedom,
+        "k": k,
+        "expanded_db": float(expanded[0]),
+        "k_at_these_shares": here.k,
+        "expanded_at_these_shares_db": here.k * here.u,
+        "expanded_k2_db": 2.0 * here.u,
+        **{f"factor_{key}": value for key, value in asdict(factors(float(expanded[0]))).items()},
+    }
+
+
+def monte_carlo(held: Chain, shares: Real, draws: int, seed: int) -> Document:
+    """The same figure by drawing, and by how much it differs from the analytic one."""
+    found = spread(errors_db(held.contributions, shares, draws, seed))
+    here = combined(held.contributions, shares)
+    analytic_db = here.k * here.u
+    return {
+        "draws": draws,
+        "seed": seed,
+        "mean_db": found.mean_db,
+        "deviation_db": found.deviation_db,
+        "expanded_db": found.expanded_db,
+        "shortest_db": list(found.shortest_db),
+        "analytic_db": analytic_db,
+        "difference_percent": 100.0 * (found.expanded_db / analytic_db - 1.0)
+        if analytic_db
+        else None,
+    }
+
+
+def shares_of(text: str | None, axes: str) -> Real:
+    """Each axis' part of E squared (c,), from '0.5,0.3,0.2'; equal where nothing is given."""
+    if text is None:
+        return equal_shares(len(axes))
+    try:
+        given = np.array([float(part) for part in text.split(",")])
+    except ValueError:
+        raise ConfigError(f"shares {text!r}: write numbers, for example 0.5,0.3,0.2") from None
+    if given.size != len(axes) or not np.isfinite(given).all() or (given < 0).any():
+        raise ConfigError(f"shares {text!r}: one number of zero or more for each of {axes}")
+    if not given.sum() > 0:
+        raise ConfigError(f"shares {text!r}: all are zero")
+    return np.asarray(given / given.sum())
+
+
+def common_band(files: Sequence[CalibrationFile], axes: str) -> tuple[float, float]:
+    """The frequencies that all the files cover; CalibrationError where there are none."""
+    spans = [span_hz(file, axes) for file in files]
+    low, high = max(s[0] for s in spans), min(s[1] for s in spans)
+    if not low < high:
+        raise CalibrationError("the calibration files have no band in common")
+    return low, high

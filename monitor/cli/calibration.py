@@ -1,0 +1,97 @@
+"""fieldsill calibration: what a calibration file holds, and what two differ in."""
+
+from __future__ import annotations
+
+import time
+from pathlib import Path
+
+import click
+
+from monitor import calcompare, calparts, calreview
+from monitor.cli import calibration_lines
+from monitor.cli.output import print_json
+from monitor.core.errors import ConfigError
+from monitor.core.montecarlo import FEWEST_DRAWS, MOST_DRAWS
+from monitor.core.quantities import frequency_hz
+
+FILE = click.Path(path_type=Path)
+
+
+@click.group("calibration")
+def command() -> None:
+    """What a calibration file holds and what it is worth; what two of them differ in."""
+
+
+@command.command("show")
+@click.argument("file", type=FILE)
+@click.option("--band", help="LOW:HIGH, for example 700MHz:2.7GHz; all of the tables if left out.")
+@click.option("--axes", help="For example xyz or z; all that the file serves if left out.")
+@click.option("--shares", help="Each axis' part of E squared, for example 0.5,0.3,0.2; or equal.")
+@click.option(
+    "--monte-carlo", "draws", type=click.IntRange(FEWEST_DRAWS, MOST_DRAWS),
+    help="Find the uncertainty by this many draws, too.",
+)  # fmt: skip
+@click.option("--seed", type=click.IntRange(0), default=1, help="Of the draws.", show_default=True)
+@click.option("--json", "as_json", is_flag=True, help="One JSON document.")
+def show(
+    file: Path,
+    band: str | None,
+    axes: str | None,
+    shares: str | None,
+    draws: int | None,
+    seed: int,
+    as_json: bool,
+) -> None:
+    """Certificates, tables, response over the band, table of contributions, uncertainty."""
+    shown = calreview.view(calparts.read(file), _axes(axes), _band(band))
+    parts = calreview.shares_of(shares, shown.axes)
+    document = calreview.document(shown, parts, time.time_ns())
+    document["monte_carlo"] = (
+        calreview.monte_carlo(shown.chain, parts, draws, seed) if draws else None
+    )
+    if as_json:
+        print_json(document)
+        return
+    for line in calibration_lines.shown(document):
+        click.echo(line)
+
+
+@command.command("compare")
+@click.argument("a", type=FILE)
+@click.argument("b", type=FILE)
+@click.option("--band", help="LOW:HIGH; all that both files cover if left out.")
+@click.option("--axes", help="For example xyz or z; all that both files serve if left out.")
+@click.option("--json", "as_json", is_flag=True, help="One JSON document.")
+def compare(a: Path, b: Path, band: str | None, axes: str | None, as_json: bool) -> None:
+    """What B has otherwise than A, and what that does to response and uncertainty."""
+    files = [calparts.read(path) for path in (a, b)]
+    both = set(calreview.axes_of(files[0])) & set(calreview.axes_of(files[1]))
+    chosen = _axes(axes) or "".join(sorted(both))
+    if not chosen:
+        raise ConfigError("the calibration files serve no axis in common")
+    band_hz = _band(band) or calreview.common_band(files, chosen)
+    views = [calreview.view(file, chosen, band_hz) for file in files]
+    document = calcompare.comparison(*views)
+    if as_json:
+        print_json(document)
+        return
+    for line in calibration_lines.compared(document):
+        click.echo(line)
+
+
+def _axes(text: str | None) -> str | None:
+    if text is not None and (not text or set(text) - set("xyz") or len(set(text)) < len(text)):
+        raise ConfigError(f"axes {text!r}: write some of the letters xyz, each once")
+    return text
+
+
+def _band(text: str | None) -> tuple[float, float] | None:
+    if text is None:
+        return None
+    low, colon, high = text.partition(":")
+    if not colon:
+        raise ConfigError(f"band {text!r}: write LOW:HIGH, for example 700MHz:2.7GHz")
+    low_hz, high_hz = frequency_hz(low), frequency_hz(high)
+    if not low_hz < high_hz:
+        raise ConfigError(f"band {text!r}: its low end must lie below its high end")
+    return low_hz, high_hz
