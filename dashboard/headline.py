@@ -51,7 +51,9 @@ def _measuring(live: Live, station: Station) -> Headline:
         worst = max(above, key=live.rank)
         figure = told.figure(live.ratio(worst))
         text = f"Above the limit {AT_ANTENNA}: {figure} of it"
-        return Headline("limit", text, (f"{title(worst)}: exceeds", *_carried(live)))
+        spans = told.interval(live.ratio(worst))
+        line = f"{title(worst)}: exceeds" + (f"; {spans}" if spans else "")
+        return Headline("limit", text, (line, *_carried(live)))
     near = [e for e in applying if not live.ratio(e).window.thin and live.rank(e) >= 1]
     if near:
         return _at_limit(max(near, key=live.rank), live)
