@@ -5,7 +5,6 @@ from __future__ import annotations
 import math
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
-from datetime import UTC, datetime, timedelta
 
 from monitor.config import Site
 from monitor.core import figures
@@ -16,8 +15,7 @@ from monitor.core.pipeline import State, live
 from monitor.core.readings import DeviceStatus
 from monitor.core.rows import ExposureRows
 from monitor.core.station import Station
-
-_EPOCH = datetime(1970, 1, 1, tzinfo=UTC)
+from monitor.times import text_of
 
 
 @dataclass(frozen=True, slots=True)
@@ -36,10 +34,7 @@ class View:
 
 def rfc3339(utc_ns: int | None) -> str | None:
     """UTC in RFC 3339 to the millisecond; None stays None."""
-    if utc_ns is None:
-        return None
-    moment = _EPOCH + timedelta(microseconds=utc_ns // 1000)
-    return moment.isoformat(timespec="milliseconds").replace("+00:00", "Z")
+    return None if utc_ns is None else text_of(utc_ns, 3)
 
 
 def snapshot(view: View, here: Station, site: Site) -> dict[str, object]:
