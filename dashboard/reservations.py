@@ -35,6 +35,14 @@ _MEANS = {
     "use a board that tells its temperature, or keep the box within the calibrated range.",
     Flag.INVENTED_CALIBRATION: "the figures are an example's and prove nothing; "
     "have the chain calibrated and enter its certificate.",
+    Flag.CALIBRATION_DUE_SOON: "the figures hold until then; "
+    "arrange the next calibration now, so that the record has no part without one.",
+    Flag.ELEMENT_CHANGED: "the stated uncertainty does not cover the new part; "
+    "enter its certificate, or put the calibrated part back.",
+    Flag.ASSUMED_TERMS: "defaults stand in for them, and nothing conforms on a default; "
+    "enter a line of your own for each in the calibration file.",
+    Flag.CORRECTED_LOG: "2.51 dB were added, which is right for continuous noise-like signals "
+    "only; a carrier then reads high and bursts still read low.",
 }
 _BY_WORDS = {WORDS[flag]: means for flag, means in _MEANS.items()}
 

@@ -73,6 +73,9 @@ def _chain(
         resolution=chosen[0].resolution,
         identity=hashlib.sha256(file.body).hexdigest(),
         document=file.body,
+        noise_w=np.zeros(len(channels)),
+        noise_u_w=np.zeros(len(channels)),
+        least_w=np.array([detector.table.range_w()[0] for detector in chosen]),
     )
 
 

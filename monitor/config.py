@@ -6,12 +6,13 @@ import os
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
+from typing import Any
 
 from monitor import tomlfile
 from monitor.core.alarms import AlertRule
 from monitor.core.errors import ConfigError
 from monitor.core.exposure import FIELD_REGIONS
-from monitor.core.keys import Table
+from monitor.core.keys import REQUIRED, Table
 from monitor.core.limits import POPULATIONS, SCOPES
 from monitor.core.quantities import frequency_hz
 from monitor.tomlfile import TopTable
@@ -19,27 +20,41 @@ from monitor.tomlfile import TopTable
 OCCUPANCIES = ("public", "controlled")
 AXES = ("x", "y", "z", "")
 OUTSIDE = ("filter", "survey", "undeclared")
+SIGNALS = ("carrier", "noise", "bursts", "mixed", "undeclared")
+POLARISATIONS = ("survey", "undeclared")
 MAX_CHANNELS = 64
 DAY_S = 86_400.0
 
 
 @dataclass(frozen=True, slots=True)
 class Band:
-    """A part of the spectrum, Hz. outside: what rules out signals beyond it, one of OUTSIDE."""
+    """A part of the spectrum, Hz. outside: what rules out signals beyond it, one of OUTSIDE.
+
+    signal: what it carries, one of SIGNALS; signal_bandwidth_hz: the least that a signal there
+    occupies, 0 where nobody said. polarisation: survey, where one has shown that a single axis
+    takes in the whole field.
+    """
 
     name: str
     low_hz: float
     high_hz: float
     outside: str = "undeclared"
+    signal: str = "undeclared"
+    signal_bandwidth_hz: float = 0.0
+    polarisation: str = "undeclared"
 
 
 @dataclass(frozen=True, slots=True)
 class Channel:
-    """One column of raw counts: an axis (x, y, z or '' where there is one only) in one band."""
+    """One column of raw counts: an axis (x, y, z or '' where there is one only) in one band.
+
+    gain: the receiver's gain step, by its name in the calibration file; '' where it has none.
+    """
 
     name: str
     axis: str
     band: str
+    gain: str = ""
 
 
 @dataclass(frozen=True, slots=True)
@@ -174,6 +189,9 @@ def _bands(top: TopTable) -> dict[str, Band]:
             frequency(table, "low"),
             frequency(table, "high"),
             table.text("outside", "undeclared", OUTSIDE),
+            table.text("signal", "undeclared", SIGNALS),
+            frequency(table, "signal_bandwidth", 0.0),
+            table.text("polarisation", "undeclared", POLARISATIONS),
         )
         table.finish()
         if band.low_hz >= band.high_hz:
@@ -201,6 +219,7 @@ def _channels(top: TopTable, bands: Mapping[str, Band]) -> tuple[Channel, ...]:
             _named(table, "name"),
             table.text("axis", "", AXES),
             table.text("band", choices=[*bands]),
+            table.text("gain", ""),
         )
         table.finish()
         _distinct(table, channel, channels)
@@ -261,9 +280,11 @@ def _named(table: Table, key: str) -> str:
     return text
 
 
-def frequency(table: Table, key: str) -> float:
+def frequency(table: Table, key: str, default: Any = REQUIRED) -> float:
     """A frequency in Hz from a text with a unit or a bare number of Hz."""
-    value = table.any(key)
+    value = table.any(key, default)
+    if value is default and default is not REQUIRED:
+        return float(default)
     if isinstance(value, bool) or not isinstance(value, (str, int, float)):
         raise table.error(key, f"{value!r} is not a frequency; write for example '900MHz'")
     try:

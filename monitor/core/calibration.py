@@ -102,6 +102,12 @@ class Chain:
     figure. due_utc_ns: from here on the calibration is overdue. resolution: what one raw count
     stands for, where the front end rounds to it; None for converter counts. document: the
     calibration file as read; identity: its sha256, hex.
+
+    noise_w: f8 (c,), power at the port that the detector shows without any signal, W, which is
+    taken from averages; 0 where it is in the tables already. noise_u_w: f8 (c,), its standard
+    uncertainty. least_w: f8 (c,), lower end of the range to be trusted, W. integration_s: time
+    over which each reading is itself a mean of power; 0 for a momentary one. temperature: per
+    channel (celsius (t,), dB (t,)) by how much the chain reads too high, or None.
     """
 
     tables: tuple[CountTable, ...]
@@ -115,6 +121,11 @@ class Chain:
     resolution: float | None
     identity: str
     document: bytes = field(repr=False)
+    noise_w: Real
+    noise_u_w: Real
+    least_w: Real
+    integration_s: float = 0.0
+    temperature: tuple[tuple[Real, Real] | None, ...] = ()
 
 
 GRID_STEP = 1.005

@@ -24,6 +24,7 @@ FIELD_REGIONS = ("far", "radiating_near", "reactive_near", "undeclared")
 OUTSIDE_BUDGET = (
     Flag.OUT_OF_TEMPERATURE | Flag.CALIBRATION_OVERDUE | Flag.OUT_OF_BAND | Flag.SUPPLY_OUT_OF_RANGE
     | Flag.TEMPERATURE_UNKNOWN | Flag.CLOCK_UNSYNCHRONISED | Flag.INVENTED_CALIBRATION
+    | Flag.ELEMENT_CHANGED | Flag.ASSUMED_TERMS
 )  # fmt: skip
 """Conditions that the stated uncertainty does not cover. A clock that nothing has set cannot tell
 whether the calibration is in date."""

@@ -23,6 +23,10 @@ class Flag(IntFlag):
     GAP = 4096
     TEMPERATURE_UNKNOWN = 8192
     INVENTED_CALIBRATION = 16384  # figures of an example: no certificate stands behind them
+    CALIBRATION_DUE_SOON = 32768  # a notice ahead of time; it forbids nothing
+    ELEMENT_CHANGED = 65536  # a part of the chain is not the one that was calibrated
+    ASSUMED_TERMS = 131072  # terms of the budget are defaults that nobody has confirmed
+    CORRECTED_LOG = 262144  # averaged logs of a noise-like signal, corrected by 2.51 dB
 
 
 LOWER_BOUND = Flag.ABOVE_RANGE | Flag.CLIPPED | Flag.LOG_AVERAGED | Flag.COMPONENT_ONLY
@@ -44,6 +48,10 @@ WORDS = {
     Flag.GAP: "gap",
     Flag.TEMPERATURE_UNKNOWN: "temperature of the instrument not known",
     Flag.INVENTED_CALIBRATION: "calibration figures are invented",
+    Flag.CALIBRATION_DUE_SOON: "calibration due soon",
+    Flag.ELEMENT_CHANGED: "an element was changed without a new calibration",
+    Flag.ASSUMED_TERMS: "terms of the uncertainty are assumed, not confirmed",
+    Flag.CORRECTED_LOG: "averaged logs, corrected as noise-like",
 }
 
 
