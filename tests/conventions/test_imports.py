@@ -21,8 +21,10 @@ DAEMON_SIDE = ("monitor", "hardware")
 
 
 def _allowed_in_core(module: str) -> bool:
-    return module in CORE_MAY_IMPORT or module.split(".")[0] == "numpy" or (
-        module == "monitor.core" or module.startswith("monitor.core.")
+    return (
+        module in CORE_MAY_IMPORT
+        or module.split(".")[0] == "numpy"
+        or (module == "monitor.core" or module.startswith("monitor.core."))
     )
 
 
