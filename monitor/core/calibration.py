@@ -128,6 +128,17 @@ class Chain:
     temperature: tuple[tuple[Real, Real] | None, ...] = ()
 
 
+def temperature_db(table: tuple[Real, Real] | None, celsius: Real) -> Real:
+    """By how much readings at celsius (n,) are too high, dB (n,): take it off, in dB of power.
+
+    table: rising celsius (t,) and dB (t,), straight between rows, or None: nothing is known.
+    Beyond the table its end holds; the reading carries OUT_OF_TEMPERATURE. nan celsius: 0 dB.
+    """
+    if table is None:
+        return np.zeros_like(celsius, dtype=np.float64)
+    return np.where(np.isnan(celsius), 0.0, np.interp(celsius, *table))
+
+
 GRID_STEP = 1.005
 """Largest ratio of neighbouring frequencies of a grid over a band, up to MAX_GRID points."""
 MAX_GRID = 4001

@@ -108,6 +108,16 @@ def test_frequencies_must_rise(rows: list[tuple[float, float]], words: str) -> N
         table(*rows)
 
 
+def test_how_much_too_high_at_a_temperature() -> None:
+    """Straight between rows, by hand; the ends hold; without temperature or table nothing."""
+    held = np.array([-20.0, 20.0, 40.0]), np.array([1.0, 0.0, -0.5])
+    celsius = np.array([-30.0, -20.0, 10.0, 30.0, 60.0, np.nan])
+    np.testing.assert_allclose(
+        cal.temperature_db(held, celsius), [1.0, 1.0, 0.25, -0.25, -0.5, 0.0], atol=1e-12
+    )
+    assert cal.temperature_db(None, celsius).tolist() == [0.0] * 6
+
+
 def test_grid_has_the_ends_the_knots_and_small_steps() -> None:
     held = table((5e8, 1.0), (9e8, 2.0), (2e9, 1.0), (3e9, 1.0))
     grid = cal.band_grid(7e8, 2.7e9, [held])
