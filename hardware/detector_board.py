@@ -16,7 +16,7 @@ from hardware.timing import NS_PER_MS, ArrivalClock, TickClock
 from hardware.transport import Port, check_device, url_problem
 from monitor.core.flags import Flag
 from monitor.core.keys import Table
-from monitor.core.readings import NS_PER_S, Batch, DeviceStatus, FrontEnd, empty_batch
+from monitor.core.readings import MISSING, NS_PER_S, Batch, DeviceStatus, FrontEnd, empty_batch
 
 SILENT_S = 3.0
 _GIVE_UP = 10
@@ -184,11 +184,16 @@ class DetectorBoard:
         runs = [taken[a:b] for a, b in zip(starts, [*starts[1:], len(taken)])]
         times, kept = zip(*(self._placed(run, now_ns) for run in runs))
         counts = np.array(decode_counts([one.frame.counts for one in taken]), np.int64)
-        counts = counts.reshape(-1, self._channels)[np.concatenate(kept)]
+        placed = np.concatenate(kept)
+        counts = counts.reshape(-1, self._channels)[placed]
         times_ns = np.concatenate(times)
         self._remember(taken[-1])
         return Batch(
-            times_ns, counts.astype(np.int32), self._flags(times_ns.size), int(times_ns[-1])
+            times_ns,
+            counts.astype(np.int32),
+            self._flags(times_ns.size),
+            int(times_ns[-1]),
+            temperatures_dc(taken)[placed],
         )
 
     def _placed(self, run: list[Taken], now_ns: int) -> tuple[NDArray[np.int64], NDArray[np.bool_]]:
@@ -214,6 +219,13 @@ class DetectorBoard:
             if not low_v <= self._supply_v <= high_v:
                 bits |= Flag.SUPPLY_OUT_OF_RANGE
         return np.full(n, int(bits), np.int32)
+
+
+def temperatures_dc(taken: list[Taken]) -> NDArray[np.int32]:
+    """Tenths of a degree Celsius at each sample of these frames: its frame's, or MISSING."""
+    told = [one.frame.temperature for one in taken]
+    of_frame = np.array([MISSING if text == b"-" else int(text) for text in told], np.int32)
+    return np.repeat(of_frame, [one.frame.samples for one in taken])
 
 
 def sample_ticks(run: list[Taken]) -> tuple[NDArray[np.int64], NDArray[np.bool_]]:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, field, fields, replace
+from dataclasses import dataclass, field, fields
 from pathlib import Path
 
 from monitor.alarm_desk import AlarmDesk
@@ -97,13 +97,7 @@ def _kept(
     rows, raw = record.resume(boot, since_ns(last_ns, here))
     keep = rows.start_ns >= same_ns
     rows = BlockRows(*(getattr(rows, column.name)[keep] for column in fields(rows)))
-    return rows, [_since(batch, same_ns) for batch in raw]
-
-
-def _since(batch: Batch, start_ns: int) -> Batch:
-    keep = batch.times_ns >= start_ns
-    times, counts, flags = batch.times_ns[keep], batch.counts[keep], batch.flags[keep]
-    return replace(batch, times_ns=times, counts=counts, flags=flags)
+    return rows, [batch.part(batch.times_ns >= same_ns, batch.now_ns) for batch in raw]
 
 
 def _cut_off(

@@ -2,13 +2,10 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
 from dataclasses import replace
 
-import numpy as np
-
 from monitor.core.gather import Gathered, nothing, stack
-from monitor.core.readings import Batch
+from monitor.core.readings import Batch, joined
 from monitor.core.rows import Event
 from monitor.record.types import ClockFix, Commit
 
@@ -64,7 +61,7 @@ class Spool:
         rows = self._rows if with_rows else nothing()
         events = sorted(self._rows.events, key=lambda event: event.boot_ns)
         return Commit(
-            _joined(self._raw),
+            joined(self._raw) if self._raw else None,
             stack(rows.blocks),
             stack(rows.windows),
             stack(rows.fields),
@@ -99,14 +96,3 @@ class Spool:
         if lost or shed:
             body: dict[str, object] = {"readings": lost, "tables": shed, "why": WHY}
             self.event(Event(boot_ns, "fault", "given up", body))
-
-
-def _joined(batches: Sequence[Batch]) -> Batch | None:
-    if not batches:
-        return None
-    return Batch(
-        np.concatenate([batch.times_ns for batch in batches]),
-        np.concatenate([batch.counts for batch in batches]),
-        np.concatenate([batch.flags for batch in batches]),
-        batches[-1].now_ns,
-    )

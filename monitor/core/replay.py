@@ -65,9 +65,7 @@ def _inside(
     for batch in raw:
         n = int(np.searchsorted(batch.times_ns, end_ns, "right"))
         if n:
-            part = Batch(
-                batch.times_ns[:n], batch.counts[:n], batch.flags[:n], int(batch.times_ns[n - 1])
-            )
+            part = batch.part(slice(n), int(batch.times_ns[n - 1]))
             state, _ = step(state, part, here)
     if state.front_ns != end_ns:
         return None

@@ -21,8 +21,8 @@ U64 = NDArray[np.uint64]
 
 
 def pack(batch: Batch) -> bytes:
-    """The batch's times, flags and counts; its now_ns is the row's end_ns and not in the blob."""
-    columns = [_packed(batch.times_ns), _packed(batch.flags)]
+    """All of the batch but its now_ns, which is the row's end_ns."""
+    columns = [_packed(x) for x in (batch.times_ns, batch.flags, batch.temperature_dc)]
     columns += [_packed(batch.counts[:, i]) for i in range(batch.counts.shape[1])]
     head = _HEAD.pack(batch.n, batch.counts.shape[1])
     return bytes([VERSION]) + zlib.compress(head + b"".join(columns), _LEVEL)
@@ -39,7 +39,7 @@ def unpack(body: bytes, end_ns: int) -> Batch:
         data = zlib.decompress(body[1:])
         n, channels = _HEAD.unpack_from(data)
         at, columns = _HEAD.size, []
-        for _ in range(2 + channels):
+        for _ in range(3 + channels):
             column, at = _unpacked(data, at, n)
             columns.append(column)
     except (zlib.error, struct.error, ValueError) as error:
@@ -47,10 +47,10 @@ def unpack(body: bytes, end_ns: int) -> Batch:
             f"raw counts up to boot time {end_ns} ns are damaged ({error}); restore a copy"
         ) from error
     counts = np.empty((n, channels), np.int32)
-    for i, column in enumerate(columns[2:]):
-        counts[:, i] = column.view(np.int64).astype(np.int32)
-    flags = columns[1].view(np.int64).astype(np.int32)
-    return Batch(columns[0].view(np.int64), counts, flags, end_ns)
+    for i, column in enumerate(columns[3:]):
+        counts[:, i] = _int32(column)
+    times_ns = columns[0].view(np.int64)
+    return Batch(times_ns, counts, _int32(columns[1]), end_ns, _int32(columns[2]))
 
 
 def _packed(values: NDArray[np.signedinteger]) -> bytes:
@@ -72,6 +72,10 @@ def _packed(values: NDArray[np.signedinteger]) -> bytes:
     planes = above.astype("<u8").view(np.uint8).reshape(-1, 8)[:, :width]
     body: bytes = planes.T.tobytes()
     return _COLUMN.pack(int(x[0]), int(least), width | plain) + body
+
+
+def _int32(column: U64) -> NDArray[np.int32]:
+    return column.view(np.int64).astype(np.int32)
 
 
 def _unpacked(data: bytes, at: int, n: int) -> tuple[U64, int]:

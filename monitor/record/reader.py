@@ -143,10 +143,7 @@ class Record:
                 if first == last and batch.now_ns <= start:
                     continue
                 if first > 0 or last < batch.n:
-                    batch = Batch(
-                        batch.times_ns[first:last], batch.counts[first:last],
-                        batch.flags[first:last], min(batch.now_ns, end),
-                    )  # fmt: skip
+                    batch = batch.part(slice(first, last), min(batch.now_ns, end))
                 yield batch
 
     def blocks(self, boot: int, start_ns: int = FIRST_NS, end_ns: int = LAST_NS) -> BlockRows:

@@ -198,7 +198,7 @@ class Writer:
         last, end = self._ends[boot]
         new = int(np.searchsorted(batch.times_ns, last, side="right"))
         if new:
-            batch = Batch(batch.times_ns[new:], batch.counts[new:], batch.flags[new:], batch.now_ns)
+            batch = batch.part(slice(new, None), batch.now_ns)
         if batch.n == 0 and batch.now_ns <= end:
             return last, end
         start = int(batch.times_ns[0]) if batch.n else batch.now_ns

@@ -30,6 +30,7 @@ def test_readings_come_with_counts_flags_and_status(bench, front_end, banner):
     assert batch.counts.dtype == np.int32
     assert batch.times_ns.dtype == np.int64
     assert batch.flags.tolist() == [0]
+    assert batch.temperature_dc.tolist() == [-45]
     assert batch.now_ns >= batch.times_ns[-1]
     status = front_end.status()
     assert status.connected
@@ -50,6 +51,18 @@ def test_read_returns_at_once_with_data_and_waits_no_longer_than_told(bench, ban
     begun = time.monotonic()
     assert front_end.read(0.05).n == 0
     assert 0.04 < time.monotonic() - begun < 1.0
+    front_end.close()
+
+
+def test_each_reading_has_its_frames_temperature(bench, banner):
+    front_end = board(bench.path)
+    greet(bench, front_end, banner)
+    bench.send("FS1 0 300 3 1,1,1;2,2,2 -45 -", "FS1 1 600 3 3,3,3;4,4,4 - -")
+    bench.send("FS1 2 900 3 5,5,5;6,6,6;7,7,7 -44 -")
+    batches = until(front_end, lambda: counters(front_end)["samples"] == 7)
+    told = np.concatenate([b.temperature_dc for b in batches])
+    assert told.dtype == np.int32
+    assert told.tolist() == [-45, -45, MISSING, MISSING, -44, -44, -44]
     front_end.close()
 
 

@@ -40,7 +40,8 @@ def raw(first_s: float, n: int, *, seed: int = 0, spacing_s: float = 1.0) -> Bat
     times = int(first_s * S) + step * np.arange(n) + rng.integers(0, step // 10, n)
     counts = rng.integers(-(2**31), 2**31, (n, 3)).astype(np.int32)
     flags = rng.integers(0, 4, n).astype(np.int32)
-    return Batch(times, counts, flags, int(first_s * S) + n * step)
+    temperature_dc = (210 + rng.integers(-2, 3, n)).astype(np.int32)
+    return Batch(times, counts, flags, int(first_s * S) + n * step, temperature_dc)
 
 
 def blocks(first_s: int, n: int, *, seed: int = 0) -> BlockRows:

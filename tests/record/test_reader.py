@@ -73,6 +73,7 @@ def test_raw_counts_are_cut_to_the_span(path: Path) -> None:
         assert record.last_reading_ns(boot + 1) is None
     assert cut.times_ns.tolist() == whole.times_ns[10:20].tolist()
     assert cut.counts.tolist() == whole.counts[10:20].tolist()
+    assert cut.temperature_dc.tolist() == whole.temperature_dc[10:20].tolist()
     assert cut.now_ns == last
     assert [b.n for b in everything] == [50, 0]  # silence is kept, once
     assert everything[1].now_ns == 60 * S

@@ -92,16 +92,17 @@ def test_the_pages_sql_through_the_sqlite_command(path: Path) -> None:
 
 
 def test_the_pages_python_reads_the_raw_counts(path: Path) -> None:
-    space: dict[str, Callable[[bytes], list[tuple[int, int, list[int]]]]] = {}
+    space: dict[str, Callable[[bytes], list[tuple[int, int, int, list[int]]]]] = {}
     exec(_snippets("python")[0], space)  # noqa: S102 - the page's own decoder is under test
     db = sqlite3.connect(path)
     ((body,),) = db.execute("SELECT body FROM raw").fetchall()
     db.close()
     found = space["readings"](body)
     batch = raw(0, 77, seed=9)
-    assert [time for time, _, _ in found] == batch.times_ns.tolist()
-    assert [flags for _, flags, _ in found] == batch.flags.tolist()
-    assert [counts for _, _, counts in found] == batch.counts.tolist()
+    assert [row[0] for row in found] == batch.times_ns.tolist()
+    assert [row[1] for row in found] == batch.flags.tolist()
+    assert [row[2] for row in found] == batch.temperature_dc.tolist()
+    assert [row[3] for row in found] == batch.counts.tolist()
 
 
 def test_every_view_answers_in_trade_units(path: Path) -> None:

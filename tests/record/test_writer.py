@@ -90,10 +90,7 @@ def test_readings_that_are_there_are_passed_over(path: Path) -> None:
     writer = writer_of(path)
     boot = writer.begin_boot("series", "series")
     whole = raw(0, 100)
-    first = replace(
-        whole, times_ns=whole.times_ns[:60], counts=whole.counts[:60], flags=whole.flags[:60],
-        now_ns=int(whole.times_ns[59]),
-    )  # fmt: skip
+    first = whole.part(slice(60), int(whole.times_ns[59]))
     writer.commit(boot, Commit(first))
     writer.commit(boot, Commit(whole))
     writer.close()
@@ -101,6 +98,8 @@ def test_readings_that_are_there_are_passed_over(path: Path) -> None:
         found = list(record.raw_batches(boot))
     assert np.concatenate([b.times_ns for b in found]).tolist() == whole.times_ns.tolist()
     assert np.concatenate([b.counts for b in found]).tolist() == whole.counts.tolist()
+    temperature_dc = np.concatenate([b.temperature_dc for b in found])
+    assert temperature_dc.tolist() == whole.temperature_dc.tolist()
 
 
 def test_boots_are_numbered_by_identity_and_kind(path: Path) -> None:
