@@ -213,9 +213,13 @@ def _boot(site: Site, front: FrontEnd, clock: SystemClock) -> tuple[str, str]:
 
 def chain_identity(chain: Chain) -> str:
     """What power and E squared per watt are made of: equal where figures may be added."""
-    arrays = [*chain.frequencies_hz, *chain.k]
+    nothing = np.empty(0)
+    tables = chain.temperature or (None,) * len(chain.tables)
+    pairs = [table or (nothing, nothing) for table in tables]
+    arrays = [*chain.frequencies_hz, *chain.k, chain.noise_w, *(x for pair in pairs for x in pair)]
     parts = [table.to_bytes() for table in chain.tables] + [array.tobytes() for array in arrays]
-    return hashlib.sha256(b"".join(parts)).hexdigest()
+    sizes = np.array([len(part) for part in parts], "<i8").tobytes()
+    return hashlib.sha256(b"".join((sizes, *parts))).hexdigest()
 
 
 def _documents(site: Site, chain: Chain) -> list[tuple[str, str, bytes]]:

@@ -67,9 +67,9 @@ def sides(here: Station, at_ns: int, raised: frozenset[str]) -> tuple[Side, ...]
 
 def step(state: State, batch: Batch, here: Station) -> tuple[State, Gathered]:
     """Take readings in; give the new state and what belongs in the record."""
-    kept = (batch.times_ns >= state.front_ns) & (batch.times_ns > state.last_ns)
-    times = batch.times_ns[kept]
-    power_w, flags = convert(batch.counts[kept], batch.flags[kept], here)
+    came, batch = batch.n, accepted(state, batch)
+    times = batch.times_ns
+    power_w, flags = convert(batch, here)
     segments, pending = complete(state.pending, times, power_w, flags, batch.now_ns, here.hold_ns)
     front = int(pending.start_ns[0]) if pending.n else max(batch.now_ns, state.front_ns)
     hearing, heard = listen(
@@ -83,7 +83,7 @@ def step(state: State, batch: Batch, here: Station) -> tuple[State, Gathered]:
     for stretch, until_ns in _stretches(state, segments, front):
         state = _advance(state, stretch, until_ns, here, out)
     last = int(times[-1]) if times.size else state.last_ns
-    late = state.late + int(np.count_nonzero(~kept))
+    late = state.late + came - batch.n
     return replace(state, pending=pending, last_ns=last, hearing=hearing, late=late), out
 
 
@@ -92,16 +92,21 @@ def accepted(state: State, batch: Batch) -> Batch:
     kept = (batch.times_ns >= state.front_ns) & (batch.times_ns > state.last_ns)
     if kept.all():
         return batch
-    return Batch(batch.times_ns[kept], batch.counts[kept], batch.flags[kept], batch.now_ns)
+    return batch.part(kept, batch.now_ns)
 
 
-def convert(counts: NDArray[np.int32], flags: NDArray[np.int32], here: Station) -> tuple[F, I]:
-    """Power in W (n, c), nan where there is none, and flags (n, c)."""
-    power = np.empty(counts.shape)
-    bits = np.empty(counts.shape, np.int64)
-    for channel, table in enumerate(here.chain.tables):
-        power[:, channel], bits[:, channel] = table.convert(counts[:, channel])
-    return power, bits | flags[:, None] | here.chain.flags
+def convert(batch: Batch, here: Station) -> tuple[F, I]:
+    """Power in W (n, c), nan where there is none, and flags (n, c).
+
+    A channel with a temperature table reads right at every known temperature of the table.
+    """
+    power = np.empty(batch.counts.shape)
+    bits = np.empty(batch.counts.shape, np.int64)
+    for channel, (table, drift) in enumerate(zip(here.chain.tables, here.drifts)):
+        power[:, channel], bits[:, channel] = table.convert(batch.counts[:, channel])
+        if drift is not None:
+            power[:, channel] /= drift.factors(batch.temperature_dc)
+    return power, bits | batch.flags[:, None] | here.chain.flags
 
 
 def history_blocks(here: Station) -> int:

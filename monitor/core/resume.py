@@ -13,7 +13,7 @@ from monitor.core.gather import Gathered, nothing
 from monitor.core.hold import Pieces, complete, cut, no_segments
 from monitor.core.judgement import judge
 from monitor.core.pipeline import State, close, convert, history_blocks, sides, start
-from monitor.core.readings import NS_PER_S, Batch
+from monitor.core.readings import NS_PER_S, Batch, joined
 from monitor.core.rows import BlockRows
 from monitor.core.silence import KEY, Hearing
 from monitor.core.station import Station
@@ -40,10 +40,9 @@ def resume(
     batches = [batch for batch in raw if batch.n]
     if not batches:
         return start(here, boot_ns, raised), nothing()
-    times = np.concatenate([batch.times_ns for batch in batches])
-    counts = np.concatenate([batch.counts for batch in batches])
-    bits = np.concatenate([batch.flags for batch in batches])
-    power_w, flags = convert(counts, bits, here)
+    kept = joined(batches)
+    times = kept.times_ns
+    power_w, flags = convert(kept, here)
     last = int(times[-1])
     segments, pending = complete(
         no_segments(here.channels), times, power_w, flags, last, here.hold_ns

@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 from monitor.core.alarms import Watch
 from monitor.core.budget import Contribution
 from monitor.core.calibration import BAND_KIND, Chain, CountTable
+from monitor.core.drift import Drift, drifts_of
 from monitor.core.flags import Flag
 from monitor.core.limits import Scope
 from monitor.core.readings import NS_PER_S
@@ -27,7 +28,8 @@ class Station:
     these two span; k_ratio: its coverage factor. outside_excluded: signals outside the bands are
     kept out by filter or shown by survey to be none. averagings_s:
     every averaging time kept, whole multiples of a block. floor_w: f8 (c,), what a reading below
-    the range counts as. lowest_hz: lower end of what the channels receive.
+    the range counts as. lowest_hz: lower end of what the channels receive. drifts: per channel what
+    temperature does to its power, or None.
     """
 
     chain: Chain
@@ -45,6 +47,7 @@ class Station:
     k_ratio: float
     floor_w: F
     lowest_hz: float
+    drifts: tuple[Drift | None, ...]
 
     @property
     def channels(self) -> int:
@@ -85,6 +88,7 @@ def station(
         coverage_factor(budget),
         np.array([_floor_w(table) for table in chain.tables]),
         min(float(grid.min()) for grid in chain.frequencies_hz),
+        drifts_of(chain),
     )
 
 

@@ -36,7 +36,7 @@ def run(here: Station, whole: Batch, pieces: list[int]) -> gather.Gathered:
         to = min(at + pieces[turn % len(pieces)], whole.n)
         turn += 1
         now = whole.now_ns if to == whole.n else int(whole.times_ns[to - 1])
-        part = Batch(whole.times_ns[at:to], whole.counts[at:to], whole.flags[at:to], now)
+        part = whole.part(slice(at, to), now)
         state, found = pipeline.step(state, part, here)
         out.extend(found)
         at = to

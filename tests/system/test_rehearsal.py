@@ -14,7 +14,6 @@ from monitor.config import load_site
 from monitor.core import pipeline
 from monitor.core.flags import Flag
 from monitor.core.gather import nothing, stack
-from monitor.core.readings import Batch
 from monitor.core.rows import BlockRows, FieldRows, WindowRows
 from monitor.core.station import Station
 from monitor.record.reader import Record
@@ -77,10 +76,7 @@ def test_the_stored_counts_replay_to_the_bit(folder: Path) -> None:
     assert sum(batch.n for batch in raw) >= HISTORY_S
     for batch in raw:
         for part in np.array_split(np.arange(batch.n), min(7, batch.n)):
-            piece = Batch(
-                batch.times_ns[part], batch.counts[part], batch.flags[part],
-                int(batch.times_ns[part[-1]]),
-            )  # fmt: skip
+            piece = batch.part(slice(part[0], part[-1] + 1), int(batch.times_ns[part[-1]]))
             state, found = pipeline.step(state, piece, here)
             out.extend(found)
     again = stack(out.blocks), stack(out.windows), stack(out.fields)
