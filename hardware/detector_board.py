@@ -14,6 +14,7 @@ from hardware.options import clock_start_ns
 from hardware.reception import Reception, Taken
 from hardware.timing import NS_PER_MS, ArrivalClock, TickClock
 from hardware.transport import Port, check_device, url_problem
+from monitor.core.averaging_law import Averaging
 from monitor.core.flags import Flag
 from monitor.core.keys import Table
 from monitor.core.readings import MISSING, NS_PER_S, Batch, DeviceStatus, FrontEnd, empty_batch
@@ -23,6 +24,8 @@ _GIVE_UP = 10
 """The port is opened anew after this many times the silence that counts as a hang."""
 _GATHER_S = 0.02
 _UNKNOWN_REACH_NS = 2 * NS_PER_S
+AVERAGING = Averaging("none")
+"""PROTOCOL.md: a count is what the converter gave, not averaged."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -35,6 +38,7 @@ class Settings:
     clock_start_ns: int | None
     supply_v: tuple[float, float] | None
     resolution: ClassVar[float | None] = None
+    averaging: ClassVar[Averaging] = AVERAGING
 
     def check_device(self) -> None:
         """DeviceError where the port is not there or may not be opened."""

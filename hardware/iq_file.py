@@ -14,6 +14,7 @@ from numpy.typing import NDArray
 from hardware import sigmf
 from hardware.options import clock_start_ns, existing_file, pace, utc_ns_of
 from hardware.recorded import Pace
+from monitor.core.averaging_law import Averaging
 from monitor.core.errors import ConfigError, DeviceError
 from monitor.core.flags import Flag
 from monitor.core.keys import REQUIRED, Table
@@ -29,6 +30,8 @@ from monitor.core.spectrum import (
 
 COUNTS_PER_DB = 1000.0
 _CHUNK_SAMPLES = 1 << 18
+INTERVAL_S = 0.1
+"""Of one reading, where the options do not say."""
 
 Bands = tuple[tuple[float, float], ...]
 
@@ -64,6 +67,11 @@ class Settings:
     def bin_hz(self) -> float:
         """Spacing of the spectrum's bins: an edge of a band cannot be finer."""
         return self.rate_hz / self.fft
+
+    @property
+    def averaging(self) -> Averaging:
+        """A reading is the mean power of its interval."""
+        return Averaging("power", self.interval_s)
 
     def check_device(self) -> None:
         """DeviceError where the file cannot be read."""
@@ -101,7 +109,7 @@ def settings_from(table: Table, folder: Path) -> Settings:
         bands=_bands(table),
         fft=fft,
         overlap=table.number("overlap", 0.5, 0.0, 0.99),
-        interval_s=table.number("interval_s", 0.1, fft / rate_hz, 3600.0),
+        interval_s=table.number("interval_s", INTERVAL_S, fft / rate_hz, 3600.0),
         start_utc_ns=start_utc_ns,
         start_source=source,
         skip_bytes=known.header_bytes,

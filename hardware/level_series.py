@@ -11,10 +11,11 @@ from numpy.typing import NDArray
 
 from hardware import columns
 from hardware.csv_rows import CsvRows
-from hardware.options import clock_start_ns, existing_file, pace
+from hardware.options import averaging, clock_start_ns, existing_file, pace
 from hardware.order import misplaced
 from hardware.overload import overload_word
 from hardware.recorded import Pace
+from monitor.core.averaging_law import Averaging
 from monitor.core.errors import ConfigError
 from monitor.core.flags import Flag
 from monitor.core.keys import Table
@@ -33,7 +34,8 @@ class Settings:
     """Options of [sensor] for a level series.
 
     resolution: unit per count. overload: the word that stands for a level above the range; ""
-    where none. clock_start_ns: UTC of the first row, where its time is not UTC.
+    where none. averaging: what each level is said to be an average of. clock_start_ns: UTC of the
+    first row, where its time is not UTC.
     """
 
     file: Path
@@ -42,6 +44,7 @@ class Settings:
     level_columns: tuple[str, ...]
     resolution: float | None
     overload: str
+    averaging: Averaging
     clock_start_ns: int | None
     real_pace: bool
 
@@ -75,6 +78,7 @@ def settings_from(table: Table, folder: Path) -> Settings:
         level_columns=_level_columns(table),
         resolution=table.number("resolution", low=1e-9, high=1e9),
         overload=overload_word(table, separator),
+        averaging=averaging(table),
         clock_start_ns=clock_start_ns(table),
         real_pace=pace(table),
     )

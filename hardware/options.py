@@ -6,6 +6,7 @@ from collections.abc import Mapping
 from datetime import UTC, datetime
 from pathlib import Path
 
+from monitor.core.averaging_law import KINDS, Averaging
 from monitor.core.errors import DeviceError
 from monitor.core.keys import Table
 from monitor.core.readings import NS_PER_S
@@ -53,3 +54,12 @@ def existing_file(table: Table, key: str, folder: Path) -> Path:
 def pace(table: Table) -> bool:
     """Whether a recorded series plays in real time; the option pace."""
     return table.text("pace", "full", ("full", "real")) == "real"
+
+
+def averaging(table: Table) -> Averaging:
+    """What a device says that it averages: the options averages and averaging_s."""
+    kind = table.text("averages", "undeclared", (*KINDS, "undeclared"))
+    seconds = table.number("averaging_s", 0.0, 0.0, 3600.0)
+    if seconds and kind not in ("log", "power"):
+        raise table.error("averaging_s", "only where averages is log or power; take it out")
+    return Averaging(kind, seconds)

@@ -6,7 +6,8 @@ from collections.abc import Callable, Mapping
 from pathlib import Path
 from typing import Protocol
 
-from hardware.options import sensor_table
+from hardware.options import averaging, sensor_table
+from monitor.core.averaging_law import Averaging
 from monitor.core.errors import ConfigError
 from monitor.core.readings import FrontEnd
 
@@ -19,6 +20,10 @@ class Settings(Protocol):
     @property
     def resolution(self) -> float | None:
         """Unit per count of a front end that makes counts of figures; None where counts are raw."""
+
+    @property
+    def averaging(self) -> Averaging:
+        """What a reading is an average of already when it comes; the same as of declared()."""
 
     def check_device(self) -> None:
         """DeviceError in one line where the device or the file cannot be reached now."""
@@ -57,9 +62,32 @@ def settings_for(kind: str, options: Mapping[str, object], folder: Path) -> Sett
 
         settings = iq_file.settings_from(table, folder)
     else:
-        raise ConfigError(f"sensor.kind: {kind!r} is not one of {', '.join(KINDS)}")
+        raise _unknown(kind)
     table.finish()
     return settings
+
+
+def declared(kind: str, options: Mapping[str, object]) -> Averaging:
+    """What a kind's readings are an average of, by its options alone: no file, no device.
+
+    ConfigError about the options that say so, and about an unknown kind.
+    """
+    table = sensor_table(options)
+    if kind == "detector_board":
+        from hardware import detector_board
+
+        return detector_board.AVERAGING
+    if kind in ("text_lines", "level_series"):
+        return averaging(table)
+    if kind == "iq_file":
+        from hardware import iq_file
+
+        return Averaging("power", table.number("interval_s", iq_file.INTERVAL_S, 0.0, 3600.0))
+    raise _unknown(kind)
+
+
+def _unknown(kind: str) -> ConfigError:
+    return ConfigError(f"sensor.kind: {kind!r} is not one of {', '.join(KINDS)}")
 
 
 def open_front_end(

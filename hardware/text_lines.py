@@ -8,9 +8,11 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from hardware.options import averaging
 from hardware.overload import overload_word
 from hardware.timing import LATENESS_NS, increasing_after
 from hardware.transport import Port, check_device, url_problem
+from monitor.core.averaging_law import Averaging
 from monitor.core.errors import ConfigError
 from monitor.core.flags import Flag
 from monitor.core.keys import Table
@@ -37,6 +39,7 @@ class Settings:
     columns: one per channel, counted from 1. separator: empty stands for any blanks.
     resolution: unit per count; a count is the printed figure divided by it, rounded.
     overload: the word that the board prints instead of a figure above its range; "" where none.
+    averaging: what the board says that it averages before it prints.
     """
 
     device: str
@@ -45,6 +48,7 @@ class Settings:
     columns: tuple[int, ...]
     resolution: float | None
     overload: str
+    averaging: Averaging
 
     def check_device(self) -> None:
         """DeviceError where the port is not there or may not be opened."""
@@ -85,6 +89,7 @@ def settings_from(table: Table) -> Settings:
         columns=tuple(columns),
         resolution=table.number("resolution", low=1e-9, high=1e9),
         overload=overload_word(table, separator),
+        averaging=averaging(table),
     )
 
 

@@ -6,55 +6,20 @@ import os
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
-from typing import Any
 
 from monitor import tomlfile
 from monitor.core.alarms import AlertRule
 from monitor.core.errors import ConfigError
 from monitor.core.exposure import FIELD_REGIONS
-from monitor.core.keys import REQUIRED, Table
+from monitor.core.keys import Table
 from monitor.core.limits import POPULATIONS, SCOPES
-from monitor.core.quantities import frequency_hz
+from monitor.sitebands import Band as Band
+from monitor.sitebands import Channel as Channel
+from monitor.sitebands import bands_of, channels_of, named
 from monitor.tomlfile import TopTable
 
 OCCUPANCIES = ("public", "controlled")
-AXES = ("x", "y", "z", "")
-OUTSIDE = ("filter", "survey", "undeclared")
-SIGNALS = ("carrier", "noise", "bursts", "mixed", "undeclared")
-POLARISATIONS = ("survey", "undeclared")
-MAX_CHANNELS = 64
 DAY_S = 86_400.0
-
-
-@dataclass(frozen=True, slots=True)
-class Band:
-    """A part of the spectrum, Hz. outside: what rules out signals beyond it, one of OUTSIDE.
-
-    signal: what it carries, one of SIGNALS; signal_bandwidth_hz: the least that a signal there
-    occupies, 0 where nobody said. polarisation: survey, where one has shown that a single axis
-    takes in the whole field.
-    """
-
-    name: str
-    low_hz: float
-    high_hz: float
-    outside: str = "undeclared"
-    signal: str = "undeclared"
-    signal_bandwidth_hz: float = 0.0
-    polarisation: str = "undeclared"
-
-
-@dataclass(frozen=True, slots=True)
-class Channel:
-    """One column of raw counts: an axis (x, y, z or '' where there is one only) in one band.
-
-    gain: the receiver's gain step, by its name in the calibration file; '' where it has none.
-    """
-
-    name: str
-    axis: str
-    band: str
-    gain: str = ""
 
 
 @dataclass(frozen=True, slots=True)
@@ -123,11 +88,11 @@ def _read(top: TopTable, path: Path) -> Site:
     values: dict[str, object] = {"path": path}
     values |= _site(top.table("site")) | _record(top.table("record"), path.parent)
     values |= _sensor(top, path.parent) | _pages(top.table("pages", {}))
-    bands = _bands(top)
+    bands = bands_of(top)
     sets = _limit_sets(top)
     silence = top.table("silence", {})
     values |= {
-        "channels": _channels(top, bands),
+        "channels": channels_of(top, bands),
         "bands": bands,
         "limit_sets": sets,
         "alerts": _alerts(top, sets),
@@ -140,7 +105,7 @@ def _read(top: TopTable, path: Path) -> Site:
 
 def _site(table: Table) -> dict[str, object]:
     values: dict[str, object] = {
-        "name": _named(table, "name"),
+        "name": named(table, "name"),
         "place": table.text("place", ""),
         "simulated": table.flag("simulated"),
         "occupancy": table.text("occupancy", choices=OCCUPANCIES),
@@ -152,7 +117,7 @@ def _site(table: Table) -> dict[str, object]:
 
 def _record(table: Table, folder: Path) -> dict[str, object]:
     values: dict[str, object] = {
-        "record_path": folder / _named(table, "path"),
+        "record_path": folder / named(table, "path"),
         "commit_s": table.number("commit_s", 10.0, 1.0, 3600.0),
     }
     table.finish()
@@ -162,9 +127,9 @@ def _record(table: Table, folder: Path) -> dict[str, object]:
 def _sensor(top: TopTable, folder: Path) -> dict[str, object]:
     table = top.table("sensor")
     values: dict[str, object] = {
-        "sensor_kind": _named(table, "kind"),
+        "sensor_kind": named(table, "kind"),
         "hold_s": table.number("hold_s", low=0.001, high=DAY_S),
-        "calibration": folder / _named(table, "calibration"),
+        "calibration": folder / named(table, "calibration"),
     }
     options = dict(top.any("sensor"))
     for key in ("kind", "hold_s", "calibration"):
@@ -179,65 +144,6 @@ def _pages(table: Table) -> dict[str, object]:
     }
     table.finish()
     return values
-
-
-def _bands(top: TopTable) -> dict[str, Band]:
-    bands: dict[str, Band] = {}
-    for table in top.tables("band"):
-        band = Band(
-            _named(table, "name"),
-            frequency(table, "low"),
-            frequency(table, "high"),
-            table.text("outside", "undeclared", OUTSIDE),
-            table.text("signal", "undeclared", SIGNALS),
-            frequency(table, "signal_bandwidth", 0.0),
-            table.text("polarisation", "undeclared", POLARISATIONS),
-        )
-        table.finish()
-        if band.low_hz >= band.high_hz:
-            raise table.error("high", "must be above low")
-        if band.name in bands:
-            raise table.error("name", f"{band.name!r} is there already")
-        for other in bands.values():
-            if band.low_hz < other.high_hz and other.low_hz < band.high_hz:
-                raise table.error(
-                    "low", f"overlaps band {other.name!r}; a signal would count twice"
-                )
-        bands[band.name] = band
-    if not bands:
-        raise top.error("band", "none given; add [[band]] with name, low and high")
-    return bands
-
-
-def _channels(top: TopTable, bands: Mapping[str, Band]) -> tuple[Channel, ...]:
-    tables = top.tables("channel")
-    if not 0 < len(tables) <= MAX_CHANNELS:
-        raise top.error("channel", f"{len(tables)} channels; 1 to {MAX_CHANNELS} are possible")
-    channels: list[Channel] = []
-    for table in tables:
-        channel = Channel(
-            _named(table, "name"),
-            table.text("axis", "", AXES),
-            table.text("band", choices=[*bands]),
-            table.text("gain", ""),
-        )
-        table.finish()
-        _distinct(table, channel, channels)
-        channels.append(channel)
-    unused = [name for name in bands if name not in {channel.band for channel in channels}]
-    if unused:
-        raise top.error("band", f"{unused[0]!r} has no channel; add one or take the band out")
-    return tuple(channels)
-
-
-def _distinct(table: Table, channel: Channel, others: Sequence[Channel]) -> None:
-    if channel.name in {other.name for other in others}:
-        raise table.error("name", f"{channel.name!r} is there already")
-    axes = [other.axis for other in others if other.band == channel.band]
-    if channel.axis in axes or (axes and "" in (channel.axis, *axes)):
-        raise table.error(
-            "axis", f"band {channel.band!r} has several channels; each needs an axis of its own"
-        )
 
 
 def _limit_sets(top: TopTable) -> tuple[str, ...]:
@@ -255,7 +161,7 @@ def _alerts(top: TopTable, sets: Sequence[str]) -> tuple[AlertRule, ...]:
     rules: list[AlertRule] = []
     for table in top.tables("alert", []):
         rule = AlertRule(
-            name=_named(table, "name"),
+            name=named(table, "name"),
             set_id=table.text("set", "", sets),
             population=table.text("population", "", POPULATIONS),
             scope=table.text("scope", "", SCOPES),
@@ -271,23 +177,3 @@ def _alerts(top: TopTable, sets: Sequence[str]) -> tuple[AlertRule, ...]:
             raise table.error("name", f"{rule.name!r} is there already")
         rules.append(rule)
     return tuple(rules)
-
-
-def _named(table: Table, key: str) -> str:
-    text: str = table.text(key)
-    if not text.strip():
-        raise table.error(key, "is empty")
-    return text
-
-
-def frequency(table: Table, key: str, default: Any = REQUIRED) -> float:
-    """A frequency in Hz from a text with a unit or a bare number of Hz."""
-    value = table.any(key, default)
-    if value is default and default is not REQUIRED:
-        return float(default)
-    if isinstance(value, bool) or not isinstance(value, (str, int, float)):
-        raise table.error(key, f"{value!r} is not a frequency; write for example '900MHz'")
-    try:
-        return frequency_hz(value)
-    except ConfigError as error:
-        raise table.error(key, str(error)) from None

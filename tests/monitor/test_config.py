@@ -81,6 +81,12 @@ def test_a_site_is_read_as_it_is_written(tmp_path: Path) -> None:
     assert (site.host, site.port) == ("127.0.0.1", 8080)
 
 
+def test_a_band_says_what_it_carries(tmp_path: Path) -> None:
+    more = "high = 2.7e9\nsignal = 'noise'\nsignal_bandwidth = '5MHz'\npolarisation = 'survey'"
+    band = load_site(written(tmp_path, SITE.replace("high = 2.7e9", more))).bands["main"]
+    assert (band.signal, band.signal_bandwidth_hz, band.polarisation) == ("noise", 5e6, "survey")
+
+
 def test_paths_are_relative_to_the_site_file(
     tmp_path: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
@@ -111,6 +117,12 @@ def test_paths_are_relative_to_the_site_file(
         ('"700MHz"', "true", "band[1].low: True is not a frequency"),
         ("high = 2.7e9", "high = 2.7e9\noutside = 'hope'", "band[1].outside: 'hope' is not one of"),
         ('"700MHz"', '"3GHz"', "band[1].high: must be above low"),
+        ("high = 2.7e9", "high = 2.7e9\nsignal = 'fm'", "band[1].signal: 'fm' is not one of"),
+        (
+            "high = 2.7e9",
+            "high = 2.7e9\nsignal_bandwidth = '2.1GHz'",
+            "band[1].signal_bandwidth: is wider than the band",
+        ),
         ('axis = "y"', 'axis = "x"', "channel[2].axis: band 'main' has several channels"),
         ('axis = "y"', "", "channel[2].axis: band 'main' has several channels"),
         ('axis = "y"', 'axis = "w"', "channel[2].axis: 'w' is not one of"),
