@@ -11,10 +11,19 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from monitor.core.distributions import CONFIDENCE, DIVISOR, FEWEST_DEGREES, Error, Real, factor
+from monitor.core.distributions import (
+    CONFIDENCE,
+    DIVISOR,
+    FEWEST_DEGREES,
+    Error,
+    Real,
+    Shape,
+    factor,
+)
 from monitor.core.errors import CalibrationError
+from monitor.core.tabulated import Points, Tabulated, tabulated
 
-DISTRIBUTIONS = ("normal", "rectangular", "triangular", "u_shaped", "expanded")
+DISTRIBUTIONS = ("normal", "rectangular", "triangular", "u_shaped", "expanded", "tabulated")
 
 
 @dataclass(frozen=True, slots=True)
@@ -23,10 +32,12 @@ class Contribution:
 
     value >= 0, in a unit of its own: the standard deviation (normal), the half width (rectangular,
     triangular, u_shaped) or the expanded uncertainty that a certificate gives with its factor k
-    (expanded). shared: one and the same error, by name, in all channels that list it. kind: a word
-    on where it comes from (antenna, cable, detector, ...), for reading only. degrees_of_freedom:
-    how well the value is known (GUM 4.2.6, G.4.2). sensitivity: change of the result per unit of
-    value, in a chain dB per unit (GUM 5.1.3); its sign matters where an error is shared.
+    (expanded). A tabulated one has points, rows (error, weight) of its density in that unit, which
+    give its value, the standard deviation: 0 stands for "not given". shared: one and the same
+    error, by name, in all channels that list it. kind: a word on where it comes from (antenna,
+    cable, detector, ...), for reading only. degrees_of_freedom: how well the value is known (GUM
+    4.2.6, G.4.2). sensitivity: change of the result per unit of value, in a chain dB per unit (GUM
+    5.1.3); its sign matters where an error is shared.
     """
 
     name: str
@@ -37,6 +48,7 @@ class Contribution:
     kind: str = ""
     degrees_of_freedom: float = math.inf
     sensitivity: float = 1.0
+    points: Points = ()
 
     def __post_init__(self) -> None:
         """CalibrationError for a value, a factor or a distribution that means nothing."""
@@ -54,16 +66,34 @@ class Contribution:
             )
         if not math.isfinite(self.sensitivity):
             raise CalibrationError(f"{self.name}: sensitivity = {self.sensitivity}; must be finite")
+        if self.distribution == "tabulated":
+            self._take_table()
+        elif self.points:
+            raise CalibrationError(
+                f"{self.name}: points belong to a tabulated distribution, not to a"
+                f" {self.distribution} one; write distribution = 'tabulated' or leave them out"
+            )
+
+    def _take_table(self) -> None:
+        try:
+            value = tabulated(self.points).deviation
+        except CalibrationError as error:
+            raise CalibrationError(f"{self.name}: {error}") from None
+        if self.value not in (0.0, value):
+            raise CalibrationError(f"{self.name}: value {self.value:g}; leave out: points give it")
+        object.__setattr__(self, "value", value)
 
     @property
-    def shape(self) -> str:
+    def shape(self) -> Shape:
         """The distribution of the error itself: a certificate's is taken as normal."""
+        if self.distribution == "tabulated":
+            return tabulated(self.points)
         return "normal" if self.distribution == "expanded" else self.distribution
 
     @property
     def effect(self) -> float:
         """Standard uncertainty times sensitivity, with its sign, in the unit of the result."""
-        divisor = self.k if self.distribution == "expanded" else DIVISOR[self.distribution]
+        divisor = self.k if self.distribution == "expanded" else DIVISOR.get(self.distribution, 1.0)
         return self.value / divisor * self.sensitivity
 
     @property
@@ -81,13 +111,16 @@ class Independent:
     """One error that is independent of all others; effects: (c,), its effect in each channel."""
 
     name: str
-    shape: str
+    shape: Shape
     degrees_of_freedom: float
     effects: Real
 
     def at(self, shares: Real) -> Error:
         """Shape, u and degrees of freedom in a sum of the channels weighted by shares (c,)."""
-        return self.shape, abs(float(shares @ self.effects)), self.degrees_of_freedom
+        effect, shape = float(shares @ self.effects), self.shape
+        if effect < 0 and isinstance(shape, Tabulated):
+            shape = shape.mirrored
+        return shape, abs(effect), self.degrees_of_freedom
 
 
 def independent(budget: Budget) -> list[Independent]:

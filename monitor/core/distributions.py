@@ -14,6 +14,8 @@ from collections.abc import Callable, Iterator, Mapping, Sequence
 import numpy as np
 from numpy.typing import NDArray
 
+from monitor.core.tabulated import Tabulated
+
 Real = NDArray[np.float64]
 
 CONFIDENCE = 0.95
@@ -26,6 +28,8 @@ DIVISOR: Mapping[str, float] = {
     "u_shaped": math.sqrt(2.0),
 }
 """Half width over standard deviation: GUM 4.3.7, 4.3.9; U-shaped (arcsine): GUM H.1.3.4."""
+Shape = str | Tabulated
+"""A word of DIVISOR, or a table."""
 FEWEST_DEGREES = 1.0
 """Two readings; with less a spread says nothing."""
 
@@ -37,7 +41,7 @@ _MOST_CELLS = 2**17
 _FINER_AT_EDGES = 16
 """A bounded distribution ends abruptly: its factor is then good to about 1e-3 in the worst case."""
 
-Error = tuple[str, float, float]
+Error = tuple[Shape, float, float]
 """Shape, standard uncertainty, degrees of freedom (math.inf: u is exactly known)."""
 
 
@@ -82,7 +86,8 @@ def factor(errors: Sequence[Error], confidence: float = CONFIDENCE) -> float:
                 known[error] = np.fft.rfft(np.fft.ifftshift(mass))
             transform *= known[error]
     mass = np.fft.irfft(transform, n)
-    within = np.concatenate(([0.0], mass[0] + 2.0 * np.cumsum(mass[: n // 2]) - 2.0 * mass[0]))
+    either = mass[1 : n // 2] + mass[: n // 2 : -1]  # as far above as below: tables may be skew
+    within = np.concatenate(([0.0], mass[0] + np.cumsum(np.concatenate(([0.0], either)))))
     limits = np.concatenate(([0.0], (np.arange(n // 2) + 0.5) * step))
     return float(np.interp(confidence, within, limits))
 
@@ -93,7 +98,7 @@ def _grid(errors: Sequence[Error]) -> tuple[int, float]:
     Tails of few degrees of freedom need room: what leaves the grid at one end comes back at the
     other, and must not matter there.
     """
-    bounded = sum(u * DIVISOR[shape] for shape, u, v in errors if shape != "normal")
+    bounded = sum(u * _reach(shape) for shape, u, v in errors if shape != "normal")
     sigma = math.sqrt(sum(u**2 for shape, u, v in errors if shape == "normal" and math.isinf(v)))
     tails = sum(16.0 * u * 64.0 ** (1.0 / v) for _, u, v in errors if math.isfinite(v))
     reach = bounded + 8.0 * sigma + 1.0 + tails
@@ -117,11 +122,19 @@ def _normals(errors: Sequence[Error], angle: Real) -> NDArray[np.complex128]:
     return transform.astype(np.complex128)
 
 
-def _masses(shape: str, u: float, v: float, edges: Real) -> Iterator[tuple[float, Real]]:
+def _reach(shape: Shape) -> float:
+    """The largest error of a bounded shape over its standard deviation."""
+    return shape.reach if isinstance(shape, Tabulated) else DIVISOR[shape]
+
+
+def _masses(shape: Shape, u: float, v: float, edges: Real) -> Iterator[tuple[float, Real]]:
     """Weight and masses of the cells of a bounded error, for each of its scales."""
     for scale, weight in zip(*scale_weights(v, _FINER_AT_EDGES)):
-        inside = np.clip(edges / (scale * u * DIVISOR[shape]), -1.0, 1.0)
-        yield float(weight), np.diff(_CUMULATIVE[shape](inside))
+        if isinstance(shape, Tabulated):
+            cumulative = shape.cumulative(edges / (scale * u))
+        else:
+            cumulative = _CUMULATIVE[shape](np.clip(edges / (scale * u * DIVISOR[shape]), -1, 1))
+        yield float(weight), np.diff(cumulative)
 
 
 def _u_shaped(x: Real) -> Real:
@@ -144,9 +157,15 @@ _CUMULATIVE: Mapping[str, Callable[[Real], Real]] = {
 """Cumulative distribution over x in half widths, -1 to 1 (JCGM 101:2008, 6.4)."""
 
 
-def draw(shape: str, size: int, degrees_of_freedom: float, rng: np.random.Generator) -> Real:
-    """Errors (size,) of standard uncertainty 1, at random (JCGM 101:2008, 6.4)."""
-    if shape == "normal":
+def draw(shape: Shape, size: int, degrees_of_freedom: float, rng: np.random.Generator) -> Real:
+    """Errors (size,) of standard uncertainty 1, at random (JCGM 101:2008, 6.4).
+
+    Those of a table by the inverse of its cumulative distribution (JCGM 101:2008, C.2).
+    """
+    unit = 1.0 if isinstance(shape, Tabulated) else DIVISOR[shape]
+    if isinstance(shape, Tabulated):
+        drawn = shape.at(rng.uniform(0.0, 1.0, size))
+    elif shape == "normal":
         drawn = rng.standard_normal(size)
     elif shape == "rectangular":
         drawn = rng.uniform(-1.0, 1.0, size)
@@ -157,4 +176,4 @@ def draw(shape: str, size: int, degrees_of_freedom: float, rng: np.random.Genera
     if math.isfinite(degrees_of_freedom):
         chi2 = rng.chisquare(degrees_of_freedom, size)
         drawn = drawn * np.sqrt(degrees_of_freedom / chi2)
-    return np.asarray(drawn * DIVISOR[shape])
+    return np.asarray(drawn * unit)
