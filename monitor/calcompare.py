@@ -8,7 +8,9 @@ from dataclasses import fields
 
 import numpy as np
 
-from monitor.calparts import CalibrationFile, Element
+from monitor.calelements import Element
+from monitor.callines import Line
+from monitor.calparts import CalibrationFile
 from monitor.calreview import Document, View, knots_hz, response_db, uncertainty
 from monitor.core.budget import Contribution
 from monitor.core.calibration import CountTable
@@ -134,17 +136,32 @@ def _elements(file: CalibrationFile) -> dict[str, Table]:
 
 
 def _element(element: Element) -> Table:
-    rows = zip(element.curve.frequencies_hz, element.curve.db)
+    rows = zip(element.curve.frequencies_hz, element.given_db)
+    line = element.line.contribution if element.line else None
     return {
-        "serial": element.serial,
-        "certificate": element.certificate,
-        "table": tuple(f"{hz / 1e6:.9g} MHz {db:.9g} dB" for hz, db in rows),
+        **{key: getattr(element, key) for key in ("serial", "certificate", "laboratory")},
+        **{key: getattr(element, key) for key in ("date", "due", "quantity")},
+        "table": tuple(f"{hz / 1e6:.9g} MHz {db:.9g} {element.unit}" for hz, db in rows),
+        "U": f"{line.value:.9g} dB, k = {line.k:.9g}" if line else None,
+        "table of U": _curve(element.line),
+        "degrees_of_freedom": line.degrees_of_freedom if line else None,
     }
+
+
+def _curve(line: Line | None) -> tuple[str, ...]:
+    """An uncertainty over frequency, row by row; nothing where it is the same everywhere."""
+    if line is None or line.curve is None:
+        return ()
+    rows = zip(line.curve.frequencies_hz, line.curve.db)
+    return tuple(f"{hz / 1e6:.9g} MHz {value:.9g}" for hz, value in rows)
 
 
 def _lines(file: CalibrationFile) -> dict[str, Table]:
     keys = [field.name for field in fields(Contribution) if field.name != "name"]
     return {
-        f"contribution {line.name!r} {axis}".strip(): {key: getattr(line, key) for key in keys}
-        for axis, line in file.lines
+        f"contribution {line.name!r} {line.axis}".strip(): {
+            **{key: getattr(line.contribution, key) for key in keys},
+            "table": _curve(line),
+        }
+        for line in file.contributions
     }

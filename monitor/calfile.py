@@ -10,7 +10,9 @@ from typing import Protocol, TypeVar
 
 import numpy as np
 
-from monitor.calparts import AXES, CalibrationFile, Element, elements_of, read
+from monitor import calterms
+from monitor.calelements import Element
+from monitor.calparts import CalibrationFile, elements_of, read
 from monitor.config import Band, Channel
 from monitor.core import calibration as cal
 from monitor.core.budget import Contribution
@@ -55,9 +57,11 @@ def _chain(
 ) -> cal.Chain:
     chosen = [detector_of(file, channel) for channel in channels]
     responses = [response(file, channel, bands[channel.band]) for channel in channels]
+    axes = Counter(channel.band for channel in channels)
+    terms = [_terms(file, c, bands[c.band], axes[c.band]) for c in channels]
     contributions = tuple(
-        budget_of(file, channel) + cal.spread(k, channel.band) + detector.rounding
-        for channel, detector, (_, k) in zip(channels, chosen, responses)
+        written + assumed + cal.spread(k, channel.band) + detector.rounding
+        for channel, detector, (written, assumed), (_, k) in zip(channels, chosen, terms, responses)
     )
     if len({detector.resolution for detector in chosen}) > 1:
         raise file.top.error("detector", "the detectors differ in what one count stands for")
@@ -67,9 +71,10 @@ def _chain(
         k=tuple(k for _, k in responses),
         k_mid=np.array([cal.middle(k) for _, k in responses]),
         contributions=contributions,
-        flags=_flags(channels, chosen, file.invented),
+        flags=_flags(file, chosen, any(assumed for _, assumed in terms))
+        | _missing_axes(bands, axes),
         valid_temperature_c=file.certificate.valid_temperature_c,
-        due_utc_ns=file.certificate.due_utc_ns,
+        due_utc_ns=file.dues("".join(channel.axis for channel in channels))[0].utc_ns,
         resolution=chosen[0].resolution,
         identity=hashlib.sha256(file.body).hexdigest(),
         document=file.body,
@@ -112,22 +117,44 @@ def _one(top: TopTable, key: str, items: Sequence[A], channel: Channel, word: st
     return mine[0]
 
 
-def budget_of(file: CalibrationFile, channel: Channel) -> tuple[Contribution, ...]:
-    """The file's budget lines for the channel's axis; ConfigError where one stands twice."""
-    mine = tuple(line for axis, line in file.lines if axis in ("", channel.axis))
-    names = [line.name for line in mine]
-    for name in names:
-        if names.count(name) > 1:
-            raise file.top.error("contribution", f"{name!r} twice for channel {channel.name!r}")
-    return mine
+def budget_of(
+    file: CalibrationFile, channel: Channel, low_hz: float, high_hz: float
+) -> tuple[Contribution, ...]:
+    """The file's budget lines for the channel's axis, over a band or at one frequency.
+
+    ConfigError where one stands twice; CalibrationError where a table does not reach as far.
+    """
+    mine = [line for line in file.lines if line.axis in ("", channel.axis)]
+    twice = [name for name, n in Counter(line.name for line in mine).items() if n > 1]
+    if not twice:
+        return tuple(line.over(low_hz, high_hz) for line in mine)
+    name = twice[0]
+    text = f"{name!r} twice for channel {channel.name!r}"
+    if any(element.line and element.line.name == name for element in file.elements):
+        text += "; an element's u_db is a line of that name already; remove one or correct serials"
+    raise file.top.error("contribution", text)
 
 
-def _flags(channels: Sequence[Channel], detectors: Sequence[Detector], invented: bool) -> int:
-    """What holds for every figure: fewer than three axes in a band, logs averaged, invented."""
-    axes = Counter(channel.band for channel in channels)
-    flags = Flag.COMPONENT_ONLY if min(axes.values()) < len(AXES) else Flag(0)
+Lines = tuple[Contribution, ...]
+
+
+def _terms(file: CalibrationFile, channel: Channel, band: Band, axes: int) -> tuple[Lines, Lines]:
+    """The lines that the file writes for a channel, and those assumed where it writes none."""
+    written = budget_of(file, channel, band.low_hz, band.high_hz)
+    return written, calterms.assumed(written, calterms.needed(axes, band.polarisation))
+
+
+def _missing_axes(bands: Mapping[str, Band], axes: Mapping[str, int]) -> int:
+    """COMPONENT_ONLY where a band has fewer than three axes and no survey for the others."""
+    parts = (calterms.is_component(n, bands[name].polarisation) for name, n in axes.items())
+    return int(Flag.COMPONENT_ONLY) if any(parts) else 0
+
+
+def _flags(file: CalibrationFile, detectors: Sequence[Detector], assumed: bool) -> int:
+    """What holds for every figure: logs averaged, figures invented, terms assumed."""
+    flags = Flag.ASSUMED_TERMS if assumed else Flag(0)
     if any(detector.averages == "log" for detector in detectors):
         flags |= Flag.LOG_AVERAGED
-    if invented:
+    if file.invented:
         flags |= Flag.INVENTED_CALIBRATION
     return int(flags)

@@ -10,8 +10,10 @@ from dataclasses import asdict, dataclass
 
 import numpy as np
 
+from monitor.calelements import Element
 from monitor.calfile import chain
-from monitor.calparts import AXES, CalibrationFile, elements_of
+from monitor.calparts import CalibrationFile, axes_of, elements_of
+from monitor.calterms import assumed_name
 from monitor.config import Band, Channel
 from monitor.core.budget import combined, factors, table
 from monitor.core.calibration import Chain
@@ -49,17 +51,6 @@ def view(file: CalibrationFile, axes: str | None, band_hz: tuple[float, float] |
     return View(file, axes, band, chain(file, channels, {band.name: band}))
 
 
-def axes_of(file: CalibrationFile) -> str:
-    """The axes that have a detector and an antenna, of 'xyz'; all where none has."""
-    served = [
-        axis
-        for axis in AXES
-        if any(e.kind == "antenna" for e in elements_of(file, axis))
-        and any(detector.axis in ("", axis) for detector in file.detectors)
-    ]
-    return "".join(served or AXES)
-
-
 def span_hz(file: CalibrationFile, axes: str) -> tuple[float, float]:
     """The frequencies that every table of every one of the axes covers.
 
@@ -93,6 +84,7 @@ def response_db(shown: View, axis: str, frequencies_hz: Real) -> Real:
 def document(shown: View, shares: Real, now_utc_ns: int) -> Document:
     """All of it. shares: (c,), each axis' part of E squared."""
     file, certificate = shown.file, shown.file.certificate
+    overdue = [due for due in file.dues(shown.axes) if now_utc_ns >= due.utc_ns]
     return {
         "file": file.top.where,
         "identity": shown.chain.identity,
@@ -101,8 +93,10 @@ def document(shown: View, shares: Real, now_utc_ns: int) -> Document:
         "certificate": certificate.number,
         "date": certificate.date.isoformat(),
         "due": certificate.due.isoformat(),
-        "overdue": now_utc_ns >= certificate.due_utc_ns,
+        "overdue": bool(overdue),
+        "overdue_parts": [due.what for due in overdue],
         "invented": file.invented,
+        "assumed": _assumed(shown.chain),
         "valid_temperature_c": list(certificate.valid_temperature_c),
         "flags": words(shown.chain.flags),
         "axes": list(shown.axes),
@@ -114,6 +108,12 @@ def document(shown: View, shares: Real, now_utc_ns: int) -> Document:
         "contributions": [asdict(row) for row in table(shown.chain.contributions, shares)],
         "uncertainty": uncertainty(shown.chain, shares),
     }
+
+
+def _assumed(held: Chain) -> list[str]:
+    """Kinds of the lines that stand in for what the file does not say."""
+    lines = [line for channel in held.contributions for line in channel]
+    return list(dict.fromkeys(line.kind for line in lines if line.name == assumed_name(line.kind)))
 
 
 def _detectors(shown: View) -> list[Document]:
@@ -139,13 +139,25 @@ def _elements(file: CalibrationFile) -> list[Document]:
             "axis": element.axis or None,
             "serial": element.serial,
             "certificate": element.certificate,
+            "laboratory": element.laboratory or None,
+            "date": element.date.isoformat() if element.date else None,
+            "due": element.due.isoformat() if element.due else None,
+            **_certified(element),
+            "quantity": element.quantity,
+            "unit": element.unit,
             "low_hz": float(element.curve.frequencies_hz[0]),
             "high_hz": float(element.curve.frequencies_hz[-1]),
-            "smallest_db": float(element.curve.db.min()),
-            "largest_db": float(element.curve.db.max()),
+            "smallest_db": float(element.given_db.min()),
+            "largest_db": float(element.given_db.max()),
         }
         for element in file.elements
     ]
+
+
+def _certified(element: Element) -> Document:
+    """U of the certificate, the largest of its table, and its factor; None where not given."""
+    line = element.line.contribution if element.line else None
+    return {"u_db": line.value if line else None, "k": line.k if line else None}
 
 
 def _response(shown: View) -> list[Document]:

@@ -9,7 +9,7 @@ from datetime import UTC, date, datetime, timedelta
 
 from monitor import limitsets
 from monitor.calfile import load_chain
-from monitor.calparts import dated
+from monitor.calparts import dated, parse
 from monitor.config import Site
 from monitor.core.alarms import watches
 from monitor.core.calibration import Chain
@@ -49,10 +49,10 @@ def findings(
     DeviceError (3), one line each.
     """
     chain = load_chain(site.calibration, site.channels, site.bands)
-    refuse_future_date(site.calibration.name, dated(chain.document), now_utc_ns)
+    refuse_future_date(site.calibration.name, *dated(chain.document), now_utc_ns)
     tops = [(scope, _top(site, chain, scope)) for scope in _scopes(site)]
     yield from _site(site)
-    yield from _calibration(chain, now_utc_ns)
+    yield from _calibration(site, chain, now_utc_ns)
     yield from _temperature(site, chain)
     yield from _channels(site, chain)
     yield from front_end(site)
@@ -67,15 +67,15 @@ def findings(
 def refuse_future(site: Site, now_utc_ns: int) -> None:
     """CalibrationError where the site's calibration is dated in the future."""
     chain = load_chain(site.calibration, site.channels, site.bands)
-    refuse_future_date(site.calibration.name, dated(chain.document), now_utc_ns)
+    refuse_future_date(site.calibration.name, *dated(chain.document), now_utc_ns)
 
 
-def refuse_future_date(name: str, date: date, now_utc_ns: int) -> None:
-    """CalibrationError where the calibration file of that name is dated in the future."""
+def refuse_future_date(name: str, key: str, date: date, now_utc_ns: int) -> None:
+    """CalibrationError where a date of the calibration file of that name lies in the future."""
     now = _EPOCH + timedelta(microseconds=now_utc_ns // 1000)
     if date > (now + AHEAD_OF_UTC).date():
         raise CalibrationError(
-            f"{name}: calibration.date: {date} lies in the future, this machine's "
+            f"{name}: {key}: {date} lies in the future, this machine's "
             f"clock says {now:%Y-%m-%d}; look at the date or the clock"
         )
 
@@ -94,11 +94,12 @@ def _site(site: Site) -> Iterator[Finding]:
         yield Finding("site.field_region", "far field")
 
 
-def _calibration(chain: Chain, now_utc_ns: int) -> Iterator[Finding]:
+def _calibration(site: Site, chain: Chain, now_utc_ns: int) -> Iterator[Finding]:
     if chain.due_utc_ns is not None:
         days = (chain.due_utc_ns - now_utc_ns) / 86_400e9
         last = _EPOCH + timedelta(microseconds=chain.due_utc_ns // 1000 - 1)
-        text = f"due {last.date()}"
+        first = parse(chain.document).dues("".join(channel.axis for channel in site.channels))[0]
+        text = f"due {last.date()}" + ("" if first.what == "calibration" else f" ({first.what})")
         if days <= 0:
             yield Finding("calibration", f"overdue, was {text}: nothing will conform", ok=False)
         elif days < DUE_SOON_DAYS:
@@ -115,6 +116,13 @@ def _calibration(chain: Chain, now_utc_ns: int) -> Iterator[Finding]:
     if chain.flags & Flag.LOG_AVERAGED:
         yield Finding(
             "calibration", "the board averages logs: every figure is a lower bound", ok=False
+        )
+    if chain.flags & Flag.ASSUMED_TERMS:
+        yield Finding(
+            "calibration",
+            "terms of the uncertainty are assumed: nothing will conform until the calibration file"
+            " has a contribution of each kind; fieldsill calibration show tells which",
+            ok=False,
         )
     expanded, k = expanded_db(chain.contributions, equal_shares(len(chain.tables))[None, :])
     u_db = float(expanded[0])

@@ -8,13 +8,16 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from monitor import calterms
+from monitor.calelements import Element
 from monitor.calfile import antenna_of, budget_of, detector_of
-from monitor.calparts import CalibrationFile, Certificate, Element, elements_of
+from monitor.calparts import CalibrationFile, Certificate, axes_of, elements_of
 from monitor.config import Channel
 from monitor.core.budget import Contribution
-from monitor.core.calibration import e2_per_w
+from monitor.core.calibration import FrequencyTable, e2_per_w
 from monitor.core.errors import ConfigError
 from monitor.core.flags import LOWER_BOUND, UPPER_BOUND, Flag
+from monitor.core.keys import Table
 from monitor.core.law import CurveLaw, ScaleLaw
 from monitor.core.limits import frequency_text
 from monitor.core.quantities import dbm_from_w, s_from_e, w_from_dbm
@@ -40,8 +43,9 @@ class Link:
     """One line of the chain, detector first, then the elements as the file lists them.
 
     gain_db: what it adds to a level on its way down: minus its loss, of an antenna minus its
-    antenna factor (dB/m); None where it changes none. u_db: standard uncertainty of the budget
-    lines of its kind, once for all elements of a kind; the squares of all lines add up.
+    antenna factor (dB/m); None where it changes none. u_db: standard uncertainty of its own
+    certificate's line, and with the first element of a kind of that kind's other lines; the
+    squares of all links add up.
     """
 
     element: str
@@ -88,14 +92,15 @@ def through(file: CalibrationFile, asked: Asked, now_utc_ns: int) -> Figure:
     antenna, elements = antenna_of(file, channel), elements_of(file, channel.axis)
     at = np.array([asked.frequency_hz])
     for element in elements:
-        _covers(element, asked.frequency_hz)
+        _covers(element.where, element.name, element.curve, asked.frequency_hz)
     losses = [element.curve for element in elements if element.kind != "antenna"]
     p_dbm, bits = _port_dbm(file, detector, asked)
     per_w = float(e2_per_w(at, antenna.curve, losses)[0])
     e = math.nan if math.isnan(p_dbm) else math.sqrt(w_from_dbm(p_dbm) * per_w)
-    lines = (*budget_of(file, channel), *detector.rounding)
+    lines, bits_of_lines = _budget(file, channel, asked.frequency_hz)
+    lines = (*lines, *detector.rounding)
     expanded, k = expanded_db([lines], np.ones((1, 1)))
-    bits |= _circumstances(file, detector, asked, now_utc_ns)
+    bits |= bits_of_lines | _circumstances(file, detector, channel, asked, now_utc_ns)
     low, high = _bounds(e, float(expanded[0]), bits)
     return Figure(
         p_dbm, e, s_from_e(e), float(expanded[0]) / k, k, low, high, bits,
@@ -107,7 +112,7 @@ def through(file: CalibrationFile, asked: Asked, now_utc_ns: int) -> Figure:
 def _axis(file: CalibrationFile, axis: str) -> str:
     """The axis, which must be named where a table is for one axis only."""
     named = {d.axis for d in file.detectors} | {e.axis for e in file.elements}
-    known = sorted((named | {line_axis for line_axis, _ in file.lines}) - {""})
+    known = sorted((named | {line.axis for line in file.lines}) - {""})
     if known and not axis:
         raise ConfigError(
             f"{file.top.where}: has tables of its own for {', '.join(known)}; say which --axis"
@@ -115,12 +120,25 @@ def _axis(file: CalibrationFile, axis: str) -> str:
     return axis
 
 
-def _covers(element: Element, frequency_hz: float) -> None:
-    low, high = (float(element.curve.frequencies_hz[i]) for i in (0, -1))
+def _budget(
+    file: CalibrationFile, channel: Channel, frequency_hz: float
+) -> tuple[tuple[Contribution, ...], int]:
+    """The lines of an axis at one frequency, the assumed ones too, and the flag that these set."""
+    for line in file.lines:
+        if line.curve and line.axis in ("", channel.axis):
+            _covers(line.where, repr(line.name), line.curve, frequency_hz)
+    written = budget_of(file, channel, frequency_hz, frequency_hz)
+    kinds = calterms.needed(len(axes_of(file)), "undeclared")
+    assumed = calterms.assumed(written, kinds)
+    return written + assumed, int(Flag.ASSUMED_TERMS) if assumed else 0
+
+
+def _covers(where: Table, name: str, curve: FrequencyTable, frequency_hz: float) -> None:
+    low, high = (float(curve.frequencies_hz[i]) for i in (0, -1))
     if not low <= frequency_hz <= high:
-        raise element.where.error(
+        raise where.error(
             "table",
-            f"{element.name} covers {frequency_text(low)} to {frequency_text(high)}, not "
+            f"{name} covers {frequency_text(low)} to {frequency_text(high)}, not "
             f"{frequency_text(frequency_hz)}; nothing is extrapolated; calibrate further",
         )
 
@@ -154,14 +172,16 @@ def _volts(detector: Detector, asked: Asked) -> float | None:
     return asked.value if asked.form == "volts" else None
 
 
-def _circumstances(file: CalibrationFile, detector: Detector, asked: Asked, now_utc_ns: int) -> int:
+def _circumstances(
+    file: CalibrationFile, detector: Detector, channel: Channel, asked: Asked, now_utc_ns: int
+) -> int:
     """Flags of the calibration, the time and the temperature; one axis is a component."""
     bits = Flag.COMPONENT_ONLY
     if detector.averages == "log":
         bits |= Flag.LOG_AVERAGED
     if file.invented:
         bits |= Flag.INVENTED_CALIBRATION
-    if now_utc_ns >= file.certificate.due_utc_ns:
+    if now_utc_ns >= file.dues(channel.axis)[0].utc_ns:
         bits |= Flag.CALIBRATION_OVERDUE
     low, high = file.certificate.valid_temperature_c
     if asked.temperature_c is None:
@@ -188,22 +208,22 @@ def _links(
     lines: Sequence[Contribution],
 ) -> tuple[Link, ...]:
     """Detector, elements, and what of the budget belongs to neither."""
-    squares: dict[str, float] = {}
     kinds = {"detector", *(element.kind for element in elements)}
-    rest = [line for line in lines if line.kind not in kinds]
+    own = {element.line.name for element in elements if element.line}
+    squares: dict[str, float] = {}
     for line in lines:
-        if line.kind in kinds:
-            squares[line.kind] = squares.get(line.kind, 0.0) + line.u**2
-    u_db = {kind: math.sqrt(square) for kind, square in squares.items()}
-    links = [
-        Link("detector", "detector", None, u_db.pop("detector", None), file.certificate.number)
-    ]
+        key = line.name if line.name in own else line.kind
+        squares[key] = squares.get(key, 0.0) + line.u**2
+
+    def u_db(*keys: str) -> float | None:
+        found = [squares.pop(key) for key in keys if key in squares]
+        return math.sqrt(sum(found)) if found else None
+
+    links = [Link("detector", "detector", None, u_db("detector"), file.certificate.number)]
     for element in elements:
         gain_db = -float(element.curve.at(np.array([frequency_hz]))[0])
-        links.append(
-            Link(
-                element.name, element.kind, gain_db, u_db.pop(element.kind, None),
-                element.certificate,
-            )
-        )  # fmt: skip
+        names = [element.line.name] if element.line else []
+        u = u_db(*names, element.kind)
+        links.append(Link(element.name, element.kind, gain_db, u, element.certificate))
+    rest = [line for line in lines if line.kind not in kinds]
     return (*links, *(Link(line.name, line.kind, None, line.u, None) for line in rest))

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import datetime
 import math
 import tomllib
 from pathlib import Path
@@ -86,8 +87,25 @@ def pair(table: Table, key: str, default: Any = REQUIRED) -> tuple[float, float]
     return float(value[0]), float(value[1])
 
 
-def rows(table: Table, key: str, form: str, frequency: bool = False) -> NDArray[np.float64]:
-    """A list of at least two pairs of finite numbers, f8 (n, 2).
+def date(table: Table, key: str, default: Any = REQUIRED) -> datetime.date:
+    """A date, as TOML writes one or in quotes."""
+    value = table.any(key, default)
+    if value is default and default is not REQUIRED:
+        return value  # type: ignore[no-any-return]
+    if isinstance(value, str):
+        try:
+            return datetime.date.fromisoformat(value)
+        except ValueError:
+            value = repr(value)
+    elif isinstance(value, datetime.date) and not isinstance(value, datetime.datetime):
+        return value
+    raise table.error(key, f"{value} is not a date; write for example 2025-11-30")
+
+
+def rows(
+    table: Table, key: str, form: str, frequency: bool = False, columns: int = 2
+) -> NDArray[np.float64]:
+    """A list of at least two rows of finite numbers, f8 (n, columns).
 
     form: '[dBm, volts]', for messages. frequency: the first of each is a frequency, '700MHz' or Hz.
     """
@@ -101,9 +119,9 @@ def rows(table: Table, key: str, form: str, frequency: bool = False) -> NDArray[
                 row = [frequency_hz(row[0]), *row[1:]]
         except ConfigError as error:
             raise table.error(key, f"row {i}: {error}") from None
-        if not _numbers(row, 2) or (frequency and row[0] <= 0):
+        if not _numbers(row, columns) or (frequency and row[0] <= 0):
             raise table.error(key, f"row {i}: {row!r} is not {form}")
-        if abs(row[1]) > MAX_FIGURE or not (frequency or abs(row[0]) <= MAX_FIGURE):
+        if max(abs(v) for v in (row[1:] if frequency else row)) > MAX_FIGURE:
             raise table.error(key, f"row {i}: {row!r} is beyond {MAX_FIGURE:g}")
         plain.append(row)
     return np.array(plain, np.float64)

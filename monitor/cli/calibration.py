@@ -65,7 +65,7 @@ def show(
 def compare(a: Path, b: Path, band: str | None, axes: str | None, as_json: bool) -> None:
     """What B has otherwise than A, and what that does to response and uncertainty."""
     files = [calparts.read(path) for path in (a, b)]
-    both = set(calreview.axes_of(files[0])) & set(calreview.axes_of(files[1]))
+    both = set(calparts.axes_of(files[0])) & set(calparts.axes_of(files[1]))
     chosen = _axes(axes) or "".join(sorted(both))
     if not chosen:
         raise ConfigError("the calibration files serve no axis in common")

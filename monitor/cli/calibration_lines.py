@@ -14,12 +14,17 @@ Entry = Mapping[str, Any]
 def shown(document: Entry) -> Iterator[str]:
     """A calibration file, from its certificate to its uncertainty."""
     yield f"{document['id']}, calibrated {document['date']} by {document['laboratory']}"
-    overdue = " (OVERDUE: nothing conforms)" if document["overdue"] else ""
-    yield f"  certificate {document['certificate']}, due {document['due']}{overdue}"
+    yield f"  certificate {document['certificate']}, due {document['due']}"
+    if document["overdue"]:
+        yield f"  OVERDUE: {', '.join(document['overdue_parts'])}; nothing conforms"
     low_c, high_c = document["valid_temperature_c"]
     yield f"  valid from {low_c:g} to {high_c:g} °C; identity {document['identity'][:12]}"
     if document["invented"]:
         yield "  figures of an example, invented: nothing conforms with them"
+    if document["assumed"]:
+        kinds = ", ".join(document["assumed"])
+        yield f"  assumed, which nobody has confirmed: {kinds}; nothing conforms"
+        yield "  (write a [[contribution]] of each such kind, even of zero: that confirms it)"
     yield ""
     for detector in document["detectors"]:
         low, high = detector["range_dbm"]
@@ -48,12 +53,23 @@ def _span(entry: Entry) -> str:
 
 
 def _element(element: Entry) -> str:
-    unit = "dB/m" if element["type"] == "antenna" else "dB"
+    what = "" if element["quantity"] == "loss" else element["quantity"].replace("_", " ") + " "
     return (
-        f"{element['type']} {element['serial']}{_of_axis(element)}: certificate"
-        f" {element['certificate']}; {_span(element)},"
-        f" {element['smallest_db']:g} to {element['largest_db']:g} {unit}"
+        f"{element['type']} {element['serial']}{_of_axis(element)}: {_certificate(element)};"
+        f" {_span(element)}, {what}{element['smallest_db']:g} to {element['largest_db']:g}"
+        f" {element['unit']}"
     )
+
+
+def _certificate(element: Entry) -> str:
+    """What is known of it: number, laboratory, dates, uncertainty."""
+    parts = [f"certificate {element['certificate']}"]
+    if element["laboratory"]:
+        parts.append(f"by {element['laboratory']}")
+    parts += [f"{key} {element[key]}" for key in ("date", "due") if element[key]]
+    if element["u_db"] is not None:
+        parts.append(f"U {element['u_db']:g} dB (k = {element['k']:g})")
+    return ", ".join(parts)
 
 
 def _response(document: Entry) -> Iterator[str]:

@@ -60,7 +60,7 @@ def command(
     )
     now_utc_ns = SystemClock().utc_ns()
     file = calparts.read(Path(calibration))
-    refuse_future_date(file.top.where, file.certificate.date, now_utc_ns)
+    refuse_future_date(file.top.where, *calparts.dated(file.body), now_utc_ns)
     found = through(file, asked, now_utc_ns)
     if as_json:
         print_json(_document(asked, found))

@@ -62,6 +62,17 @@ def e2_per_watt(antenna_factor_db_per_m: float, loss_db: float) -> float:
     return PORT_OHM * float(10.0 ** ((antenna_factor_db_per_m + loss_db) / 10.0))
 
 
+def antenna_factor_db_per_m(gain_dbi: Real, frequency_hz: Real, load_ohm: float = PORT_OHM) -> Real:
+    """Antenna factor, 20 log (1/m), of a matched antenna from its gain, or its gain from that.
+
+    AF^2 = 4 pi Z0 / (R lambda^2 G), which is the customary 9.73 / (lambda sqrt G) at 50 ohm,
+    unrounded (NTIA TM-10-469, eq. 13 and 14). Gain and factor add up to a figure of the frequency
+    alone, so the same function goes either way.
+    """
+    both = 4.0 * math.pi * Z0_OHM * (frequency_hz / SPEED_OF_LIGHT_M_PER_S) ** 2 / load_ohm
+    return np.asarray(10.0 * np.log10(both) - gain_dbi)
+
+
 _NUMBER = re.compile(r"^\s*([-+]?(?:\d+\.?\d*|\.\d+)(?:[eE][-+]?\d+)?)\s*([A-Za-z/2²]*)\s*$")
 _FREQUENCY = {"": 1.0, "hz": 1.0, "khz": 1e3, "mhz": 1e6, "ghz": 1e9}
 

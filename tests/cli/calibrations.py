@@ -8,6 +8,7 @@ from typing import Any
 import pytest
 
 from tests.cli.command import Answer, run
+from tests.terms import confirmed
 
 FILE = """
 [calibration]
@@ -53,7 +54,7 @@ value = 0.245
 distribution = "u_shaped"
 shared = false
 kind = "mismatch"
-"""
+{terms}"""
 
 
 def ask(
@@ -61,6 +62,7 @@ def ask(
 ) -> Answer:
     """The answer for a calibration file with those values in it."""
     said = {"due": "2099-12-31", "averages": "none", "af": 30.0, "loss": 0.0, "more": ""}
+    said["terms"] = confirmed()
     path = folder / "calibration.toml"
     path.write_text(FILE.format(**said | values), encoding="utf-8")
     return run(capsys, ["field", "--calibration", path, *arguments])

@@ -195,7 +195,7 @@ def test_what_a_new_certificate_changed(tmp_path: Path, capsys: pytest.CaptureFi
     assert document["same"] is False
     found = {row["what"]: (row["a"], row["b"]) for row in document["differences"]}
     assert found["calibration: certificate"] == ("number of the certificate", "none")
-    assert found["element antenna: table"] == (["900 MHz 44.2 dB"], ["900 MHz 44.5 dB"])
+    assert found["element antenna: table"] == (["900 MHz 44.2 dB/m"], ["900 MHz 44.5 dB/m"])
     assert found["contribution 'antenna factor, certificate': value"] == ("1.2", "1.4")
     assert len(found) == 4  # and the count table
     assert document["largest_response_db"] == pytest.approx(0.3)
@@ -210,7 +210,7 @@ def test_what_a_new_certificate_changed(tmp_path: Path, capsys: pytest.CaptureFi
         assert document["uncertainty"][name] == alone
     assert document["uncertainty"]["b"]["expanded_db"] > document["uncertainty"]["a"]["expanded_db"]
     text = compare(capsys, BOARD, path).out
-    assert "element antenna: table: 900 MHz 44.2 dB -> 900 MHz 44.5 dB" in text
+    assert "element antenna: table: 900 MHz 44.2 dB/m -> 900 MHz 44.5 dB/m" in text
     assert "900 MHz    +0.30 dB" in text
 
 

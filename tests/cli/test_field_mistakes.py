@@ -48,7 +48,7 @@ def test_a_file_that_is_not_there(capsys: pytest.CaptureFixture[str], tmp_path: 
 
 def test_a_calibration_of_the_future(capsys: pytest.CaptureFixture[str], tmp_path: Path) -> None:
     path = tmp_path / "calibration.toml"
-    text = FILE.format(due="2199-12-31", averages="none", af=30, loss=0, more="")
+    text = FILE.format(due="2199-12-31", averages="none", af=30, loss=0, more="", terms="")
     path.write_text(text.replace("2020-01-15", "2124-01-15"), encoding="utf-8")
     arguments = ["field", "--calibration", path, "--frequency", "2GHz", "--dbm", "-30"]
     found = run(capsys, arguments)
@@ -58,7 +58,7 @@ def test_a_calibration_of_the_future(capsys: pytest.CaptureFixture[str], tmp_pat
 
 def test_a_calibration_without_a_budget(capsys: pytest.CaptureFixture[str], tmp_path: Path) -> None:
     path = tmp_path / "calibration.toml"
-    text = FILE.format(due="2099-12-31", averages="none", af=30, loss=0, more="")
+    text = FILE.format(due="2099-12-31", averages="none", af=30, loss=0, more="", terms="")
     path.write_text(text[: text.index("[[contribution]]")], encoding="utf-8")
     arguments = ["field", "--calibration", path, "--frequency", "2GHz", "--dbm", "-30"]
     found = run(capsys, arguments)

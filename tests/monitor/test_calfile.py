@@ -15,6 +15,7 @@ from monitor.config import Band, Channel, load_site
 from monitor.core.calibration import Chain
 from monitor.core.errors import CalibrationError, DeviceError
 from monitor.core.flags import Flag
+from tests.terms import confirmed
 
 EXAMPLES = Path(__file__).parents[2] / "hardware" / "examples"
 
@@ -62,7 +63,7 @@ value = 0.3
 distribution = "u_shaped"
 shared = false
 kind = "mismatch"
-"""
+""" + confirmed()
 THREE = tuple(Channel(axis, axis, "main") for axis in "xyz")
 BANDS = {"main": Band("main", 8e8, 2e9)}
 

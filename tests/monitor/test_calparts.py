@@ -5,8 +5,12 @@ from __future__ import annotations
 import math
 from pathlib import Path
 
+import numpy as np
 import pytest
+from scipy.interpolate import interp1d
 
+from monitor.calfile import load_chain
+from monitor.config import Band, Channel
 from monitor.core.errors import CalibrationError
 from tests.monitor.test_calfile import FILE, read
 
@@ -37,3 +41,39 @@ def test_what_a_contribution_cannot_be(tmp_path: Path, lines: str, words: str) -
     with pytest.raises(CalibrationError, match="calibration.toml: contribution\\[2\\]") as caught:
         read(tmp_path, FILE.replace("value = 0.3", lines))
     assert words in str(caught.value)
+
+
+TABLE = 'table = [["700MHz", 0.2], ["1GHz", 0.7], ["3GHz", 0.1]]\n'
+
+
+def test_a_contribution_over_frequency_counts_with_its_largest_in_the_band(tmp_path: Path) -> None:
+    """The band is 0.8 to 2 GHz; its row at 1 GHz lies in it. Above it scipy over log f."""
+    held = read(tmp_path, FILE.replace("value = 0.3\n", TABLE))
+    assert held.contributions[0][1].value == 0.7
+    path = tmp_path / "calibration.toml"
+    above = {"b": Band("b", 1.5e9, 2e9)}
+    line = load_chain(path, [Channel("x", "x", "b")], above).contributions[0][1]
+    by_scipy = interp1d(np.log([1e9, 3e9]), [0.7, 0.1])(np.log(1.5e9))
+    assert line.value == pytest.approx(float(by_scipy))
+
+
+@pytest.mark.parametrize(
+    ("lines", "words"),
+    [
+        (TABLE + "value = 0.3\n", "value: stands beside a table"),
+        (TABLE.replace("700MHz", "900MHz"), "contribution[2].table: 'mismatch' covers 900 MHz to"),
+        (TABLE.replace("0.2", "-0.2"), "table: an uncertainty of -0.2; it is zero or more"),
+        (TABLE.replace("0.7", "31"), "table: times its sensitivity it is beyond 30 dB"),
+        (TABLE.replace("1GHz", "5GHz"), "table: 3 GHz stands out of order"),
+    ],
+)
+def test_what_a_table_of_a_contribution_cannot_be(tmp_path: Path, lines: str, words: str) -> None:
+    with pytest.raises(CalibrationError) as caught:
+        read(tmp_path, FILE.replace("value = 0.3\n", lines))
+    assert words in str(caught.value)
+
+
+@pytest.mark.parametrize("name", ["", " ", "drift (assumed)"])
+def test_a_written_line_does_not_pass_for_an_assumed_one(tmp_path: Path, name: str) -> None:
+    with pytest.raises(CalibrationError, match="contribution\\[2\\].name: .* is not a name"):
+        read(tmp_path, FILE.replace('name = "mismatch"', f'name = "{name}"'))
