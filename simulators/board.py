@@ -25,7 +25,6 @@ LIVE_FRAMES_PER_S = 20
 BANNER_EVERY_MS = 60_000
 LOOK_S = 0.05
 """How often an absent reader is looked for."""
-DAY_S = 86_400.0
 
 
 class Firmware:
@@ -97,9 +96,8 @@ class Firmware:
         return data
 
     def _temperature_dc(self, now_ms: int) -> int:
-        """Tenths of a degree: warmest in the afternoon."""
-        turn = (now_ms / 1000.0 + self._setup.midnight_s) / DAY_S - 9.0 / 24.0
-        return round(210.0 + 60.0 * math.sin(2.0 * math.pi * turn))
+        utc_s = np.array([now_ms / 1000.0 + self._setup.midnight_s])
+        return int(self._setup.scene.climate.told_dc(utc_s)[0])
 
 
 class Board:

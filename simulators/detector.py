@@ -127,8 +127,9 @@ def counts(
 ) -> NDArray[np.int32]:
     """Converter counts of a log detector: int32 (n, c) for power_w float64 (n, c) at its ports.
 
-    seed and first_index (of the first reading in the series) place the noise; errors_db (c,) is
-    how much each channel reads too high. Outside its curve the detector's output stands still.
+    seed and first_index (of the first reading in the series) place the noise; errors_db (c,),
+    (n, c) or (n, 1) is how much each channel, or each reading, is too high. Outside its curve the
+    detector's output stands still.
     """
     n, channels = power_w.shape
     dbm = 10.0 * np.log10(np.maximum(power_w, 1e-30)) + 30.0

@@ -17,7 +17,8 @@ from pathlib import Path
 import numpy as np
 from numpy.typing import NDArray
 
-from simulators import draws
+from simulators import climate, draws
+from simulators.climate import Climate
 
 SCENES = Path(__file__).parent / "data" / "scenes"
 DAY_S = 86_400.0
@@ -60,12 +61,13 @@ class Burst:
 
 @dataclass(frozen=True)
 class Scene:
-    """A place and its sources."""
+    """A place, its sources, and how warm the board is there."""
 
     name: str
     place: str
     transmitters: tuple[Transmitter, ...]
     bursts: tuple[Burst, ...]
+    climate: Climate = Climate()
 
     @property
     def sources(self) -> tuple[Transmitter | Burst, ...]:
@@ -131,6 +133,7 @@ def _scene(table: Mapping[str, object]) -> Scene:
         str(head["place"]),
         tuple(_transmitter(row) for row in _rows(table, "transmitter")),
         tuple(_burst(row) for row in _rows(table, "burst")),
+        _climate(table.get("climate", {})),
     )
 
 
@@ -139,6 +142,12 @@ def _rows(table: Mapping[str, object], key: str) -> Sequence[Mapping[str, object
     if not isinstance(rows, list):
         raise ValueError(f"[[{key}]]")
     return rows
+
+
+def _climate(table: object) -> Climate:
+    if not isinstance(table, Mapping):
+        raise ValueError("[climate]")
+    return climate.read(table)
 
 
 def _numbers(value: object, n: int) -> tuple[float, ...]:

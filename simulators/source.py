@@ -76,8 +76,12 @@ class Source:
         if self._file is not None:
             self._file.write(_rows(truth))
         power_w = detector.port_power_w(truth, self._board, setup.channels)
+        errors_db = self._errors_db
+        if setup.scene.climate.db_per_k:
+            drift_db = setup.scene.climate.drift_db(truth.times_s + setup.midnight_s)[:, None]
+            errors_db = drift_db if errors_db is None else errors_db + drift_db
         return detector.counts(
-            power_w, self._board, seed=setup.seed, first_index=first, errors_db=self._errors_db
+            power_w, self._board, seed=setup.seed, first_index=first, errors_db=errors_db
         )
 
     def flush(self) -> None:

@@ -2,11 +2,14 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 
 from monitor.core.alarms import AlertRule, watches
 from monitor.core.budget import Contribution
 from monitor.core.calibration import Chain, CountTable
+from monitor.core.distributions import Real
 from monitor.core.flags import Flag
 from monitor.core.limits import Scope
 from monitor.core.station import Station, station
@@ -50,9 +53,10 @@ def made(
     ratio_per_e2: float = 1e-3,
     rules: tuple[AlertRule, ...] = (),
     hold_s: float = 3.0,
+    temperature: tuple[tuple[Real, Real] | None, ...] = (),
 ) -> Station:
     """A station of two scopes with the same limit; E squared of 1 / ratio_per_e2 is the limit."""
-    here = chain(channels)
+    here = replace(chain(channels), temperature=temperature)
     per_watt = np.full((channels, 2), float(here.k_mid[0]) * ratio_per_e2)
     return station(
         here,

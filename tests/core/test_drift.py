@@ -2,26 +2,18 @@
 
 from __future__ import annotations
 
-from dataclasses import replace
-
 import numpy as np
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from monitor.core.drift import drift_of, drifts_of
+from monitor.core.drift import drift_of
 from monitor.core.pipeline import convert
 from monitor.core.readings import MISSING, Batch
-from monitor.core.station import Station
-from tests.core.stations import chain, made
+from tests.core.stations import made
 
 TABLE = np.array([-5.0, 20.0, 45.05]), np.array([-0.9, 0.0, 1.3])
 """Made up: 0.036 dB a degree below 20 degrees, about 0.052 above."""
-
-
-def corrected(channels: int, *tables: object) -> Station:
-    fixed = replace(chain(channels), temperature=tables)
-    return replace(made(channels), chain=fixed, drifts=drifts_of(fixed))
 
 
 def batch(temperature_dc: np.ndarray, channels: int = 2) -> Batch:
@@ -37,7 +29,7 @@ def test_the_power_is_what_the_table_leaves_of_it() -> None:
     too_high_db = [-0.9, -0.45, 0.0, 1.3 * 10 / 25.05, 1.3 * 25 / 25.05, 1.3, 1.3, -0.9]
     too_high_db.append(1.3 * 0.1 / 25.05)
     plain, _ = convert(came, made(2))
-    found, _ = convert(came, corrected(2, TABLE, None))
+    found, _ = convert(came, made(2, temperature=(TABLE, None)))
     assert 10 * np.log10(plain[:, 0] / found[:, 0]) == pytest.approx(too_high_db, abs=1e-10)
     assert found[:, 1].tobytes() == plain[:, 1].tobytes()
 
@@ -45,10 +37,10 @@ def test_the_power_is_what_the_table_leaves_of_it() -> None:
 def test_nothing_happens_without_a_table_or_a_temperature() -> None:
     known, unknown = batch(np.full(50, 371)), batch(np.full(50, MISSING))
     plain = convert(known, made(2))
-    for came, here in (
-        (known, corrected(2)), (known, corrected(2, None, None)),
-        (unknown, corrected(2, TABLE, TABLE)),
-    ):  # fmt: skip
+    tables: tuple[tuple[Batch, tuple], ...]
+    tables = (known, ()), (known, (None, None)), (unknown, (TABLE, TABLE))
+    for came, temperature in tables:
+        here = made(2, temperature=temperature)
         for left, right in zip(convert(came, here), plain):
             assert left.tobytes() == right.tobytes()
 
@@ -56,7 +48,7 @@ def test_nothing_happens_without_a_table_or_a_temperature() -> None:
 def test_a_missing_count_stays_missing() -> None:
     came = batch(np.full(3, 400))
     came.counts[1] = MISSING
-    power_w, _ = convert(came, corrected(2, TABLE, TABLE))
+    power_w, _ = convert(came, made(2, temperature=(TABLE, TABLE)))
     assert np.isnan(power_w).all(axis=1).tolist() == [False, True, False]
 
 
@@ -66,7 +58,7 @@ def test_any_division_gives_the_same_bits(seed: int, pieces: list[int]) -> None:
     rng = np.random.default_rng(seed)
     dc = rng.integers(-100, 500, 120)
     dc[rng.random(120) < 0.1] = MISSING
-    whole, here = batch(dc), corrected(2, TABLE, TABLE)
+    whole, here = batch(dc), made(2, temperature=(TABLE, TABLE))
     power_w, _ = convert(whole, here)
     at, turn = 0, 0
     while at < whole.n:

@@ -21,13 +21,16 @@ from monitor.recovery import EVER_NS, Run, recovered, same_chain_since
 from tests.core.stations import SCOPES, made
 
 S = 1_000_000_000
-HERE = made(2)
+HERE = made(2, temperature=((np.array([0.0, 40.0]), np.array([-2.0, 2.0])), None))
 
 
 def batch(first_s: int, last_s: int) -> Batch:
+    """Any counts, at a temperature that goes to and fro by 30 degrees in five minutes."""
     times = np.arange(first_s, last_s, dtype=np.int64) * S
     counts = np.random.default_rng(first_s).integers(-60_000, -10_000, (times.size, 2))
-    return Batch(times, counts.astype(np.int32), np.zeros(times.size, np.int32), int(times[-1]))
+    warm = np.rint(200 + 150 * np.sin(np.arange(first_s, last_s) / 48)).astype(np.int32)
+    flags = np.zeros(times.size, np.int32)
+    return Batch(times, counts.astype(np.int32), flags, int(times[-1]), warm)
 
 
 def killed(path: Path, boot_id: str, until_s: int, rows_until_s: int) -> Gathered:
@@ -110,6 +113,19 @@ def test_the_last_minute_of_a_boot_that_was_cut_off_is_made_good(tmp_path: Path)
     n = expected.start_ns.size
     assert blocks.energy_w_ns[:n].tobytes() == expected.energy_w_ns.tobytes()
     assert int(blocks.covered_ns.sum()) == 2 * (2146 + 3) * S  # the last reading holds 3 s
+
+
+def test_refilled_windows_are_corrected_for_each_readings_temperature(tmp_path: Path) -> None:
+    """A run that forgot the temperatures would go on with windows that read otherwise."""
+    path = tmp_path / "record.db"
+    killed(path, "a", 2147, 2090)
+    found = recovered(path, Run("a", "machine", 0, "one"), HERE)
+    plain = recovered(path, Run("a", "machine", 0, "one"), made(2))
+    live, forgot = (pipeline.live(one.state, 360, HERE).energy_low for one in (found, plain))
+    straight = pipeline.live(_straight(2147), 360, HERE).energy_low
+    assert live.tobytes() == straight.tobytes()
+    assert live[0, 0] != forgot[0, 0]
+    assert live[0, 1] == forgot[0, 1]
 
 
 def test_a_record_that_is_not_there_yet_is_a_new_boot(tmp_path: Path) -> None:
