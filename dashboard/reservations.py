@@ -78,9 +78,20 @@ _COUNTERS = {
 }
 
 
-def sentence(flag: str) -> str:
-    """A reservation in one sentence: its words, what it means, what to do."""
+def days_left(snapshot: Mapping[str, Any]) -> int | None:
+    """Whole days until the calibration is due; None where that is not known."""
+    days = (snapshot.get("calibration") or {}).get("days_left")
+    return days if isinstance(days, int) else None
+
+
+def sentence(flag: str, days: int | None = None) -> str:
+    """A reservation in one sentence: its words, what it means, what to do.
+
+    days: until the calibration is due, where that is known.
+    """
     means = _BY_WORDS.get(flag)
+    if flag == WORDS[Flag.CALIBRATION_DUE_SOON] and days is not None and days >= 0:
+        flag = f"calibration due in {days} day{'' if days == 1 else 's'}"
     return f"{flag[:1].upper()}{flag[1:]}: {means}" if means else flag
 
 
@@ -103,6 +114,6 @@ def _named(key: str) -> str:
     return _COUNTERS.get(key, key.replace("_", " "))
 
 
-def sentences(flags: Iterable[str]) -> list[str]:
+def sentences(flags: Iterable[str], days: int | None = None) -> list[str]:
     """The sentences of reservations; simulated data aside, for every page says that itself."""
-    return [sentence(flag) for flag in flags if flag != WORDS[Flag.SIMULATED]]
+    return [sentence(flag, days) for flag in flags if flag != WORDS[Flag.SIMULATED]]

@@ -73,7 +73,7 @@ def _now_values(live: Live) -> dict[str, Any]:
         "groups": now.scope_lines(live, context.station),
         "alarms": now.alarm_lines(live),
         "counters": reservations.counters(live.snapshot),
-        "reservations": reservations.sentences(live.flags),
+        "reservations": reservations.sentences(live.flags, reservations.days_left(live.snapshot)),
         "device": live.snapshot.get("device") or {},
         "token": context.token,
         "may_act": context.may_act,

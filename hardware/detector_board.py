@@ -130,6 +130,7 @@ class DetectorBoard:
             temperature_c=self._temperature_c,
             supply_v=self._supply_v,
             counters=self._reception.counters | self._port.counters | {"hangs": self._hangs},
+            name=self._reception.banner.name if self._reception.banner else "",
         )
 
     def close(self) -> None:

@@ -7,9 +7,9 @@ from collections.abc import Callable, Iterable, Iterator, Sequence
 from dataclasses import dataclass
 from datetime import UTC, date, datetime, timedelta
 
-from monitor import limitsets
-from monitor.calfile import load_chain
-from monitor.calparts import dated, parse
+from monitor import calfile, limitsets
+from monitor.calparts import CalibrationFile, dated, parse, read
+from monitor.changed import not_as_calibrated
 from monitor.config import Site
 from monitor.core.alarms import watches
 from monitor.core.calibration import Chain
@@ -19,8 +19,8 @@ from monitor.core.flags import Flag
 from monitor.core.limits import Scope, frequency_text, ratio_per_e2, scopes
 from monitor.core.quantities import dbm_from_w
 from monitor.core.uncertainty import equal_shares, expanded_db
+from monitor.marking import DUE_SOON_DAYS
 
-DUE_SOON_DAYS = 60
 AHEAD_OF_UTC = timedelta(hours=14)
 """Where the day begins first, a certificate may bear tomorrow's date of UTC (RFC 3339 offsets)."""
 TELL_NO_TEMPERATURE = ("text_lines", "level_series", "iq_file")
@@ -48,11 +48,13 @@ def findings(
     Raises what makes the site unable to run: ConfigError, CalibrationError, LimitError (2) or
     DeviceError (3), one line each.
     """
-    chain = load_chain(site.calibration, site.channels, site.bands)
+    file = read(site.calibration)
+    chain = calfile.chain(file, site.channels, site.bands)
     refuse_future_date(site.calibration.name, *dated(chain.document), now_utc_ns)
     tops = [(scope, _top(site, chain, scope)) for scope in _scopes(site)]
     yield from _site(site)
     yield from _calibration(site, chain, now_utc_ns)
+    yield from _installed(site, file)
     yield from _temperature(site, chain)
     yield from _channels(site, chain)
     yield from front_end(site)
@@ -66,7 +68,7 @@ def findings(
 
 def refuse_future(site: Site, now_utc_ns: int) -> None:
     """CalibrationError where the site's calibration is dated in the future."""
-    chain = load_chain(site.calibration, site.channels, site.bands)
+    chain = calfile.load_chain(site.calibration, site.channels, site.bands)
     refuse_future_date(site.calibration.name, *dated(chain.document), now_utc_ns)
 
 
@@ -133,6 +135,14 @@ def _calibration(site: Site, chain: Chain, now_utc_ns: int) -> Iterator[Finding]
         + (f"; above {CAP_DB:g} dB nothing will conform" if over else ""),
         not over,
     )
+
+
+def _installed(site: Site, file: CalibrationFile) -> Iterator[Finding]:
+    lines = not_as_calibrated(site.installed, file)
+    for line in lines:
+        yield Finding("installed", f"{line}: nothing will conform", ok=False)
+    if site.installed and not lines:
+        yield Finding("installed", f"{len(site.installed)} parts, each is the one calibrated")
 
 
 def _temperature(site: Site, chain: Chain) -> Iterator[Finding]:

@@ -13,6 +13,7 @@ from monitor.core.errors import ConfigError
 from monitor.core.exposure import FIELD_REGIONS
 from monitor.core.keys import Table
 from monitor.core.limits import POPULATIONS, SCOPES
+from monitor.installed import Installed, read_installed
 from monitor.sitebands import Band as Band
 from monitor.sitebands import Channel as Channel
 from monitor.sitebands import bands_of, channels_of, named
@@ -45,6 +46,7 @@ class Site:
     silence_after_s: float
     host: str
     port: int
+    installed: tuple[Installed, ...] = ()
 
     @property
     def control_path(self) -> Path:
@@ -97,6 +99,7 @@ def _read(top: TopTable, path: Path) -> Site:
         "limit_sets": sets,
         "alerts": _alerts(top, sets),
         "silence_after_s": silence.number("after_s", 60.0, 1.0, DAY_S),
+        "installed": read_installed(top),
     }
     silence.finish()
     top.finish()

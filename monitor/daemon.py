@@ -16,7 +16,7 @@ from monitor.core.readings import NS_PER_S, Batch, DeviceStatus, FrontEnd
 from monitor.core.rows import Event
 from monitor.core.station import Station
 from monitor.fixes import Clock, Fixes
-from monitor.marking import marked
+from monitor.marking import NOTHING, Standing, marked
 from monitor.record.background import WriterThread
 from monitor.record.types import ClockFix
 from monitor.snapshot import View, snapshot
@@ -49,10 +49,12 @@ class Daemon:
         history_s: float | None = None,
         fixes: Sequence[ClockFix] = (),
         rows: Gathered | None = None,
+        standing: Standing = NOTHING,
     ) -> None:
         self._site, self._here, self._front, self._writer = site, here, front, writer
         self._clock, self._state, self._desk = clock, state, desk
         self._history_ns = None if history_s is None else round(history_s * NS_PER_S)
+        self._standing = standing
         self._bulk_ns = state.front_ns
         self._spool = Spool()
         if rows is not None:
@@ -119,6 +121,7 @@ class Daemon:
             simulated=self._site.simulated,
             synchronised=self._fixes.synchronised,
             offset_ns=self._fixes.offset_ns,
+            standing=self._standing,
         )
         heard_ns = self._state.hearing.last_ns
         self._state, out = pipeline.step(self._state, batch, self._here)

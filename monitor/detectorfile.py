@@ -22,7 +22,8 @@ SCALE_MARGIN_DB = 20.0
 class Detector:
     """A detector's count table, and the law that it was made from.
 
-    resolution: what a count stands for; None for converter counts.
+    resolution: what a count stands for; None for converter counts. serial: what its
+    board calls itself (the name in its banner), '' where the file does not say.
     """
 
     axis: str
@@ -32,6 +33,7 @@ class Detector:
     resolution: float | None
     rounding: tuple[Contribution, ...]
     law: Law
+    serial: str = ""
 
 
 def read_detector(table: Table) -> Detector:
@@ -39,10 +41,11 @@ def read_detector(table: Table) -> Detector:
     axis = table.text("axis", "", ("x", "y", "z"))
     kind = table.text("kind", choices=("log", "rms", "scale"))
     averages = table.text("averages", choices=AVERAGES)
+    serial = table.text("serial", "").strip()
     read = _scale if kind == "scale" else _curve
     counts, resolution, half_db, law = read(table, kind)
     table.finish()
-    return Detector(axis, kind, averages, counts, resolution, det.rounding(half_db), law)
+    return Detector(axis, kind, averages, counts, resolution, det.rounding(half_db), law, serial)
 
 
 def _scale(table: Table, kind: str) -> tuple[CountTable, float | None, float, Law]:

@@ -15,6 +15,7 @@ from monitor.core.pipeline import State, live
 from monitor.core.readings import DeviceStatus
 from monitor.core.rows import ExposureRows
 from monitor.core.station import Station
+from monitor.marking import DAY_NS
 from monitor.times import text_of
 
 
@@ -58,6 +59,7 @@ def snapshot(view: View, here: Station, site: Site) -> dict[str, object]:
             "counters": dict(view.device.counters),
             "late": state.late,
         },
+        "calibration": _calibration(here, utc),
         "site": {"name": site.name, "place": site.place, "occupancy": site.occupancy},
         "fields": [_field(state, averaging_s, here) for averaging_s in here.averagings_s],
         "exposures": _exposures(state, here),
@@ -99,6 +101,13 @@ def _field(state: State, averaging_s: int, here: Station) -> dict[str, object]:
         "observed_share": float(row.observed_share[0]),
         "flags": words(int(row.flags[0])),
     }
+
+
+def _calibration(here: Station, utc_ns: int | None) -> dict[str, object]:
+    """When it is due and the whole days until then, below 0 where it is overdue."""
+    due_ns = here.chain.due_utc_ns
+    days = None if due_ns is None or utc_ns is None else (due_ns - utc_ns) // DAY_NS
+    return {"due_utc": rfc3339(due_ns), "days_left": days}
 
 
 def _exposures(state: State, here: Station) -> list[dict[str, object]]:

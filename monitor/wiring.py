@@ -4,12 +4,14 @@ from __future__ import annotations
 
 import hashlib
 from collections.abc import Callable, Sequence
+from dataclasses import replace
 
 import numpy as np
 
 from hardware.registry import Settings, open_front_end, settings_for
 from monitor import limitsets
-from monitor.calfile import load_chain
+from monitor.calfile import chain as chain_of_file
+from monitor.calparts import CalibrationFile, read
 from monitor.checks import Finding, compare_bands
 from monitor.clock import SystemClock
 from monitor.config import Site
@@ -24,6 +26,7 @@ from monitor.core.rows import Event
 from monitor.core.silence import KEY as SILENCE
 from monitor.core.station import Station, station
 from monitor.daemon import RECORD, Daemon
+from monitor.inforce import in_force, since_before
 from monitor.listening import heard, left_alone
 from monitor.record import connect
 from monitor.record.background import WriterThread
@@ -44,7 +47,11 @@ def sensor_settings(site: Site) -> Settings:
 
 def chain_for(site: Site, settings: Settings) -> Chain:
     """The site's chain. ConfigError where the sensor's step is not the calibration's."""
-    chain = load_chain(site.calibration, site.channels, site.bands)
+    return _made(read(site.calibration), site, settings)
+
+
+def _made(file: CalibrationFile, site: Site, settings: Settings) -> Chain:
+    chain = chain_of_file(file, site.channels, site.bands)
     if (settings.resolution or 1.0) != (chain.resolution or 1.0):  # counts of a converter: 1
         raise ConfigError(
             f"{site.path.name}: sensor.resolution: {settings.resolution} differs from "
@@ -119,6 +126,10 @@ def check(site: Site) -> list[Finding]:
         mark = connect.identify(site.record_path).simulated
         connect.refuse_other_mark(site.record_path, mark, site.simulated)
         found.append(Finding("record", f"{site.record_path}: will be continued"))
+        found += [
+            Finding("calibration", f"{line}: nothing will conform", ok=False)
+            for line in since_before(site.record_path, read(site.calibration))
+        ]
     return found
 
 
@@ -141,7 +152,9 @@ def daemon_for(site: Site, *, history_s: float | None = None) -> Daemon:
     """Everything opened and put together; the record is made where it is missing."""
     clock = SystemClock()
     settings = sensor_settings(site)
-    chain = chain_for(site, settings)
+    utc_ns = None if clock.uncertainty_ns() is None else clock.utc_ns()
+    force = in_force(site, lambda file: _made(file, site, settings), utc_ns)
+    chain = force.chain
     here = station_for(site, chain)
     # A box in service waits for a device that is away, and says so; a first start needs it.
     if site.sensor_kind in RECORDED or not site.record_path.exists():
@@ -168,9 +181,10 @@ def daemon_for(site: Site, *, history_s: float | None = None) -> Daemon:
         thread.put(*found.ended, block=False)
     daemon = Daemon(
         site, here, front, thread, clock, found.state, found.desk,
-        history_s=history_s, fixes=found.fixes, rows=found.rows,
+        history_s=history_s, fixes=found.fixes, rows=found.rows, standing=force.standing,
     )  # fmt: skip
-    for event in _first_events(here, found, run, documents):
+    begun = [replace(event, boot_ns=found.state.front_ns) for event in force.events]
+    for event in [*_first_events(here, found, run, documents), *begun]:
         found.desk.apply(event)
         daemon.note(event)
     return daemon

@@ -21,7 +21,8 @@ def command(site_file: Path | None, exit_at_end: bool) -> int:
     """Run both halves of the monitor: the daemon that measures and the pages that show."""
     site = load_site(default_site_path(site_file))
     clock = SystemClock()
-    if clock.uncertainty_ns() is not None:  # a clock that nothing has set may be years behind
+    # A clock that nothing has set may be years behind; a box with a record goes on, and says so.
+    if clock.uncertainty_ns() is not None and not site.record_path.exists():
         checks.refuse_future(site, clock.utc_ns())
     stop = threading.Event()
     signal.signal(signal.SIGTERM, lambda *_: stop.set())

@@ -11,7 +11,7 @@ import click
 
 from dashboard import bounds, told
 from dashboard.models import stands
-from dashboard.reservations import sentences
+from dashboard.reservations import days_left, sentences
 from dashboard.standstill import nothing_valid, sensor
 from dashboard.words import NOT_JUDGED
 from monitor.cli import status_lines
@@ -221,7 +221,7 @@ def _in_full(box: Standing) -> list[str]:
         f"  {status_lines.exposure(row, ratio)}"
         for row, ratio in zip(_rows(box.now, "exposures"), _ratios(box.now), strict=True)
     ]
-    lines += [f"  carried  {line}" for line in sentences(carried)]
+    lines += [f"  carried  {line}" for line in sentences(carried, days_left(box.now))]
     lines += [f"  alarm    {status_lines.alarm(row)}" for row in _rows(box.now, "alarms")]
     return [*lines, f"  {NOT_JUDGED}"]
 

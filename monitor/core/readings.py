@@ -87,7 +87,10 @@ def empty_batch(channels: int, now_ns: int) -> Batch:
 
 @dataclass(frozen=True, slots=True)
 class DeviceStatus:
-    """State of the device behind a front end, for pages and events."""
+    """State of the device behind a front end, for pages and events.
+
+    name: what the device calls itself; "" where it has not said or cannot.
+    """
 
     connected: bool
     text: str = ""
@@ -95,6 +98,7 @@ class DeviceStatus:
     supply_v: float | None = None
     counters: Mapping[str, int] = field(default_factory=dict)
     ended: bool = False
+    name: str = ""
 
 
 class FrontEnd(Protocol):

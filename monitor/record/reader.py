@@ -31,6 +31,7 @@ from monitor.record.types import (
     LatestExposure,
     LatestField,
 )
+from monitor.record.uses import Use, uses
 
 FIRST_NS, LAST_NS = -(2**63), 2**63 - 1
 _TABLES: dict[type, tuple[str, str]] = {
@@ -198,6 +199,11 @@ class Record:
         boots = self.boots()
         with self._one_line():
             return happened.between(self._db, boots, (start_utc_ns, end_utc_ns), limit)
+
+    def uses(self) -> list[Use]:
+        """The documents that figures rest on from each start of the program on, in order."""
+        with self._one_line():
+            return uses(self._db)
 
     def starts(self, boot: int) -> list[tuple[int, str]]:
         """(boot_ns, identity of the chain) of each start of the daemon in a boot, in order."""

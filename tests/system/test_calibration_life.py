@@ -1,0 +1,123 @@
+"""A box whose calibration file breaks or changes under it: data are kept, nothing conforms."""
+
+from __future__ import annotations
+
+import shutil
+from collections.abc import Iterator
+from pathlib import Path
+
+import pytest
+
+from monitor.core.flags import Flag
+from monitor.record.reader import Record
+from monitor.record.types import EventRow
+from tests.system.commands import fieldsill, filled, wait_for
+from tests.system.desk import DATA, Desk, live
+
+
+@pytest.fixture
+def desk(tmp_path: Path) -> Iterator[Desk]:
+    """A box whose calibration file lies beside its site file."""
+    with live(tmp_path, tmp_path) as made:
+        shutil.copy(DATA / "board-calibration.toml", tmp_path / "calibration.toml")
+        site = tmp_path / "site.toml"
+        here = str(tmp_path / "calibration.toml")
+        site.write_text(filled(site.read_text(), {str(DATA / "board-calibration.toml"): here}))
+        yield made
+
+
+def run(desk: Desk) -> tuple[dict, int]:
+    """The box's document once readings of a new run came, and how many came in it."""
+    path = desk.disk / "record.db"
+    before = desk.readings() if path.exists() else 0
+    with desk.measuring():
+        wait_for(lambda: path.exists() and desk.readings() > before + 20)
+        now = desk.now()
+    return now, desk.readings() - before
+
+
+def events(desk: Desk, kind: str) -> list[EventRow]:
+    with Record.open(desk.disk / "record.db") as record:
+        return [event for event in record.events() if event.kind == kind]
+
+
+def last_flags(desk: Desk) -> int:
+    """The flags of the last reading in the record."""
+    with Record.open(desk.disk / "record.db") as record:
+        boot = record.boots()[-1].boot
+        return int([b for b in record.raw_batches(boot) if b.n][-1].flags[-1])
+
+
+@pytest.mark.parametrize("spoiled", ["[calibration]\nid = ", None, "number in Kelvin"])
+def test_a_box_with_a_record_measures_on_without_a_calibration_file(
+    desk: Desk, spoiled: str | None
+) -> None:
+    run(desk)
+    assert not last_flags(desk) & Flag.CALIBRATION_OVERDUE
+    good = desk.folder / "calibration.toml"
+    whole = good.read_text()
+    good.unlink() if spoiled is None else good.write_text(spoiled)
+    now, came = run(desk)
+    assert came > 20
+    assert "calibration overdue" in now["flags"]
+    assert "conforms" not in {row["verdict"] for row in now["exposures"]}
+    assert last_flags(desk) & Flag.CALIBRATION_OVERDUE
+    (fault,) = events(desk, "fault")
+    assert fault.name == "calibration file"
+    assert "calibration.toml" in str(fault.body["why"])
+    starts = events(desk, "start")
+    assert {event.body["calibration"] for event in starts} == {fault.body["stands in"]}
+    good.write_text(whole)
+    run(desk)
+    assert not last_flags(desk) & Flag.CALIBRATION_OVERDUE
+    assert len(events(desk, "fault")) == 1
+
+
+def test_a_first_start_without_a_calibration_file_refuses(desk: Desk) -> None:
+    (desk.folder / "calibration.toml").unlink()
+    for command in ("measure", "run", "check"):
+        done = fieldsill(command, "--site", desk.folder / "site.toml")
+        assert done.returncode == 3, command
+        assert "calibration.toml" in done.stderr
+    assert not (desk.disk / "record.db").exists()
+
+
+def test_an_antenna_changed_under_its_old_certificate_is_on_every_figure(desk: Desk) -> None:
+    path = desk.folder / "calibration.toml"
+    text = path.read_text()
+    run(desk)
+    assert not last_flags(desk) & Flag.ELEMENT_CHANGED
+    serial = text.split("[[element]]")[1].split('serial = "')[1].split('"')[0]
+    path.write_text(text.replace(f'serial = "{serial}"', 'serial = "other"', 1))
+    for _ in range(2):  # a restart does not forget it
+        now, _ = run(desk)
+        assert "an element was changed without a new calibration" in now["flags"]
+    said = [event for event in events(desk, "calibration") if event.name == "element changed"]
+    assert len(said) == 2
+    assert "other stands under certificate" in str(said[0].body["what"])
+    checked = fieldsill("check", "--site", desk.folder / "site.toml", "--listen", "0")
+    assert "other stands under certificate" in checked.stdout
+    path.write_text(text)
+    run(desk)
+    assert not last_flags(desk) & Flag.ELEMENT_CHANGED
+
+
+def test_another_board_or_part_than_the_calibrated_one_is_seen(desk: Desk) -> None:
+    path, site = desk.folder / "calibration.toml", desk.folder / "site.toml"
+    text = path.read_text()
+    path.write_text(text.replace('kind = "log"', 'kind = "log"\nserial = "rehearsal-board"', 1))
+    assert path.read_text() != text
+    run(desk)
+    assert not last_flags(desk) & Flag.ELEMENT_CHANGED
+    path.write_text(text.replace('kind = "log"', 'kind = "log"\nserial = "another"', 1))
+    run(desk)
+    assert last_flags(desk) & Flag.ELEMENT_CHANGED
+    path.write_text(text)
+    run(desk)
+    assert not last_flags(desk) & Flag.ELEMENT_CHANGED
+    site.write_text(site.read_text() + '\n[[installed]]\ntype = "antenna"\nserial = "A-99"\n')
+    run(desk)
+    assert last_flags(desk) & Flag.ELEMENT_CHANGED
+    checked = fieldsill("check", "--site", site, "--listen", "0")
+    assert "note  installed" in checked.stdout
+    assert "A-99 is in place" in checked.stdout
