@@ -122,7 +122,7 @@ def budget_of(
 ) -> tuple[Contribution, ...]:
     """The file's budget lines for the channel's axis, over a band or at one frequency.
 
-    ConfigError where one stands twice; CalibrationError where a table does not reach as far.
+    ConfigError where one stands twice, or where a table does not reach as far.
     """
     mine = [line for line in file.lines if line.axis in ("", channel.axis)]
     twice = [name for name, n in Counter(line.name for line in mine).items() if n > 1]

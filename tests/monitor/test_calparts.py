@@ -60,7 +60,7 @@ def test_a_contribution_over_frequency_counts_with_its_largest_in_the_band(tmp_p
 @pytest.mark.parametrize(
     ("lines", "words"),
     [
-        (TABLE + "value = 0.3\n", "value: stands beside a table"),
+        (TABLE + "value = 0.3\n", "value: stands beside table; give one of the two"),
         (TABLE.replace("700MHz", "900MHz"), "contribution[2].table: 'mismatch' covers 900 MHz to"),
         (TABLE.replace("0.2", "-0.2"), "table: an uncertainty of -0.2; it is zero or more"),
         (TABLE.replace("0.7", "31"), "table: times its sensitivity it is beyond 30 dB"),
@@ -77,3 +77,53 @@ def test_what_a_table_of_a_contribution_cannot_be(tmp_path: Path, lines: str, wo
 def test_a_written_line_does_not_pass_for_an_assumed_one(tmp_path: Path, name: str) -> None:
     with pytest.raises(CalibrationError, match="contribution\\[2\\].name: .* is not a name"):
         read(tmp_path, FILE.replace('name = "mismatch"', f'name = "{name}"'))
+
+
+UNEVEN = [[-1.0, 0.0], [0.0, 2.0], [1.0, 0.0]]
+
+
+def test_a_distribution_from_a_table(tmp_path: Path) -> None:
+    """A triangle of half width 1: u is 1 over the root of six (GUM 4.3.9)."""
+    text = FILE.replace("value = 0.3\n", f"points = {UNEVEN}\n")
+    line = read(tmp_path, text.replace('"u_shaped"', '"tabulated"')).contributions[0][1]
+    assert line.u == pytest.approx(1 / math.sqrt(6))
+
+
+@pytest.mark.parametrize("lines", ["reflection = [0.2, 0.1]", "vswr = [1.5, 1.2222222222]"])
+def test_mismatch_of_two_sides_of_a_joint(tmp_path: Path, lines: str) -> None:
+    """By hand: 20 log(1 - 0.2 * 0.1), over root two (GUM H.1.3.4); VSWR 1.5 reflects 0.2."""
+    line = read(tmp_path, FILE.replace("value = 0.3", lines)).contributions[0][1]
+    assert line.u == pytest.approx(-20 * math.log10(1 - 0.02) / math.sqrt(2), rel=1e-6)
+
+
+@pytest.mark.parametrize(
+    ("lines", "words"),
+    [
+        ("reflection = [0.2, 1.0]", "reflection: a reflection of 1; must be from 0 to below 1"),
+        ("vswr = [0.9, 1.5]", "vswr: a standing wave ratio of 0.9; must be 1 or more"),
+        ("vswr = [1.5]", "vswr: [1.5] is not two numbers"),
+        ('reflection = [0.1, "a"]', "reflection: [0.1, 'a'] is not two numbers"),
+        (f"points = {UNEVEN}", "points: is for distribution = 'tabulated'; it is 'u_shaped'"),
+        ("value = 1\nvswr = [1.5, 2]", "value: stands beside vswr"),
+    ],
+)
+def test_what_a_mismatch_cannot_be(tmp_path: Path, lines: str, words: str) -> None:
+    with pytest.raises(CalibrationError) as caught:
+        read(tmp_path, FILE.replace("value = 0.3", lines))
+    assert words in str(caught.value)
+
+
+@pytest.mark.parametrize(
+    ("lines", "words"),
+    [
+        ("value = 0.3", "points: missing; a tabulated distribution needs them"),
+        ("points = [[0, 1], [1, 1]]", "points: their mean is 0.5, not zero"),
+        ("points = [[0, 1]]", "points: must be a list of 2 to"),
+    ],
+)
+def test_what_points_cannot_be(tmp_path: Path, lines: str, words: str) -> None:
+    text = FILE.replace("value = 0.3", lines).replace('"u_shaped"', '"tabulated"')
+    with pytest.raises(CalibrationError) as caught:
+        read(tmp_path, text)
+    assert "calibration.toml: contribution[2]." in str(caught.value)
+    assert words in str(caught.value)
