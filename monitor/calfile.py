@@ -15,6 +15,14 @@ from monitor.calelements import Element
 from monitor.calparts import CalibrationFile, elements_of, read
 from monitor.config import Band, Channel
 from monitor.core import calibration as cal
+from monitor.core.averaging_law import (
+    UNDECLARED,
+    Averaging,
+    Treatment,
+    corrected,
+    joined,
+    power_time_s,
+)
 from monitor.core.budget import Contribution
 from monitor.core.distributions import Real
 from monitor.core.errors import CalibrationError, ConfigError
@@ -31,21 +39,29 @@ class _OfAxis(Protocol):
 A = TypeVar("A", bound=_OfAxis)
 
 
-def load_chain(path: Path, channels: Sequence[Channel], bands: Mapping[str, Band]) -> cal.Chain:
-    """The chain of every channel, in the channels' order.
+def load_chain(
+    path: Path,
+    channels: Sequence[Channel],
+    bands: Mapping[str, Band],
+    front: Averaging = UNDECLARED,
+) -> cal.Chain:
+    """The chain of every channel, in the channels' order. front: what the front end averages.
 
     CalibrationError 'calibration.toml: element[2].table: what; remedy' for the first mistake;
     DeviceError where the file cannot be read.
     """
-    return chain(read(path), channels, bands)
+    return chain(read(path), channels, bands, front)
 
 
 def chain(
-    file: CalibrationFile, channels: Sequence[Channel], bands: Mapping[str, Band]
+    file: CalibrationFile,
+    channels: Sequence[Channel],
+    bands: Mapping[str, Band],
+    front: Averaging = UNDECLARED,
 ) -> cal.Chain:
     """The chain of every channel, in the channels' order; CalibrationError as of load_chain."""
     try:
-        return _chain(file, channels, bands)
+        return _chain(file, channels, bands, front)
     except CalibrationError:
         raise
     except ConfigError as error:
@@ -53,26 +69,32 @@ def chain(
 
 
 def _chain(
-    file: CalibrationFile, channels: Sequence[Channel], bands: Mapping[str, Band]
+    file: CalibrationFile,
+    channels: Sequence[Channel],
+    bands: Mapping[str, Band],
+    front: Averaging,
 ) -> cal.Chain:
     chosen = [detector_of(file, channel) for channel in channels]
     responses = [response(file, channel, bands[channel.band]) for channel in channels]
     axes = Counter(channel.band for channel in channels)
     terms = [_terms(file, c, bands[c.band], axes[c.band]) for c in channels]
+    done = [_treated(d, bands[c.band], front) for d, c in zip(chosen, channels)]
+    tables = tuple(corrected(d.table, one.correction_db) for d, one in zip(chosen, done))
     contributions = tuple(
-        written + assumed + cal.spread(k, channel.band) + detector.rounding
-        for channel, detector, (written, assumed), (_, k) in zip(channels, chosen, terms, responses)
+        written + assumed + cal.spread(k, channel.band) + detector.rounding + one.lines
+        for channel, detector, (written, assumed), (_, k), one in zip(
+            channels, chosen, terms, responses, done
+        )
     )
     if len({detector.resolution for detector in chosen}) > 1:
         raise file.top.error("detector", "the detectors differ in what one count stands for")
     return cal.Chain(
-        tables=tuple(detector.table for detector in chosen),
+        tables=tables,
         frequencies_hz=tuple(f for f, _ in responses),
         k=tuple(k for _, k in responses),
         k_mid=np.array([cal.middle(k) for _, k in responses]),
         contributions=contributions,
-        flags=_flags(file, chosen, any(assumed for _, assumed in terms))
-        | _missing_axes(bands, axes),
+        flags=_flags(file, done, any(assumed for _, assumed in terms)) | _missing_axes(bands, axes),
         valid_temperature_c=file.certificate.valid_temperature_c,
         due_utc_ns=file.dues("".join(channel.axis for channel in channels))[0].utc_ns,
         resolution=chosen[0].resolution,
@@ -80,7 +102,10 @@ def _chain(
         document=file.body,
         noise_w=np.zeros(len(channels)),
         noise_u_w=np.zeros(len(channels)),
-        least_w=np.array([detector.table.range_w()[0] for detector in chosen]),
+        least_w=np.array([table.range_w()[0] for table in tables]),
+        integration_s=min(
+            power_time_s(joined(d.averaging, front), one) for d, one in zip(chosen, done)
+        ),
     )
 
 
@@ -144,17 +169,19 @@ def _terms(file: CalibrationFile, channel: Channel, band: Band, axes: int) -> tu
     return written, calterms.assumed(written, calterms.needed(axes, band.polarisation))
 
 
+def _treated(detector: Detector, band: Band, front: Averaging) -> Treatment:
+    return detector.treatment(band.signal, band.signal_bandwidth_hz, front)
+
+
 def _missing_axes(bands: Mapping[str, Band], axes: Mapping[str, int]) -> int:
     """COMPONENT_ONLY where a band has fewer than three axes and no survey for the others."""
     parts = (calterms.is_component(n, bands[name].polarisation) for name, n in axes.items())
     return int(Flag.COMPONENT_ONLY) if any(parts) else 0
 
 
-def _flags(file: CalibrationFile, detectors: Sequence[Detector], assumed: bool) -> int:
-    """What holds for every figure: logs averaged, figures invented, terms assumed."""
-    flags = Flag.ASSUMED_TERMS if assumed else Flag(0)
-    if any(detector.averages == "log" for detector in detectors):
-        flags |= Flag.LOG_AVERAGED
-    if file.invented:
-        flags |= Flag.INVENTED_CALIBRATION
-    return int(flags)
+def _flags(file: CalibrationFile, done: Sequence[Treatment], assumed: bool) -> int:
+    """What holds for every figure: averaged logs and what was done, invented, terms assumed."""
+    bits = int(Flag.ASSUMED_TERMS) if assumed else 0
+    for one in done:
+        bits |= one.flags
+    return bits | int(Flag.INVENTED_CALIBRATION) if file.invented else bits

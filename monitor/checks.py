@@ -7,11 +7,12 @@ from collections.abc import Callable, Iterable, Iterator, Sequence
 from dataclasses import dataclass
 from datetime import UTC, date, datetime, timedelta
 
-from monitor import calfile, limitsets
+from monitor import calfile, limitsets, signalwords
 from monitor.calparts import CalibrationFile, dated, parse, read
 from monitor.changed import not_as_calibrated
 from monitor.config import Site
 from monitor.core.alarms import watches
+from monitor.core.averaging_law import UNDECLARED, Averaging
 from monitor.core.calibration import Chain
 from monitor.core.errors import CalibrationError, ConfigError, LimitError
 from monitor.core.exposure import CAP_DB, E_ALONE_FROM_HZ, scope_coefficients
@@ -41,15 +42,19 @@ class Finding:
 
 
 def findings(
-    site: Site, now_utc_ns: int, front_end: Callable[[Site], Iterable[Finding]]
+    site: Site,
+    now_utc_ns: int,
+    front_end: Callable[[Site], Iterable[Finding]],
+    averages: Callable[[Site], Averaging] = lambda _: UNDECLARED,
 ) -> Iterator[Finding]:
-    """What fits and what does not. front_end: the check of sensor and record.
+    """What fits and what does not. front_end: the check of sensor and record; averages: what the
+    front end averages.
 
     Raises what makes the site unable to run: ConfigError, CalibrationError, LimitError (2) or
     DeviceError (3), one line each.
     """
-    file = read(site.calibration)
-    chain = calfile.chain(file, site.channels, site.bands)
+    file, front = read(site.calibration), averages(site)
+    chain = calfile.chain(file, site.channels, site.bands, front)
     refuse_future_date(site.calibration.name, *dated(chain.document), now_utc_ns)
     tops = [(scope, _top(site, chain, scope)) for scope in _scopes(site)]
     yield from _site(site)
@@ -57,6 +62,8 @@ def findings(
     yield from _installed(site, file)
     yield from _temperature(site, chain)
     yield from _channels(site, chain)
+    for text, ok in signalwords.told(site, file, front):
+        yield Finding("band.signal", text, ok)
     yield from front_end(site)
     for scope, top in tops:
         yield _limit(scope, top)
@@ -117,7 +124,7 @@ def _calibration(site: Site, chain: Chain, now_utc_ns: int) -> Iterator[Finding]
         )
     if chain.flags & Flag.LOG_AVERAGED:
         yield Finding(
-            "calibration", "the board averages logs: every figure is a lower bound", ok=False
+            "calibration", "something averages logs: every figure is a lower bound", ok=False
         )
     if chain.flags & Flag.ASSUMED_TERMS:
         yield Finding(

@@ -5,6 +5,8 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from monitor.core import detector as det
+from monitor.core.averaging_law import KINDS as AVERAGES
+from monitor.core.averaging_law import Averaging, Treatment, joined, treatment
 from monitor.core.budget import Contribution
 from monitor.core.calibration import CountTable
 from monitor.core.errors import CalibrationError
@@ -12,7 +14,6 @@ from monitor.core.keys import Table
 from monitor.core.law import CurveLaw, Law, ScaleLaw
 from monitor.tomlfile import pair, rows
 
-AVERAGES = ("none", "log", "power")
 MAX_BITS = 18
 SCALE_MARGIN_DB = 20.0
 """How far beyond its range a plain scale still gives (flagged) readings by default."""
@@ -23,7 +24,8 @@ class Detector:
     """A detector's count table, and the law that it was made from.
 
     resolution: what a count stands for; None for converter counts. serial: what its
-    board calls itself (the name in its banner), '' where the file does not say.
+    board calls itself (the name in its banner), '' where the file does not say. averaging_s: over
+    how long it averages, 0 where unknown.
     """
 
     axis: str
@@ -34,6 +36,22 @@ class Detector:
     rounding: tuple[Contribution, ...]
     law: Law
     serial: str = ""
+    averaging_s: float = 0.0
+
+    @property
+    def averaging(self) -> Averaging:
+        """What it, or the converter behind it, averages before it gives a count."""
+        return Averaging(self.averages, self.averaging_s)
+
+    def treatment(self, signal: str, bandwidth_hz: float, front: Averaging) -> Treatment:
+        """What holds of its readings of such a signal behind that front end.
+
+        Volts of a true-rms detector follow the root of power: no correction is known for their
+        logs.
+        """
+        holds = joined(self.averaging, front)
+        known = "undeclared" if self.kind == "rms" and signal == "noise" else signal
+        return treatment(holds.kind, holds.seconds, known, bandwidth_hz)
 
 
 def read_detector(table: Table) -> Detector:
@@ -41,11 +59,15 @@ def read_detector(table: Table) -> Detector:
     axis = table.text("axis", "", ("x", "y", "z"))
     kind = table.text("kind", choices=("log", "rms", "scale"))
     averages = table.text("averages", choices=AVERAGES)
+    averaging_s = table.number("averaging_s", 0.0, 0.0, 3600.0)
+    if averaging_s and averages == "none":
+        raise table.error("averaging_s", "only where averages is log or power; take it out")
     serial = table.text("serial", "").strip()
     read = _scale if kind == "scale" else _curve
     counts, resolution, half_db, law = read(table, kind)
     table.finish()
-    return Detector(axis, kind, averages, counts, resolution, det.rounding(half_db), law, serial)
+    half = det.rounding(half_db)
+    return Detector(axis, kind, averages, counts, resolution, half, law, serial, averaging_s)
 
 
 def _scale(table: Table, kind: str) -> tuple[CountTable, float | None, float, Law]:

@@ -13,6 +13,7 @@ from monitor.calelements import Element
 from monitor.calfile import antenna_of, budget_of, detector_of
 from monitor.calparts import CalibrationFile, Certificate, axes_of, elements_of
 from monitor.config import Channel
+from monitor.core.averaging_law import UNDECLARED
 from monitor.core.budget import Contribution
 from monitor.core.calibration import FrequencyTable, e2_per_w
 from monitor.core.errors import ConfigError
@@ -29,13 +30,18 @@ FORMS = ("counts", "volts", "dbm", "dbfs")
 
 @dataclass(frozen=True, slots=True)
 class Asked:
-    """A figure in one of FORMS, and the circumstances. axis '': the file knows one only."""
+    """A figure in one of FORMS, and the circumstances. axis '': the file knows one only.
+
+    signal, bandwidth_hz: of the band, as a site file says them; they matter to averaged logs.
+    """
 
     form: str
     value: float
     frequency_hz: float
     axis: str = ""
     temperature_c: float | None = None
+    signal: str = "undeclared"
+    bandwidth_hz: float = 0.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -95,12 +101,14 @@ def through(file: CalibrationFile, asked: Asked, now_utc_ns: int) -> Figure:
         _covers(element.where, element.name, element.curve, asked.frequency_hz)
     losses = [element.curve for element in elements if element.kind != "antenna"]
     p_dbm, bits = _port_dbm(file, detector, asked)
+    done = detector.treatment(asked.signal, asked.bandwidth_hz, UNDECLARED)
+    p_dbm += done.correction_db
     per_w = float(e2_per_w(at, antenna.curve, losses)[0])
     e = math.nan if math.isnan(p_dbm) else math.sqrt(w_from_dbm(p_dbm) * per_w)
     lines, bits_of_lines = _budget(file, channel, asked.frequency_hz)
-    lines = (*lines, *detector.rounding)
+    lines = (*lines, *detector.rounding, *done.lines)
     expanded, k = expanded_db([lines], np.ones((1, 1)))
-    bits |= bits_of_lines | _circumstances(file, detector, channel, asked, now_utc_ns)
+    bits |= bits_of_lines | _circumstances(file, channel, asked, now_utc_ns) | done.flags
     low, high = _bounds(e, float(expanded[0]), bits)
     return Figure(
         p_dbm, e, s_from_e(e), float(expanded[0]) / k, k, low, high, bits,
@@ -172,13 +180,9 @@ def _volts(detector: Detector, asked: Asked) -> float | None:
     return asked.value if asked.form == "volts" else None
 
 
-def _circumstances(
-    file: CalibrationFile, detector: Detector, channel: Channel, asked: Asked, now_utc_ns: int
-) -> int:
+def _circumstances(file: CalibrationFile, channel: Channel, asked: Asked, now_utc_ns: int) -> int:
     """Flags of the calibration, the time and the temperature; one axis is a component."""
     bits = Flag.COMPONENT_ONLY
-    if detector.averages == "log":
-        bits |= Flag.LOG_AVERAGED
     if file.invented:
         bits |= Flag.INVENTED_CALIBRATION
     if now_utc_ns >= file.dues(channel.axis)[0].utc_ns:

@@ -166,7 +166,8 @@ def _basis(record: Record, kept: Kept) -> Basis:
     site = site_of(_document(record, kept, "site"), record.path.with_name("site.toml"))
     sets = {name: limitsets.parse(_document(record, kept, name), name) for name in site.limit_sets}
     calibration = calparts.parse(_document(record, kept, "calibration"))
-    chain = calfile.chain(calibration, site.channels, site.bands)
+    front = wiring.averaging_of(site)
+    chain = calfile.chain(calibration, site.channels, site.bands, front)
     names = [channel.name for channel in site.channels]
     tables = tuple(
         CountTable.from_bytes(_document(record, kept, f"counts {name}")) for name in names

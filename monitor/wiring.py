@@ -8,7 +8,7 @@ from dataclasses import replace
 
 import numpy as np
 
-from hardware.registry import Settings, open_front_end, settings_for
+from hardware.registry import Settings, declared, open_front_end, settings_for
 from monitor import limitsets
 from monitor.calfile import chain as chain_of_file
 from monitor.calparts import CalibrationFile, read
@@ -16,6 +16,7 @@ from monitor.checks import Finding, compare_bands
 from monitor.clock import SystemClock
 from monitor.config import Site
 from monitor.core.alarms import AlertRule, watches
+from monitor.core.averaging_law import Averaging
 from monitor.core.calibration import Chain
 from monitor.core.errors import ConfigError
 from monitor.core.exposure import least_coefficient, scope_coefficients
@@ -45,13 +46,18 @@ def sensor_settings(site: Site) -> Settings:
     return settings
 
 
+def averaging_of(site: Site) -> Averaging:
+    """What the site's front end averages; needs neither its device nor its file."""
+    return declared(site.sensor_kind, site.sensor_options)
+
+
 def chain_for(site: Site, settings: Settings) -> Chain:
     """The site's chain. ConfigError where the sensor's step is not the calibration's."""
     return _made(read(site.calibration), site, settings)
 
 
 def _made(file: CalibrationFile, site: Site, settings: Settings) -> Chain:
-    chain = chain_of_file(file, site.channels, site.bands)
+    chain = chain_of_file(file, site.channels, site.bands, settings.averaging)
     if (settings.resolution or 1.0) != (chain.resolution or 1.0):  # counts of a converter: 1
         raise ConfigError(
             f"{site.path.name}: sensor.resolution: {settings.resolution} differs from "

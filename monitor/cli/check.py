@@ -30,7 +30,7 @@ def command(site_file: str | None, listen_s: float, as_json: bool) -> None:
     # Late: a wrong site file needs no front end to say so.
     from monitor import wiring
 
-    found = list(findings(site, SystemClock().utc_ns(), wiring.check))
+    found = list(findings(site, SystemClock().utc_ns(), wiring.check, wiring.averaging_of))
     if listen_s and site.sensor_kind not in wiring.RECORDED:
         found.append(wiring.listen(site, listen_s))
     if as_json:

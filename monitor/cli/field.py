@@ -12,6 +12,7 @@ from monitor.checks import refuse_future_date
 from monitor.cli.output import print_json
 from monitor.clock import SystemClock
 from monitor.core import quantities
+from monitor.core.averaging_law import SIGNALS
 from monitor.core.errors import ConfigError
 from monitor.core.exposure import OUTSIDE_BUDGET
 from monitor.core.flags import LOWER_BOUND, UPPER_BOUND, Flag, words
@@ -41,14 +42,18 @@ CAUTION = (
 @click.option("--dbfs", help="Of a receiver, for example -42.5.")
 @click.option("--axis", type=click.Choice(("x", "y", "z")), help="Where axes differ.")
 @click.option("--temperature-c", help="Of the instrument, degrees Celsius.")
+@click.option("--signal", type=click.Choice(SIGNALS), default="undeclared", help="Its class.")
+@click.option("--bandwidth", help="Of one signal, for example 5MHz.")
 @click.option("--json", "as_json", is_flag=True, help="One JSON document.")
 def command(
     calibration: str, frequency: str, counts: int | None, volts: str | None, dbm: str | None,
-    dbfs: str | None, axis: str | None, temperature_c: str | None, as_json: bool,
+    dbfs: str | None, axis: str | None, temperature_c: str | None, signal: str,
+    bandwidth: str | None, as_json: bool,
 ) -> None:  # fmt: skip
     """What one figure of a detector is in V/m, step by step, with its uncertainty.
 
     The uncertainty of a kind (antenna, cable, ...) stands once, beside the first element of it.
+    Signal and bandwidth matter where the calibration says that logs are averaged.
     """
     form, value = _figure({"counts": counts, "volts": volts, "dbm": dbm, "dbfs": dbfs})
     asked = Asked(
@@ -57,6 +62,8 @@ def command(
         quantities.frequency_hz(frequency),
         axis or "",
         None if temperature_c is None else _number("temperature_c", temperature_c),
+        signal,
+        0.0 if bandwidth is None else quantities.frequency_hz(bandwidth),
     )
     now_utc_ns = SystemClock().utc_ns()
     file = calparts.read(Path(calibration))
