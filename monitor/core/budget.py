@@ -165,8 +165,12 @@ class Combined:
 def combined(budget: Budget, shares: Real, confidence: float = CONFIDENCE) -> Combined:
     """A sum of channels weighted by shares (c,): GUM 5.1.2, G.4.1, k from the distribution."""
     errors = [error.at(shares) for error in independent(budget)]
-    u = math.sqrt(sum(u * u for _, u, _ in errors))
-    return Combined(u, effective_degrees(errors), factor(errors, confidence))
+    return Combined(standard(errors), effective_degrees(errors), factor(errors, confidence))
+
+
+def standard(errors: Sequence[Error]) -> float:
+    """Combined standard uncertainty of independent errors (GUM 5.1.2)."""
+    return math.sqrt(sum(u * u for _, u, _ in errors))
 
 
 def linear(lines: Sequence[Contribution], confidence: float = CONFIDENCE) -> Combined:
@@ -213,14 +217,14 @@ def table(budget: Budget, shares: Real) -> list[Row]:
             key = line.name if line.shared else line
             group = groups.setdefault(key, [[] for _ in budget])
             group[channel].append(line)
-    whole = combined(budget, shares).u
+    whole = standard([error.at(shares) for error in independent(budget)])
     return [_row(group, shares, whole) for group in groups.values()]
 
 
 def _row(group: Budget, shares: Real, whole: float) -> Row:
     lines = [line for channel in group for line in channel]
     first = lines[0]
-    u = math.sqrt(sum(error.at(shares)[1] ** 2 for error in independent(group)))
+    u = standard([error.at(shares) for error in independent(group)])
     value, k, sensitivity = (
         found.pop() if len(found) == 1 else None
         for found in (
