@@ -5,7 +5,6 @@ from __future__ import annotations
 import math
 from dataclasses import dataclass
 
-from monitor.core.budget import Contribution
 from monitor.core.distributions import DIVISOR
 from monitor.core.errors import CalibrationError
 
@@ -70,7 +69,3 @@ class Mismatch:
     def standard_percent(self) -> float:
         """Standard uncertainty of the power, percent, to first order: 200 rho1 rho2 / root 2."""
         return 200.0 * self.voltage / DIVISOR["u_shaped"]
-
-    def line(self, name: str, shared: bool = False) -> Contribution:
-        """The line of a budget in dB."""
-        return Contribution(name, self.half_width_db, "u_shaped", shared=shared, kind="mismatch")

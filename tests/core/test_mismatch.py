@@ -9,7 +9,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from monitor.core.budget import linear
+from monitor.core.budget import Contribution, linear
 from monitor.core.errors import CalibrationError
 from monitor.core.mismatch import Mismatch, reflection
 
@@ -36,7 +36,9 @@ def test_standard_uncertainty_is_that_of_phases_at_random() -> None:
     drawn_db = float((10.0 * np.log10(power)).std())
     assert drawn_db < found.standard_db < 1.05 * drawn_db
     assert found.standard_percent == pytest.approx(100.0 * float(power.std()), rel=5e-3)
-    assert linear([found.line("joint")]).u == pytest.approx(found.standard_db, rel=1e-12)
+    assert linear([Contribution("joint", found.half_width_db, "u_shaped")]).u == pytest.approx(
+        found.standard_db, rel=1e-12
+    )
 
 
 @pytest.mark.parametrize("vswr", [0.9, math.nan, math.inf])

@@ -23,6 +23,7 @@ from monitor.core.mismatch import Mismatch
 from monitor.core.quantities import (
     PORT_OHM,
     Z0_OHM,
+    antenna_factor_db_per_m,
     db_from_power_ratio,
     e_from_s,
     power_ratio_from_db,
@@ -136,6 +137,8 @@ WHAT: dict[str, Callable[..., float]] = {
     "dbua less dbm": lambda: 120.0 + db_from_power_ratio(w_from_dbm(0.0) / PORT_OHM),
     "e of s": e_from_s,
     "e of s in dbuv/m": lambda s: 120.0 + db_from_power_ratio(e_from_s(s) ** 2),
+    "antenna factor of gain": lambda *given: float(antenna_factor_db_per_m(*given)),
+    "gain of antenna factor": lambda *given: float(antenna_factor_db_per_m(*given)),
     "power ratio": power_ratio_from_db,
     "db of percent of power": lambda percent: db_from_power_ratio(1.0 + percent / 100.0),
     "percent of field per db": lambda: 100.0 * (factors(1e-6).e_high - 1.0) / 1e-6,
