@@ -11,6 +11,7 @@ from typing import Any
 from monitor.core.alarms import ENOUGH_SHARE
 from monitor.core.flags import LOWER_BOUND, UPPER_BOUND
 from monitor.core.flags import words as flag_words
+from monitor.core.interval import interval
 
 LOWER_WORDS = frozenset(flag_words(int(LOWER_BOUND)))
 UPPER_WORDS = frozenset(flag_words(int(UPPER_BOUND)))
@@ -58,7 +59,8 @@ class Window:
 class Ratio:
     """One exposure ratio: gaps as zero, of the valid part, gaps at the period's maximum.
 
-    u_db: expanded uncertainty of the ratio in dB; None where it is not told.
+    u_db: expanded uncertainty of the ratio in dB; None where it is not told. added: that of what
+    adds to it.
     """
 
     low: float | None
@@ -67,6 +69,7 @@ class Ratio:
     u_db: float | None
     verdict: str
     window: Window
+    added: float = 0.0
 
     @property
     def kind(self) -> Kind:
@@ -89,18 +92,16 @@ class Ratio:
         """Lower end of the interval; None where nothing bounds it below."""
         if self.low is None or self.kind not in (Kind.VALUE, Kind.AT_LEAST):
             return None
-        return self.low / self._factor
+        return float(interval(self.low, self.low, self.u_db or 0.0, self.added).low)
 
     @property
     def top(self) -> float | None:
         """Upper end of the interval; None where nothing bounds it above."""
         if self.high is None or self.mean is None or self.window.lower:
             return None
-        return self.high * self._factor
-
-    @property
-    def _factor(self) -> float:
-        return float(10.0 ** ((self.u_db or 0.0) / 10.0))
+        if self.window.upper:  # below the detection limit it is the bound already
+            return self.high
+        return float(interval(self.high, self.high, self.u_db or 0.0, self.added).high)
 
     @property
     def holds_limit(self) -> bool:
@@ -154,4 +155,5 @@ def ratio(
         u_db=number(exposure, "u_db"),
         verdict=str(exposure.get("verdict", "undecided")),
         window=window(same[0] if same else {"averaging_s": averaging_s}, flags),
+        added=number(exposure, "added_ratio") or 0.0,
     )

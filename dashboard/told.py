@@ -7,6 +7,7 @@ from typing import Any
 
 from dashboard import bounds, words
 from dashboard.bounds import Kind, Ratio, Window
+from monitor.core.interval import interval as within
 
 
 def figure(ratio: Ratio) -> str:
@@ -130,14 +131,17 @@ def e_interval(field: Mapping[str, Any], flags: Sequence[str]) -> str:
     kind = bounds.window(field, flags).kind(low, mean)
     if u_db is None or kind in (Kind.NONE, Kind.OPEN):
         return "not stated"
-    factor = 10 ** (u_db / 20)
+    added = bounds.number(field, "added_e2") or 0.0
     if kind is Kind.AT_LEAST and low is not None:
-        return f"not below {words.rounded_down(low / factor)} V/m"
+        least = within(low**2, low**2, u_db, added).low
+        return f"not below {words.rounded_down(float(least) ** 0.5)} V/m"
     if kind is Kind.BELOW and high is not None:
-        return f"not above {words.rounded_up(high * factor)} V/m"
+        return f"not above {words.rounded_up(high)} V/m"
     if mean is None:
         return "not stated"
-    return f"{words.figure(mean / factor)} to {words.figure(mean * factor)} V/m"
+    ends = within(mean**2, mean**2, u_db, added)
+    least, most = (words.figure(float(end) ** 0.5) for end in ends)
+    return f"{least} to {most} V/m"
 
 
 def e_spread(field: Mapping[str, Any], flags: Sequence[str]) -> str:

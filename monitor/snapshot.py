@@ -96,6 +96,7 @@ def _field(state: State, averaging_s: int, here: Station) -> dict[str, object]:
         "e_high": math.sqrt(row.e2_high[0]) if known else None,
         "e_max": math.sqrt(row.e2_max[0]) if known else None,
         "u_db": _number(row.u_db[0]) if known else None,
+        "added_e2": _number(row.added_e2[0]) if known else None,
         "k": float(row.k[0]),
         "valid_share": float(row.valid_share[0]),
         "observed_share": float(row.observed_share[0]),
@@ -116,7 +117,7 @@ def _exposures(state: State, here: Station) -> list[dict[str, object]]:
         sums = live(state, averaging_s, here)
         rows = figures.exposures(sums, averaging_s, here)
         share = float(figures.valid_share(sums, averaging_s)[0])
-        bits = int(figures.verdict_flags(sums, averaging_s)[0])
+        bits = int(figures.field_flags(sums, averaging_s, here)[0])
         for i, index in enumerate(rows.scope.tolist()):
             scope = here.scopes[index]
             found.append(
@@ -133,6 +134,7 @@ def _exposures(state: State, here: Station) -> list[dict[str, object]]:
                     "ratio_mean": _number(rows.ratio_mean[i]),
                     "ratio_high": _number(rows.ratio_high[i]),
                     "u_db": _number(rows.u_db[i]),
+                    "added_ratio": _number(rows.added_ratio[i]),
                     "k": here.k_ratio,
                     "verdict": Verdict(int(rows.verdict[i])).name.lower(),
                     "reasons": _reasons(rows, i, (share, bits), here, scope.verified),
@@ -159,6 +161,7 @@ def _reasons(
         field_region=here.field_region,
         outside_excluded=here.outside_excluded,
         lowest_hz=here.lowest_hz,
+        added=float(rows.added_ratio[i]) / here.k_ratio,
     )
 
 
@@ -198,5 +201,5 @@ def _level(rule: AlertRule) -> dict[str, object]:
 def _flags(state: State, here: Station) -> list[str]:
     bits = 0
     for averaging_s in here.averagings_s:
-        bits |= int(figures.window_flags(live(state, averaging_s, here), averaging_s)[0])
+        bits |= int(figures.field_flags(live(state, averaging_s, here), averaging_s, here)[0])
     return words(bits & ~int(Flag.SIMULATED))

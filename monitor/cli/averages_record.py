@@ -84,18 +84,25 @@ def _entries(history: History) -> list[dict[str, object]]:
     }
     rows = zip(history.utc_ns.tolist(), *(column.tolist() for column in columns.values()))
     return [
-        {
-            "end": text_of(end_ns),
-            **dict(zip(columns, values)),
-            "flags": flags.words(bits),
-        }
+        _entry(end_ns, dict(zip(columns, values)), bits)
         for (end_ns, *values), bits in zip(rows, history.flags.tolist())
     ]
 
 
+def _entry(end_ns: int, figures: dict[str, object], bits: int) -> dict[str, object]:
+    """A window below its detection limit has no mean: it has what it is below of."""
+    below = bits & flags.UPPER_BOUND
+    bound = {"below_v_per_m": figures["e_high_v_per_m"] if below else None}
+    unknown = {"e_rms_v_per_m": None} if below else {}
+    return {"end": text_of(end_ns), **figures, **unknown, **bound, "flags": flags.words(bits)}
+
+
 def _line(row: dict[str, object]) -> str:
     names = ("e_low_v_per_m", "e_rms_v_per_m", "e_high_v_per_m", "e_max_v_per_m")
-    figures = " ".join(f"{_figure(row[name]):>9}" for name in names)
+    said = {name: _figure(row[name]) for name in names}
+    if row["below_v_per_m"] is not None:
+        said["e_rms_v_per_m"] = f"<{_figure(row['below_v_per_m'])}"
+    figures = " ".join(f"{said[name]:>9}" for name in names)
     words: list[str] = row["flags"]  # type: ignore[assignment]
     return (
         f"{row['end']!s:>24} {figures}      {_figure(row['expanded_uncertainty_db']):>6}"
@@ -104,5 +111,5 @@ def _line(row: dict[str, object]) -> str:
 
 
 def _figure(value: object) -> str:
-    number = float(value)  # type: ignore[arg-type]
+    number = math.nan if value is None else float(value)  # type: ignore[arg-type]
     return f"{number:.4g}" if math.isfinite(number) else "-"

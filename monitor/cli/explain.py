@@ -14,7 +14,8 @@ from monitor.cli.explain_lines import lines
 from monitor.cli.output import print_json
 from monitor.core.budget import Contribution
 from monitor.core.exposure import Verdict, reasons
-from monitor.core.flags import Flag, words
+from monitor.core.flags import words
+from monitor.core.interval import total_db
 from monitor.core.limits import ratio_per_e2
 from monitor.core.quantities import dbm_from_w
 from monitor.core.readings import MISSING, NS_PER_S
@@ -116,7 +117,11 @@ def _field(kept: Kept) -> Document:
         document[f"e2_{name}_v2_per_m2"] = e2
         document[f"e_{name}_v_per_m"] = math.sqrt(e2)
     return document | {
-        "expanded_uncertainty_db": float(row.u_db[0]),
+        "expanded_uncertainty_db": float(
+            total_db(row.u_db, row.e2_mean, row.added_e2, row.flags)[0]
+        ),
+        "instrument_expanded_db": float(row.u_db[0]),
+        "added_e2_v2_per_m2": float(row.added_e2[0]),
         "k": float(row.k[0]),
         "valid_share": float(row.valid_share[0]),
         "observed_share": float(row.observed_share[0]),
@@ -163,7 +168,9 @@ def _exposure(kept: Kept, basis: Basis | None, i: int) -> Document:
         "ratio_low": float(rows.ratio_low[i]),
         "ratio_mean": float(rows.ratio_mean[i]),
         "ratio_high": float(rows.ratio_high[i]),
-        "expanded_uncertainty_db": float(rows.u_db[i]),
+        "expanded_uncertainty_db": float(
+            total_db(rows.u_db, rows.ratio_mean, rows.added_ratio, kept.field.flags)[i]
+        ),
         "k": None if basis is None else basis.here.k_ratio,
         "verdict": Verdict(int(rows.verdict[i])).name.lower(),
         "reasons": None if basis is None else _reasons(kept, basis, i, scope.verified),
@@ -171,7 +178,7 @@ def _exposure(kept: Kept, basis: Basis | None, i: int) -> Document:
 
 
 def _reasons(kept: Kept, basis: Basis, i: int, verified: bool) -> list[str]:
-    """Why the stored figures give that verdict; a reading below the range forbids none."""
+    """Why the stored figures give that verdict."""
     rows, here = kept.exposures, basis.here
     return reasons(
         float(rows.ratio_low[i]),
@@ -180,9 +187,10 @@ def _reasons(kept: Kept, basis: Basis, i: int, verified: bool) -> list[str]:
         float(rows.u_db[i]) / here.k_ratio,
         here.k_ratio,
         float(kept.field.valid_share[0]),
-        int(kept.field.flags[0]) & ~int(Flag.BELOW_RANGE),
+        int(kept.field.flags[0]),
         verified=verified,
         field_region=here.field_region,
         outside_excluded=here.outside_excluded,
         lowest_hz=here.lowest_hz,
+        added=float(rows.added_ratio[i]) / here.k_ratio,
     )

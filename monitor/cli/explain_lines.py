@@ -100,6 +100,10 @@ def _budget(budget: list[Document] | None, field: Document) -> Iterator[str]:
             f" u {line['u_db']:.3f}  {shared} {', '.join(line['channels'])}{_known(line)}"
         )
     u_db = _number(field["expanded_uncertainty_db"])
+    yield (
+        f"  what multiplies: {_number(field['instrument_expanded_db'])} dB; what adds (noise taken"
+        f" off, scatter of a varying signal): {_number(field['added_e2_v2_per_m2'])} V2/m2"
+    )
     yield f"  expanded uncertainty of the mean {u_db} dB at 95 %, k = {_number(field['k'])}"
 
 

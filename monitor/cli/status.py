@@ -161,6 +161,7 @@ def _as_now(latest: Latest, simulated: bool, utc_ns: int) -> Row:
         {
             "averaging_s": f.averaging_s, "e_low": f.e_low, "e_mean": f.e_mean,
             "e_high": f.e_high, "e_max": f.e_max, "u_db": f.u_db, "k": f.k,
+            "added_e2": f.added_e2,
             "valid_share": f.valid_share, "observed_share": f.observed_share,
             "flags": words(f.flags),
         }
@@ -172,7 +173,8 @@ def _as_now(latest: Latest, simulated: bool, utc_ns: int) -> Row:
             "population": x.scope.population, "scope": x.scope.scope,
             "averaging_s": x.scope.averaging_s, "clause": x.scope.clause,
             "verified": x.scope.verified, "ratio_low": x.ratio_low, "ratio_mean": x.ratio_mean,
-            "ratio_high": x.ratio_high, "u_db": x.u_db, "verdict": Verdict(x.verdict).name.lower(),
+            "ratio_high": x.ratio_high, "u_db": x.u_db, "added_ratio": x.added_ratio,
+            "verdict": Verdict(x.verdict).name.lower(),
         }
         for x in latest.exposures
     ]  # fmt: skip

@@ -9,6 +9,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from monitor.core.flags import LOWER_BOUND, UPPER_BOUND, Flag, words
+from monitor.core.interval import reported, total_db
 
 Real = NDArray[np.float64]
 
@@ -66,6 +67,7 @@ def verdicts(
     outside_excluded: bool,
     cap_db: float = CAP_DB,
     lowest_hz: float = math.inf,
+    added: ArrayLike = 0.0,
 ) -> NDArray[np.int8]:
     """Verdict of every window, int8 (n,).
 
@@ -74,23 +76,25 @@ def verdicts(
     the expanded one divided by its coverage factor k; cap_db holds for k * u. flags: Flag bits.
     field_region: only in the far field does E alone show conformity (ICNIRP 2020, notes to the
     reference levels). outside_excluded: see Station. lowest_hz: lower end of what the channels
-    receive, where E alone is measured. Decisions are taken in dB with a one-sided 95 % guard of
-    1.64 u. An exceedance stands at any valid share and with any U, for the guard counts it; what
-    forbids "conforms" is listed in reasons().
+    receive, where E alone is measured. added: standard uncertainty of what adds to the ratio.
+    Decisions are taken in dB with a one-sided 95 % guard of 1.64 u, by interval() where something
+    adds. Below the detection limit ratio_high is a bound already. An exceedance
+    stands at any valid share and with any U, for the guard counts it; what forbids "conforms" is
+    listed in reasons().
     """
-    low_db, high_db = _db(ratio_low), _db(ratio_high)
-    u = np.asarray(u_db, np.float64)
-    bits = np.asarray(flags, np.int64)
+    factor, bits = np.asarray(k, np.float64), np.asarray(flags, np.int64)
+    u, adds = np.asarray(u_db, np.float64), np.asarray(added, np.float64)
     share = np.asarray(valid_share, np.float64)
-    guard_db = GUARD * u
-    exceeds = (low_db - guard_db > 0.0) & ((bits & int(UPPER_BOUND)) == 0)
+    bounded = (bits & int(UPPER_BOUND)) != 0
+    guarded = reported(ratio_low, ratio_high, GUARD * u, GUARD * adds, bits)
+    exceeds = (guarded.low > 1.0) & ~bounded
     conforms = (
-        (high_db + guard_db < 0.0)
-        & (np.asarray(k, np.float64) * u <= cap_db)
+        (guarded.high < 1.0)
+        & (_capped_db(factor * u, ratio_mean, factor * adds, bits) <= cap_db)
         & (share >= LEAST_VALID_SHARE)
         & ((bits & int(LOWER_BOUND | OUTSIDE_BUDGET)) == 0)
         & np.isfinite(np.asarray(ratio_mean, np.float64))
-        & ~np.isnan(low_db)
+        & ~np.isnan(np.asarray(ratio_low, np.float64))
     )
     if not (verified and outside_excluded and field_region == "far"):
         conforms = np.zeros_like(conforms)
@@ -114,6 +118,7 @@ def reasons(
     outside_excluded: bool,
     cap_db: float = CAP_DB,
     lowest_hz: float = math.inf,
+    added: float = 0.0,
 ) -> list[str]:
     """Plain words for one window: the figures behind the verdict, then all that forbids one.
 
@@ -122,14 +127,31 @@ def reasons(
     verdict = verdicts(
         ratio_low, ratio_mean, ratio_high, u_db, k, valid_share, flags,
         verified=verified, field_region=field_region, outside_excluded=outside_excluded,
-        cap_db=cap_db, lowest_hz=lowest_hz,
+        cap_db=cap_db, lowest_hz=lowest_hz, added=added,
     )[0]  # fmt: skip
-    said = [_comparison(int(verdict), ratio_low, ratio_mean, ratio_high, GUARD * u_db)]
+    least, most = (
+        float(end) for end in reported(ratio_low, ratio_high, GUARD * u_db, GUARD * added, flags)
+    )
+    said = [_comparison(int(verdict), least, ratio_mean, most)]
     said += _no_verdict(field_region, lowest_hz)
     if verdict == Verdict.EXCEEDS:
         return said
-    if flags & UPPER_BOUND and _above(ratio_low, GUARD * u_db):
+    if flags & UPPER_BOUND and most >= 1.0:
         said.append(_because(flags & int(UPPER_BOUND), "the figure is an upper bound"))
+    said += _undeclared(field_region, outside_excluded, verified)
+    expanded_db = float(_capped_db(k * u_db, ratio_mean, k * added, flags))
+    return said + _weak(expanded_db, cap_db, valid_share, flags)
+
+
+def _capped_db(expanded_db: ArrayLike, mean: ArrayLike, added: ArrayLike, flags: ArrayLike) -> Real:
+    """What the cap holds for; of a bound below the detection limit the instrument's part alone."""
+    bounded = (np.asarray(flags, np.int64) & int(UPPER_BOUND)) != 0
+    return np.where(bounded, expanded_db, total_db(expanded_db, mean, added, flags))
+
+
+def _undeclared(field_region: str, outside_excluded: bool, verified: bool) -> list[str]:
+    """What the site and the limit set leave open."""
+    said = []
     if field_region == "undeclared":
         said.append("the field region is not declared")
     if field_region == "radiating_near":
@@ -138,7 +160,7 @@ def reasons(
         said.append("signals outside the band are not excluded by a filter or a survey")
     if not verified:
         said.append("the limit is from memory, not confirmed against the published text")
-    return said + _weak(k * u_db, cap_db, valid_share, flags)
+    return said
 
 
 def _weak(expanded_db: float, cap_db: float, valid_share: float, flags: int) -> list[str]:
@@ -175,8 +197,7 @@ def _no_verdict(field_region: str, lowest_hz: float) -> list[str]:
     return said
 
 
-def _comparison(verdict: int, low: float, mean: float, high: float, guard_db: float) -> str:
-    least, most = low * 10.0 ** (-guard_db / 10.0), high * 10.0 ** (guard_db / 10.0)
+def _comparison(verdict: int, least: float, mean: float, most: float) -> str:
     if verdict == Verdict.EXCEEDS:
         return f"at least {least:.3g} of the limit, gaps counted as nothing"
     if not math.isfinite(mean):
@@ -185,10 +206,6 @@ def _comparison(verdict: int, low: float, mean: float, high: float, guard_db: fl
         return f"at most {most:.3g} of the limit, gaps counted at the highest reading"
     holds = "; the limit lies between" if least <= 1.0 <= most else ""
     return f"{_number(least)} to {_number(most)} of the limit{holds}"
-
-
-def _above(ratio: float, guard_db: float) -> bool:
-    return ratio > 0.0 and 10.0 * math.log10(ratio) - guard_db > 0.0
 
 
 def _because(bits: int, what: str) -> str:
@@ -201,10 +218,3 @@ def _number(value: float) -> str:
 
 def _percent(share: float) -> str:
     return f"{share:.0%}" if math.isfinite(share) else "an unknown part"
-
-
-def _db(ratio: ArrayLike) -> Real:
-    """10 log; a ratio of 0 is minus infinity, nan stays nan and decides nothing."""
-    with np.errstate(divide="ignore", invalid="ignore"):
-        db: Real = 10.0 * np.log10(np.asarray(ratio, np.float64))
-    return db

@@ -2,49 +2,114 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from monitor.core.blocks import BLOCK_NS
+from monitor.core.budget import Budget
 from monitor.core.exposure import verdicts
 from monitor.core.flags import Flag
+from monitor.core.interval import DETECTION, interval
 from monitor.core.readings import NS_PER_S
 from monitor.core.rows import ExposureRows, FieldRows, WindowRows
+from monitor.core.scatter import of_mean
 from monitor.core.station import Station
 from monitor.core.uncertainty import standard_db
 from monitor.core.windows import Sums
 
 F = NDArray[np.float64]
 I = NDArray[np.int64]  # noqa: E741
+B = NDArray[np.bool_]
 
 
 @dataclass(frozen=True, slots=True)
 class Powers:
-    """Mean power (W, at the port) per channel (p, c): gaps as zero, valid part, gaps at maximum."""
+    """Mean power (W, at the port) per channel (p, c): gaps as zero, valid part, gaps at maximum.
+
+    The detector's own noise is taken off; what is left may be negative, and stays so in sums.
+    unsure: standard uncertainty of each channel's zero, W (p, c); scatter: that of the mean.
+    """
 
     low: F
     mean: F
     high: F
+    unsure: F
+    scatter: F
 
 
 def powers(sums: Sums, averaging_s: int, here: Station) -> Powers:
     """The three mean powers of windows; mean and high are nan where a channel has no valid part.
 
-    Where readings lay below the range, the low figure counts all of them as nothing at all.
+    Readings off the weak end of the detector's curve count as nothing at all in the low figure.
     """
-    whole_ns = averaging_s * NS_PER_S
+    whole_ns, chain = averaging_s * NS_PER_S, here.chain
     below = (sums.flags & int(Flag.BELOW_RANGE)) != 0
     # a block more: inside a block the valid time is only known to be at least this
     floor_w_ns = np.where(below, (sums.covered_ns + BLOCK_NS) * here.floor_w, 0.0)
-    low = np.maximum(sums.energy_low - floor_w_ns, 0.0)
+    low = np.maximum(sums.energy_low - floor_w_ns, 0.0) - sums.covered_ns * chain.noise_w
     bare = sums.mean_ns == 0
     with np.errstate(invalid="ignore", divide="ignore"):
         mean = sums.energy_w_ns / sums.mean_ns
     missing = np.maximum(whole_ns - sums.covered_ns, 0)
     high = (sums.energy_high + missing * sums.max_w) / whole_ns
-    return Powers(low / whole_ns, mean, np.where(bare, np.nan, high))
+    return Powers(
+        low / whole_ns,
+        mean - chain.noise_w,
+        np.where(bare, np.nan, high - chain.noise_w),
+        _unsure(mean, here),
+        of_mean(sums, chain.integration_s),
+    )
+
+
+def _unsure(mean_w: F, here: Station) -> F:
+    """Of the noise taken off, and of a mean below the range: it lies anywhere from 0 to there."""
+    chain = here.chain
+    under = np.where(mean_w < chain.least_w, np.maximum(chain.least_w - chain.noise_w, 0.0), 0.0)
+    return np.hypot(chain.noise_u_w, under / math.sqrt(3.0))
+
+
+@dataclass(frozen=True, slots=True)
+class Totals:
+    """Sums over the channels (p,), each power times a weight, and what is unsure about them.
+
+    below: the mean is below its own detection limit; low is then 0 and high the bound to state.
+    added: standard uncertainty of what adds.
+    """
+
+    low: F
+    mean: F
+    high: F
+    added: F
+    u_db: F
+    below: NDArray[np.bool_]
+
+
+def totals(
+    power: Powers, weights: tuple[F, F, F], budget: Budget, k: float, below: B | None = None
+) -> Totals:
+    """weights: (c,) each, for the low, the mean and the high figure. k: coverage factor.
+
+    Errors of the zero, and of what sampling misses of signals that all axes receive, add linearly.
+    below: as found before by other weights; None to judge it here.
+    """
+    low, mean = over_channels(power.low, weights[0]), over_channels(power.mean, weights[1])
+    high = over_channels(power.high, weights[2])
+    unsure = over_channels(power.unsure, weights[1])
+    added = np.hypot(unsure, over_channels(power.scatter, weights[1]))
+    u_db = standard_db(budget, shares(power, weights[1]))
+    below = mean < DETECTION * unsure if below is None else below
+    top = interval(0.0, np.maximum(high, DETECTION * unsure), k * u_db, k * added).high
+    return Totals(
+        np.where(below, 0.0, np.maximum(low, 0.0)),
+        np.maximum(mean, 0.0),
+        np.where(below, top, np.maximum(high, 0.0)),
+        added,
+        u_db,
+        below,
+    )
 
 
 def over_channels(power_w: F, per_watt: F) -> F:
@@ -88,7 +153,7 @@ def shares(power: Powers, per_watt: F) -> F:
     """Each channel's part (p, c) of the sum; of what is known where a channel has no valid part."""
     dead = np.any(np.isnan(power.mean), axis=1)
     parts = np.where(np.repeat(dead[:, None], power.mean.shape[1], axis=1), power.low, power.mean)
-    parts = parts * per_watt
+    parts = np.maximum(parts, 0.0) * per_watt
     total = over_channels(parts, np.ones(parts.shape[1]))[:, None]
     with np.errstate(invalid="ignore", divide="ignore"):
         return np.where(total > 0, parts / total, 1.0 / parts.shape[1])
@@ -102,30 +167,42 @@ def fields(sums: Sums, averaging_s: int, here: Station) -> FieldRows:
     by the middle too; they may not have come together.
     """
     power = powers(sums, averaging_s, here)
-    low = np.array([k.min() for k in here.chain.k])
-    high = np.array([k.max() for k in here.chain.k])
-    mid = here.chain.k_mid
-    mean = over_channels(power.mean, mid)
-    whole_ns = averaging_s * NS_PER_S
+    mid, points = here.chain.k_mid, sums.end_ns.size
+    found = field_totals(power, here)
+    most = over_channels(np.maximum(sums.max_w - here.chain.noise_w, 0.0), mid)
     return FieldRows(
         sums.end_ns,
-        np.full(sums.end_ns.size, averaging_s, np.int64),
-        over_channels(power.low, low),
-        mean,
-        over_channels(power.high, high),
-        np.where(np.isnan(mean), np.nan, over_channels(sums.max_w, mid)),
-        standard_db(here.chain.contributions, shares(power, mid)) * here.k,
-        np.full(sums.end_ns.size, here.k),
+        np.full(points, averaging_s, np.int64),
+        found.low,
+        found.mean,
+        found.high,
+        np.where(np.isnan(found.mean), np.nan, most),
+        found.u_db * here.k,
+        np.full(points, here.k),
         valid_share(sums, averaging_s),
-        sums.observed_ns.min(axis=1) / float(whole_ns),
-        window_flags(sums, averaging_s),
+        sums.observed_ns.min(axis=1) / float(averaging_s * NS_PER_S),
+        _marked(sums, averaging_s, found.below),
+        found.added * here.k,
     )
 
 
-def verdict_flags(sums: Sums, averaging_s: int) -> I:
-    """Flags that bear on a verdict. The low figure has left readings below the range out, so they
-    do not forbid "exceeds"."""
-    return window_flags(sums, averaging_s) & ~int(Flag.BELOW_RANGE)
+def field_totals(power: Powers, here: Station) -> Totals:
+    """E squared of windows, and whether it is below its detection limit."""
+    low = np.array([k.min() for k in here.chain.k])
+    high = np.array([k.max() for k in here.chain.k])
+    return totals(power, (low, here.chain.k_mid, high), here.chain.contributions, here.k)
+
+
+def _marked(sums: Sums, averaging_s: int, below: B) -> I:
+    """Flags of the window; below the range is the reported average, never a single reading."""
+    bits = window_flags(sums, averaging_s) & ~int(Flag.BELOW_RANGE)
+    return np.where(below, bits | int(Flag.BELOW_RANGE), bits)
+
+
+def field_flags(sums: Sums, averaging_s: int, here: Station) -> I:
+    """Flags of the field of windows (p,), the detection limit among them."""
+    below = field_totals(powers(sums, averaging_s, here), here).below
+    return _marked(sums, averaging_s, below)
 
 
 def exposures(sums: Sums, averaging_s: int, here: Station) -> ExposureRows:
@@ -135,34 +212,33 @@ def exposures(sums: Sums, averaging_s: int, here: Station) -> ExposureRows:
     response over limit, the mean and the high one the largest.
     """
     power = powers(sums, averaging_s, here)
-    share, bits = valid_share(sums, averaging_s), verdict_flags(sums, averaging_s)
-    columns: list[tuple[I, I, F, F, F, F, I]] = []
+    below = field_totals(power, here).below
+    share, bits = valid_share(sums, averaging_s), _marked(sums, averaging_s, below)
+    k = here.k_ratio
+    columns: list[tuple[I, I, F, F, F, F, I, F]] = []
     for index, scope in enumerate(here.scopes):
         if round(scope.averaging_s) != averaging_s:
             continue
         most = here.coefficients[:, index]
-        low = over_channels(power.low, here.least[:, index])
-        mean, high = over_channels(power.mean, most), over_channels(power.high, most)
-        u_db = standard_db(here.budget, shares(power, most))
+        found = totals(power, (here.least[:, index], most, most), here.budget, k, below)
         decided = verdicts(
-            low,
-            mean,
-            high,
-            u_db,
-            here.k_ratio,
+            found.low,
+            found.mean,
+            found.high,
+            found.u_db,
+            k,
             share,
             bits,
             verified=scope.verified,
             field_region=here.field_region,
             outside_excluded=here.outside_excluded,
             lowest_hz=here.lowest_hz,
-        )
-        scope_index = np.full(low.size, index, np.int64)
-        expanded_db = u_db * here.k_ratio
-        columns.append(
-            (sums.end_ns, scope_index, low, mean, high, expanded_db, decided.astype(np.int64))
-        )
+            added=found.added,
+        ).astype(np.int64)
+        scope_index = np.full(share.size, index, np.int64)
+        ratios = (found.low, found.mean, found.high, found.u_db * k)
+        columns.append((sums.end_ns, scope_index, *ratios, decided, found.added * k))
     if not columns:
         none, nothing = np.empty(0, np.int64), np.empty(0)
-        return ExposureRows(none, none, nothing, nothing, nothing, nothing, none)
+        return ExposureRows(none, none, nothing, nothing, nothing, nothing, none, nothing)
     return ExposureRows(*(np.concatenate(column) for column in zip(*columns)))

@@ -34,7 +34,7 @@ UPPER_BOUND = Flag.BELOW_RANGE
 
 WORDS = {
     Flag.NO_SIGNAL_WIRE: "detector voltage outside its valid window",
-    Flag.BELOW_RANGE: "below the detector's range",
+    Flag.BELOW_RANGE: "below the detection limit",
     Flag.ABOVE_RANGE: "above the detector's range",
     Flag.CLIPPED: "converter clipped",
     Flag.OUT_OF_TEMPERATURE: "outside the calibrated temperature",

@@ -89,4 +89,4 @@ def _scope_of(rows: ExposureRows, averaging_s: int, here: Station) -> Mask:
 
 def _empty_exposures() -> ExposureRows:
     none, nothing_ = np.empty(0, np.int64), np.empty(0)
-    return ExposureRows(none, none, nothing_, nothing_, nothing_, nothing_, none)
+    return ExposureRows(none, none, nothing_, nothing_, nothing_, nothing_, none, nothing_)

@@ -52,7 +52,9 @@ class FieldRows:
     """Field of the station (sum over axes), V2/m2; nan where there is no valid part.
 
     e2_low: gaps as zero; e2_mean: mean of the valid part; e2_high: gaps at the period's maximum;
-    e2_max: the largest reading. u_db: expanded uncertainty with coverage factor k.
+    e2_max: the largest reading. u_db: expanded uncertainty with coverage factor k of what
+    multiplies, dB; added_e2: of what adds (noise, scatter), V2/m2. Below the detection limit e2_low
+    is 0 and e2_high the bound that is stated.
     """
 
     end_ns: I
@@ -66,6 +68,7 @@ class FieldRows:
     valid_share: F
     observed_share: F
     flags: I
+    added_e2: F
 
 
 @dataclass(frozen=True, slots=True)
@@ -73,7 +76,8 @@ class ExposureRows:
     """Exposure ratios of one scope over its averaging time; verdict as exposure.Verdict.
 
     ratio_low: gaps as zero and the band's smallest response; ratio_mean, ratio_high: its largest.
-    u_db: expanded uncertainty of the ratio; the response over the band is in low and high.
+    u_db: expanded uncertainty of the ratio, the response over the band is in low and high;
+    added_ratio: that of what adds, as in FieldRows.
     """
 
     end_ns: I
@@ -83,6 +87,7 @@ class ExposureRows:
     ratio_high: F
     u_db: F
     verdict: I
+    added_ratio: F
 
 
 @dataclass(frozen=True, slots=True)

@@ -22,7 +22,8 @@ class Sums:
 
     energy_low, energy_high: bounds where the window cuts its oldest block, else equal to energy.
     covered_ns: valid time, the least it can be; mean_ns: valid time that energy_w_ns is for.
-    present: something was read in the window, valid or not.
+    present: something was read in the window, valid or not. turns_w2: sum of the squared
+    differences of neighbouring blocks' means, W2, over pairs of them; n: readings.
     """
 
     end_ns: I
@@ -35,6 +36,9 @@ class Sums:
     max_w: F
     flags: I
     present: NDArray[np.bool_]
+    turns_w2: F
+    pairs: I
+    n: I
 
     def at(self, index: Array) -> Sums:
         """The windows of index (positions or a mask)."""
@@ -68,6 +72,20 @@ def last_n(values: Array, n: int, add: Callable[[Array, Array], Array]) -> Array
     return np.zeros_like(values) if total is None else total
 
 
+def _turns(blocks: Blocks) -> tuple[F, I]:
+    """Squared difference of each block's mean power from the one before, W2, and where it counts.
+
+    A block that only holds an earlier reading tells nothing new.
+    """
+    covered = blocks.covered_ns > 0
+    mean = np.where(covered, blocks.energy_w_ns, 0.0) / np.maximum(blocks.covered_ns, 1)
+    counts = np.zeros(covered.shape, np.int64)
+    counts[1:] = covered[1:] & covered[:-1] & (blocks.n[1:] > 0)
+    turn = np.zeros(mean.shape)
+    turn[1:] = (mean[1:] - mean[:-1]) ** 2
+    return np.where(counts != 0, turn, 0.0), counts
+
+
 def at_block_ends(blocks: Blocks, skip: int, n: int, block_ns: int) -> Sums:
     """Windows of n blocks that end with each block from row skip on.
 
@@ -76,6 +94,7 @@ def at_block_ends(blocks: Blocks, skip: int, n: int, block_ns: int) -> Sums:
     energy = last_n(blocks.energy_w_ns, n, np.add)[skip:]
     covered = last_n(blocks.covered_ns, n, np.add)[skip:]
     rows = np.arange(skip, blocks.size)
+    turn, counts = _turns(blocks)
     return Sums(
         (blocks.first + rows + 1) * block_ns,
         energy,
@@ -87,6 +106,9 @@ def at_block_ends(blocks: Blocks, skip: int, n: int, block_ns: int) -> Sums:
         last_n(blocks.max_w, n, np.maximum)[skip:],
         last_n(blocks.flags, n, np.bitwise_or)[skip:],
         np.any(last_n(blocks.n + blocks.covered_ns, n, np.add)[skip:], axis=1),
+        last_n(turn, n - 1, np.add)[skip:],
+        last_n(counts, n - 1, np.add)[skip:],
+        last_n(blocks.n, n, np.add)[skip:],
     )
 
 
@@ -110,6 +132,7 @@ def inside_blocks(blocks: Blocks, trace: Trace, skip: int, n: int, block_ns: int
     high = np.maximum(last_n(blocks.max_w, n - 1, np.maximum)[before], trace.max_w)
     high = np.maximum(high, old_max)
     bits = last_n(blocks.flags, n - 1, np.bitwise_or)[before] | trace.flags
+    turn, counts = _turns(blocks)
     gone = np.maximum(old_energy - (block_ns - left_ns) * old_max, 0.0)
     return Sums(
         trace.end_ns,
@@ -122,4 +145,7 @@ def inside_blocks(blocks: Blocks, trace: Trace, skip: int, n: int, block_ns: int
         high,
         bits | blocks.flags[oldest],
         np.ones(row.size, np.bool_),
+        last_n(turn, max(n - 2, 0), np.add)[before],
+        last_n(counts, max(n - 2, 0), np.add)[before],
+        last_n(blocks.n, n - 1, np.add)[before],
     )

@@ -11,6 +11,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from monitor.core.interval import total_db
 from monitor.record.coverage import Coverage, coverage
 from monitor.record.fetch import columns
 from monitor.record.spans import DAY_NS, HOUR_NS
@@ -18,6 +19,8 @@ from monitor.record.types import Boot, History, I
 
 _E2 = ("e2_low", "e2_mean", "e2_high", "e2_max")
 _VALUES = "e2_low, e2_mean, e2_high, e2_max, u_db, valid_share, flags"
+_ADDED = {"fields": "added_e2", "field_spans": "0.0"}
+"""A span keeps the largest total of its windows; of a window it is still to be made."""
 _RATIOS = "scope, ratio_low, ratio_mean, ratio_high"
 _OF_AVERAGING = "scope IN (SELECT scope FROM scopes WHERE averaging_s = ?4)"
 _DAYS = (
@@ -43,7 +46,9 @@ class _Source:
 
 
 def _spans(unit_ns: int, query: str, key: str) -> _Source:
-    fields = query.format(f"{key}, end_ns, {_VALUES}", "field_spans", "averaging_s = ?4")
+    fields = query.format(
+        f"{key}, end_ns, {_VALUES}, {_ADDED['field_spans']}", "field_spans", "averaging_s = ?4"
+    )
     ratios = query.format(f"{key}, end_ns, {_RATIOS}", "exposure_spans", _OF_AVERAGING)
     return _Source(unit_ns, fields, ratios)
 
@@ -53,7 +58,9 @@ _SOURCES = (
     _spans(HOUR_NS, _HOURS, "day * 24 + hour"),
     _Source(
         0,
-        _WINDOWS.format(f"end_ns, end_ns, {_VALUES}", "fields", "averaging_s = ?4"),
+        _WINDOWS.format(
+            f"end_ns, end_ns, {_VALUES}, {_ADDED['fields']}", "fields", "averaging_s = ?4"
+        ),
         _WINDOWS.format(f"end_ns, end_ns, {_RATIOS}", "exposures", _OF_AVERAGING),
     ),
 )
@@ -119,7 +126,8 @@ def _of_boot(
         start, end = start // source.unit_ns, (end - 1) // source.unit_ns
     values = (boot.boot, start, end, averaging_s)
     with closing(db.execute(source.fields, values)) as cursor:
-        key, ends, *fields, flags = columns(cursor, "iiffffffi")
+        key, ends, *fields, flags, added = columns(cursor, "iiffffffif")
+    fields[4] = total_db(fields[4], fields[1], added, flags if not source.unit_ns else 0)
     with closing(db.execute(source.ratios, values)) as cursor:
         judged, judged_ends, scope, *ratios = columns(cursor, "iiifff")
     keys = np.union1d(key, judged)

@@ -42,10 +42,10 @@ _TABLES: dict[type, tuple[str, str]] = {
 }
 _LATEST_FIELDS = (
     "SELECT averaging_s, e2_low, e2_mean, e2_high, e2_max, u_db, k, valid_share, observed_share, "
-    "flags FROM fields WHERE derivation = 0 AND boot = ? AND end_ns = ?"
+    "flags, added_e2 FROM fields WHERE derivation = 0 AND boot = ? AND end_ns = ?"
 )
 _LATEST_EXPOSURES = (
-    "SELECT scope, ratio_low, ratio_mean, ratio_high, u_db, verdict FROM exposures "
+    "SELECT scope, ratio_low, ratio_mean, ratio_high, u_db, verdict, added_ratio FROM exposures "
     "WHERE derivation = 0 AND boot = ? AND end_ns = ?"
 )
 _FIXES = (
@@ -235,7 +235,7 @@ class Record:
         offset = boot.utc_offset_ns
         flags = 0
         for row in fields:
-            flags |= row[-1]
+            flags |= row[-2]
         return Latest(
             boot.boot, boot.kind, end_ns, _utc(offset, end_ns), reading, _utc(offset, reading),
             tuple(_latest_field(*row) for row in fields),
@@ -276,17 +276,18 @@ def _number(value: float | None) -> float:
 def _latest_field(
     averaging_s: int, low: float | None, mean: float | None, high: float | None,
     largest: float | None, u_db: float | None, k: float | None, valid: float, observed: float,
-    flags: int,
+    flags: int, added: float | None,
 ) -> LatestField:  # fmt: skip
     e_low, e_mean, e_high, e_max = (math.sqrt(_number(e2)) for e2 in (low, mean, high, largest))
     return LatestField(
-        averaging_s, e_low, e_mean, e_high, e_max, _number(u_db), _number(k), valid, observed, flags
-    )
+        averaging_s, e_low, e_mean, e_high, e_max, _number(u_db), _number(k), valid, observed,
+        flags, _number(added),
+    )  # fmt: skip
 
 
 def _latest_exposure(
     scopes: dict[int, Scope], number: int, low: float | None, mean: float | None,
-    high: float | None, u_db: float | None, verdict: int,
+    high: float | None, u_db: float | None, verdict: int, added: float | None,
 ) -> LatestExposure:  # fmt: skip
     ratios = (_number(low), _number(mean), _number(high), _number(u_db))
-    return LatestExposure(number, scopes[number], *ratios, verdict)
+    return LatestExposure(number, scopes[number], *ratios, verdict, _number(added))

@@ -12,6 +12,7 @@ from collections.abc import Iterator
 import numpy as np
 from numpy.typing import NDArray
 
+from monitor.core.interval import total_db
 from monitor.core.rows import ExposureRows, FieldRows
 
 HOUR_NS = 3_600_000_000_000
@@ -56,9 +57,10 @@ def of_fields(derivation: int, boot: int, rows: FieldRows) -> Iterator[tuple[obj
     for order, starts, day, hour, kind in _groups(rows.end_ns, rows.averaging_s):
         least = [np.fmin.reduceat(c[order], starts) for c in (rows.e2_low, rows.valid_share)]
         most = [np.maximum.reduceat(rows.end_ns[order], starts)]
+        u_db = total_db(rows.u_db, rows.e2_mean, rows.added_e2, rows.flags)
         most += [
             np.fmax.reduceat(c[order], starts)
-            for c in (rows.e2_mean, rows.e2_high, rows.e2_max, rows.u_db)
+            for c in (rows.e2_mean, rows.e2_high, rows.e2_max, u_db)
         ]
         bits = np.bitwise_or.reduceat(rows.flags[order], starts)
         columns = (day, hour, kind, *least, *most, bits)

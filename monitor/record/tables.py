@@ -46,12 +46,12 @@ CREATE TABLE fields (
   derivation INTEGER NOT NULL, boot INTEGER NOT NULL, end_ns INTEGER NOT NULL,
   averaging_s INTEGER NOT NULL, e2_low REAL, e2_mean REAL, e2_high REAL, e2_max REAL,
   u_db REAL, k REAL, valid_share REAL NOT NULL, observed_share REAL NOT NULL,
-  flags INTEGER NOT NULL,
+  flags INTEGER NOT NULL, added_e2 REAL,
   PRIMARY KEY (derivation, boot, end_ns, averaging_s)) STRICT, WITHOUT ROWID;
 CREATE TABLE exposures (
   derivation INTEGER NOT NULL, boot INTEGER NOT NULL, end_ns INTEGER NOT NULL,
   scope INTEGER NOT NULL, ratio_low REAL, ratio_mean REAL, ratio_high REAL, u_db REAL,
-  verdict INTEGER NOT NULL,
+  verdict INTEGER NOT NULL, added_ratio REAL,
   PRIMARY KEY (derivation, boot, end_ns, scope)) STRICT, WITHOUT ROWID;
 CREATE TABLE field_spans (
   derivation INTEGER NOT NULL, boot INTEGER NOT NULL, day INTEGER NOT NULL,
@@ -114,12 +114,14 @@ FROM windows LEFT JOIN channels USING (channel) LEFT JOIN boot_utc USING (boot)"
     "field_levels": f"""
 SELECT {_UTC.format("end_ns")} AS end_utc, derivation, boot, averaging_s,
   sqrt(e2_low) AS e_low_v_per_m, sqrt(e2_mean) AS e_mean_v_per_m,
-  sqrt(e2_high) AS e_high_v_per_m, sqrt(e2_max) AS e_max_v_per_m, u_db, k,
+  sqrt(e2_high) AS e_high_v_per_m, sqrt(e2_max) AS e_max_v_per_m, u_db,
+  sqrt(added_e2) AS added_v_per_m, k,
   valid_share, observed_share, flags
 FROM fields LEFT JOIN boot_utc USING (boot)""",
     "exposure_levels": f"""
 SELECT {_UTC.format("end_ns")} AS end_utc, derivation, boot, set_id, edition, population,
-  scope_kind, averaging_s, ratio_low, ratio_mean, ratio_high, u_db, meaning AS verdict, verified
+  scope_kind, averaging_s, ratio_low, ratio_mean, ratio_high, u_db, added_ratio,
+  meaning AS verdict, verified
 FROM exposures LEFT JOIN scopes USING (scope) LEFT JOIN verdict_words USING (verdict)
   LEFT JOIN boot_utc USING (boot)""",
     "event_log": f"""

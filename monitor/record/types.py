@@ -104,6 +104,7 @@ class LatestField:
     valid_share: float
     observed_share: float
     flags: int
+    added_e2: float
 
 
 @dataclass(frozen=True, slots=True)
@@ -117,6 +118,7 @@ class LatestExposure:
     ratio_high: float
     u_db: float
     verdict: int
+    added_ratio: float
 
 
 @dataclass(frozen=True, slots=True)
@@ -144,8 +146,9 @@ class History:
     1); the longest coverage.MOST_GAPS of them. bin_ns: 0 where each point is one window, else the
     width of the bins that the points were reduced to: then e_low, valid_share and the low ratio
     are the smallest in the bin, all else the largest, and flags are those of any window in it.
-    measured_share: of the span up to the last sign of life in the record; coverage answers the
-    same for any part of the span.
+    u_db: expanded uncertainty of the mean with all that adds;
+    nan below the detection limit. measured_share: of the span up to the last sign of life in the
+    record; coverage answers the same for any part of the span.
     """
 
     averaging_s: int

@@ -39,8 +39,8 @@ def _insert(table: str, columns: int) -> str:
 
 _BLOCK = _insert("blocks", 13)
 _WINDOW = _insert("windows", 10)
-_FIELD = _insert("fields", 13)
-_EXPOSURE = _insert("exposures", 9)
+_FIELD = _insert("fields", 14)
+_EXPOSURE = _insert("exposures", 10)
 _FIX = _insert("clock_fixes", 5)
 _RAW = "INSERT INTO raw (boot, start_ns, end_ns, n, channels, body) VALUES (?, ?, ?, ?, ?, ?)"
 _MARK = "INSERT INTO raw_marks VALUES (?, ?, ?)"
@@ -230,7 +230,7 @@ class Writer:
             raise RecordError(f"{self.path}: an exposure names a scope that was never put")
         scope: NDArray[np.int64] = self._scope_numbers[rows.scope]
         columns = [rows.end_ns, scope, rows.ratio_low, rows.ratio_mean, rows.ratio_high]
-        columns += [rows.u_db, rows.verdict]
+        columns += [rows.u_db, rows.verdict, rows.added_ratio]
         lists = (column.tolist() for column in columns)
         self._db.executemany(_EXPOSURE, zip(repeat(derivation), repeat(boot), *lists))
         extremes = spans.of_exposures(derivation, boot, rows, scope)

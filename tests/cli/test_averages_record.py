@@ -27,6 +27,7 @@ def fields(flag: int) -> FieldRows:
     return FieldRows(
         end, np.full(n, 360), np.nan_to_num(e2) / 4, e2, e2 * 4, e2 * 9, np.full(n, 2.5),
         np.full(n, 1.96), np.where(np.isnan(e2), 0.0, 0.9), np.ones(n), np.full(n, flag),
+        np.zeros(n),
     )  # fmt: skip
 
 
@@ -58,6 +59,7 @@ def test_every_window_with_its_three_figures(
         "e_max_v_per_m": pytest.approx(15.0),
         "e_low_v_per_m": pytest.approx(2.5),
         "e_high_v_per_m": pytest.approx(10.0),
+        "below_v_per_m": None,
         "expanded_uncertainty_db": pytest.approx(2.5),
         "flags": ["converter clipped"],
     }

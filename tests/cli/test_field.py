@@ -115,7 +115,7 @@ def test_tables_are_read_at_the_frequency_alone(
         (
             ["--counts", "1980", "--temperature-c", "20"],
             {},
-            ["below the detector's range"],
+            ["below the detection limit"],
         ),
         (["--volts", "0.7", "--temperature-c", "20"], {}, ["above the detector's range"]),
         (

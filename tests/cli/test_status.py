@@ -162,7 +162,7 @@ def _exposure(**changes: object) -> list[dict[str, object]]:
             ],
         ),
         (
-            {"flags": ["below the detector's range"]},
+            {"flags": ["below the detection limit"]},
             ["ratio below 0.30 (not above 0.49,", "E below 2.0 V/m, with U not above 2.7 V/m"],
         ),
         (

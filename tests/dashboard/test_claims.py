@@ -18,7 +18,7 @@ from monitor.record.types import EventRow
 from tests.dashboard.fakes import client_over, controlled, dead_axis, edited, snapshot
 
 LOWER = flag_words(int(LOWER_BOUND))
-BELOW_RANGE = "below the detector's range"
+BELOW_RANGE = "below the detection limit"
 TWICE_DB = 3.0103
 
 

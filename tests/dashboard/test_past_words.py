@@ -28,7 +28,7 @@ class Judged(FakeRecord):
     def latest(self) -> Latest | None:
         ends_ns = DAY_NS + 12 * 3600 * S
         found = tuple(
-            LatestExposure(i, SCOPES[i], ratio, ratio, ratio, 2.0, 1)
+            LatestExposure(i, SCOPES[i], ratio, ratio, ratio, 2.0, 1, 0.0)
             for i, ratio in ((3, 0.1), (5, 0.4), (2, 0.9))
         )
         return Latest(3, "machine", 0, ends_ns, 0, ends_ns, (), found, 0)

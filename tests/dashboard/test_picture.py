@@ -82,7 +82,7 @@ def test_a_lower_bound_stands_at_what_is_sure_and_its_bracket_has_no_upper_end()
 
 
 def test_an_upper_bound_has_no_lower_end() -> None:
-    drawn = picture.draw(_ratio(0.3, 0.2, 0.4, upper=("below the detector's range",)), filled=False)
+    drawn = picture.draw(_ratio(0.3, 0.2, 0.4, upper=("below the detection limit",)), filled=False)
     assert drawn.level_y == picture.y_of(0.4)
     assert drawn.ends == (True, False)
 

@@ -88,6 +88,7 @@ def field_rows(end_ns: np.ndarray, e2: np.ndarray, *, averaging_s: int = 360) ->
     return FieldRows(
         end_ns.astype(np.int64), np.full(size, averaging_s), np.nan_to_num(e2) / 2, e2, e2 * 2,
         e2 * 3, np.full(size, 2.5), np.full(size, 1.96), share, share, np.zeros(size, np.int64),
+        np.zeros(size),
     )  # fmt: skip
 
 
@@ -96,7 +97,7 @@ def exposure_rows(end_ns: np.ndarray, ratio: np.ndarray, *, scope: int = 1) -> E
     size = end_ns.size
     return ExposureRows(
         end_ns.astype(np.int64), np.full(size, scope), ratio / 2, ratio, ratio * 2,
-        np.full(size, 1.5), np.full(size, 1),
+        np.full(size, 1.5), np.full(size, 1), np.zeros(size),
     )  # fmt: skip
 
 

@@ -131,7 +131,7 @@ def test_uncertainty_lies_between_what_shares_allow(
     assert all(line["channels"] == ["x", "y", "z"] for line in lines)
     shared = sum(line["u_db"] ** 2 for line in lines if line["shared"])
     single = sum(line["u_db"] ** 2 for line in lines if not line["shared"])
-    u = told["field"]["expanded_uncertainty_db"] / told["field"]["k"]
+    u = told["field"]["instrument_expanded_db"] / told["field"]["k"]
     assert math.sqrt(shared + single / 3) <= u * (1 + 1e-9)
     assert u <= math.sqrt(shared + single) * (1 + 1e-9)
 

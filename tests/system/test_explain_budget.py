@@ -49,7 +49,7 @@ def test_its_effect_in_db_is_told(capsys: pytest.CaptureFixture[str], record: Pa
     assert lines["receiver's level"]["degrees_of_freedom"] is None  # without end
     u_db = math.sqrt(sum(line["u_db"] ** 2 for line in lines.values()))
     field = told["field"]
-    assert field["expanded_uncertainty_db"] == pytest.approx(field["k"] * u_db, rel=1e-6)
+    assert field["instrument_expanded_db"] == pytest.approx(field["k"] * u_db, rel=1e-6)
     out = run(capsys, ["explain", "--record", record]).out
     (row,) = [row for row in out.splitlines() if row.startswith("  temperature ")]
     assert row.endswith("; -0.04 dB per unit of its value; 4 degrees of freedom")

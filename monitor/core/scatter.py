@@ -1,0 +1,50 @@
+"""What sampling misses of a varying signal: standard uncertainty of a window's mean power.
+
+From neighbouring blocks' means: half their mean squared difference is the variance of one block's
+mean (von Neumann 1941, from memory), whatever goes on within blocks, correlated or not; a slow
+change of the field itself, which the readings follow, hardly enters. Averaging reduces this part of
+the uncertainty and no other.
+"""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+from numpy.typing import NDArray
+
+from monitor.core.distributions import NORMAL_K
+from monitor.core.readings import NS_PER_S
+from monitor.core.windows import Sums
+
+Real = NDArray[np.float64]
+
+FEWEST_PAIRS = 2
+"""With fewer a spread says nothing; the mean then lies anywhere from 0 to the maximum."""
+WORTH = 2.0 / 3.0
+"""Degrees of freedom for each pair: pairs share blocks (from memory, for normal errors)."""
+
+
+def of_mean(sums: Sums, integration_s: float) -> Real:
+    """(p, c), W. integration_s: time over which each reading is a mean of power itself; readings
+    that leave no time between them miss nothing."""
+    pairs = sums.pairs.astype(np.float64)
+    with np.errstate(divide="ignore", invalid="ignore"):
+        variance = sums.turns_w2 / (2.0 * pairs * (pairs + 1.0))
+        u_w = np.sqrt(variance) * student_ratio(WORTH * pairs)
+        spacing_s = sums.covered_ns / NS_PER_S / np.maximum(sums.n, 1)
+        missed = np.clip(1.0 - integration_s / spacing_s, 0.0, 1.0)
+    few = sums.pairs < FEWEST_PAIRS
+    u_w = np.where(few, sums.max_w / math.sqrt(3.0), u_w)
+    return np.where(sums.covered_ns > 0, u_w * np.sqrt(missed), 0.0)
+
+
+def student_ratio(degrees_of_freedom: Real) -> Real:
+    """Student's t over the normal factor, both for 95 %: a spread from few values is too small too
+    often (GUM G.3.2). By Abramowitz and Stegun 26.7.5, from memory; 3 % low at 2 degrees."""
+    z, v = NORMAL_K, degrees_of_freedom
+    first = (z**2 + 1.0) / 4.0
+    second = (5.0 * z**4 + 16.0 * z**2 + 3.0) / 96.0
+    third = (3.0 * z**6 + 19.0 * z**4 + 17.0 * z**2 - 15.0) / 384.0
+    ratio: Real = 1.0 + first / v + second / v**2 + third / v**3
+    return ratio
