@@ -163,7 +163,7 @@ def _exposure(**changes: object) -> list[dict[str, object]]:
         ),
         (
             {"flags": ["below the detection limit"]},
-            ["ratio below 0.30 (not above 0.49,", "E below 2.0 V/m, with U not above 2.7 V/m"],
+            ["ratio below 0.30 (not above 0.30,", "E below 2.0 V/m, with U not above 2.0 V/m"],
         ),
         (
             {"exposures": _exposure(ratio_low=27.0, ratio_mean=None, verdict="exceeds")},
