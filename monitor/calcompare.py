@@ -117,6 +117,7 @@ def _detectors(file: CalibrationFile) -> dict[str, Table]:
         f"detector {detector.axis}".strip(): {
             "kind": detector.kind,
             "averages": detector.averages,
+            "averaging_s": detector.averaging_s or None,
             "resolution": detector.resolution,
             "count table": detector.table.identity[:12],
         }

@@ -125,6 +125,7 @@ def _detectors(shown: View) -> list[Document]:
                 "axis": detector.axis or None,
                 "kind": detector.kind,
                 "averages": detector.averages,
+                "averaging_s": detector.averaging_s or None,
                 "range_dbm": range_dbm,
                 "resolution": detector.resolution,
             }

@@ -30,7 +30,7 @@ def shown(document: Entry) -> Iterator[str]:
         low, high = detector["range_dbm"]
         yield (
             f"detector{_of_axis(detector)}: {detector['kind']}, {low:.1f} to {high:.1f} dBm,"
-            f" averages {detector['averages']}"
+            f" averages {detector['averages']}{_over(detector['averaging_s'])}"
         )
     for element in document["elements"]:
         yield _element(element)
@@ -42,6 +42,10 @@ def shown(document: Entry) -> Iterator[str]:
     if document["monte_carlo"]:
         yield ""
         yield from _monte_carlo(document["monte_carlo"])
+
+
+def _over(averaging_s: float | None) -> str:
+    return f" over {averaging_s:g} s" if averaging_s else ""
 
 
 def _of_axis(entry: Entry) -> str:

@@ -51,6 +51,19 @@ def test_show_as_one_document(capsys: pytest.CaptureFixture[str]) -> None:
     assert document["monte_carlo"] is None
 
 
+def test_what_a_detector_averages_is_shown(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path
+) -> None:
+    log = ('averages = "none"', 'averages = "log"\naveraging_s = 0.002')
+    path = changed(tmp_path, log)
+    (detector,) = show(capsys, path, "--json").document["detectors"]
+    assert (detector["averages"], detector["averaging_s"]) == ("log", 0.002)
+    assert "averages log over 0.002 s" in show(capsys, path).out
+    (plain,) = show(capsys, BOARD, "--json").document["detectors"]
+    assert plain["averaging_s"] is None
+    assert "averaging_s" in compare(capsys, BOARD, path).out
+
+
 def test_response_at_a_knot_by_hand(capsys: pytest.CaptureFixture[str]) -> None:
     """1 GHz: 44.2 + 0.4 log(10/9)/log(15/9), the filter's 0.7, the cable's line from 0.6 GHz."""
     document = show(capsys, BOARD, "--json").document
