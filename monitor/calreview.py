@@ -13,7 +13,7 @@ import numpy as np
 from monitor.calelements import Element
 from monitor.calfile import chain
 from monitor.calparts import CalibrationFile, axes_of, elements_of
-from monitor.calterms import assumed_name
+from monitor.calterms import assumed_kinds
 from monitor.config import Band, Channel
 from monitor.core.budget import combined, factors, table
 from monitor.core.calibration import Chain
@@ -96,7 +96,7 @@ def document(shown: View, shares: Real, now_utc_ns: int) -> Document:
         "overdue": bool(overdue),
         "overdue_parts": [due.what for due in overdue],
         "invented": file.invented,
-        "assumed": _assumed(shown.chain),
+        "assumed": assumed_kinds(shown.chain.contributions),
         "valid_temperature_c": list(certificate.valid_temperature_c),
         "flags": words(shown.chain.flags),
         "axes": list(shown.axes),
@@ -108,12 +108,6 @@ def document(shown: View, shares: Real, now_utc_ns: int) -> Document:
         "contributions": [asdict(row) for row in table(shown.chain.contributions, shares)],
         "uncertainty": uncertainty(shown.chain, shares),
     }
-
-
-def _assumed(held: Chain) -> list[str]:
-    """Kinds of the lines that stand in for what the file does not say."""
-    lines = [line for channel in held.contributions for line in channel]
-    return list(dict.fromkeys(line.kind for line in lines if line.name == assumed_name(line.kind)))
 
 
 def _detectors(shown: View) -> list[Document]:

@@ -8,7 +8,7 @@ from __future__ import annotations
 from collections.abc import Iterable, Sequence
 
 from monitor.callines import ASSUMED, AXES
-from monitor.core.budget import Contribution
+from monitor.core.budget import Budget, Contribution
 
 ASSUMED_DB = {
     "out_of_band": 1.0,
@@ -47,16 +47,19 @@ def needed(axes: int, polarisation: str) -> tuple[str, ...]:
     return tuple(kind for kind in ASSUMED_DB if kind not in left_out)
 
 
-def assumed_name(kind: str) -> str:
-    """The name of the line that is assumed for a kind."""
-    return f"{WORDS.get(kind, kind)} {ASSUMED}"
-
-
 def assumed(lines: Iterable[Contribution], kinds: Sequence[str]) -> tuple[Contribution, ...]:
     """A line for each of the kinds that no line has; a written line of zero is a line."""
     there = {line.kind for line in lines}
     return tuple(
-        Contribution(assumed_name(kind), ASSUMED_DB[kind], "rectangular", shared=True, kind=kind)
+        Contribution(
+            f"{WORDS[kind]} {ASSUMED}", ASSUMED_DB[kind], "rectangular", shared=True, kind=kind
+        )
         for kind in kinds
         if kind not in there
     )
+
+
+def assumed_kinds(budget: Budget) -> list[str]:
+    """Kinds of the lines that stand in for what nobody wrote, each once, in the budget's order."""
+    lines = [line for channel in budget for line in channel]
+    return list(dict.fromkeys(line.kind for line in lines if line.name.endswith(ASSUMED)))

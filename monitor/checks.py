@@ -9,6 +9,7 @@ from datetime import UTC, date, datetime, timedelta
 
 from monitor import calfile, limitsets, signalwords
 from monitor.calparts import CalibrationFile, dated, parse, read
+from monitor.calterms import assumed_kinds, is_component
 from monitor.changed import not_as_calibrated
 from monitor.config import Site
 from monitor.core.alarms import watches
@@ -127,10 +128,11 @@ def _calibration(site: Site, chain: Chain, now_utc_ns: int) -> Iterator[Finding]
             "calibration", "something averages logs: every figure is a lower bound", ok=False
         )
     if chain.flags & Flag.ASSUMED_TERMS:
+        kinds = ", ".join(assumed_kinds(chain.contributions))
         yield Finding(
             "calibration",
-            "terms of the uncertainty are assumed: nothing will conform until the calibration file"
-            " has a contribution of each kind; fieldsill calibration show tells which",
+            f"assumed, which nobody has confirmed: {kinds}; nothing will conform until the file has"
+            " a contribution of each such kind, even of zero",
             ok=False,
         )
     expanded, k = expanded_db(chain.contributions, equal_shares(len(chain.tables))[None, :])
@@ -166,14 +168,13 @@ def _temperature(site: Site, chain: Chain) -> Iterator[Finding]:
 def _channels(site: Site, chain: Chain) -> Iterator[Finding]:
     axes = Counter(channel.band for channel in site.channels)
     for name, band in site.bands.items():
-        few = axes[name] < 3
+        few = is_component(axes[name], band.polarisation)
         text = f"{name}: {frequency_text(band.low_hz)} to {frequency_text(band.high_hz)}"
-        yield Finding(
-            "band",
-            f"{text}, {axes[name]} of 3 axes"
-            + ("; a component only, a lower bound: nothing will conform" if few else ""),
-            not few,
-        )
+        if few:
+            rest = "; a component only, a lower bound: nothing will conform"
+        else:
+            rest = "" if axes[name] == 3 else "; a survey stands for the others"
+        yield Finding("band", f"{text}, {axes[name]} of 3 axes{rest}", not few)
         outside = OUTSIDE_TEXTS.get(band.outside)
         yield Finding(
             "band.outside",

@@ -109,6 +109,31 @@ def test_what_limits_a_verdict_is_noted(folder: Path) -> None:
     assert any("range ends at" in text for text in notes)
 
 
+def test_terms_that_nobody_wrote_are_named(folder: Path) -> None:
+    site = load_site(folder / SITE)
+    assert not [f for f in findings(site, NOW_NS, lambda _: []) if "assumed" in f.text]
+    change(folder / CALIBRATION, 'kind = "drift"', "")
+    change(folder / CALIBRATION, 'kind = "near_field"', "")
+    (found,) = [f for f in findings(site, NOW_NS, lambda _: []) if "assumed" in f.text]
+    assert "nobody has confirmed: near_field, drift; nothing will conform" in found.text
+    assert not found.ok
+
+
+def test_the_element_that_is_due_is_named(folder: Path) -> None:
+    change(folder / CALIBRATION, 'serial = "waveguide"', 'serial = "waveguide"\ndue = 2026-08-31')
+    texts = [f.text for f in findings(load_site(folder / SITE), NOW_NS, lambda _: [])]
+    assert "overdue, was due 2026-08-31 (cable waveguide): nothing will conform" in texts
+
+
+def test_a_survey_stands_for_the_other_axes(folder: Path) -> None:
+    change(folder / SITE, 'polarisation = "undeclared"', 'polarisation = "survey"')
+    found = list(findings(load_site(folder / SITE), NOW_NS, lambda _: []))
+    (band,) = [f for f in found if f.where == "band"]
+    assert band.text.endswith("1 of 3 axes; a survey stands for the others")
+    assert band.ok
+    assert any("nobody has confirmed: polarisation;" in f.text for f in found)
+
+
 @pytest.mark.parametrize(
     ("name", "old", "new", "code", "words"),
     [
