@@ -23,7 +23,7 @@ from monitor.core.averaging_law import (
     joined,
     power_time_s,
 )
-from monitor.core.budget import Contribution
+from monitor.core.budget import Contribution, independent
 from monitor.core.distributions import Real
 from monitor.core.errors import CalibrationError, ConfigError
 from monitor.core.flags import Flag
@@ -86,6 +86,7 @@ def _chain(
             channels, chosen, terms, responses, done
         )
     )
+    _agree(file, contributions)
     if len({detector.resolution for detector in chosen}) > 1:
         raise file.top.error("detector", "the detectors differ in what one count stands for")
     return cal.Chain(
@@ -161,6 +162,14 @@ def budget_of(
 
 
 Lines = tuple[Contribution, ...]
+
+
+def _agree(file: CalibrationFile, budget: Sequence[Lines]) -> None:
+    """ConfigError where lines that are one error by name say different things of it."""
+    try:
+        independent(budget)
+    except CalibrationError as error:
+        raise file.top.error("contribution", str(error)) from None
 
 
 def _terms(file: CalibrationFile, channel: Channel, band: Band, axes: int) -> tuple[Lines, Lines]:

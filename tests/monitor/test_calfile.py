@@ -230,6 +230,15 @@ def test_a_figure_without_its_uncertainty_is_refused(tmp_path: Path) -> None:
         read(tmp_path, FILE[: FILE.index("[[contribution]]")])
 
 
+def test_one_error_that_is_two_shapes_is_refused(tmp_path: Path) -> None:
+    """Of axis x it is normal, of axis y rectangular, and shared: one error has one shape."""
+    x = '\n[[contribution]]\nname = "gain"\naxis = "x"\nvalue = 1\ndistribution = "normal"\n'
+    x += "shared = true\n"
+    y = x.replace('"x"', '"y"').replace('"normal"', '"rectangular"')
+    with pytest.raises(CalibrationError, match="calibration.toml: contribution: gain: shared, but"):
+        read(tmp_path, FILE + x + y)
+
+
 def test_too_fine_a_scale_is_refused(tmp_path: Path) -> None:
     with pytest.raises(CalibrationError, match="detector.resolution: .*262144"):
         read(tmp_path, scale().replace("resolution = 0.001", "resolution = 0.0001"))
