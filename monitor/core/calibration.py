@@ -24,6 +24,9 @@ Bits = NDArray[np.int32]
 MAX_TABLE = 2**18
 """Most entries that a count table may have: 18 bits of converter."""
 
+_AT_ONCE = 2**16
+"""Readings that are looked up together: what stands between the steps then stays in the cache."""
+
 _HEAD = struct.Struct("<8sqq")
 _MAGIC = b"FSCOUNT1"
 
@@ -39,25 +42,35 @@ class CountTable:
     first_count: int
     power_w: Real
     flags: Bits
+    _powers: Real = field(init=False, repr=False)
+    _bits: Bits = field(init=False, repr=False)
 
     def __post_init__(self) -> None:
         """CalibrationError for an empty table, one that is too long, or unequal lengths."""
         n = self.power_w.size
         if not 0 < n <= MAX_TABLE or self.flags.size != n:
             raise CalibrationError(f"a count table has {n} entries; 1 to {MAX_TABLE} are possible")
+        # One entry more at either end stands for all counts beyond it.
+        ends = self.flags[[0, -1]] & int(Flag.ABOVE_RANGE) | int(Flag.NO_SIGNAL_WIRE)
+        bits = np.concatenate([ends[:1], self.flags, ends[1:]]).astype(np.int32)
+        object.__setattr__(self, "_powers", np.pad(self.power_w, 1, constant_values=np.nan))
+        object.__setattr__(self, "_bits", bits)
 
     def convert(self, counts: NDArray[np.int32]) -> tuple[Real, Bits]:
         """Power in W (nan: no reading) and flags of raw counts; both of the shape of counts.
 
         A count beyond the table on its strong side is above range, too: such a gap is not quiet.
         """
-        index = counts.astype(np.int64) - self.first_count
-        nearest = np.clip(index, 0, self.power_w.size - 1)
-        inside = index == nearest
-        power_w = np.where(inside, self.power_w[nearest], np.nan)
-        strong = np.where(counts == MISSING, 0, self.flags[nearest] & int(Flag.ABOVE_RANGE))
-        flags = np.where(inside, self.flags[nearest], strong | int(Flag.NO_SIGNAL_WIRE))
-        return power_w, flags.astype(np.int32)
+        wanted = counts.reshape(-1)
+        power_w, flags = np.empty(wanted.size), np.empty(wanted.size, np.int32)
+        for start in range(0, wanted.size, _AT_ONCE):
+            part = slice(start, start + _AT_ONCE)
+            index = np.subtract(wanted[part], self.first_count - 1, dtype=np.intp)
+            self._powers.take(index, out=power_w[part], mode="clip")
+            self._bits.take(index, out=flags[part], mode="clip")
+        if self._bits[0] & int(Flag.ABOVE_RANGE):
+            flags[wanted == MISSING] = int(Flag.NO_SIGNAL_WIRE)
+        return power_w.reshape(counts.shape), flags.reshape(counts.shape)
 
     def range_w(self) -> tuple[float, float]:
         """Smallest and largest power that carry no flag, W; CalibrationError where none does."""

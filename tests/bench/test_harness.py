@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import pytest
 
-from tests.bench import bench_windows
+from tests.bench import bench_chain, bench_windows
 from tests.bench.__main__ import discover, main, row, run
 from tests.bench.measure import Figure, compare
 
@@ -43,3 +43,20 @@ def test_windows_bench_refuses_averages_that_differ(monkeypatch: pytest.MonkeyPa
     monkeypatch.setattr(bench_windows, "ALLOWED", -1.0)
     with pytest.raises(ValueError, match="averages differ"):
         list(bench_windows.bench_windows())
+
+
+def test_chain_bench_refuses_fields_that_differ(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr(bench_chain, "READINGS", 100)
+    monkeypatch.setattr(bench_chain, "ALLOWED", -1.0)
+    with pytest.raises(ValueError, match="fields differ"):
+        list(bench_chain.bench_chain())
+
+
+def test_chain_bench_gives_ns_per_reading_beside_both_ways(
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:
+    monkeypatch.setattr(bench_chain, "READINGS", 1000)
+    figures = list(bench_chain.bench_chain())
+    assert [figure.unit for figure in figures] == ["", "ns/reading", "", "ns/reading"]
+    assert all(figure.value <= bench_chain.ALLOWED for figure in figures[::2])
+    assert all(figure.value > 0 and figure.ratio for figure in figures[1::2])

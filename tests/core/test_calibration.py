@@ -51,6 +51,20 @@ def test_beyond_the_strong_end_of_the_table_is_above_range() -> None:
     assert np.isnan(falling.convert(counts)[0][[0, 4, 5, 6]]).all()
 
 
+def test_a_long_column_is_converted_count_by_count() -> None:
+    """More counts than are looked up at once, every third of a table with other columns between."""
+    n = 2**17 + 5
+    counts = np.random.default_rng(2).integers(8, 16, (n, 3)).astype(np.int32)
+    power_w, flags = small().convert(counts[:, 1])
+    known = {
+        count: tuple(each.item() for each in small().convert(np.array([count], np.int32)))
+        for count in range(8, 16)
+    }
+    expected = [known[count] for count in counts[:, 1].tolist()]
+    np.testing.assert_array_equal(power_w, [p for p, _ in expected])
+    np.testing.assert_array_equal(flags, [bits for _, bits in expected])
+
+
 def test_convert_of_nothing_is_nothing() -> None:
     power_w, flags = small().convert(np.empty((0, 3), np.int32))
     assert power_w.shape == flags.shape == (0, 3)
