@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import hashlib
 from collections import Counter
 from collections.abc import Iterator, Mapping
 from dataclasses import fields
@@ -13,6 +14,7 @@ from monitor.callines import Line
 from monitor.calparts import CalibrationFile
 from monitor.calreview import Document, View, knots_hz, response_db, uncertainty
 from monitor.core.budget import Contribution
+from monitor.core.caldrift import drift_line
 from monitor.core.calibration import CountTable
 from monitor.core.quantities import dbm_from_w
 from monitor.core.uncertainty import equal_shares
@@ -33,11 +35,31 @@ def comparison(a: View, b: View) -> Document:
         "band": {"low_hz": a.band.low_hz, "high_hz": a.band.high_hz},
         "response": response,
         "largest_response_db": max((row["db"] for row in response), key=_size),
+        "drift": drift_between(a.file, b),
         "detectors": [
             {"axis": axis, **_detector(before, after)}
             for axis, before, after in zip(a.axes, a.chain.tables, b.chain.tables)
         ],
         "uncertainty": {"a": uncertainty(a.chain, shares), "b": uncertainty(b.chain, shares)},
+    }
+
+
+def drift_between(a: CalibrationFile, b: View) -> Document | None:
+    """What b found of a calibration before, over b's band, and whether that one is a; or None."""
+    found = b.file.as_found
+    if found is None:
+        return None
+    sizes = [found.drift_db(axis, b.band.low_hz, b.band.high_hz) for axis in b.axes]
+    line = drift_line(max(sizes))
+    names = (a.certificate.id, hashlib.sha256(a.body).hexdigest())
+    return {
+        "previous": found.previous,
+        "is_a": found.previous in names,
+        "date": found.date.isoformat(),
+        "adjusted": found.adjusted,
+        "drift_db": line.value,
+        "distribution": line.distribution,
+        "u_db": line.u,
     }
 
 

@@ -8,6 +8,7 @@ from dataclasses import dataclass, replace
 from pathlib import Path
 
 from monitor import tomlfile
+from monitor.asfound import AsFound, read_as_found
 from monitor.calelements import EXAMPLE_TEXTS, Element, read_element
 from monitor.callines import AXES, Line, read_line
 from monitor.core.errors import CalibrationError, ConfigError
@@ -49,6 +50,7 @@ class CalibrationFile:
     """All that a calibration file says, before it is known which channels it is for.
 
     contributions: the lines of the budget that are written as such. body: the file's bytes.
+    as_found: what was found of the calibration before, where the file says it.
     """
 
     top: TopTable
@@ -57,6 +59,7 @@ class CalibrationFile:
     elements: tuple[Element, ...]
     contributions: tuple[Line, ...]
     body: bytes
+    as_found: AsFound | None = None
 
     @property
     def invented(self) -> bool:
@@ -106,8 +109,10 @@ def _file(top: TopTable, body: bytes) -> CalibrationFile:
     detectors = _detectors(top)
     elements = _joined([read_element(table) for table in top.tables("element")])
     contributions = tuple(read_line(table) for table in top.tables("contribution", []))
+    found = top.any("as_found", None)
+    as_found = read_as_found(top.table("as_found"), certificate.date) if found else None
     top.finish()
-    file = CalibrationFile(top, certificate, detectors, elements, contributions, body)
+    file = CalibrationFile(top, certificate, detectors, elements, contributions, body, as_found)
     if not file.lines:
         raise top.error(
             "contribution", "none given; a figure needs its uncertainty; add at least one"

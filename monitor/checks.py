@@ -61,6 +61,7 @@ def findings(
     yield from _site(site)
     yield from _calibration(site, chain, now_utc_ns)
     yield from _installed(site, file)
+    yield from _as_found(site, file)
     yield from _temperature(site, chain)
     yield from _channels(site, chain)
     for text, ok in signalwords.told(site, file, front):
@@ -152,6 +153,16 @@ def _installed(site: Site, file: CalibrationFile) -> Iterator[Finding]:
         yield Finding("installed", f"{line}: nothing will conform", ok=False)
     if site.installed and not lines:
         yield Finding("installed", f"{len(site.installed)} parts, each is the one calibrated")
+
+
+def _as_found(site: Site, file: CalibrationFile) -> Iterator[Finding]:
+    if file.as_found is not None:
+        drift_db = file.as_found.over(site.channels, site.bands)
+        yield Finding(
+            "calibration",
+            f"found a drift of up to {drift_db:.2g} dB since {file.as_found.previous!r}; figures "
+            "that rest on that one are read with a wider uncertainty",
+        )
 
 
 def _temperature(site: Site, chain: Chain) -> Iterator[Finding]:

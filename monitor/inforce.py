@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+import hashlib
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -16,6 +17,7 @@ from monitor.core.flags import Flag
 from monitor.core.rows import Event
 from monitor.marking import Standing
 from monitor.record.reader import Record
+from monitor.record.uses import Drift
 
 Made = Callable[[CalibrationFile], Chain]
 WRONG = (CalibrationError, ConfigError, DeviceError)
@@ -31,6 +33,19 @@ class InForce:
     events: tuple[Event, ...] = ()
 
 
+@dataclass(frozen=True, slots=True)
+class Before:
+    """The calibration files that a record's runs began with, each once, the oldest first, as far
+    as this version understands them; and the drifts that were found of them."""
+
+    files: tuple[CalibrationFile, ...] = ()
+    drifts: tuple[Drift, ...] = ()
+
+    def named(self, name: str) -> list[CalibrationFile]:
+        """The files of that id or SHA-256: one calibration may have been written several times."""
+        return [file for file in self.files if name in (file.certificate.id, _identity(file))]
+
+
 def in_force(site: Site, made: Made, utc_ns: int | None) -> InForce:
     """The site's calibration file; where it is not to be used, the last one that was.
 
@@ -41,71 +56,85 @@ def in_force(site: Site, made: Made, utc_ns: int | None) -> InForce:
 
     Raises what is wrong with the file (WRONG) where nothing can stand in for it.
     """
-    before = _documents(site.record_path)
+    before, trouble = before_of(site.record_path), ""
     try:
         file = calparts.read(site.calibration)
         chain = made(file)
-        if utc_ns is not None and before:
+        drifts = list(_drift(site, file, before))
+        if utc_ns is not None and before.files:
             checks.refuse_future_date(site.calibration.name, *calparts.dated(file.body), utc_ns)
     except WRONG as error:
         stand_in = _last_good(before, made)
         if stand_in is None:
             raise
-        file, chain = stand_in
-        return _told(site, file, chain, before, str(error))
-    return _told(site, file, chain, before, "")
-
-
-def _told(
-    site: Site, file: CalibrationFile, chain: Chain, before: Sequence[bytes], trouble: str
-) -> InForce:
-    bits, events = Flag(0), []
+        (file, chain), trouble, drifts = stand_in, str(error), []
+    bits, events = Flag(0), drifts
     if trouble:
         bits |= Flag.CALIBRATION_OVERDUE
-        body: dict[str, object] = {"why": trouble, "stands in": chain.identity}
-        events.append(Event(0, "fault", "calibration file", body))
-    lines = not_as_calibrated(site.installed, file) + swapped(file, _files(before))
+        why: dict[str, object] = {"why": trouble, "stands in": chain.identity}
+        events.append(Event(0, "fault", "calibration file", why))
+    lines = not_as_calibrated(site.installed, file) + swapped(file, before.files)
     if lines:
         bits |= Flag.ELEMENT_CHANGED
         events.append(Event(0, "calibration", "element changed", {"what": lines}))
     return InForce(chain, Standing(int(bits), names_of(file)), tuple(events))
 
 
-def since_before(path: Path, file: CalibrationFile) -> list[str]:
-    """Elements that the file has otherwise than the record's runs, without a new calibration."""
-    return swapped(file, _files(_documents(path)))
+def _drift(site: Site, file: CalibrationFile, before: Before) -> Iterator[Event]:
+    """What the file found of the calibration before, once; nothing where the record never used it.
+
+    CalibrationError where its drift does not cover the site's bands.
+    """
+    if file.as_found is None:
+        return
+    drift_db = file.as_found.over(site.channels, site.bands)
+    old = [one for one in before.named(file.as_found.previous) if one.body != file.body]
+    digests = frozenset(_identity(one) for one in old)
+    said = [drift.documents for drift in before.drifts if drift.next == _identity(file)]
+    if not old or digests in said:
+        return
+    body: dict[str, object] = {
+        "from_utc": f"{max(one.certificate.date for one in old)}T00:00:00Z",
+        "to_utc": f"{file.as_found.date}T00:00:00Z",
+        "drift_db": drift_db,
+        "previous": file.as_found.previous,
+        "documents": sorted(digests),
+        "next": _identity(file),
+        "adjusted": file.as_found.adjusted,
+    }
+    yield Event(0, "calibration", "drift", body)
 
 
-def _documents(path: Path) -> list[bytes]:
-    """The calibration files that the record's runs began with, each once, the oldest first.
+def _identity(file: CalibrationFile) -> str:
+    return hashlib.sha256(file.body).hexdigest()
 
-    A record that cannot be read has none: measuring does not wait for it.
+
+def before_of(path: Path) -> Before:
+    """What a record says of its calibrations.
+
+    A record that is not there or cannot be read says nothing: measuring does not wait for it.
     """
     if not path.exists():
-        return []
+        return Before()
     try:
         with Record.open(path) as record:
-            digests = dict.fromkeys(use.calibration for use in record.uses())
+            held = record.calibrations()
+            digests = dict.fromkeys(use.calibration for use in held.uses)
             found = [record.document(digest) for digest in digests]
     except RecordError:
-        return []
-    return [document[1] for document in found if document is not None]
-
-
-def _files(documents: Sequence[bytes]) -> list[CalibrationFile]:
-    """Those that this version understands."""
+        return Before()
     files = []
-    for document in documents:
+    for document in found:
         try:
-            files.append(calparts.parse(document))
+            files += [calparts.parse(document[1])] if document is not None else []
         except CalibrationError:
             continue
-    return files
+    return Before(tuple(files), held.drifts)
 
 
-def _last_good(documents: Sequence[bytes], made: Made) -> tuple[CalibrationFile, Chain] | None:
+def _last_good(before: Before, made: Made) -> tuple[CalibrationFile, Chain] | None:
     """The newest that still makes a chain for the channels."""
-    for file in reversed(_files(documents)):
+    for file in reversed(before.files):
         try:
             return file, made(file)
         except WRONG:

@@ -12,6 +12,7 @@ from hardware.registry import Settings, declared, open_front_end, settings_for
 from monitor import limitsets
 from monitor.calfile import chain as chain_of_file
 from monitor.calparts import CalibrationFile, read
+from monitor.changed import swapped
 from monitor.checks import Finding, compare_bands
 from monitor.clock import SystemClock
 from monitor.config import Site
@@ -27,7 +28,7 @@ from monitor.core.rows import Event
 from monitor.core.silence import KEY as SILENCE
 from monitor.core.station import Station, station
 from monitor.daemon import RECORD, Daemon
-from monitor.inforce import in_force, since_before
+from monitor.inforce import before_of, in_force
 from monitor.listening import heard, left_alone
 from monitor.record import connect
 from monitor.record.background import WriterThread
@@ -134,7 +135,7 @@ def check(site: Site) -> list[Finding]:
         found.append(Finding("record", f"{site.record_path}: will be continued"))
         found += [
             Finding("calibration", f"{line}: nothing will conform", ok=False)
-            for line in since_before(site.record_path, read(site.calibration))
+            for line in swapped(read(site.calibration), before_of(site.record_path).files)
         ]
     return found
 

@@ -81,6 +81,7 @@ def _entries(history: History) -> list[dict[str, object]]:
         "e_low_v_per_m": history.e_low,
         "e_high_v_per_m": history.e_high,
         "expanded_uncertainty_db": history.u_db,
+        "widened_by_drift_db": history.widened_by_drift_db,
     }
     rows = zip(history.utc_ns.tolist(), *(column.tolist() for column in columns.values()))
     return [
@@ -103,7 +104,10 @@ def _line(row: dict[str, object]) -> str:
     if row["below_v_per_m"] is not None:
         said["e_rms_v_per_m"] = f"<{_figure(row['below_v_per_m'])}"
     figures = " ".join(f"{said[name]:>9}" for name in names)
-    words: list[str] = row["flags"]  # type: ignore[assignment]
+    words = list(row["flags"])  # type: ignore[call-overload]
+    drift_db = float(row["widened_by_drift_db"])  # type: ignore[arg-type]
+    if drift_db:
+        words.append(f"U widened by a drift of {drift_db:.2g} dB that was found later")
     return (
         f"{row['end']!s:>24} {figures}      {_figure(row['expanded_uncertainty_db']):>6}"
         f" {row['valid_share']:>7.1%}  {', '.join(words)}"

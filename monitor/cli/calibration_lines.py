@@ -172,6 +172,7 @@ def compared(document: Entry) -> Iterator[str]:
     yield f"Response over {_span(document['band'])}, B less A (what E² and S become higher by):"
     for axis, row in _merged(document["response"], document["axes"]):
         yield f"  {axis}{frequency_text(row['frequency_hz']):>12} {row['db']:>+8.2f} dB"
+    yield from _drift(document["drift"])
     for axis, row in _merged(document["detectors"], document["axes"]):
         name = f"Detector {axis}".strip()
         if row["largest_db"] is None:
@@ -187,6 +188,22 @@ def compared(document: Entry) -> Iterator[str]:
             f"{name.upper()}: U = {found['expanded_db']:.2f} dB (95 %, k = {found['k']:.3f}), equal"
             f" shares of the axes; with k = 2 {found['expanded_k2_db']:.2f} dB"
         )
+
+
+def _drift(drift: Entry | None) -> Iterator[str]:
+    """What B found of the calibration before it."""
+    if drift is None:
+        return
+    which = "A" if drift["is_a"] else f"{drift['previous']!r}, which is not A"
+    after = "adjusted afterwards" if drift["adjusted"] else "left as found"
+    yield (
+        f"Drift: as found on {drift['date']} the chain read up to {drift['drift_db']:.2g} dB"
+        f" otherwise than {which} says ({after})"
+    )
+    yield (
+        f"  data that rest on {'A' if drift['is_a'] else 'that one'}: a rectangular line of"
+        f" {drift['drift_db']:.2g} dB more, u = {drift['u_db']:.3f} dB"
+    )
 
 
 def _side(value: Any) -> str:

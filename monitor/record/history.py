@@ -12,10 +12,13 @@ import numpy as np
 from numpy.typing import NDArray
 
 from monitor.core.interval import total_db
+from monitor.core.readings import NS_PER_S
 from monitor.record.coverage import Coverage, coverage
+from monitor.record.drift import widened
 from monitor.record.fetch import columns
 from monitor.record.spans import DAY_NS, HOUR_NS
 from monitor.record.types import Boot, History, I
+from monitor.record.uses import Calibrations, calibrations
 
 _E2 = ("e2_low", "e2_mean", "e2_high", "e2_max")
 _VALUES = "e2_low, e2_mean, e2_high, e2_max, u_db, valid_share, flags"
@@ -87,8 +90,9 @@ def history(
     first_ns, last_ns = _part_with_data(db, boots, span)
     width = -(-(last_ns - first_ns) // at_most)
     source = next(source for source in _SOURCES if 2 * width >= source.unit_ns)
+    held = calibrations(db)
     tables = [
-        _of_boot(db, boot, boot.utc_offset_ns, span, averaging_s, source)
+        _of_boot(db, boot, boot.utc_offset_ns, span, averaging_s, source, held)
         for boot in boots
         if boot.utc_offset_ns is not None
     ]
@@ -118,7 +122,7 @@ def _part_with_data(
 
 def _of_boot(
     db: sqlite3.Connection, boot: Boot, offset: int, span: tuple[int, int], averaging_s: int,
-    source: _Source,
+    source: _Source, held: Calibrations,
 ) -> Table:  # fmt: skip
     """One row for each window end (or hour or day) that has a field or a ratio."""
     start, end = (limit - offset for limit in span)
@@ -138,6 +142,10 @@ def _of_boot(
     place = np.searchsorted(keys, key)
     for name, column in zip((*_E2, "u_db", "valid_share"), fields):
         table[name] = _placed(keys.size, place, column)
+    start_ns = keys * (source.unit_ns or 1) - averaging_s * NS_PER_S
+    end_ns = (keys + 1) * source.unit_ns if source.unit_ns else keys
+    wider = widened(db, held, boot.boot, start_ns, end_ns, table["u_db"])
+    table["u_db"], table["widened_by_drift_db"] = wider
     table["flags"] = _placed(keys.size, place, flags, 0)
     for number in np.unique(scope).tolist():
         rows = scope == number
@@ -199,4 +207,5 @@ def _as_history(
         bin_ns=bin_ns,
         measured_share=measured.share(span[0], min(span[1], measured.until_ns)),
         coverage=measured,
+        widened_by_drift_db=column("widened_by_drift_db"),
     )

@@ -31,7 +31,7 @@ from monitor.record.types import (
     LatestExposure,
     LatestField,
 )
-from monitor.record.uses import Use, uses
+from monitor.record.uses import Calibrations, calibrations
 
 FIRST_NS, LAST_NS = -(2**63), 2**63 - 1
 _TABLES: dict[type, tuple[str, str]] = {
@@ -200,10 +200,10 @@ class Record:
         with self._one_line():
             return happened.between(self._db, boots, (start_utc_ns, end_utc_ns), limit)
 
-    def uses(self) -> list[Use]:
-        """The documents that figures rest on from each start of the program on, in order."""
+    def calibrations(self) -> Calibrations:
+        """The calibrations that figures rest on, and the drifts that were found of them."""
         with self._one_line():
-            return uses(self._db)
+            return calibrations(self._db)
 
     def starts(self, boot: int) -> list[tuple[int, str]]:
         """(boot_ns, identity of the chain) of each start of the daemon in a boot, in order."""

@@ -146,9 +146,10 @@ class History:
     1); the longest coverage.MOST_GAPS of them. bin_ns: 0 where each point is one window, else the
     width of the bins that the points were reduced to: then e_low, valid_share and the low ratio
     are the smallest in the bin, all else the largest, and flags are those of any window in it.
-    u_db: expanded uncertainty of the mean with all that adds;
-    nan below the detection limit. measured_share: of the span up to the last sign of life in the
-    record; coverage answers the same for any part of the span.
+    u_db: expanded uncertainty of the mean with all that adds; nan below the detection limit.
+    widened_by_drift_db: the drift of the calibration, found later, that is in u_db; 0 where none.
+    measured_share: of the span up to the last sign of life in the record; coverage answers the
+    same for any part of the span.
     """
 
     averaging_s: int
@@ -165,3 +166,4 @@ class History:
     bin_ns: int
     measured_share: float = math.nan
     coverage: Coverage = field(default_factory=Coverage)
+    widened_by_drift_db: F = field(default_factory=lambda: np.empty(0))

@@ -1,13 +1,21 @@
-"""Which documents the figures of a record rest on, from each start of the program on."""
+"""Which calibrations the figures of a record rest on, and what was found out about them later."""
 
 from __future__ import annotations
 
 import json
 import sqlite3
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
+import numpy as np
+from numpy.typing import NDArray
+
 _STARTS = "SELECT boot, boot_ns, body FROM events WHERE kind = 'start' ORDER BY event"
+_DRIFTS = "SELECT body FROM events WHERE kind = 'calibration' AND name = 'drift' ORDER BY event"
+_LAST_NS = 2**63 - 1
+
+F = NDArray[np.float64]
+I = NDArray[np.int64]  # noqa: E741
 
 
 @dataclass(frozen=True, slots=True)
@@ -24,9 +32,64 @@ class Use:
         return self.hashes.get("calibration", "")
 
 
-def uses(db: sqlite3.Connection) -> list[Use]:
-    """Every start of the program, the first one first."""
-    return [
+@dataclass(frozen=True, slots=True)
+class Drift:
+    """What calibration next found of the one before: documents are the SHA-256 of its files."""
+
+    documents: frozenset[str]
+    next: str
+    drift_db: float
+
+
+@dataclass(frozen=True, slots=True)
+class Segment:
+    """A part of a boot, [start_ns, end_ns), whose calibration was found to have drifted."""
+
+    start_ns: int
+    end_ns: int
+    drift_db: float
+
+
+@dataclass(frozen=True, slots=True)
+class Calibrations:
+    """Every start of the program with its documents, and every drift, in order."""
+
+    uses: tuple[Use, ...]
+    drifts: tuple[Drift, ...]
+
+    def drifted(self, boot: int) -> list[Segment]:
+        """The parts of a boot that rest on a calibration that had drifted when next looked at."""
+        mine = [use for use in self.uses if use.boot == boot]
+        ends = [use.boot_ns for use in mine[1:]] + [_LAST_NS]
+        found = [
+            Segment(use.boot_ns, end_ns, self._largest_db(use.calibration))
+            for use, end_ns in zip(mine, ends)
+        ]
+        return [segment for segment in found if segment.drift_db > 0.0]
+
+    def _largest_db(self, calibration: str) -> float:
+        sizes = (abs(drift.drift_db) for drift in self.drifts if calibration in drift.documents)
+        return max(sizes, default=0.0)
+
+
+def drift_over(segments: Sequence[Segment], after_ns: I, until_ns: I) -> F:
+    """Per span (n,), boot ns: the largest drift of the segments that it touches, dB, else 0."""
+    out = np.zeros(after_ns.size)
+    for segment in segments:
+        touches = (after_ns < segment.end_ns) & (until_ns > segment.start_ns)
+        out[touches] = np.maximum(out[touches], segment.drift_db)
+    return out
+
+
+def calibrations(db: sqlite3.Connection) -> Calibrations:
+    """What the events of a record say of its calibrations."""
+    uses = tuple(
         Use(boot, boot_ns, {str(name): str(value) for name, value in json.loads(body).items()})
         for boot, boot_ns, body in db.execute(_STARTS)
-    ]
+    )
+    bodies = [json.loads(body) for (body,) in db.execute(_DRIFTS)]
+    drifts = tuple(
+        Drift(frozenset(body["documents"]), str(body["next"]), float(body["drift_db"]))
+        for body in bodies
+    )
+    return Calibrations(uses, drifts)

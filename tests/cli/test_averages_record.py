@@ -61,6 +61,7 @@ def test_every_window_with_its_three_figures(
         "e_high_v_per_m": pytest.approx(10.0),
         "below_v_per_m": None,
         "expanded_uncertainty_db": pytest.approx(2.5),
+        "widened_by_drift_db": 0.0,
         "flags": ["converter clipped"],
     }
     assert rows[3]["e_rms_v_per_m"] is None
