@@ -71,12 +71,16 @@ def in_force(site: Site, made: Made, utc_ns: int | None) -> InForce:
     bits, events = Flag(0), drifts
     if trouble:
         bits |= Flag.CALIBRATION_OVERDUE
-        why: dict[str, object] = {"why": trouble, "stands in": chain.identity}
+        why: dict[str, object] = {
+            "why": trouble, "stands in": chain.identity, "text": f"{trouble}; measuring on",
+        }  # fmt: skip
         events.append(Event(0, "fault", "calibration file", why))
     lines = not_as_calibrated(site.installed, file) + swapped(file, before.files)
     if lines:
         bits |= Flag.ELEMENT_CHANGED
-        events.append(Event(0, "calibration", "element changed", {"what": lines}))
+        events.append(
+            Event(0, "calibration", "element changed", {"what": lines, "text": "; ".join(lines)})
+        )
     return InForce(chain, Standing(int(bits), names_of(file)), tuple(events))
 
 
@@ -101,6 +105,8 @@ def _drift(site: Site, file: CalibrationFile, before: Before) -> Iterator[Event]
         "documents": sorted(digests),
         "next": _identity(file),
         "adjusted": file.as_found.adjusted,
+        "text": f"{file.certificate.id} found a drift of {drift_db:.2g} dB since "
+        f"{file.as_found.previous}; what rests on that one is read with a wider uncertainty",
     }
     yield Event(0, "calibration", "drift", body)
 

@@ -20,6 +20,7 @@ from monitor.core.rows import BlockRows, ExposureRows, FieldRows, WindowRows
 from monitor.core.station import Station
 from monitor.record.reader import FIRST_NS, LAST_NS, Record
 from monitor.record.types import Boot, ChannelRow
+from monitor.record.uses import drift_over
 from monitor.times import text_of
 
 DAY_NS = 86_400 * NS_PER_S
@@ -33,6 +34,7 @@ class Kept:
 
     hashes: name of a document (calibration, site, a limit set, counts and a channel) to SHA-256.
     restarted: the program began anew within the window, so other documents may bear on its start.
+    drift_db: of its calibration, as a later one found it.
     """
 
     boot: Boot
@@ -49,6 +51,7 @@ class Kept:
     raw: list[Batch]
     hashes: Mapping[str, str]
     restarted: bool
+    drift_db: float = 0.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -158,7 +161,13 @@ def _kept(record: Record, boot: Boot, end_ns: int, averaging_s: int) -> Kept:
         record.blocks(number, begin_ns, end_ns),
         list(record.raw_batches(number, begin_ns, end_ns)),
         hashes, any(event.boot_ns > begin_ns for event in starts),
+        _drift_db(record, number, begin_ns, end_ns),
     )  # fmt: skip
+
+
+def _drift_db(record: Record, boot: int, begin_ns: int, end_ns: int) -> float:
+    drifted = record.calibrations().drifted(boot)
+    return float(drift_over(drifted, np.array([begin_ns]), np.array([end_ns]))[0])
 
 
 def _basis(record: Record, kept: Kept) -> Basis:

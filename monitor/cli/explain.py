@@ -13,6 +13,7 @@ from monitor.cli.averages_record import site_record, utc_ns_asked
 from monitor.cli.explain_lines import lines
 from monitor.cli.output import print_json
 from monitor.core.budget import Contribution
+from monitor.core.caldrift import widened_db
 from monitor.core.exposure import Verdict, reasons
 from monitor.core.flags import words
 from monitor.core.interval import total_db
@@ -123,6 +124,10 @@ def _field(kept: Kept) -> Document:
         "instrument_expanded_db": float(row.u_db[0]),
         "added_e2_v2_per_m2": float(row.added_e2[0]),
         "k": float(row.k[0]),
+        "widened_by_drift_db": kept.drift_db,
+        "expanded_uncertainty_with_drift_db": float(
+            widened_db(row.u_db, row.k, np.array([kept.drift_db]))[0]
+        ),
         "valid_share": float(row.valid_share[0]),
         "observed_share": float(row.observed_share[0]),
         "flags": words(int(row.flags[0])),

@@ -105,6 +105,11 @@ def _budget(budget: list[Document] | None, field: Document) -> Iterator[str]:
         f" off, scatter of a varying signal): {_number(field['added_e2_v2_per_m2'])} V2/m2"
     )
     yield f"  expanded uncertainty of the mean {u_db} dB at 95 %, k = {_number(field['k'])}"
+    if field["widened_by_drift_db"]:
+        yield (
+            f"  a later calibration found a drift of {field['widened_by_drift_db']:.2g} dB: with it"
+            f" {_number(field['expanded_uncertainty_with_drift_db'])} dB; verdicts stand as stored"
+        )
 
 
 def _known(line: Document) -> str:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import hashlib
+import json
 import math
 import shutil
 import sqlite3
@@ -259,3 +260,25 @@ def test_mistakes(capsys: pytest.CaptureFixture[str], folder: Path, tmp_path: Pa
     assert "no window of 77 s" in mistaken(capsys, record, "--averaging", 77)[1]
     assert mistaken(capsys, record, "--averaging", 0)[0] == 2
     assert mistaken(capsys, tmp_path / "none.db")[0] == 3
+
+
+def test_a_drift_found_later_stands_beside_the_stored_uncertainty(
+    capsys: pytest.CaptureFixture[str], copy: Path
+) -> None:
+    before = explained(capsys, copy)
+    assert before["field"]["widened_by_drift_db"] == 0.0
+    drift = {"documents": [before["documents"]["calibration"]], "next": "later", "drift_db": 0.9}
+    body, boot, end_ns = json.dumps(drift), before["boot"], before["end_boot_ns"]
+    spoil(
+        copy,
+        "INSERT INTO events (boot, boot_ns, kind, name, body) VALUES "
+        f"({boot}, {end_ns}, 'calibration', 'drift', '{body}')",
+    )
+    after = explained(capsys, copy)
+    field = after["field"]
+    u, k = field["expanded_uncertainty_db"], field["k"]
+    assert u == before["field"]["expanded_uncertainty_db"]
+    wider = k * math.sqrt((u / k) ** 2 + 0.9**2 / 3)
+    assert field["expanded_uncertainty_with_drift_db"] == pytest.approx(wider, rel=1e-12)
+    text = run(capsys, ["explain", "--record", copy]).out
+    assert "a later calibration found a drift of 0.9 dB" in text
