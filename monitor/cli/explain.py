@@ -117,16 +117,15 @@ def _field(kept: Kept) -> Document:
         e2 = float(getattr(row, f"e2_{name}")[0])
         document[f"e2_{name}_v2_per_m2"] = e2
         document[f"e_{name}_v_per_m"] = math.sqrt(e2)
+    total = total_db(row.u_db, row.e2_mean, row.added_e2, row.flags)
     return document | {
-        "expanded_uncertainty_db": float(
-            total_db(row.u_db, row.e2_mean, row.added_e2, row.flags)[0]
-        ),
+        "expanded_uncertainty_db": float(total[0]),
         "instrument_expanded_db": float(row.u_db[0]),
         "added_e2_v2_per_m2": float(row.added_e2[0]),
         "k": float(row.k[0]),
         "widened_by_drift_db": kept.drift_db,
         "expanded_uncertainty_with_drift_db": float(
-            widened_db(row.u_db, row.k, np.array([kept.drift_db]))[0]
+            widened_db(total, row.k, np.array([kept.drift_db]))[0]
         ),
         "valid_share": float(row.valid_share[0]),
         "observed_share": float(row.observed_share[0]),

@@ -106,7 +106,7 @@ def windows(site: Site, first_minute: int, n: int) -> None:
     ones = np.ones(n)
     rows = FieldRows(
         ends, np.full(n, 360), ones, ones, ones, ones, 1.5 * ones, 2 * ones, ones, ones,
-        np.zeros(n, np.int64),
+        np.zeros(n, np.int64), np.zeros(n),
     )  # fmt: skip
     writer = Writer(site.record_path, simulated=True)
     writer.commit(writer.begin_boot("one", "machine"), Commit(fields=rows))
