@@ -9,6 +9,7 @@ from typing import Any
 import click
 import numpy as np
 
+from monitor.cli import explain_temperature
 from monitor.cli.averages_record import site_record, utc_ns_asked
 from monitor.cli.explain_lines import lines
 from monitor.cli.output import print_json
@@ -59,6 +60,7 @@ def _document(traced: Traced) -> Document:
         "end": None if kept.utc_ns is None else text_of(kept.utc_ns),
         "averaging_s": kept.averaging_s,
         "readings": sum(batch.n for batch in kept.raw),
+        "temperature": explain_temperature.of_readings(kept),
         "channels": [_channel(kept, basis, i) for i in range(len(kept.channels))],
         "field": _field(kept),
         "uncertainty": None if basis is None else _budget(basis),
@@ -95,6 +97,7 @@ def _channel(kept: Kept, basis: Basis | None, index: int) -> Document:
         "blocks_valid_s": float(kept.blocks.covered_ns[blocks].sum() / NS_PER_S),
         "valid_s": float(covered_ns / NS_PER_S),
         "mean_dbm": dbm_from_w(float(energy / covered_ns)) if energy > 0 < covered_ns else None,
+        **explain_temperature.taken_off(kept, basis, index),
         **_response(basis, index),
     }
 

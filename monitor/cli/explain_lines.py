@@ -6,6 +6,7 @@ import math
 from collections.abc import Iterator
 from typing import Any
 
+from monitor.cli.explain_temperature import line_of_readings, words_of_channel
 from monitor.core.limits import frequency_text
 
 Document = dict[str, Any]
@@ -27,9 +28,10 @@ def lines(told: Document) -> Iterator[str]:
     yield f"\n1. Raw counts: {told['readings']} readings"
     for channel in told["channels"]:
         yield f"  {_counts(channel)}"
+    yield f"  {line_of_readings(told['temperature'])}"
     yield "\n2. Power at the detector's port, by each channel's count table, in blocks of 10 s"
     for channel in told["channels"]:
-        yield f"  {_power(channel)}"
+        yield f"  {_power(channel)}{words_of_channel(channel)}"
     yield "\n3. Response: E squared per watt over the band, V2/m2 per W"
     for channel in told["channels"]:
         yield f"  {_response(channel)}"
