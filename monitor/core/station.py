@@ -71,6 +71,7 @@ def station(
     budget = tuple(
         tuple(line for line in lines if line.kind != BAND_KIND) for lines in chain.contributions
     )
+    drifts = drifts_of(chain)
     averagings = {360, 1800, *(round(scope.averaging_s) for scope in scopes)}
     return Station(
         chain,
@@ -86,12 +87,14 @@ def station(
         coverage_factor(chain.contributions),
         budget,
         coverage_factor(budget),
-        np.array([_floor_w(table) for table in chain.tables]),
+        np.array([_floor_w(table, drift) for table, drift in zip(chain.tables, drifts)]),
         min(float(grid.min()) for grid in chain.frequencies_hz),
-        drifts_of(chain),
+        drifts,
     )
 
 
-def _floor_w(table: CountTable) -> float:
+def _floor_w(table: CountTable, drift: Drift | None) -> float:
+    """The largest power below the range, at the temperature where it is taken for the most."""
     below = (table.flags & int(Flag.BELOW_RANGE)) != 0
-    return float(np.nanmax(np.where(below, table.power_w, 0.0), initial=0.0))
+    floor_w = float(np.nanmax(np.where(below, table.power_w, 0.0), initial=0.0))
+    return floor_w if drift is None else floor_w / min(1.0, float(drift.factor.min()))

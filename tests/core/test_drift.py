@@ -77,3 +77,11 @@ def test_factors_reach_from_end_to_end(celsius: list[float], first_dc: int, n: i
     assert drift is not None
     assert (drift.first_dc, drift.factor.size) == (first_dc, n)
     assert drift_of(None) is None
+
+
+def test_a_reading_below_the_range_may_stand_for_more_where_it_reads_too_low() -> None:
+    """At -5 degrees 0.9 dB more than the table says; never less than at an unknown temperature."""
+    plain, cold = made(2), made(2, temperature=(TABLE, None))
+    assert cold.floor_w == pytest.approx(plain.floor_w * [10**0.09, 1.0])
+    high = np.array([0.0, 40.0]), np.array([0.5, 1.0])
+    assert made(1, temperature=(high,)).floor_w.tolist() == plain.floor_w[:1].tolist()
