@@ -35,10 +35,10 @@ def taken_off(kept: Kept, basis: Basis | None, index: int) -> Document:
 def line_of_readings(told: Document) -> str:
     """The first for people."""
     if told["min_c"] is None:
-        return "temperature of the instrument not told"
+        return "the instrument's temperature: not told"
     missing = told["readings_without"]
     without = f", not told with {missing} readings" if missing else ""
-    return f"temperature of the instrument {told['min_c']:.1f} to {told['max_c']:.1f} °C{without}"
+    return f"the instrument's temperature: {told['min_c']:.1f} to {told['max_c']:.1f} °C{without}"
 
 
 def words_of_channel(channel: Document) -> str:

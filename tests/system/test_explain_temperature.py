@@ -131,7 +131,7 @@ def test_what_was_taken_off_is_told(capsys: pytest.CaptureFixture[str], folder: 
     warmest, coldest = dc.max() / 10, dc.min() / 10
     assert told["temperature"] == {"min_c": coldest, "max_c": warmest, "readings_without": 0}
     out = run(capsys, asked).out
-    assert f"temperature of the instrument {coldest:.1f} to {warmest:.1f} °C\n" in out
+    assert f"the instrument's temperature: {coldest:.1f} to {warmest:.1f} °C\n" in out
     for channel in told["channels"]:
         span = channel["temperature_db_min"], channel["temperature_db_max"]
         if folder.name == "table":
