@@ -2,7 +2,7 @@
 
 One row of worked_examples.csv is one figure with its source; what says which function it is of.
 Further ones stand beside what they are about: test_budget, test_distributions, test_uncertainty,
-test_montecarlo, test_averaging_law.
+test_montecarlo, test_averaging_law, test_antenna_factor.
 """
 
 from __future__ import annotations
@@ -23,7 +23,6 @@ from monitor.core.mismatch import Mismatch
 from monitor.core.quantities import (
     PORT_OHM,
     Z0_OHM,
-    antenna_factor_db_per_m,
     db_from_power_ratio,
     e_from_s,
     power_ratio_from_db,
@@ -137,8 +136,10 @@ WHAT: dict[str, Callable[..., float]] = {
     "dbua less dbm": lambda: 120.0 + db_from_power_ratio(w_from_dbm(0.0) / PORT_OHM),
     "e of s": e_from_s,
     "e of s in dbuv/m": lambda s: 120.0 + db_from_power_ratio(e_from_s(s) ** 2),
-    "antenna factor of gain": lambda *given: float(antenna_factor_db_per_m(*given)),
-    "gain of antenna factor": lambda *given: float(antenna_factor_db_per_m(*given)),
+    "rise of two equal powers": lambda: db_from_power_ratio(
+        2.0 * w_from_dbm(0.0) / w_from_dbm(0.0)
+    ),
+    "noise taken off": lambda snr_db: -db_from_power_ratio(1.0 - power_ratio_from_db(-snr_db)),
     "power ratio": power_ratio_from_db,
     "db of percent of power": lambda percent: db_from_power_ratio(1.0 + percent / 100.0),
     "percent of field per db": lambda: 100.0 * (factors(1e-6).e_high - 1.0) / 1e-6,
