@@ -16,6 +16,7 @@ from monitor.calparts import CalibrationFile, elements_of, read
 from monitor.config import Band, Channel
 from monitor.core import calibration as cal
 from monitor.core.averaging_law import (
+    BURSTY,
     UNDECLARED,
     Averaging,
     Treatment,
@@ -87,8 +88,6 @@ def _chain(
         )
     )
     _agree(file, contributions)
-    if len({detector.resolution for detector in chosen}) > 1:
-        raise file.top.error("detector", "the detectors differ in what one count stands for")
     return cal.Chain(
         tables=tables,
         frequencies_hz=tuple(f for f, _ in responses),
@@ -98,9 +97,10 @@ def _chain(
         flags=_flags(file, done, any(assumed for _, assumed in terms)) | _missing_axes(bands, axes),
         valid_temperature_c=file.certificate.valid_temperature_c,
         due_utc_ns=file.dues("".join(channel.axis for channel in channels))[0].utc_ns,
-        resolution=chosen[0].resolution,
+        resolution=_resolution(file, chosen),
         identity=hashlib.sha256(file.body).hexdigest(),
         document=file.body,
+        bursty=np.array([bands[c.band].signal in BURSTY for c in channels]),
         noise_w=np.zeros(len(channels)),
         noise_u_w=np.zeros(len(channels)),
         least_w=np.array([table.range_w()[0] for table in tables]),
@@ -108,6 +108,13 @@ def _chain(
             power_time_s(joined(d.averaging, front), one) for d, one in zip(chosen, done)
         ),
     )
+
+
+def _resolution(file: CalibrationFile, chosen: Sequence[Detector]) -> float | None:
+    """What a count of every channel stands for."""
+    if len({detector.resolution for detector in chosen}) > 1:
+        raise file.top.error("detector", "the detectors differ in what one count stands for")
+    return chosen[0].resolution
 
 
 def detector_of(file: CalibrationFile, channel: Channel) -> Detector:

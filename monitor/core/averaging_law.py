@@ -50,6 +50,8 @@ class Averaging:
     seconds: float = 0.0
 
 
+BURSTY = ("bursts", "mixed")
+"""Signals that readings at even times may keep step with."""
 UNDECLARED = Averaging("undeclared")
 
 

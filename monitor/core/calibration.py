@@ -116,10 +116,11 @@ class Chain:
     stands for, where the front end rounds to it; None for converter counts. document: the
     calibration file as read; identity: its sha256, hex.
 
-    noise_w: f8 (c,), power at the port that the detector shows without any signal, W, which is
-    taken from averages; 0 where it is in the tables already. noise_u_w: f8 (c,), its standard
-    uncertainty. least_w: f8 (c,), lower end of the range to be trusted, W. integration_s: time
-    over which each reading is itself a mean of power; 0 for a momentary one. temperature: per
+    bursty: bool (c,), the channel may carry pulses or time-divided signals that its readings can
+    keep step with. noise_w: f8 (c,), power at the port that the detector shows without any signal,
+    W, which is taken from averages; 0 where it is in the tables already. noise_u_w: f8 (c,), its
+    standard uncertainty. least_w: f8 (c,), lower end of the range to be trusted, W. integration_s:
+    time over which each reading is itself a mean of power; 0 for a momentary one. temperature: per
     channel (celsius (t,), dB (t,)) by how much the chain reads too high, or None.
     """
 
@@ -134,6 +135,7 @@ class Chain:
     resolution: float | None
     identity: str
     document: bytes = field(repr=False)
+    bursty: NDArray[np.bool_]
     noise_w: Real
     noise_u_w: Real
     least_w: Real

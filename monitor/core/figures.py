@@ -60,7 +60,7 @@ def powers(sums: Sums, averaging_s: int, here: Station) -> Powers:
         mean - chain.noise_w,
         np.where(bare, np.nan, high - chain.noise_w),
         _unsure(mean, here),
-        of_mean(sums, chain.integration_s),
+        of_mean(sums, chain.integration_s, chain.bursty),
     )
 
 

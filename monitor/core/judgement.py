@@ -65,7 +65,7 @@ def judge(
     after = list(sides)
     for averaging_s in here.averagings_s:
         n = averaging_s * NS_PER_S // BLOCK_NS
-        ends = at_block_ends(closed, skip, n, BLOCK_NS)
+        ends = at_block_ends(closed, skip, n, BLOCK_NS, batched=here.batched)
         keep(ends.at((ends.end_ns % MINUTE_NS == 0) & ends.present), averaging_s, here, out)
         if averaging_s == here.averagings_s[0]:
             after[-2:] = _watch_instrument(ends, averaging_s, after[-2:], out)
@@ -76,7 +76,7 @@ def judge(
         ]
         if not watched:
             continue
-        inside = inside_blocks(known, inner, skip, n, BLOCK_NS)
+        inside = inside_blocks(known, inner, skip, n, BLOCK_NS, batched=here.batched)
         points = _points(inside, ends, averaging_s, here)
         crossed: set[int] = set()
         for i, watch in watched:

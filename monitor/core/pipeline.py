@@ -176,7 +176,7 @@ def live(state: State, averaging_s: int, here: Station) -> Sums:
     n, keep = averaging_s * NS_PER_S // BLOCK_NS, state.history.size
     front = state.front_ns
     if front <= state.opened.first * BLOCK_NS:
-        return at_block_ends(state.history, keep - 1, n, BLOCK_NS)
+        return at_block_ends(state.history, keep - 1, n, BLOCK_NS, batched=here.batched)
     opened = state.opened
     point = Trace(
         np.zeros(1, np.int64),
@@ -186,4 +186,5 @@ def live(state: State, averaging_s: int, here: Station) -> Sums:
         opened.max_w,
         opened.flags,
     )
-    return inside_blocks(join(state.history, opened), point, keep, n, BLOCK_NS)
+    known = join(state.history, opened)
+    return inside_blocks(known, point, keep, n, BLOCK_NS, batched=here.batched)

@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 
 from monitor.core.distributions import NORMAL_K
 from monitor.core.readings import NS_PER_S
-from monitor.core.windows import Sums
+from monitor.core.windows import BATCHES, Sums
 
 Real = NDArray[np.float64]
 
@@ -25,18 +25,37 @@ WORTH = 2.0 / 3.0
 """Degrees of freedom for each pair: pairs share blocks (from memory, for normal errors)."""
 
 
-def of_mean(sums: Sums, integration_s: float) -> Real:
+def of_mean(sums: Sums, integration_s: float, bursty: NDArray[np.bool_]) -> Real:
     """(p, c), W. integration_s: time over which each reading is a mean of power itself; readings
-    that leave no time between them miss nothing."""
+    that leave no time between them miss nothing. bursty (c,): see Chain; there what stays high or
+    low for many blocks may be the readings keeping step with the signal, and counts as doubt."""
+    spread_w = np.where(bursty, _of_batches(sums), _of_pairs(sums))
+    with np.errstate(divide="ignore", invalid="ignore"):
+        spacing_s = sums.covered_ns / NS_PER_S / np.maximum(sums.n, 1)
+        missed = np.clip(1.0 - integration_s / spacing_s, 0.0, 1.0)
+    u_w = np.where(sums.pairs < FEWEST_PAIRS, sums.max_w / math.sqrt(3.0), spread_w)
+    return np.where(sums.covered_ns > 0, u_w * np.sqrt(missed), 0.0)
+
+
+def _of_pairs(sums: Sums) -> Real:
+    """By neighbouring blocks."""
     pairs = sums.pairs.astype(np.float64)
     with np.errstate(divide="ignore", invalid="ignore"):
         variance = sums.turns_w2 / (2.0 * pairs * (pairs + 1.0))
-        u_w = np.sqrt(variance) * student_ratio(WORTH * pairs)
-        spacing_s = sums.covered_ns / NS_PER_S / np.maximum(sums.n, 1)
-        missed = np.clip(1.0 - integration_s / spacing_s, 0.0, 1.0)
-    few = sums.pairs < FEWEST_PAIRS
-    u_w = np.where(few, sums.max_w / math.sqrt(3.0), u_w)
-    return np.where(sums.covered_ns > 0, u_w * np.sqrt(missed), 0.0)
+        return np.asarray(np.sqrt(variance) * student_ratio(WORTH * pairs))
+
+
+def _of_batches(sums: Sums) -> Real:
+    """By overlapping batches of a quarter of the window (Meketon and Schmeiser 1984, from memory).
+
+    The mean of m batches of b blocks out of n = m + b - 1: variance b / (n - b) / m times the sum
+    of squares, about 1.5 n / b degrees of freedom.
+    """
+    with np.errstate(divide="ignore", invalid="ignore"):
+        m = sums.batches.astype(np.float64)
+        b = (m - 1.0) / (BATCHES - 1.0)
+        variance = sums.batch_w2 / m * b / (m - 1.0)
+        return np.asarray(np.sqrt(variance) * STUDENT_OF_BATCHES)
 
 
 def student_ratio(degrees_of_freedom: Real) -> Real:
@@ -48,3 +67,6 @@ def student_ratio(degrees_of_freedom: Real) -> Real:
     third = (3.0 * z**6 + 19.0 * z**4 + 17.0 * z**2 - 15.0) / 384.0
     ratio: Real = 1.0 + first / v + second / v**2 + third / v**3
     return ratio
+
+
+STUDENT_OF_BATCHES = float(student_ratio(np.array(1.5 * BATCHES)))

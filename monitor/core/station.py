@@ -50,6 +50,11 @@ class Station:
     drifts: tuple[Drift | None, ...]
 
     @property
+    def batched(self) -> bool:
+        """Whether a channel carries bursts: what sampling misses of them may last for blocks."""
+        return bool(np.any(self.chain.bursty))
+
+    @property
     def channels(self) -> int:
         """Number of channels."""
         return len(self.chain.tables)

@@ -16,6 +16,10 @@ I = NDArray[np.int64]  # noqa: E741
 Array = NDArray[Any]
 
 
+BATCHES = 4
+"""A window is looked at in overlapping quarters, where a signal may stay high or low for long."""
+
+
 @dataclass(frozen=True, slots=True)
 class Sums:
     """What windows ending at end_ns (p,) hold; the others (p, c).
@@ -23,7 +27,9 @@ class Sums:
     energy_low, energy_high: bounds where the window cuts its oldest block, else equal to energy.
     covered_ns: valid time, the least it can be; mean_ns: valid time that energy_w_ns is for.
     present: something was read in the window, valid or not. turns_w2: sum of the squared
-    differences of neighbouring blocks' means, W2, over pairs of them; n: readings.
+    differences of neighbouring blocks' means, W2, over pairs of them; n: readings. batch_w2: sum
+    of the squared deviations of overlapping batches' means, W2, over batches of them; 0 batches
+    where nobody asked.
     """
 
     end_ns: I
@@ -39,6 +45,8 @@ class Sums:
     turns_w2: F
     pairs: I
     n: I
+    batch_w2: F
+    batches: I
 
     def at(self, index: Array) -> Sums:
         """The windows of index (positions or a mask)."""
@@ -86,15 +94,39 @@ def _turns(blocks: Blocks) -> tuple[F, I]:
     return np.where(counts != 0, turn, 0.0), counts
 
 
-def at_block_ends(blocks: Blocks, skip: int, n: int, block_ns: int) -> Sums:
+def _batches(blocks: Blocks, n: int, asked: bool) -> tuple[F, I]:
+    """Deviations of batches of n // BATCHES blocks from the mean of the n blocks they lie in.
+
+    The sum of their squares, W2, and how many there are, for the window that ends with each row.
+    """
+    size, shape = n // BATCHES, blocks.energy_w_ns.shape
+    if not asked or size < 1:
+        return np.zeros(shape), np.zeros(shape, np.int64)
+    energy, covered = blocks.energy_w_ns, blocks.covered_ns
+    part_ns, all_ns = last_n(covered, size, np.add), last_n(covered, n, np.add)
+    whole = last_n(energy, n, np.add) / np.maximum(all_ns, 1)
+    part = last_n(energy, size, np.add) / np.maximum(part_ns, 1)
+    here = (part_ns > 0).astype(np.int64)
+    steps = n - size + 1
+    count = last_n(here, steps, np.add)
+    first = last_n(part * here, steps, np.add)
+    second = last_n(part * part * here, steps, np.add)
+    return np.maximum(second - 2.0 * whole * first + count * whole * whole, 0.0), count
+
+
+def at_block_ends(
+    blocks: Blocks, skip: int, n: int, block_ns: int, *, batched: bool = False
+) -> Sums:
     """Windows of n blocks that end with each block from row skip on.
 
-    skip rows of history come first: at least n - 1, or everything since the start.
+    skip rows of history come first: at least n - 1, or everything since the start. batched: look at
+    batches of blocks, too.
     """
     energy = last_n(blocks.energy_w_ns, n, np.add)[skip:]
     covered = last_n(blocks.covered_ns, n, np.add)[skip:]
     rows = np.arange(skip, blocks.size)
     turn, counts = _turns(blocks)
+    deviations, batches = _batches(blocks, n, batched)
     return Sums(
         (blocks.first + rows + 1) * block_ns,
         energy,
@@ -109,10 +141,14 @@ def at_block_ends(blocks: Blocks, skip: int, n: int, block_ns: int) -> Sums:
         last_n(turn, n - 1, np.add)[skip:],
         last_n(counts, n - 1, np.add)[skip:],
         last_n(blocks.n, n, np.add)[skip:],
+        deviations[skip:],
+        batches[skip:],
     )
 
 
-def inside_blocks(blocks: Blocks, trace: Trace, skip: int, n: int, block_ns: int) -> Sums:
+def inside_blocks(
+    blocks: Blocks, trace: Trace, skip: int, n: int, block_ns: int, *, batched: bool = False
+) -> Sums:
     """Windows that end inside a block, at each point of trace: closed blocks plus the open one.
 
     trace.row counts from row skip; n rows of history come first. The oldest block is cut, and where
@@ -133,6 +169,7 @@ def inside_blocks(blocks: Blocks, trace: Trace, skip: int, n: int, block_ns: int
     high = np.maximum(high, old_max)
     bits = last_n(blocks.flags, n - 1, np.bitwise_or)[before] | trace.flags
     turn, counts = _turns(blocks)
+    deviations, batches = _batches(blocks, n - 1, batched)
     gone = np.maximum(old_energy - (block_ns - left_ns) * old_max, 0.0)
     return Sums(
         trace.end_ns,
@@ -148,4 +185,6 @@ def inside_blocks(blocks: Blocks, trace: Trace, skip: int, n: int, block_ns: int
         last_n(turn, max(n - 2, 0), np.add)[before],
         last_n(counts, max(n - 2, 0), np.add)[before],
         last_n(blocks.n, n - 1, np.add)[before],
+        deviations[before],
+        batches[before],
     )

@@ -35,6 +35,7 @@ def chain(channels: int = 3, e2_per_w: float = 1e5) -> Chain:
         identity="0" * 64,
         document=b"",
         resolution=0.001,
+        bursty=np.zeros(channels, np.bool_),
         noise_w=np.zeros(channels),
         noise_u_w=np.zeros(channels),
         least_w=np.full(channels, 1e-3 * 10.0 ** ((FIRST + 1000) / 10_000)),
