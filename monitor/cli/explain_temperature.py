@@ -25,10 +25,10 @@ def of_readings(kept: Kept) -> Document:
 def taken_off(kept: Kept, basis: Basis | None, index: int) -> Document:
     """By how much one channel's readings were too high, dB; None where nothing was taken off."""
     known = _known(kept)
-    drift = basis.here.drifts[index] if basis and index < basis.here.channels else None
-    if drift is None or not known.size:
+    correction = basis.here.corrections[index] if basis and index < basis.here.channels else None
+    if correction is None or not known.size:
         return {"temperature_db_min": None, "temperature_db_max": None}
-    db = 10.0 * np.log10(drift.factors(known))
+    db = 10.0 * np.log10(correction.factors(known))
     return {"temperature_db_min": float(db.min()), "temperature_db_max": float(db.max())}
 
 

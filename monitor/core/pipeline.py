@@ -102,10 +102,13 @@ def convert(batch: Batch, here: Station) -> tuple[F, I]:
     """
     power = np.empty(batch.counts.shape)
     bits = np.empty(batch.counts.shape, np.int64)
-    for channel, (table, drift) in enumerate(zip(here.chain.tables, here.drifts)):
+    for channel, table in enumerate(here.chain.tables):
         power[:, channel], bits[:, channel] = table.convert(batch.counts[:, channel])
-        if drift is not None:
-            power[:, channel] /= drift.factors(batch.temperature_dc)
+    for correction in {one for one in here.corrections if one is not None}:
+        factors = correction.factors(batch.temperature_dc)
+        for channel, own in enumerate(here.corrections):
+            if own is correction:
+                power[:, channel] /= factors
     return power, bits | batch.flags[:, None] | here.chain.flags
 
 

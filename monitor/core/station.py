@@ -10,10 +10,10 @@ from numpy.typing import NDArray
 from monitor.core.alarms import Watch
 from monitor.core.budget import Contribution
 from monitor.core.calibration import BAND_KIND, Chain, CountTable
-from monitor.core.drift import Drift, drifts_of
 from monitor.core.flags import Flag
 from monitor.core.limits import Scope
 from monitor.core.readings import NS_PER_S
+from monitor.core.temperature import Correction, corrections_of
 from monitor.core.uncertainty import coverage_factor
 
 F = NDArray[np.float64]
@@ -28,8 +28,8 @@ class Station:
     these two span; k_ratio: its coverage factor. outside_excluded: signals outside the bands are
     kept out by filter or shown by survey to be none. averagings_s:
     every averaging time kept, whole multiples of a block. floor_w: f8 (c,), what a reading below
-    the range counts as. lowest_hz: lower end of what the channels receive. drifts: per channel what
-    temperature does to its power, or None.
+    the range counts as. lowest_hz: lower end of what the channels receive. corrections: per channel
+    what temperature does to its power, or None.
     """
 
     chain: Chain
@@ -47,7 +47,7 @@ class Station:
     k_ratio: float
     floor_w: F
     lowest_hz: float
-    drifts: tuple[Drift | None, ...]
+    corrections: tuple[Correction | None, ...]
 
     @property
     def batched(self) -> bool:
@@ -76,7 +76,7 @@ def station(
     budget = tuple(
         tuple(line for line in lines if line.kind != BAND_KIND) for lines in chain.contributions
     )
-    drifts = drifts_of(chain)
+    corrections = corrections_of(chain)
     averagings = {360, 1800, *(round(scope.averaging_s) for scope in scopes)}
     return Station(
         chain,
@@ -92,14 +92,16 @@ def station(
         coverage_factor(chain.contributions),
         budget,
         coverage_factor(budget),
-        np.array([_floor_w(table, drift) for table, drift in zip(chain.tables, drifts)]),
+        np.array(
+            [_floor_w(table, correction) for table, correction in zip(chain.tables, corrections)]
+        ),
         min(float(grid.min()) for grid in chain.frequencies_hz),
-        drifts,
+        corrections,
     )
 
 
-def _floor_w(table: CountTable, drift: Drift | None) -> float:
+def _floor_w(table: CountTable, correction: Correction | None) -> float:
     """The largest power below the range, at the temperature where it is taken for the most."""
     below = (table.flags & int(Flag.BELOW_RANGE)) != 0
     floor_w = float(np.nanmax(np.where(below, table.power_w, 0.0), initial=0.0))
-    return floor_w if drift is None else floor_w / min(1.0, float(drift.factor.min()))
+    return floor_w if correction is None else floor_w / min(1.0, float(correction.factor.min()))

@@ -7,9 +7,9 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from monitor.core.drift import drift_of
 from monitor.core.pipeline import convert
 from monitor.core.readings import MISSING, Batch
+from monitor.core.temperature import correction_of
 from tests.core.stations import made
 
 TABLE = np.array([-5.0, 20.0, 45.05]), np.array([-0.9, 0.0, 1.3])
@@ -73,10 +73,10 @@ def test_any_division_gives_the_same_bits(seed: int, pieces: list[int]) -> None:
     [([0.0, 1.0], 0, 11), ([-0.01, 0.01], -1, 3), ([-1e9, 1e9], -9_999, 19_999)],
 )
 def test_factors_reach_from_end_to_end(celsius: list[float], first_dc: int, n: int) -> None:
-    drift = drift_of((np.array(celsius), np.array([0.0, 3.0])))
-    assert drift is not None
-    assert (drift.first_dc, drift.factor.size) == (first_dc, n)
-    assert drift_of(None) is None
+    correction = correction_of((np.array(celsius), np.array([0.0, 3.0])))
+    assert correction is not None
+    assert (correction.first_dc, correction.factor.size) == (first_dc, n)
+    assert correction_of(None) is None
 
 
 def test_a_reading_below_the_range_may_stand_for_more_where_it_reads_too_low() -> None:

@@ -19,7 +19,7 @@ DIGITS = 13
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class Drift:
+class Correction:
     """By what the power of one channel is to be divided, for every temperature that is told.
 
     factor: f8 (n,), of first_dc + i tenths of a degree Celsius; its ends hold beyond. A table,
@@ -33,10 +33,12 @@ class Drift:
         """Factors (n,) at temperatures (n,); 1 where the temperature is MISSING."""
         last_dc = self.first_dc + self.factor.size - 1
         at = np.clip(temperature_dc, self.first_dc, last_dc) - self.first_dc
-        return np.where(temperature_dc == MISSING, 1.0, self.factor[at])
+        found = self.factor[at]
+        found[temperature_dc == MISSING] = 1.0
+        return found
 
 
-def drift_of(table: tuple[Real, Real] | None) -> Drift | None:
+def correction_of(table: tuple[Real, Real] | None) -> Correction | None:
     """The factors of (celsius (t,), dB (t,)) by how much the chain reads too high."""
     if table is None:
         return None
@@ -44,13 +46,15 @@ def drift_of(table: tuple[Real, Real] | None) -> Drift | None:
     last = max(first, _bounded(math.ceil(float(table[0][-1]) * 10)))
     db = temperature_db(table, np.arange(first, last + 1) / 10)
     factors = [10.0 ** (x / 10) for x in db.tolist()]
-    return Drift(first, np.array([float(f"{factor:.{DIGITS}g}") for factor in factors]))
+    return Correction(first, np.array([float(f"{factor:.{DIGITS}g}") for factor in factors]))
 
 
-def drifts_of(chain: Chain) -> tuple[Drift | None, ...]:
+def corrections_of(chain: Chain) -> tuple[Correction | None, ...]:
     """One for each channel; none of a chain that has no temperature tables at all."""
     tables = chain.temperature or (None,) * len(chain.tables)
-    return tuple(drift_of(table) for table in tables)
+    # Channels of one detector share its table, and then what is looked up in it.
+    made = {id(table): correction_of(table) for table in tables}
+    return tuple(made[id(table)] for table in tables)
 
 
 def _bounded(temperature_dc: int) -> int:
