@@ -37,8 +37,10 @@ def comparison(a: View, b: View) -> Document:
         "largest_response_db": max((row["db"] for row in response), key=_size),
         "drift": drift_between(a.file, b),
         "detectors": [
-            {"axis": axis, **_detector(before, after)}
-            for axis, before, after in zip(a.axes, a.chain.tables, b.chain.tables)
+            {"axis": axis, **_detector(before, after, float(least_w))}
+            for axis, before, after, least_w in zip(
+                a.axes, a.chain.tables, b.chain.tables, np.maximum(a.chain.least_w, b.chain.least_w)
+            )
         ],
         "uncertainty": {"a": uncertainty(a.chain, shares), "b": uncertainty(b.chain, shares)},
     }
@@ -75,13 +77,14 @@ def _response(a: View, b: View) -> Iterator[dict[str, object]]:
             yield {"axis": axis, "frequency_hz": float(hz), "db": float(db)}
 
 
-def _detector(before: CountTable, after: CountTable) -> Document:
+def _detector(before: CountTable, after: CountTable, least_w: float) -> Document:
     """The largest change of what the same count reads, where both trust it; None where none is."""
     first = max(before.first_count, after.first_count)
     end = min(t.first_count + t.power_w.size for t in (before, after))
     counts = np.arange(first, max(first, end), dtype=np.int32)
     (p_before, f_before), (p_after, f_after) = before.convert(counts), after.convert(counts)
-    good = (f_before == 0) & (f_after == 0)
+    strong = (p_before >= least_w) & (p_after >= least_w)
+    good = (f_before == 0) & (f_after == 0) & strong
     if not good.any():
         return {"largest_db": None, "at_dbm": None}
     db = 10.0 * np.log10(p_after[good] / p_before[good])
@@ -119,8 +122,8 @@ def _tables(a: Mapping[str, Table], b: Mapping[str, Table]) -> Iterator[Document
         if name not in a or name not in b:
             yield from _differ(name, _there(a, name), _there(b, name))
             continue
-        for key in a[name]:
-            yield from _differ(f"{name}: {key}", *_rows_apart(a[name][key], b[name][key]))
+        for key in dict.fromkeys([*a[name], *b[name]]):
+            yield from _differ(f"{name}: {key}", *_rows_apart(a[name].get(key), b[name].get(key)))
 
 
 def _rows_apart(a: object, b: object) -> tuple[object, object]:
@@ -137,14 +140,24 @@ def _there(tables: Mapping[str, Table], name: str) -> str | None:
 def _detectors(file: CalibrationFile) -> dict[str, Table]:
     return {
         f"detector {detector.axis}".strip(): {
-            "kind": detector.kind,
-            "averages": detector.averages,
-            "averaging_s": detector.averaging_s or None,
-            "resolution": detector.resolution,
-            "count table": detector.table.identity[:12],
+            key: _rows(value) for key, value in detector.values.items()
         }
         for detector in file.detectors
     }
+
+
+def _rows(value: object) -> object:
+    """Rows and tables as texts, so that only those that differ are shown."""
+    return tuple(_words(item) for item in value) if isinstance(value, list) else value
+
+
+def _words(value: object) -> str:
+    """As the file has it, without brackets."""
+    if isinstance(value, list):
+        return " ".join(_words(item) for item in value)
+    if isinstance(value, Mapping):
+        return ", ".join(f"{key} {_words(item)}" for key, item in value.items())
+    return f"{value:.9g}" if isinstance(value, float) else str(value)
 
 
 def _elements(file: CalibrationFile) -> dict[str, Table]:

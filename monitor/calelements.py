@@ -14,9 +14,12 @@ from monitor.core.keys import Table
 from monitor.core.quantities import antenna_factor_db_per_m
 from monitor.tomlfile import date, rows
 
-ELEMENTS = ("antenna", "cable", "attenuator", "filter", "preamplifier")
+PICKUPS = ("antenna", "probe")
+"""Elements that turn power at a port into field strength; each axis has one."""
+ELEMENTS = (*PICKUPS, "cable", "attenuator", "filter", "preamplifier")
+QUANTITIES = {"probe": "correction", "preamplifier": "gain"}
 ANTENNA_QUANTITIES = ("antenna_factor", "gain")
-UNITS = {"antenna_factor": "dB/m", "gain": "dB", "loss": "dB"}
+UNITS = {"antenna_factor": "dB/m", "gain": "dB", "loss": "dB", "correction": "dB"}
 EXAMPLE_TEXTS = ("name of the laboratory", "number of the certificate", "serial number")
 """What the examples say where a certificate is to be named: nothing stands behind it."""
 
@@ -25,10 +28,11 @@ EXAMPLE_TEXTS = ("name of the laboratory", "number of the certificate", "serial 
 class Element:
     """One part between field and detector; axis '' serves every axis.
 
-    quantity: what its table holds, antenna_factor, gain (of an antenna or a preamplifier) or loss.
-    given_db: (n,), that table. curve: what it takes from a level, an antenna factor (dB/m) or a
-    loss (dB), below zero where it amplifies. laboratory '', date and due None where not given.
-    line: the certificate's uncertainty, where it is given.
+    quantity: what its table holds, antenna_factor, gain (of an antenna or a preamplifier), loss, or
+    correction (of a probe, true less indicated). given_db: (n,), that table. curve: what it takes
+    from a level, an antenna factor (dB/m) or a loss (dB), below zero where it amplifies.
+    laboratory '', date and due None where not given. line: the certificate's
+    uncertainty, where it is given.
     """
 
     where: Table
@@ -68,7 +72,7 @@ def read_element(table: Table) -> Element:
     kind = table.text("type", choices=ELEMENTS)
     serial, certificate = table.text("serial").strip(), table.text("certificate").strip()
     axis = table.text("axis", "", AXES)
-    quantity = {"preamplifier": "gain"}.get(kind, "loss")
+    quantity = QUANTITIES.get(kind, "loss")
     if kind == "antenna":
         quantity = table.text("quantity", ANTENNA_QUANTITIES[0], ANTENNA_QUANTITIES)
     values = _table(table)
@@ -96,7 +100,7 @@ def _table(table: Table) -> Real:
 def _curve(table: Table, kind: str, quantity: str, values: Real) -> FrequencyTable:
     """What it takes from a level, over frequency."""
     f, db = values[:, 0], values[:, 1]
-    if kind != "antenna" and (db < 0).any():
+    if kind not in PICKUPS and (db < 0).any():
         raise table.error("table", f"a {quantity} of {db.min():g} dB; a {quantity} is zero or more")
     if kind == "antenna" and quantity == "gain":
         # both straight over log f: converted row by row it is the same between the rows

@@ -11,7 +11,7 @@ from typing import Protocol, TypeVar
 import numpy as np
 
 from monitor import calterms
-from monitor.calelements import Element
+from monitor.calelements import PICKUPS, Element
 from monitor.calparts import CalibrationFile, elements_of, read
 from monitor.config import Band, Channel
 from monitor.core import calibration as cal
@@ -20,7 +20,6 @@ from monitor.core.averaging_law import (
     UNDECLARED,
     Averaging,
     Treatment,
-    corrected,
     joined,
     power_time_s,
 )
@@ -28,7 +27,7 @@ from monitor.core.budget import Contribution, independent
 from monitor.core.distributions import Real
 from monitor.core.errors import CalibrationError, ConfigError
 from monitor.core.flags import Flag
-from monitor.detectorfile import Detector
+from monitor.detectorfile import Detector, Fit
 from monitor.tomlfile import TopTable
 
 
@@ -80,16 +79,14 @@ def _chain(
     axes = Counter(channel.band for channel in channels)
     terms = [_terms(file, c, bands[c.band], axes[c.band]) for c in channels]
     done = [_treated(d, bands[c.band], front) for d, c in zip(chosen, channels)]
-    tables = tuple(corrected(d.table, one.correction_db) for d, one in zip(chosen, done))
+    fits = [fit_of(file, c, bands[c.band]).treated(one) for c, one in zip(channels, done)]
     contributions = tuple(
-        written + assumed + cal.spread(k, channel.band) + detector.rounding + one.lines
-        for channel, detector, (written, assumed), (_, k), one in zip(
-            channels, chosen, terms, responses, done
-        )
+        written + assumed + cal.spread(k, channel.band) + fit.contributions
+        for channel, fit, (written, assumed), (_, k) in zip(channels, fits, terms, responses)
     )
     _agree(file, contributions)
     return cal.Chain(
-        tables=tables,
+        tables=tuple(fit.table for fit in fits),
         frequencies_hz=tuple(f for f, _ in responses),
         k=tuple(k for _, k in responses),
         k_mid=np.array([cal.middle(k) for _, k in responses]),
@@ -101,12 +98,13 @@ def _chain(
         identity=hashlib.sha256(file.body).hexdigest(),
         document=file.body,
         bursty=np.array([bands[c.band].signal in BURSTY for c in channels]),
-        noise_w=np.zeros(len(channels)),
-        noise_u_w=np.zeros(len(channels)),
-        least_w=np.array([table.range_w()[0] for table in tables]),
+        noise_w=np.array([fit.noise.w for fit in fits]),
+        noise_u_w=np.array([fit.noise.u_w for fit in fits]),
+        least_w=np.array([fit.least_w for fit in fits]),
         integration_s=min(
             power_time_s(joined(d.averaging, front), one) for d, one in zip(chosen, done)
         ),
+        temperature=tuple(detector.temperature for detector in chosen),
     )
 
 
@@ -122,22 +120,46 @@ def detector_of(file: CalibrationFile, channel: Channel) -> Detector:
     return _one(file.top, "detector", file.detectors, channel, "detector")
 
 
+def fit_of(file: CalibrationFile, channel: Channel, band: Band) -> Fit:
+    """The channel's detector in its band; ConfigError where it has no such gain or frequencies."""
+    detector = detector_of(file, channel)
+    return detector.fit(channel.gain, band.name, band.low_hz, band.high_hz)
+
+
 def antenna_of(file: CalibrationFile, channel: Channel) -> Element:
-    """The antenna of the channel's axis; ConfigError unless there is one, and one only."""
-    antennas = [element for element in file.elements if element.kind == "antenna"]
-    return _one(file.top, "element", antennas, channel, "antenna")
+    """The antenna of the channel's axis, or the correction of a probe calibrated as a whole.
+
+    ConfigError unless there is one, and one only, and it goes with the detector.
+    """
+    word = "probe" if detector_of(file, channel).kind == "probe" else "antenna"
+    pickups = [element for element in file.elements if element.kind in PICKUPS]
+    found = _one(file.top, "element", pickups, channel, word)
+    if found.kind != word:
+        raise file.top.error(
+            "element",
+            f"channel {channel.name!r} needs one {word}, not an element of type {found.kind}",
+        )
+    for other in elements_of(file, channel.axis):
+        if word == "probe" and other is not found:
+            raise other.where.error(
+                "type", f"a probe is calibrated as a whole; take {other.name} out"
+            )
+    return found
 
 
 def response(file: CalibrationFile, channel: Channel, band: Band) -> tuple[Real, Real]:
     """Frequencies (m,) over the band and E squared per watt (m,) of one channel."""
     antenna, mine = antenna_of(file, channel), elements_of(file, channel.axis)
-    frequencies_hz = cal.band_grid(band.low_hz, band.high_hz, [e.curve for e in mine])
+    offset = fit_of(file, channel, band).offset
+    tables = [*(e.curve for e in mine), *([] if offset is None else [offset])]
+    frequencies_hz = cal.band_grid(band.low_hz, band.high_hz, tables)
     for element in mine:
         try:
             element.curve.at(frequencies_hz)
         except CalibrationError as error:
             raise element.where.error("table", f"{element.name} {error}") from None
-    losses = [element.curve for element in mine if element.kind != "antenna"]
+    losses = [element.curve for element in mine if element.kind not in PICKUPS]
+    losses += [] if offset is None else [offset]
     return frequencies_hz, cal.e2_per_w(frequencies_hz, antenna.curve, losses)
 
 

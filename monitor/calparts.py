@@ -9,7 +9,7 @@ from pathlib import Path
 
 from monitor import tomlfile
 from monitor.asfound import AsFound, read_as_found
-from monitor.calelements import EXAMPLE_TEXTS, Element, read_element
+from monitor.calelements import EXAMPLE_TEXTS, PICKUPS, Element, read_element
 from monitor.callines import AXES, Line, read_line
 from monitor.core.errors import CalibrationError, ConfigError
 from monitor.core.keys import Table
@@ -106,7 +106,7 @@ def parse(document: bytes) -> CalibrationFile:
 
 def _file(top: TopTable, body: bytes) -> CalibrationFile:
     certificate = _certificate(top.table("calibration"))
-    detectors = _detectors(top)
+    detectors = _detectors(top, certificate.valid_temperature_c)
     elements = _joined([read_element(table) for table in top.tables("element")])
     contributions = tuple(read_line(table) for table in top.tables("contribution", []))
     found = top.any("as_found", None)
@@ -167,11 +167,11 @@ def _certificate(table: Table) -> Certificate:
     )
 
 
-def _detectors(top: TopTable) -> tuple[Detector, ...]:
+def _detectors(top: TopTable, valid_temperature_c: tuple[float, float]) -> tuple[Detector, ...]:
     """One [detector] for every axis, or one [[detector]] per axis."""
     several = isinstance(top.any("detector"), list)
     tables = top.tables("detector") if several else [top.table("detector")]
-    return tuple(read_detector(table) for table in tables)
+    return tuple(read_detector(table, valid_temperature_c) for table in tables)
 
 
 def elements_of(file: CalibrationFile, axis: str) -> list[Element]:
@@ -184,7 +184,7 @@ def axes_of(file: CalibrationFile) -> str:
     served = [
         axis
         for axis in AXES
-        if any(e.kind == "antenna" for e in elements_of(file, axis))
+        if any(e.kind in PICKUPS for e in elements_of(file, axis))
         and any(detector.axis in ("", axis) for detector in file.detectors)
     ]
     return "".join(served or AXES)

@@ -5,6 +5,7 @@ Keys carry their units. Degrees of freedom without end are math.inf, null in JSO
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from dataclasses import asdict, dataclass
 
@@ -22,7 +23,7 @@ from monitor.core.errors import CalibrationError, ConfigError
 from monitor.core.flags import words
 from monitor.core.limits import frequency_text
 from monitor.core.montecarlo import errors_db, spread
-from monitor.core.quantities import PORT_OHM, dbm_from_w
+from monitor.core.quantities import PORT_OHM
 from monitor.core.uncertainty import equal_shares, expanded_db
 
 Document = dict[str, object]
@@ -38,8 +39,15 @@ class View:
     chain: Chain
 
 
-def view(file: CalibrationFile, axes: str | None, band_hz: tuple[float, float] | None) -> View:
+def view(
+    file: CalibrationFile,
+    axes: str | None,
+    band_hz: tuple[float, float] | None,
+    gain: str = "",
+) -> View:
     """The chain for the axes (default: all that it serves) and the band (default: all of it).
+
+    gain: a receiver's gain step; '' where there is one only.
 
     CalibrationError where the file has no chain for them.
     """
@@ -47,7 +55,7 @@ def view(file: CalibrationFile, axes: str | None, band_hz: tuple[float, float] |
     low_hz, high_hz = band_hz or span_hz(file, axes)
     text = f"{frequency_text(low_hz)} to {frequency_text(high_hz)}"
     band = Band(text, low_hz, high_hz)
-    channels = [Channel(axis, axis, band.name) for axis in axes]
+    channels = [Channel(axis, axis, band.name, gain) for axis in axes]
     return View(file, axes, band, chain(file, channels, {band.name: band}))
 
 
@@ -57,9 +65,10 @@ def span_hz(file: CalibrationFile, axes: str) -> tuple[float, float]:
     CalibrationError where there are none.
     """
     tables = [element.curve.frequencies_hz for a in axes for element in elements_of(file, a)]
-    low = max((float(f[0]) for f in tables), default=0.0)
-    high = min((float(f[-1]) for f in tables), default=0.0)
-    if not low < high:
+    spans = [(float(f[0]), float(f[-1])) for f in tables]
+    spans += [d.source.span_hz for d in file.detectors if d.axis in ("", *axes)]
+    low, high = max(s[0] for s in spans), min(s[1] for s in spans)
+    if not low < high < math.inf:
         raise CalibrationError(
             f"{file.top.where}: element: no band lies in all tables; calibrate further"
         )
@@ -113,14 +122,13 @@ def document(shown: View, shares: Real, now_utc_ns: int) -> Document:
 def _detectors(shown: View) -> list[Document]:
     out: list[Document] = []
     for detector in shown.file.detectors:
-        range_dbm = [dbm_from_w(power_w) for power_w in detector.table.range_w()]
         out.append(
             {
                 "axis": detector.axis or None,
                 "kind": detector.kind,
                 "averages": detector.averages,
                 "averaging_s": detector.averaging_s or None,
-                "range_dbm": range_dbm,
+                "range_dbm": list(detector.source.range_dbm),
                 "resolution": detector.resolution,
             }
         )

@@ -194,8 +194,9 @@ def _channels(site: Site, chain: Chain) -> Iterator[Finding]:
         )
         if band.low_hz < E_ALONE_FROM_HZ:
             yield Finding("band", f"{name}: no verdict from E alone below 30 MHz", ok=False)
-    for channel, table, k_mid in zip(site.channels, chain.tables, chain.k_mid):
-        low_w, high_w = table.range_w()
+    of_each = zip(site.channels, chain.tables, chain.k_mid, chain.least_w)
+    for channel, table, k_mid, least_w in of_each:
+        low_w, high_w = float(least_w), table.range_w()[1]
         low, high = ((p_w * float(k_mid)) ** 0.5 for p_w in (low_w, high_w))
         levels = f"{dbm_from_w(low_w):.1f} to {dbm_from_w(high_w):.1f} dBm"
         yield Finding("channel", f"{channel.name}: {levels}, {low:.3g} to {high:.3g} V/m")

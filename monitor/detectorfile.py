@@ -2,41 +2,83 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+import hashlib
+import json
+from collections.abc import Mapping
+from dataclasses import dataclass, replace
+from typing import Any
+
+import numpy as np
 
 from monitor.core import detector as det
 from monitor.core.averaging_law import KINDS as AVERAGES
-from monitor.core.averaging_law import Averaging, Treatment, joined, treatment
+from monitor.core.averaging_law import Averaging, Treatment, corrected, joined, treatment
 from monitor.core.budget import Contribution
-from monitor.core.calibration import CountTable
+from monitor.core.calibration import CountTable, FrequencyTable
+from monitor.core.distributions import Real
 from monitor.core.errors import CalibrationError
 from monitor.core.keys import Table
-from monitor.core.law import CurveLaw, Law, ScaleLaw
-from monitor.tomlfile import pair, rows
+from monitor.core.law import CurveLaw, Law
+from monitor.core.quantities import power_ratio_from_db, w_from_dbm
+from monitor.detectorkeys import read_source
+from monitor.detectorkinds import Noise, Source
+from monitor.tomlfile import rows
 
-MAX_BITS = 18
-SCALE_MARGIN_DB = 20.0
-"""How far beyond its range a plain scale still gives (flagged) readings by default."""
+KINDS = ("log", "rms", "scale", "probe")
 
 
-@dataclass(frozen=True, slots=True)
-class Detector:
-    """A detector's count table, and the law that it was made from.
+@dataclass(frozen=True, slots=True, eq=False)
+class Fit:
+    """A detector in one band, at one gain step.
 
-    resolution: what a count stands for; None for converter counts. serial: what its
-    board calls itself (the name in its banner), '' where the file does not say. averaging_s: over
-    how long it averages, 0 where unknown.
+    offset: dB over frequency that the table leaves out, as a loss: the table holds for the middle
+    of the band; None where it is the same everywhere. contributions: lines of the budget. added_db:
+    what table and noise were corrected by.
     """
 
+    law: Law
+    table: CountTable
+    contributions: tuple[Contribution, ...]
+    offset: FrequencyTable | None
+    noise: Noise
+    added_db: float = 0.0
+
+    @property
+    def least_w(self) -> float:
+        """Lower end of the range to be trusted, W."""
+        return w_from_dbm(self.law.range_dbm[0] + self.added_db)
+
+    def treated(self, done: Treatment) -> Fit:
+        """Corrected for averaged logs: the noise, too, for it was found on uncorrected figures."""
+        ratio = power_ratio_from_db(done.correction_db)
+        return replace(
+            self,
+            table=corrected(self.table, done.correction_db),
+            contributions=self.contributions + done.lines,
+            noise=Noise(self.noise.w * ratio, self.noise.u_w * ratio),
+            added_db=done.correction_db,
+        )
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Detector:
+    """What a [detector] table says, before it is known for which band.
+
+    averaging_s: over how long each reading is a mean; 0 where it is none, or where that is unknown.
+    temperature: celsius (t,) and dB (t,) by which readings are too high. values: the table as the
+    file has it. serial: what its board calls itself (the name in its banner), '' where the file
+    does not say.
+    """
+
+    where: Table
     axis: str
     kind: str
     averages: str
-    table: CountTable
-    resolution: float | None
-    rounding: tuple[Contribution, ...]
-    law: Law
+    averaging_s: float
+    source: Source
+    temperature: tuple[Real, Real] | None
+    values: Mapping[str, Any]
     serial: str = ""
-    averaging_s: float = 0.0
 
     @property
     def averaging(self) -> Averaging:
@@ -46,83 +88,74 @@ class Detector:
     def treatment(self, signal: str, bandwidth_hz: float, front: Averaging) -> Treatment:
         """What holds of its readings of such a signal behind that front end.
 
-        Volts of a true-rms detector follow the root of power: no correction is known for their
-        logs.
+        Figures of a true-rms detector or of a probe follow the root of power: no correction is
+        known for their logs.
         """
         holds = joined(self.averaging, front)
-        known = "undeclared" if self.kind == "rms" and signal == "noise" else signal
+        known = "undeclared" if self.kind in ("rms", "probe") and signal == "noise" else signal
         return treatment(holds.kind, holds.seconds, known, bandwidth_hz)
 
+    @property
+    def resolution(self) -> float | None:
+        """What a count stands for; None for converter counts."""
+        return self.source.resolution
 
-def read_detector(table: Table) -> Detector:
+    @property
+    def identity(self) -> str:
+        """sha256 of what the table says, hex."""
+        text = json.dumps(self.values, sort_keys=True, default=str)
+        return hashlib.sha256(text.encode()).hexdigest()
+
+    def fit(self, gain: str, band: str, low_hz: float, high_hz: float) -> Fit:
+        """The detector at a gain step ('': the only one) from low_hz to high_hz (or at one).
+
+        band: its name, for the budget. ConfigError for a gain step or frequencies that it lacks.
+        """
+        law, offset, noise, key = self.source.fit(self.where, gain, low_hz, high_hz)
+        try:
+            table = law.table()
+            lines = det.rounding(law.half_step_db())
+        except CalibrationError as error:
+            raise self.where.error(key, str(error)) from None
+        half_db = law.half_spread_db() if isinstance(law, CurveLaw) else 0.0
+        if half_db > 0.0:
+            lines += (
+                Contribution(
+                    f"detector curve over band {band}", half_db, "rectangular", shared=True,
+                    kind="detector",
+                ),
+            )  # fmt: skip
+        return Fit(law, table, lines, offset, noise)
+
+
+def read_detector(table: Table, valid_temperature_c: tuple[float, float]) -> Detector:
     """Read one [detector] table; ConfigError or CalibrationError of one line."""
     axis = table.text("axis", "", ("x", "y", "z"))
-    kind = table.text("kind", choices=("log", "rms", "scale"))
+    kind = table.text("kind", choices=KINDS)
     averages = table.text("averages", choices=AVERAGES)
     averaging_s = table.number("averaging_s", 0.0, 0.0, 3600.0)
     if averaging_s and averages == "none":
         raise table.error("averaging_s", "only where averages is log or power; take it out")
+    temperature = _temperature(table, valid_temperature_c)
     serial = table.text("serial", "").strip()
-    read = _scale if kind == "scale" else _curve
-    counts, resolution, half_db, law = read(table, kind)
+    source = read_source(table, kind)
+    values = table.values
     table.finish()
-    half = det.rounding(half_db)
-    return Detector(axis, kind, averages, counts, resolution, half, law, serial, averaging_s)
+    return Detector(table, axis, kind, averages, averaging_s, source, temperature, values, serial)
 
 
-def _scale(table: Table, kind: str) -> tuple[CountTable, float | None, float, Law]:
-    quantity = table.text("quantity", "dbm", ("dbm", "dbfs"))
-    resolution = table.number("resolution", low=1e-6, high=10.0)
-    range_dbm = pair(table, "range_dbm")
-    offset_db = table.number("dbfs_to_dbm", low=-300.0, high=300.0) if quantity == "dbfs" else 0.0
-    margin = (range_dbm[0] - SCALE_MARGIN_DB, range_dbm[1] + SCALE_MARGIN_DB)
-    valid_dbm = pair(table, "valid_dbm", margin)
-    if valid_dbm[0] > range_dbm[0] or valid_dbm[1] < range_dbm[1]:
-        raise table.error("valid_dbm", "must hold range_dbm")
-    try:
-        counts = det.scale_table(resolution, offset_db, valid_dbm, range_dbm)
-    except CalibrationError as error:
-        raise table.error("resolution", str(error)) from None
-    return counts, resolution, resolution / 2.0, ScaleLaw(quantity, offset_db, valid_dbm, range_dbm)
-
-
-def _curve(table: Table, kind: str) -> tuple[CountTable, float | None, float, Law]:
-    points = rows(table, "curve", "[dBm, volts]")
-    try:
-        curve = det.Curve(points[:, 0], points[:, 1], "dbm" if kind == "log" else "amplitude")
-    except CalibrationError as error:
-        raise table.error("curve", str(error)) from None
-    ends = (float(curve.dbm.min()), float(curve.dbm.max()))
-    range_dbm = pair(table, "range_dbm", ends)
-    if range_dbm[0] < ends[0] or range_dbm[1] > ends[1]:
-        raise table.error(
-            "range_dbm", f"reaches beyond the curve, {ends[0]:g} to {ends[1]:g} dBm; narrow it"
-        )
-    valid_v = pair(table, "valid_v")
-    volts = sorted(curve.volts_at(dbm) for dbm in range_dbm)
-    if volts[0] < valid_v[0] or volts[1] > valid_v[1]:
-        raise table.error(
-            "valid_v", f"must hold the range's voltages, {volts[0]:g} to {volts[1]:g} V"
-        )
-    converter = _converter(table, valid_v)
-    try:
-        counts = det.curve_table(curve, converter, valid_v, range_dbm)
-        half_db = det.half_step_db(curve, converter, range_dbm)
-    except CalibrationError as error:
-        raise table.error("bits" if converter.rails else "volts_per_count", str(error)) from None
-    law = CurveLaw(curve, converter.volts_per_count, valid_v, range_dbm)
-    return counts, None if converter.rails else law.volts_per_count, half_db, law
-
-
-def _converter(table: Table, valid_v: tuple[float, float]) -> det.Converter:
-    """With bits: a converter from 0 to its top, rails included. Without: volts in steps."""
-    bits = table.whole("bits", None, 4, MAX_BITS)
-    step_v: float | None = table.number("volts_per_count", None, 1e-9, 1.0)
-    if bits is None:
-        if step_v is None:
-            raise table.error("bits", "missing; give bits and reference_v, or volts_per_count")
-        return det.stepped(step_v, valid_v)
-    if step_v is None:
-        reference_v = table.number("reference_v", low=0.01, high=100.0)
-        step_v = reference_v / 2**bits / table.number("gain", 1.0, 1e-3, 1e3)
-    return det.Converter(step_v, 0, 2**bits - 1, rails=True)
+def _temperature(table: Table, valid_c: tuple[float, float]) -> tuple[Real, Real] | None:
+    """By how much readings are too high, over celsius."""
+    slope = table.number("temperature_coefficient_db_per_k", None, -1.0, 1.0)
+    if table.any("temperature", None) is not None:
+        if slope is not None:
+            raise table.error("temperature", "give it or a coefficient, not both")
+        values = rows(table, "temperature", "[celsius, dB]")
+        if (np.diff(values[:, 0]) <= 0).any():
+            raise table.error("temperature", "degrees must rise from row to row")
+        return values[:, 0], values[:, 1]
+    if slope is None:
+        return None
+    reference_c = table.number("reference_c", low=valid_c[0], high=valid_c[1])
+    celsius = np.array(valid_c)
+    return celsius, slope * (celsius - reference_c)

@@ -9,28 +9,28 @@ from dataclasses import dataclass
 import numpy as np
 
 from monitor import calterms
-from monitor.calelements import Element
+from monitor.calelements import PICKUPS, Element
 from monitor.calfile import antenna_of, budget_of, detector_of
 from monitor.calparts import CalibrationFile, Certificate, axes_of, elements_of
 from monitor.config import Channel
 from monitor.core.averaging_law import UNDECLARED
 from monitor.core.budget import Contribution
-from monitor.core.calibration import FrequencyTable, e2_per_w
+from monitor.core.calibration import FrequencyTable, e2_per_w, temperature_db
 from monitor.core.errors import ConfigError
 from monitor.core.flags import LOWER_BOUND, UPPER_BOUND, Flag
 from monitor.core.keys import Table
-from monitor.core.law import CurveLaw, ScaleLaw
+from monitor.core.law import CurveLaw, ProbeLaw, Said, ScaleLaw
 from monitor.core.limits import frequency_text
 from monitor.core.quantities import dbm_from_w, s_from_e, w_from_dbm
 from monitor.core.uncertainty import expanded_db
-from monitor.detectorfile import Detector
+from monitor.detectorfile import Detector, Fit
 
-FORMS = ("counts", "volts", "dbm", "dbfs")
+FORMS = ("counts", "volts", "dbm", "dbfs", "v_per_m")
 
 
 @dataclass(frozen=True, slots=True)
 class Asked:
-    """A figure in one of FORMS, and the circumstances. axis '': the file knows one only.
+    """A figure in one of FORMS, and the circumstances. axis, gain '': the file knows one only.
 
     signal, bandwidth_hz: of the band, as a site file says them; they matter to averaged logs.
     """
@@ -42,6 +42,7 @@ class Asked:
     temperature_c: float | None = None
     signal: str = "undeclared"
     bandwidth_hz: float = 0.0
+    gain: str = ""
 
 
 @dataclass(frozen=True, slots=True)
@@ -65,6 +66,8 @@ class Link:
 class Figure:
     """Power at the port and what it stands for; nan where the figure is no reading.
 
+    temperature_db: what was taken off the power for the instrument's temperature.
+
     e_low, e_high: bounds at 95 %; 0 where the reading is an upper bound, inf where a lower one.
     """
 
@@ -79,6 +82,7 @@ class Figure:
     chain: tuple[Link, ...]
     certificate: Certificate
     volts: float | None
+    temperature_db: float
 
     @property
     def expanded_db(self) -> float:
@@ -99,21 +103,22 @@ def through(file: CalibrationFile, asked: Asked, now_utc_ns: int) -> Figure:
     at = np.array([asked.frequency_hz])
     for element in elements:
         _covers(element.where, element.name, element.curve, asked.frequency_hz)
-    losses = [element.curve for element in elements if element.kind != "antenna"]
-    p_dbm, bits = _port_dbm(file, detector, asked)
+    losses = [element.curve for element in elements if element.kind not in PICKUPS]
+    fit = detector.fit(asked.gain, "", asked.frequency_hz, asked.frequency_hz)
     done = detector.treatment(asked.signal, asked.bandwidth_hz, UNDECLARED)
-    p_dbm += done.correction_db
+    warm_db = _temperature_db(detector, fit, asked)
+    p_dbm, bits = _reported(_port_dbm(file, fit, asked), fit, done.correction_db, warm_db)
     per_w = float(e2_per_w(at, antenna.curve, losses)[0])
     e = math.nan if math.isnan(p_dbm) else math.sqrt(w_from_dbm(p_dbm) * per_w)
     lines, bits_of_lines = _budget(file, channel, asked.frequency_hz)
-    lines = (*lines, *detector.rounding, *done.lines)
+    lines = (*lines, *fit.contributions, *done.lines)
     expanded, k = expanded_db([lines], np.ones((1, 1)))
     bits |= bits_of_lines | _circumstances(file, channel, asked, now_utc_ns) | done.flags
     low, high = _bounds(e, float(expanded[0]), bits)
     return Figure(
         p_dbm, e, s_from_e(e), float(expanded[0]) / k, k, low, high, bits,
         _links(file, elements, asked.frequency_hz, lines), file.certificate,
-        _volts(detector, asked),
+        _volts(fit, asked), warm_db,
     )  # fmt: skip
 
 
@@ -151,11 +156,11 @@ def _covers(where: Table, name: str, curve: FrequencyTable, frequency_hz: float)
         )
 
 
-def _port_dbm(file: CalibrationFile, detector: Detector, asked: Asked) -> tuple[float, int]:
+def _port_dbm(file: CalibrationFile, fit: Fit, asked: Asked) -> Said:
     """Power at the detector's port, dBm (nan: no reading), and flags."""
-    law = detector.law
+    law = fit.law
     if asked.form == "counts":
-        power_w, bits = detector.table.convert(np.array([int(asked.value)], np.int32))
+        power_w, bits = fit.table.convert(np.array([int(asked.value)], np.int32))
         p_w = float(power_w[0])
         return (math.nan if math.isnan(p_w) else dbm_from_w(p_w)), int(bits[0])
     if asked.form == "dbm":
@@ -164,19 +169,47 @@ def _port_dbm(file: CalibrationFile, detector: Detector, asked: Asked) -> tuple[
         return law.at_volts(asked.value)
     if asked.form == "dbfs" and isinstance(law, ScaleLaw) and law.quantity == "dbfs":
         return law.at_dbm(asked.value + law.offset_db)
-    gives = "volts" if isinstance(law, CurveLaw) else {"dbm": "dBm", "dbfs": "dBFS"}[law.quantity]
+    if asked.form == "v_per_m" and isinstance(law, ProbeLaw):
+        return law.at_v_per_m(asked.value)
+    gives, option = _own_form(fit)
     raise ConfigError(
-        f"--{asked.form}: the detector of {file.top.where} gives {gives}; give --counts, --dbm"
-        + ("" if gives == "dBm" else f" or --{gives.lower()}")
+        f"--{asked.form.replace('_', '-')}: the detector of {file.top.where} gives {gives}; give"
+        " --counts, --dbm" + ("" if option == "dbm" else f" or --{option}")
     )
 
 
-def _volts(detector: Detector, asked: Asked) -> float | None:
+def _own_form(fit: Fit) -> tuple[str, str]:
+    """What the detector's figures are in, and the option that takes them."""
+    if isinstance(fit.law, CurveLaw):
+        return "volts", "volts"
+    if isinstance(fit.law, ProbeLaw):
+        return "V/m", "v-per-m"
+    return {"dbm": "dBm", "dbfs": "dBFS"}[fit.law.quantity], fit.law.quantity
+
+
+def _temperature_db(detector: Detector, fit: Fit, asked: Asked) -> float:
+    """By how much a figure of the instrument is too high; a bare power is none of its figures."""
+    shown = asked.form != "dbm" or _own_form(fit)[1] == "dbm"
+    if asked.temperature_c is None or not shown:
+        return 0.0
+    return float(temperature_db(detector.temperature, np.array([asked.temperature_c]))[0])
+
+
+def _reported(said: Said, fit: Fit, correction_db: float, warm_db: float) -> Said:
+    """Corrected for averaged logs and temperature; what is below the range is its end, flagged."""
+    p_dbm, bits = said[0] + correction_db - warm_db, said[1]
+    least_dbm = fit.law.range_dbm[0] + correction_db
+    if p_dbm < least_dbm:
+        return least_dbm, bits | int(Flag.BELOW_RANGE)
+    return p_dbm, bits
+
+
+def _volts(fit: Fit, asked: Asked) -> float | None:
     """Volts at the detector, where counts or volts were given and it has any."""
-    if not isinstance(detector.law, CurveLaw):
+    if not isinstance(fit.law, CurveLaw):
         return None
     if asked.form == "counts":
-        return asked.value * detector.law.volts_per_count
+        return asked.value * fit.law.volts_per_count
     return asked.value if asked.form == "volts" else None
 
 

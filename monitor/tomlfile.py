@@ -75,15 +75,17 @@ def _refuse_huge(value: object) -> None:
         raise ValueError("an integer is beyond 64 bits")
 
 
-def pair(table: Table, key: str, default: Any = REQUIRED) -> tuple[float, float]:
-    """Two finite numbers [low, high], low below high."""
+def pair(
+    table: Table, key: str, default: Any = REQUIRED, most: float = MAX_FIGURE
+) -> tuple[float, float]:
+    """Two finite numbers [low, high], low below high, neither beyond most."""
     value = table.any(key, default)
     if value is default and default is not REQUIRED:
         return value  # type: ignore[no-any-return]
     if not _numbers(value, 2) or not value[0] < value[1]:
         raise table.error(key, "must be two numbers [low, high], low below high")
-    if max(abs(value[0]), abs(value[1])) > MAX_FIGURE:
-        raise table.error(key, f"{value!r} is beyond {MAX_FIGURE:g}")
+    if max(abs(value[0]), abs(value[1])) > most:
+        raise table.error(key, f"{value!r} is beyond {most:g}")
     return float(value[0]), float(value[1])
 
 
@@ -103,9 +105,14 @@ def date(table: Table, key: str, default: Any = REQUIRED) -> datetime.date:
 
 
 def rows(
-    table: Table, key: str, form: str, frequency: bool = False, columns: int = 2
+    table: Table,
+    key: str,
+    form: str,
+    frequency: bool = False,
+    columns: int = 2,
+    most: float = MAX_FIGURE,
 ) -> NDArray[np.float64]:
-    """A list of at least two rows of finite numbers, f8 (n, columns).
+    """A list of at least two rows of finite numbers, f8 (n, columns), up to most.
 
     form: '[dBm, volts]', for messages. frequency: the first of each is a frequency, '700MHz' or Hz.
     """
@@ -121,8 +128,8 @@ def rows(
             raise table.error(key, f"row {i}: {error}") from None
         if not _numbers(row, columns) or (frequency and row[0] <= 0):
             raise table.error(key, f"row {i}: {row!r} is not {form}")
-        if max(abs(v) for v in (row[1:] if frequency else row)) > MAX_FIGURE:
-            raise table.error(key, f"row {i}: {row!r} is beyond {MAX_FIGURE:g}")
+        if max(abs(v) for v in (row[1:] if frequency else row)) > most:
+            raise table.error(key, f"row {i}: {row!r} is beyond {most:g}")
         plain.append(row)
     return np.array(plain, np.float64)
 

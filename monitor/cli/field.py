@@ -8,6 +8,7 @@ from pathlib import Path
 import click
 
 from monitor import calparts, tomlfile
+from monitor.calelements import PICKUPS
 from monitor.checks import refuse_future_date
 from monitor.cli.output import print_json
 from monitor.clock import SystemClock
@@ -17,12 +18,14 @@ from monitor.core.errors import ConfigError
 from monitor.core.exposure import OUTSIDE_BUDGET
 from monitor.core.flags import LOWER_BOUND, UPPER_BOUND, Flag, words
 from monitor.core.limits import frequency_text
+from monitor.detectorkeys import MOST_V_PER_M
 from monitor.onefigure import FORMS, Asked, Figure, Link, through
 
 UNITS = {
     "volts": {"": 1.0, "v": 1.0, "mv": 1e-3},
     "dbm": {"": 1.0, "dbm": 1.0},
     "dbfs": {"": 1.0, "dbfs": 1.0},
+    "v_per_m": {"": 1.0, "v/m": 1.0, "mv/m": 1e-3},
     "temperature_c": {"": 1.0, "c": 1.0},
 }
 LARGEST_COUNT = 2**31 - 1
@@ -40,22 +43,25 @@ CAUTION = (
 @click.option("--volts", help="At the detector, for example 1.2V.")
 @click.option("--dbm", help="Power at the detector's port, for example -30dBm.")
 @click.option("--dbfs", help="Of a receiver, for example -42.5.")
+@click.option("--v-per-m", help="Indicated by a probe, for example 3.2V/m.")
 @click.option("--axis", type=click.Choice(("x", "y", "z")), help="Where axes differ.")
+@click.option("--gain", help="A receiver's gain step, where the file has several.")
 @click.option("--temperature-c", help="Of the instrument, degrees Celsius.")
 @click.option("--signal", type=click.Choice(SIGNALS), default="undeclared", help="Its class.")
 @click.option("--bandwidth", help="Of one signal, for example 5MHz.")
 @click.option("--json", "as_json", is_flag=True, help="One JSON document.")
 def command(
     calibration: str, frequency: str, counts: int | None, volts: str | None, dbm: str | None,
-    dbfs: str | None, axis: str | None, temperature_c: str | None, signal: str,
-    bandwidth: str | None, as_json: bool,
+    dbfs: str | None, v_per_m: str | None, axis: str | None, gain: str | None,
+    temperature_c: str | None, signal: str, bandwidth: str | None, as_json: bool,
 ) -> None:  # fmt: skip
     """What one figure of a detector is in V/m, step by step, with its uncertainty.
 
     The uncertainty of a kind (antenna, cable, ...) stands once, beside the first element of it.
     Signal and bandwidth matter where the calibration says that logs are averaged.
     """
-    form, value = _figure({"counts": counts, "volts": volts, "dbm": dbm, "dbfs": dbfs})
+    given = {"counts": counts, "volts": volts, "dbm": dbm, "dbfs": dbfs, "v_per_m": v_per_m}
+    form, value = _figure(given)
     asked = Asked(
         form,
         value,
@@ -64,6 +70,7 @@ def command(
         None if temperature_c is None else _number("temperature_c", temperature_c),
         signal,
         0.0 if bandwidth is None else quantities.frequency_hz(bandwidth),
+        gain or "",
     )
     now_utc_ns = SystemClock().utc_ns()
     file = calparts.read(Path(calibration))
@@ -81,13 +88,18 @@ def _figure(given: dict[str, int | str | None]) -> tuple[str, float]:
     said = [(form, given[form]) for form in FORMS if given[form] is not None]
     if len(said) != 1:
         what = "several figures" if said else "no figure"
-        raise ConfigError(f"{what}; give one of --counts, --volts, --dbm, --dbfs")
+        known = ", ".join(_option(form) for form in FORMS)
+        raise ConfigError(f"{what}; give one of {known}")
     form, value = said[0]
     return form, float(value) if isinstance(value, int) else _number(form, str(value))
 
 
+def _option(form: str) -> str:
+    return "--" + form.replace("_", "-")
+
+
 def _number(option: str, text: str) -> float:
-    name = "--" + option.replace("_", "-")
+    name = _option(option)
     try:
         value, unit = quantities.split_unit(text)
     except ConfigError:
@@ -96,8 +108,9 @@ def _number(option: str, text: str) -> float:
     if scale is None:
         known = ", ".join(word for word in UNITS[option] if word)
         raise ConfigError(f"{name}: {text!r}: unit {unit!r} is not known; use {known}")
-    if not math.isfinite(value) or abs(value * scale) > tomlfile.MAX_FIGURE:
-        raise ConfigError(f"{name}: {text!r} is beyond {tomlfile.MAX_FIGURE:g}")
+    most = MOST_V_PER_M if option == "v_per_m" else tomlfile.MAX_FIGURE
+    if not math.isfinite(value) or abs(value * scale) > most:
+        raise ConfigError(f"{name}: {text!r} is beyond {most:g}")
     return value * scale
 
 
@@ -106,6 +119,8 @@ def _document(asked: Asked, found: Figure) -> dict[str, object]:
         "frequency_hz": asked.frequency_hz,
         "axis": asked.axis or None,
         "volts": found.volts,
+        "gain": asked.gain or None,
+        "temperature_correction_db": -found.temperature_db,
         "p_dbm": found.p_dbm,
         "e_v_per_m": found.e_v_per_m,
         "s_w_per_m2": found.s_w_per_m2,
@@ -135,16 +150,21 @@ def _lines(asked: Asked, found: Figure) -> list[str]:
     head = [f"{found.certificate.id}, at {frequency_text(asked.frequency_hz)}{axis}", ""]
     if asked.form == "counts":
         head.append(_step("raw count", f"{asked.value:.0f}"))
+    if asked.form == "v_per_m":
+        head.append(_step("indicated", f"{asked.value:.4g} V/m"))
     if asked.form == "dbfs":
         head.append(_step("level", f"{asked.value:.2f} dBFS"))
     if found.volts is not None:
         head.append(_step("voltage at the detector", f"{found.volts:.4g} V"))
+    if found.temperature_db:
+        taken = f"{-found.temperature_db:+.2f} dB"
+        head.append(_step("for its temperature, in what follows", taken))
     head.append(_step("power at its port", _level(found.p_dbm, "dBm"), detector))
-    losses = [link for link in others if link.kind != "antenna" and link.gain_db is not None]
+    losses = [link for link in others if link.kind not in PICKUPS and link.gain_db is not None]
     at_antenna_dbm = found.p_dbm - sum(link.gain_db or 0.0 for link in losses)
     head += [_step(*_loss(link), link) for link in losses]
     head.append(_step("power at the antenna's port", _level(at_antenna_dbm, "dBm")))
-    head += [_step(*_loss(link), link) for link in others if link.kind == "antenna"]
+    head += [_step(*_loss(link), link) for link in others if link.kind in PICKUPS]
     head += [_step(link.element, "", link) for link in others if link.gain_db is None]
     return [*head, *_result(found), "", *_remarks(found), CAUTION]
 

@@ -26,6 +26,11 @@ class Table:
         self._known: list[str] = []
         self.where = where
 
+    @property
+    def values(self) -> dict[str, Any]:
+        """All of it as it stands, read or not."""
+        return dict(self._values)
+
     def error(self, key: str, text: str) -> ConfigError:
         """The error to raise about a key."""
         return ConfigError(f"{self.where}.{key}: {text}")

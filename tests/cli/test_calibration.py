@@ -210,7 +210,8 @@ def test_what_a_new_certificate_changed(tmp_path: Path, capsys: pytest.CaptureFi
     assert found["calibration: certificate"] == ("number of the certificate", "none")
     assert found["element antenna: table"] == (["900 MHz 44.2 dB/m"], ["900 MHz 44.5 dB/m"])
     assert found["contribution 'antenna factor, certificate': value"] == ("1.2", "1.4")
-    assert len(found) == 4  # and the count table
+    assert found["detector: curve"] == (["0 0.68"], ["0 0.684"])
+    assert len(found) == 4
     assert document["largest_response_db"] == pytest.approx(0.3)
     off = {row["frequency_hz"]: row["db"] for row in document["response"] if row["axis"] == "x"}
     assert off[650e6] == pytest.approx(0.0, abs=1e-12)

@@ -12,7 +12,7 @@ from scipy import special
 from monitor.core import averaging_law as law
 from monitor.core.averaging_law import Averaging, joined, treatment
 from monitor.core.calibration import CountTable
-from monitor.core.detector import Curve
+from monitor.core.curves import Curve
 from monitor.core.flags import LOWER_BOUND, Flag
 from tests.core import signals
 

@@ -12,6 +12,7 @@ from monitor import calparts
 from monitor.core.flags import Flag
 from monitor.core.law import CurveLaw, ScaleLaw
 from monitor.core.quantities import w_from_dbm
+from monitor.detectorfile import Fit
 
 ROOT = Path(__file__).parents[2]
 CURVES = (
@@ -25,11 +26,17 @@ SCALES = (
 )
 
 
+def fitted(path: Path) -> Fit:
+    """The detector of a file; where it has one curve, any band will do."""
+    (detector,) = calparts.read(path).detectors
+    return detector.fit("", "any", 1e9, 2e9)
+
+
 @pytest.mark.parametrize("path", CURVES, ids=lambda path: path.name)
 def test_volts_of_a_count_give_what_the_count_gives(path: Path) -> None:
     """The count table is the reference: every entry but the converter's rails, 1e-12."""
-    (detector,) = calparts.read(path).detectors
-    law, table = detector.law, detector.table
+    fit = fitted(path)
+    law, table = fit.law, fit.table
     assert isinstance(law, CurveLaw)
     seen = 0
     for i in range(1, table.power_w.size - 1, max(table.power_w.size // 500, 1)):
@@ -46,23 +53,24 @@ def test_volts_of_a_count_give_what_the_count_gives(path: Path) -> None:
 @pytest.mark.parametrize("path", SCALES, ids=lambda path: path.name)
 def test_a_scales_figure_gives_what_its_count_gives(path: Path) -> None:
     """The count table is the reference, over its whole length and beyond both ends."""
-    (detector,) = calparts.read(path).detectors
-    law, table = detector.law, detector.table
+    fit = fitted(path)
+    law, table = fit.law, fit.table
     assert isinstance(law, ScaleLaw)
-    assert detector.resolution is not None
     first, n = table.first_count, table.power_w.size
     counts = np.unique(np.linspace(first - 900, first + n + 900, 700).astype(np.int32))
     power_w, flags = table.convert(counts)
     for count, p_w, bits in zip(counts.tolist(), power_w.tolist(), flags.tolist()):
-        dbm, found = law.at_dbm(count * detector.resolution + law.offset_db)
+        dbm, found = law.at_dbm(count * law.resolution + law.offset_db)
         assert found == bits, count
         assert math.isnan(dbm) == math.isnan(p_w), count
         if not math.isnan(dbm):
             assert w_from_dbm(dbm) == pytest.approx(p_w, rel=1e-9)
 
 
-def test_a_power_beyond_the_range_is_the_ranges_end() -> None:
-    (detector,) = calparts.read(CURVES[0]).detectors
-    assert detector.law.at_dbm(-80.0) == (-58.0, int(Flag.BELOW_RANGE))
-    assert detector.law.at_dbm(20.0) == (5.0, int(Flag.ABOVE_RANGE))
-    assert detector.law.at_dbm(-30.5) == (-30.5, 0)
+def test_a_power_beyond_what_the_curve_shows_is_its_end() -> None:
+    """The curve runs from -60 dBm, its range from -58 to 5 dBm; below the range figures stand."""
+    law = fitted(CURVES[0]).law
+    assert law.at_dbm(-80.0) == (-60.0, int(Flag.BELOW_RANGE))
+    assert law.at_dbm(-59.5) == (-59.5, 0)
+    assert law.at_dbm(20.0) == (5.0, int(Flag.ABOVE_RANGE))
+    assert law.at_dbm(-30.5) == (-30.5, 0)

@@ -149,23 +149,18 @@ def scale() -> str:
     """FILE with a scale in the place of its detector."""
     start, end = FILE.index("[detector]"), FILE.index("[[element]]")
     body = 'kind = "scale"\nquantity = "dbfs"\nresolution = 0.001\ndbfs_to_dbm = -10\n'
-    rest = 'range_dbm = [-80, -12]\naverages = "power"\n'
+    rest = 'range_dbm = [-80, -12]\naverages = "power"\naveraging_s = 0.5\n'
     return FILE[:start] + "[detector]\n" + body + rest + FILE[end:]
 
 
 def test_scale_of_full_scale_levels(tmp_path: Path) -> None:
-    power_w, flags = (
-        read(tmp_path, scale())
-        .tables[0]
-        .convert(np.array([-30_000, -1_999, -70_001, 8_001], np.int32))
-    )
-    assert 10 * np.log10(power_w[0] / 1e-3) == pytest.approx(-40.0)
-    assert flags.tolist() == [
-        0,
-        int(Flag.ABOVE_RANGE),
-        int(Flag.BELOW_RANGE),
-        int(Flag.ABOVE_RANGE),
-    ]
+    """Below the range a reading is kept as it is: only an average may be found too weak."""
+    chain = read(tmp_path, scale())
+    power_w, flags = chain.tables[0].convert(np.array([-30_000, -1_999, -70_001, 8_001], np.int32))
+    np.testing.assert_allclose(10 * np.log10(power_w / 1e-3), [-40.0, -12.0, -80.001, -12.0])
+    assert flags.tolist() == [0, int(Flag.ABOVE_RANGE), 0, int(Flag.ABOVE_RANGE)]
+    np.testing.assert_allclose(chain.least_w, 1e-11)
+    assert chain.integration_s == 0.5
 
 
 @pytest.mark.parametrize(
@@ -201,7 +196,11 @@ def test_scale_of_full_scale_levels(tmp_path: Path) -> None:
         ("bits = 12", "", "detector.bits: missing; give bits and reference_v"),
         ("reference_v = 2.048", "", "detector.reference_v: missing"),
         ('averages = "none"', "", "detector.averages: missing"),
-        ('kind = "log"', 'kind = "lin"', "detector.kind: 'lin' is not one of log, rms, scale"),
+        (
+            'kind = "log"',
+            'kind = "lin"',
+            "detector.kind: 'lin' is not one of log, rms, scale, probe",
+        ),
         ("gain = 0.5", "gian = 0.5", "detector.gian: unknown key; did you mean gain?"),
         ('due = "2027-01-15"', "due = 2026-01-15", "calibration.due: 2026-01-15 is not after date"),
         ('due = "2027-01-15"', 'due = "soon"', "calibration.due: 'soon' is not a date"),
