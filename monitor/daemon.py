@@ -6,6 +6,7 @@ import threading
 from collections.abc import Mapping, Sequence
 from dataclasses import replace
 
+from monitor import refchecks
 from monitor.alarm_desk import AlarmDesk, text_of
 from monitor.config import Site
 from monitor.core import pipeline
@@ -237,7 +238,12 @@ class Daemon:
         elif do == "note":
             body: dict[str, object] = {"text": text_of(request, "text", 2000)}
             event = Event(now_ns, "note", text_of(request, "by", 200, ""), body)
+        elif do == refchecks.KIND:
+            names = [channel.name for channel in self._site.channels]
+            event = refchecks.event_of(request, names, now_ns)
         else:
-            raise ConfigError(f"do: {do!r} is not now, acknowledge, shelve, unshelve or note")
+            raise ConfigError(
+                f"do: {do!r} is not now, acknowledge, shelve, unshelve, note or {refchecks.KIND}"
+            )
         self.note(event)
         return {}

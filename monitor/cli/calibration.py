@@ -8,7 +8,12 @@ from pathlib import Path
 import click
 
 from monitor import calcompare, calparts, calreview
-from monitor.cli import calibration_lines
+from monitor.cli import (
+    calibration_applied,
+    calibration_chart,
+    calibration_files,
+    calibration_lines,
+)
 from monitor.cli.output import print_json
 from monitor.core.errors import ConfigError
 from monitor.core.montecarlo import FEWEST_DRAWS, MOST_DRAWS
@@ -22,8 +27,14 @@ def command() -> None:
     """What a calibration file holds and what it is worth; what two of them differ in."""
 
 
+command.add_command(calibration_applied.command)
+command.add_command(calibration_chart.command)
+
+
 @command.command("show")
-@click.argument("file", type=FILE)
+@click.argument("file", type=FILE, required=False)
+@click.option("--record", type=FILE, help="A record in place of FILE: the calibration in force.")
+@click.option("--at", help="In force then, RFC 3339; default: at the newest start.")
 @click.option("--band", help="LOW:HIGH, for example 700MHz:2.7GHz; all of the tables if left out.")
 @click.option("--axes", help="For example xyz or z; all that the file serves if left out.")
 @click.option("--shares", help="Each axis' part of E squared, for example 0.5,0.3,0.2; or equal.")
@@ -34,7 +45,9 @@ def command() -> None:
 @click.option("--seed", type=click.IntRange(0), default=1, help="Of the draws.", show_default=True)
 @click.option("--json", "as_json", is_flag=True, help="One JSON document.")
 def show(
-    file: Path,
+    file: Path | None,
+    record: Path | None,
+    at: str | None,
     band: str | None,
     axes: str | None,
     shares: str | None,
@@ -43,7 +56,8 @@ def show(
     as_json: bool,
 ) -> None:
     """Certificates, tables, response over the band, table of contributions, uncertainty."""
-    shown = calreview.view(calparts.read(file), _axes(axes), _band(band))
+    (held,) = calibration_files.of([] if file is None else [file], record, at, 1)
+    shown = calreview.view(held, _axes(axes), _band(band))
     parts = calreview.shares_of(shares, shown.axes)
     document = calreview.document(shown, parts, time.time_ns())
     document["monte_carlo"] = (
@@ -57,20 +71,28 @@ def show(
 
 
 @command.command("compare")
-@click.argument("a", type=FILE)
-@click.argument("b", type=FILE)
+@click.argument("files", metavar="[A] B", type=FILE, nargs=-1)
+@click.option("--record", type=FILE, help="A record in place of A: the calibration in force.")
+@click.option("--at", help="In force then, RFC 3339; default: at the newest start.")
 @click.option("--band", help="LOW:HIGH; all that both files cover if left out.")
 @click.option("--axes", help="For example xyz or z; all that both files serve if left out.")
 @click.option("--json", "as_json", is_flag=True, help="One JSON document.")
-def compare(a: Path, b: Path, band: str | None, axes: str | None, as_json: bool) -> None:
+def compare(
+    files: tuple[Path, ...],
+    record: Path | None,
+    at: str | None,
+    band: str | None,
+    axes: str | None,
+    as_json: bool,
+) -> None:
     """What B has otherwise than A, and what that does to response and uncertainty."""
-    files = [calparts.read(path) for path in (a, b)]
-    both = set(calparts.axes_of(files[0])) & set(calparts.axes_of(files[1]))
+    held = calibration_files.of(files, record, at, 2)
+    both = set(calparts.axes_of(held[0])) & set(calparts.axes_of(held[1]))
     chosen = _axes(axes) or "".join(sorted(both))
     if not chosen:
         raise ConfigError("the calibration files serve no axis in common")
-    band_hz = _band(band) or calreview.common_band(files, chosen)
-    views = [calreview.view(file, chosen, band_hz) for file in files]
+    band_hz = _band(band) or calreview.common_band(held, chosen)
+    views = [calreview.view(file, chosen, band_hz) for file in held]
     document = calcompare.comparison(*views)
     if as_json:
         print_json(document)

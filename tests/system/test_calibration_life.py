@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 import shutil
 from collections.abc import Iterator
 from pathlib import Path
@@ -121,3 +122,31 @@ def test_another_board_or_part_than_the_calibrated_one_is_seen(desk: Desk) -> No
     checked = fieldsill("check", "--site", site, "--listen", "0")
     assert "note  installed" in checked.stdout
     assert "A-99 is in place" in checked.stdout
+
+
+def test_a_reference_check_goes_through_the_daemon_and_after_it_into_the_file(desk: Desk) -> None:
+    record = desk.disk / "record.db"
+    asked = ["calibration", "applied", "--record", record, "--channel", "x", "--json"]
+    with desk.measuring():
+        wait_for(lambda: record.exists() and blocks(desk) >= 2, 100)
+        live_one = json.loads(fieldsill(*asked, "--level", "-30dBm", "--last", "10s").stdout)
+        assert live_one["kept_by"] == "daemon"
+        wait_for(lambda: len(events(desk, "reference check")) == 1)
+    after = json.loads(fieldsill(*asked, "--level", "-31dBm", "--last", "10s").stdout)
+    assert after["kept_by"] == "command"
+    first, second = events(desk, "reference check")
+    for event, told in ((first, live_one), (second, after)):
+        assert event.name == "x"
+        assert event.body["difference_db"] == pytest.approx(told["mean_dbm"] - told["applied_dbm"])
+        assert event.body["count_table"] == told["count_table"] != ""
+    charted = json.loads(fieldsill("calibration", "chart", "--record", record, "--json").stdout)
+    assert [row["applied_dbm"] for row in charted["charts"][0]["checks"]] == [-30.0, -31.0]
+    shown = json.loads(fieldsill("calibration", "show", "--record", record, "--json").stdout)
+    assert shown["identity"] == events(desk, "start")[0].body["calibration"]
+    assert fieldsill("explain", "--record", record).returncode == 0
+
+
+def blocks(desk: Desk) -> int:
+    """Blocks of the first channel in the record."""
+    with Record.open(desk.disk / "record.db") as record:
+        return sum(int((record.blocks(b.boot).channel == 0).sum()) for b in record.boots())

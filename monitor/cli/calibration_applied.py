@@ -1,0 +1,116 @@
+"""fieldsill calibration applied: keep what the box read while a known level was applied."""
+
+from __future__ import annotations
+
+import re
+from pathlib import Path
+
+import click
+
+from monitor.cli.averages_record import site_record, utc_ns_asked
+from monitor.cli.levels import duration_s
+from monitor.cli.output import print_json
+from monitor.control import ask
+from monitor.core.errors import ConfigError, DeviceError
+from monitor.core.readings import NS_PER_S
+from monitor.record.reader import Record
+from monitor.record.types import Commit
+from monitor.record.writer import Writer
+from monitor.refchecks import PLACES, Mean, event_of, mean_of, request_of
+
+UNSTEADY_DB = 1.0
+LEVEL_DBM = (-150.0, 60.0)
+
+
+@click.command("applied")
+@click.option("--record", type=click.Path(path_type=Path), help="Default: the site's.")
+@click.option("--channel", required=True, help="Name of the channel as in the site file.")
+@click.option("--level", required=True, help="What was applied, for example -30dBm.")
+@click.option(
+    "--at", type=click.Choice(PLACES), default="port", show_default=True,
+    help="Applied at the detector's port, or at the input of the chain (losses then count too).",
+)  # fmt: skip
+@click.option("--from", "start", help="Begin of the time that it was applied, RFC 3339.")
+@click.option("--to", "end", help="End of that time, RFC 3339.")
+@click.option("--last", default="60s", show_default=True, help="Or: the newest in the record.")
+@click.option("--note", default="", help="For example the generator's serial number.")
+@click.option("--json", "as_json", is_flag=True, help="One JSON document.")
+def command(
+    record: Path | None,
+    channel: str,
+    level: str,
+    at: str,
+    start: str | None,
+    end: str | None,
+    last: str,
+    note: str,
+    as_json: bool,
+) -> None:
+    """Compare a level that was applied on site with what was read, and keep the difference.
+
+    The record lags up to a minute behind: apply the level for three minutes, or give --from and
+    --to afterwards. Switch off and lock off what feeds the antenna before a connector is opened.
+    """
+    path, applied_dbm = record or site_record(), level_dbm(level)
+    if (start is None) != (end is None):
+        raise ConfigError("--from and --to go together")
+    span = None
+    if start is not None:
+        span = utc_ns_asked(start, "--from", 0), utc_ns_asked(end, "--to", 0)
+        if not span[0] < span[1]:
+            raise ConfigError("--from must be before --to")
+    with Record.open(path) as held:
+        mean = mean_of(held, channel, span, round(duration_s(last) * NS_PER_S))
+        names, simulated = [row.name for row in held.channels()], held.simulated
+    request = request_of(mean, channel, at, applied_dbm, note)
+    event_of(request, names, 0)  # a mistake is told before the daemon is asked
+    kept_by = _keep(path, request, mean, names, simulated)
+    document = {**request, "difference_db": mean.mean_dbm - applied_dbm, "kept_by": kept_by}
+    del document["do"]
+    if as_json:
+        print_json(document)
+        return
+    for line in _lines(mean, channel, applied_dbm, document):
+        click.echo(line)
+
+
+def level_dbm(text: str) -> float:
+    """dBm of a text; ConfigError where it is none."""
+    match = re.fullmatch(r"([+-]?\d+(?:\.\d+)?) ?dBm", text.strip(), re.ASCII | re.IGNORECASE)
+    value = float(match.group(1)) if match else None
+    if value is None or not LEVEL_DBM[0] <= value <= LEVEL_DBM[1]:
+        raise ConfigError(f"--level {text!r}: write a level in dBm, for example -30dBm")
+    return value
+
+
+def _keep(
+    path: Path, request: dict[str, object], mean: Mean, names: list[str], simulated: bool
+) -> str:
+    """Through the daemon where one answers; else by this process, which then is the writer."""
+    try:
+        reply = ask(path.with_suffix(".sock"), request)
+    except DeviceError:
+        writer = Writer(path, simulated=simulated)
+        try:
+            event = event_of(request, names, mean.end_ns)
+            writer.commit(mean.boot.boot, Commit(events=(event,)))
+        finally:
+            writer.close()
+        return "command"
+    if not reply.get("ok"):
+        raise ConfigError(str(reply.get("error")))
+    return "daemon"
+
+
+def _lines(mean: Mean, channel: str, applied_dbm: float, document: dict[str, object]) -> list[str]:
+    where = "the detector's port" if document["at"] == "port" else "the chain's input"
+    lines = [
+        f"{channel}: {applied_dbm:.2f} dBm applied at {where}, {mean.mean_dbm:.2f} dBm read",
+        f"  from {document['from_utc'] or 'a time not known'} to {document['to_utc'] or '-'},"
+        f" {mean.valid_s:.3g} s with readings",
+        f"  readings between {mean.lowest_dbm:.2f} and {mean.highest_dbm:.2f} dBm",
+        f"  difference {mean.mean_dbm - applied_dbm:+.2f} dB: kept",
+    ]
+    if mean.highest_dbm - mean.lowest_dbm > UNSTEADY_DB:
+        lines.append("  Note: the readings were not steady; was it applied all the time?")
+    return lines
