@@ -71,6 +71,17 @@ def test_every_key_of_a_table_is_on_the_page(heading: str, before: str) -> None:
     assert [key for key in known if f"`{key}`" not in section] == []
 
 
+def test_every_key_of_what_was_found_is_on_the_page() -> None:
+    (section,) = re.findall(r"^## `\[as_found\]`.*?(?=^## )", PAGE, re.M | re.DOTALL)
+    (sample,) = (part for part in PARTS if part.startswith("[as_found]"))
+    for before in ("adjusted = false", 'type = "cable"'):
+        with pytest.raises(CalibrationError, match="unknown key; known: ") as caught:
+            calparts.parse(completed(sample.replace(before, before + "\nqqqq = 1")).encode())
+        known = str(caught.value).split("known: ")[1].split(", ")
+        assert len(known) > 3
+        assert [key for key in known if f"`{key}`" not in section and key != "element"] == []
+
+
 def test_assumed_half_widths_are_those_in_use() -> None:
     rows = dict(re.findall(r"^\| `(\w+)` \| (\d\.\d) \|", PAGE, re.MULTILINE))
     assert {kind: float(db) for kind, db in rows.items()} == ASSUMED_DB
