@@ -91,9 +91,13 @@ def _entries(history: History) -> list[dict[str, object]]:
 
 
 def _entry(end_ns: int, figures: dict[str, object], bits: int) -> dict[str, object]:
-    """A window below its detection limit has no mean: it has what it is below of."""
-    below = bits & flags.UPPER_BOUND
-    bound = {"below_v_per_m": figures["e_high_v_per_m"] if below else None}
+    """A window below its detection limit has no mean: it has what it is below of. One that is a
+    lower bound has what it is at the least."""
+    below, above = bits & flags.UPPER_BOUND, bits & flags.LOWER_BOUND
+    bound = {
+        "below_v_per_m": figures["e_high_v_per_m"] if below else None,
+        "at_least_v_per_m": figures["e_low_v_per_m"] if above and not below else None,
+    }
     unknown = {"e_rms_v_per_m": None} if below else {}
     return {"end": text_of(end_ns), **figures, **unknown, **bound, "flags": flags.words(bits)}
 
@@ -103,6 +107,8 @@ def _line(row: dict[str, object]) -> str:
     said = {name: _figure(row[name]) for name in names}
     if row["below_v_per_m"] is not None:
         said["e_rms_v_per_m"] = f"<{_figure(row['below_v_per_m'])}"
+    elif row["at_least_v_per_m"] is not None:
+        said["e_rms_v_per_m"] = f">={_figure(row['at_least_v_per_m'])}"
     figures = " ".join(f"{said[name]:>9}" for name in names)
     words = list(row["flags"])  # type: ignore[call-overload]
     drift_db = float(row["widened_by_drift_db"])  # type: ignore[arg-type]

@@ -60,6 +60,7 @@ def test_every_window_with_its_three_figures(
         "e_low_v_per_m": pytest.approx(2.5),
         "e_high_v_per_m": pytest.approx(10.0),
         "below_v_per_m": None,
+        "at_least_v_per_m": pytest.approx(2.5),
         "expanded_uncertainty_db": pytest.approx(2.5),
         "widened_by_drift_db": 0.0,
         "flags": ["converter clipped"],
@@ -103,3 +104,21 @@ def test_mistakes_are_one_line(
     found = run(capsys, ["averages", "--record", record, *more])
     assert (found.code, found.out) == (2, "")
     assert says in found.one_line
+
+
+def test_below_the_detection_limit_it_says_below_and_no_mean(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path
+) -> None:
+    path = tmp_path / "weak.db"
+    writer = writer_of(path, simulated=True)
+    boot = writer.begin_boot("made-up", "machine")
+    fix = ClockFix(0, UTC_S * S, "made up", 1)
+    rows = fields(int(Flag.BELOW_RANGE))
+    writer.commit(boot, Commit(None, None, None, rows, None, clock_fixes=(fix,)))
+    writer.close()
+    row = run(capsys, ["averages", "--record", path, "--json"]).document["averages"][4]
+    assert row["e_rms_v_per_m"] is None
+    assert row["below_v_per_m"] == pytest.approx(10.0)
+    assert row["at_least_v_per_m"] is None
+    assert row["expanded_uncertainty_db"] is None
+    assert "<10" in run(capsys, ["averages", "--record", path]).out
