@@ -25,6 +25,8 @@ from monitor.detectorkinds import Noise, Source
 from monitor.tomlfile import rows
 
 KINDS = ("log", "rms", "scale", "probe")
+MOST_TEMPERATURE_DB = 20.0
+"""A detector that drifts further than this is not measuring (our choice)."""
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -153,6 +155,8 @@ def _temperature(table: Table, valid_c: tuple[float, float]) -> tuple[Real, Real
         values = rows(table, "temperature", "[celsius, dB]")
         if (np.diff(values[:, 0]) <= 0).any():
             raise table.error("temperature", "degrees must rise from row to row")
+        if np.abs(values[:, 1]).max() > MOST_TEMPERATURE_DB:
+            raise table.error("temperature", f"more than {MOST_TEMPERATURE_DB:g} dB; correct it")
         return values[:, 0], values[:, 1]
     if slope is None:
         return None

@@ -47,6 +47,7 @@ MISTAKES = [
         "reference_c: missing",
     ),
     (CURVES, "averages", "temperature = [[20, 0], [0, 1]]\naverages", "degrees must rise"),
+    (CURVES, "averages", "temperature = [[0, 0], [9, -20.5]]\naverages", "more than 20 dB"),
     (RECEIVER, 'gain = "0"', 'gain = "20.7"', "detector.step: gain '20.7' stands twice"),
     (RECEIVER, 'gain = "0"', 'gain = " "', "detector.step[2].gain: is empty"),
     (RECEIVER, "range_dbm = [-75, -15]", "", "detector.step[1].range_dbm: missing"),

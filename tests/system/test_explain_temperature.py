@@ -42,7 +42,7 @@ reference_c = 20
 LAW = "temperature = [[-20, -2.0], [20, 0.0], [55, 1.75]]"
 
 
-@pytest.fixture(scope="module", params=[""], ids=["none"])
+@pytest.fixture(scope="module", params=[LAW, ""], ids=["table", "none"])
 def folder(request: pytest.FixtureRequest, tmp_path_factory: pytest.TempPathFactory) -> Path:
     """A rehearsal whose calibration knows the drift, or does not."""
     place = tmp_path_factory.mktemp("climate") / ("table" if request.param else "none")
