@@ -30,7 +30,8 @@ SPREAD_NS = 3 * 60_000_000_000
 class Series:
     """What is drawn: times (UTC ns) and figures of shape (n,); nan where there is no figure.
 
-    coverage: how much of any part of the span was measured.
+    coverage: how much of any part of the span was measured. below: where the figure is what the
+    average stays below; empty where that is nowhere.
     """
 
     utc_ns: I
@@ -41,6 +42,7 @@ class Series:
     gaps: Sequence[tuple[int, int]]
     bin_ns: int = 0
     coverage: Coverage = field(default_factory=Coverage)
+    below: NDArray[np.bool_] = field(default_factory=lambda: np.empty(0, np.bool_))
 
 
 @dataclass(frozen=True, slots=True)

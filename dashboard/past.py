@@ -14,6 +14,7 @@ from dashboard.chart import Mark, Series
 from dashboard.span import Span
 from dashboard.words import figure, utc_of
 from monitor.core.alarms import ENOUGH_SHARE
+from monitor.core.flags import UPPER_BOUND
 from monitor.record.types import WINDOW_EVERY_NS, History
 
 F = NDArray[np.float64]
@@ -28,7 +29,8 @@ DUE_NS = 2 * WINDOW_EVERY_NS + 10 * NS
 class Row:
     """A line of the table: a part of the span; figures are None where there is no measurement.
 
-    most_thin, least_thin: too little of that average's time is valid.
+    most_thin, least_thin: too little of that average's time is valid. most_below, least_below: it
+    is what that average stays below.
     """
 
     part: Span
@@ -39,6 +41,8 @@ class Row:
     gap_s: float
     most_thin: bool = False
     least_thin: bool = False
+    most_below: bool = False
+    least_below: bool = False
 
 
 @dataclass(frozen=True, slots=True)
@@ -58,8 +62,9 @@ def series_of(history: History, scope: int | None, now_ns: int) -> Series:
     low, mean, high = figures(history, scope)
     gaps = gaps_until(history.gaps, now_ns)
     return Series(
-        history.utc_ns, low, mean, high, history.valid_share, gaps, history.bin_ns, history.coverage
-    )
+        history.utc_ns, low, mean, high, history.valid_share, gaps, history.bin_ns,
+        history.coverage, (history.flags & int(UPPER_BOUND)) != 0,
+    )  # fmt: skip
 
 
 def figures(history: History, scope: int | None) -> tuple[F, F, F]:
@@ -136,6 +141,7 @@ def _row(series: Series, part: Span, now_ns: int) -> Row:
         return Row(part, None, None, None, 0.0, gap_s)
     means = series.mean[inside]
     thin = ~(series.valid_share[inside] >= ENOUGH_SHARE)
+    below = series.below[inside] if series.below.size else np.zeros(means.size, np.bool_)
     at, least = int(np.argmax(means)), int(np.argmin(means))
     return Row(
         part,
@@ -146,6 +152,8 @@ def _row(series: Series, part: Span, now_ns: int) -> Row:
         gap_s,
         bool(thin[at]),
         bool(thin[least]),
+        bool(below[at]),
+        bool(below[least]),
     )
 
 

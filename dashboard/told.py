@@ -9,6 +9,9 @@ from dashboard import bounds, words
 from dashboard.bounds import Kind, Ratio, Window
 from monitor.core.interval import interval as within
 
+SEEN = "what is seen stays"
+"""Of a part of the field: it is below its detection limit, the whole may not be."""
+
 
 def figure(ratio: Ratio) -> str:
     """'0.31', 'at least 27', 'below 0.02' or 'about 0.4'; 'no figure' where there is none."""
@@ -19,6 +22,8 @@ def figure(ratio: Ratio) -> str:
         return f"at least {words.rounded_down(stands)}"
     if ratio.kind is Kind.BELOW:
         return f"below {words.rounded_up(stands)}"
+    if ratio.kind is Kind.OPEN and ratio.window.upper:
+        return f"{SEEN} below {words.rounded_up(stands)}"
     about = "about " if ratio.kind is Kind.OPEN else ""
     return about + words.ratio_figure(stands)
 
@@ -120,6 +125,8 @@ def e_words(field: Mapping[str, Any], flags: Sequence[str]) -> str:
     if kind is Kind.BELOW:
         most = mean if high is None else high
         return words.figure(None) if most is None else f"below {words.rounded_up(most)}"
+    if kind is Kind.OPEN and window.upper and high is not None:
+        return f"{SEEN} below {words.rounded_up(high)}"
     about = "about " if kind is Kind.OPEN else ""
     return about + words.figure(low if mean is None and kind is not Kind.NONE else mean)
 

@@ -75,7 +75,7 @@ def _unsure(mean_w: F, here: Station) -> F:
 class Totals:
     """Sums over the channels (p,), each power times a weight, and what is unsure about them.
 
-    below: the mean is below its own detection limit; low is then 0 and high the bound to state.
+    below: the mean is below its own detection limit; low is then 0, mean and high the bound.
     added: standard uncertainty of what adds.
     """
 
@@ -104,7 +104,7 @@ def totals(
     top = interval(0.0, np.maximum(high, DETECTION * unsure), k * u_db, k * added).high
     return Totals(
         np.where(below, 0.0, np.maximum(low, 0.0)),
-        np.maximum(mean, 0.0),
+        np.where(below, top, np.maximum(mean, 0.0)),
         np.where(below, top, np.maximum(high, 0.0)),
         added,
         u_db,

@@ -54,7 +54,7 @@ class FieldRows:
     e2_low: gaps as zero; e2_mean: mean of the valid part; e2_high: gaps at the period's maximum;
     e2_max: the largest reading. u_db: expanded uncertainty with coverage factor k of what
     multiplies, dB; added_e2: of what adds (noise, scatter), V2/m2. Below the detection limit e2_low
-    is 0 and e2_high the bound that is stated.
+    is 0; e2_mean and e2_high are the bound that is stated.
     """
 
     end_ns: I

@@ -175,7 +175,7 @@ def test_an_upper_bound_says_below(tmp_path: Path) -> None:
 def test_flags_either_way_leave_a_bound_neither_way(tmp_path: Path) -> None:
     now = edited(snapshot(0.31), f_flags=[BELOW_RANGE, LOWER[0]])
     heading = _heading(now, tmp_path)
-    assert "About 0.31 of the limit" in heading
+    assert "What is seen stays below" in heading
     assert "a bound neither way: it cannot be said to be below" in heading
     assert _ratio(now).kind is Kind.OPEN
 
