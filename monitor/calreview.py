@@ -25,6 +25,7 @@ from monitor.core.limits import frequency_text
 from monitor.core.montecarlo import errors_db, spread
 from monitor.core.quantities import PORT_OHM
 from monitor.core.uncertainty import equal_shares, expanded_db
+from monitor.marking import DAY_NS
 
 Document = dict[str, object]
 
@@ -102,6 +103,7 @@ def document(shown: View, shares: Real, now_utc_ns: int) -> Document:
         "certificate": certificate.number,
         "date": certificate.date.isoformat(),
         "due": certificate.due.isoformat(),
+        "due_in_days": (file.dues(shown.axes)[0].utc_ns - now_utc_ns) // DAY_NS,
         "overdue": bool(overdue),
         "overdue_parts": [due.what for due in overdue],
         "invented": file.invented,

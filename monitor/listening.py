@@ -11,6 +11,7 @@ from monitor.config import Site
 from monitor.control import ask
 from monitor.core.errors import DeviceError
 from monitor.core.readings import MISSING, NS_PER_S, FrontEnd
+from monitor.marking import device_flag
 
 SLICE_S = 0.5
 WHERE = "sensor"
@@ -49,6 +50,15 @@ def heard(front: FrontEnd, site: Site, seconds: float, boot_ns: Callable[[], int
     kind = "simulated" if site.simulated else "real"
     text = f"{status.text}; {kind}, {_rate(times_ns.tolist(), seconds)}"
     return Finding(WHERE, text + "".join(f"; {name}: nothing" for name in dead), not dead)
+
+
+def named(name: str, calibrated: frozenset[str]) -> list[Finding]:
+    """Nothing where the device calls itself as the calibration file says, or either is silent."""
+    if not device_flag(name, calibrated):
+        return []
+    serials = " or ".join(sorted(calibrated))
+    text = f"the device calls itself {name}, calibrated was {serials}: nothing will conform"
+    return [Finding(WHERE, text, ok=False)]
 
 
 def _rate(times_ns: Sequence[int], seconds: float) -> str:

@@ -24,6 +24,7 @@ from monitor.core.limits import frequency_text
 from monitor.core.quantities import dbm_from_w, s_from_e, w_from_dbm
 from monitor.core.uncertainty import expanded_db
 from monitor.detectorfile import Detector, Fit
+from monitor.marking import due_flags
 
 FORMS = ("counts", "volts", "dbm", "dbfs", "v_per_m")
 
@@ -218,8 +219,8 @@ def _circumstances(file: CalibrationFile, channel: Channel, asked: Asked, now_ut
     bits = Flag.COMPONENT_ONLY
     if file.invented:
         bits |= Flag.INVENTED_CALIBRATION
-    if now_utc_ns >= file.dues(channel.axis)[0].utc_ns:
-        bits |= Flag.CALIBRATION_OVERDUE
+    now = np.array([now_utc_ns], np.int64)
+    bits |= Flag(int(due_flags(now, file.dues(channel.axis)[0].utc_ns)[0]))
     low, high = file.certificate.valid_temperature_c
     if asked.temperature_c is None:
         bits |= Flag.TEMPERATURE_UNKNOWN

@@ -12,7 +12,7 @@ from hardware.registry import Settings, declared, open_front_end, settings_for
 from monitor import limitsets
 from monitor.calfile import chain as chain_of_file
 from monitor.calparts import CalibrationFile, read
-from monitor.changed import swapped
+from monitor.changed import names_of, swapped
 from monitor.checks import Finding, compare_bands
 from monitor.clock import SystemClock
 from monitor.config import Site
@@ -29,7 +29,7 @@ from monitor.core.silence import KEY as SILENCE
 from monitor.core.station import Station, station
 from monitor.daemon import RECORD, Daemon
 from monitor.inforce import before_of, in_force
-from monitor.listening import heard, left_alone
+from monitor.listening import heard, left_alone, named
 from monitor.record import connect
 from monitor.record.background import WriterThread
 from monitor.record.writer import Writer
@@ -140,17 +140,21 @@ def check(site: Site) -> list[Finding]:
     return found
 
 
-def listen(site: Site, seconds: float) -> Finding:
-    """What the sensor's line gives within that time; the line is let go afterwards."""
+def listen(site: Site, seconds: float) -> list[Finding]:
+    """What the sensor's line gives within that time, and whether it is the calibrated device.
+
+    The line is let go afterwards.
+    """
     alone = left_alone(site)
     if alone is not None:
-        return alone
+        return [alone]
     clock, settings = SystemClock(), sensor_settings(site)
     front = open_front_end(
         settings, len(site.channels), clock.boot_ns, clock.utc_ns, site.simulated
     )
     try:
-        return heard(front, site, seconds, clock.boot_ns)
+        found = heard(front, site, seconds, clock.boot_ns)
+        return [found, *named(front.status().name, names_of(read(site.calibration)))]
     finally:
         front.close()
 

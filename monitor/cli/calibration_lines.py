@@ -7,6 +7,7 @@ from collections.abc import Iterator, Mapping, Sequence
 from typing import Any
 
 from monitor.core.limits import frequency_text
+from monitor.marking import DUE_SOON_DAYS
 
 Entry = Mapping[str, Any]
 
@@ -17,6 +18,8 @@ def shown(document: Entry) -> Iterator[str]:
     yield f"  certificate {document['certificate']}, due {document['due']}"
     if document["overdue"]:
         yield f"  OVERDUE: {', '.join(document['overdue_parts'])}; nothing conforms"
+    elif document["due_in_days"] < DUE_SOON_DAYS:
+        yield f"  due soon: in {document['due_in_days']} days, whichever part comes first"
     low_c, high_c = document["valid_temperature_c"]
     yield f"  valid from {low_c:g} to {high_c:g} °C; identity {document['identity'][:12]}"
     if document["invented"]:

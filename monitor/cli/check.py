@@ -32,7 +32,7 @@ def command(site_file: str | None, listen_s: float, as_json: bool) -> None:
 
     found = list(findings(site, SystemClock().utc_ns(), wiring.check, wiring.averaging_of))
     if listen_s and site.sensor_kind not in wiring.RECORDED:
-        found.append(wiring.listen(site, listen_s))
+        found += wiring.listen(site, listen_s)
     if as_json:
         rows = [{"where": f.where, "text": f.text, "ok": f.ok} for f in found]
         judged = all(f.ok for f in found)

@@ -11,6 +11,7 @@ from collections.abc import Sequence
 import numpy as np
 
 from monitor.core.caldrift import widened_db
+from monitor.core.flags import UPPER_BOUND
 from monitor.record.uses import Calibrations, F, I, Segment, drift_over
 
 _K = (
@@ -33,6 +34,15 @@ def widened(
     if not drift_db.any():
         return u_db, drift_db
     return widened_db(u_db, _factors(db, boot, segments, after_ns, until_ns), drift_db), drift_db
+
+
+def raised(e2_high: F, flags: I, drift_db: F) -> F:
+    """Upper figures (n,), raised by the whole drift where they are a bound that is stated.
+
+    Such a bound holds its uncertainty already, so the line of a drift cannot widen it afterwards.
+    """
+    bound = (flags & int(UPPER_BOUND)) != 0
+    return np.where(bound, e2_high * 10.0 ** (drift_db / 10.0), e2_high)
 
 
 def _factors(

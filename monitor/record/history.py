@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 from monitor.core.interval import total_db
 from monitor.core.readings import NS_PER_S
 from monitor.record.coverage import Coverage, coverage
-from monitor.record.drift import widened
+from monitor.record.drift import raised, widened
 from monitor.record.fetch import columns
 from monitor.record.spans import DAY_NS, HOUR_NS
 from monitor.record.types import Boot, History, I
@@ -147,6 +147,7 @@ def _of_boot(
     wider = widened(db, held, boot.boot, start_ns, end_ns, table["u_db"])
     table["u_db"], table["widened_by_drift_db"] = wider
     table["flags"] = _placed(keys.size, place, flags, 0)
+    table["e2_high"] = raised(table["e2_high"], table["flags"], table["widened_by_drift_db"])
     for number in np.unique(scope).tolist():
         rows = scope == number
         place = np.searchsorted(keys, judged[rows])

@@ -62,14 +62,15 @@ class Calibrations:
         mine = [use for use in self.uses if use.boot == boot]
         ends = [use.boot_ns for use in mine[1:]] + [_LAST_NS]
         found = [
-            Segment(use.boot_ns, end_ns, self._largest_db(use.calibration))
+            Segment(use.boot_ns, end_ns, self._drift_db(use.calibration))
             for use, end_ns in zip(mine, ends)
         ]
         return [segment for segment in found if segment.drift_db > 0.0]
 
-    def _largest_db(self, calibration: str) -> float:
-        sizes = (abs(drift.drift_db) for drift in self.drifts if calibration in drift.documents)
-        return max(sizes, default=0.0)
+    def _drift_db(self, calibration: str) -> float:
+        """What was said last counts: a later file may correct an earlier one."""
+        said = [drift.drift_db for drift in self.drifts if calibration in drift.documents]
+        return abs(said[-1]) if said else 0.0
 
 
 def drift_over(segments: Sequence[Segment], after_ns: I, until_ns: I) -> F:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from datetime import UTC, datetime, timedelta
 from pathlib import Path
 
 import pytest
@@ -29,3 +30,18 @@ def test_compare_prints_the_drift(
     assert ("which is not A" in lines) is not is_a
     assert "a rectangular line of 0.5 dB more, u = 0.289 dB" in lines
     assert "Drift" not in run(capsys, ["calibration", "compare", BOARD, BOARD]).out
+
+
+@pytest.mark.parametrize(("days", "soon"), [(20, True), (61, False)])
+def test_show_and_field_announce_a_due_date(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path, days: int, soon: bool
+) -> None:
+    due = datetime.now(UTC).date() + timedelta(days=days)
+    path = tmp_path / "soon.toml"
+    path.write_text(BOARD.read_text().replace("due = 2027-09-14", f"due = {due}"))
+    shown = run(capsys, ["calibration", "show", path, "--json"]).document
+    assert shown["due_in_days"] == days  # to the end of the due day
+    assert not shown["overdue"]
+    assert ("due soon: in 20 days" in run(capsys, ["calibration", "show", path]).out) is soon
+    asked = ["field", "--calibration", path, "--frequency", "900MHz", "--counts", "2000", "--json"]
+    assert ("calibration due soon" in run(capsys, asked).document["flags"]) is soon

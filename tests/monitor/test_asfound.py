@@ -14,6 +14,7 @@ from monitor import calfile
 from monitor.calparts import CalibrationFile, parse
 from monitor.config import Site, load_site
 from monitor.core.errors import CalibrationError
+from monitor.core.flags import UPPER_BOUND
 from monitor.core.rows import Event, FieldRows
 from monitor.inforce import InForce, in_force
 from monitor.record import schema
@@ -100,13 +101,13 @@ def begin(site: Site, text: str, boot_ns: int) -> InForce:
     return force
 
 
-def windows(site: Site, first_minute: int, n: int) -> None:
+def windows(site: Site, first_minute: int, n: int, flags: int = 0) -> None:
     """Minutes of windows of 360 s, U 1.5 dB at k = 2."""
     ends = (first_minute + np.arange(1, n + 1)) * MINUTE
     ones = np.ones(n)
     rows = FieldRows(
         ends, np.full(n, 360), ones, ones, ones, ones, 1.5 * ones, 2 * ones, ones, ones,
-        np.zeros(n, np.int64), np.zeros(n),
+        np.full(n, flags), np.zeros(n),
     )  # fmt: skip
     writer = Writer(site.record_path, simulated=True)
     writer.commit(writer.begin_boot("one", "machine"), Commit(fields=rows))
@@ -140,6 +141,28 @@ def test_a_drift_widens_what_rests_on_the_calibration_before_and_nothing_else(si
     np.testing.assert_array_equal(seen.widened_by_drift_db, [0.9] * 35 + [0.0] * 25)
     assert coarse.u_db[0] == pytest.approx(wide)
     assert (coarse.u_db[-1], coarse.widened_by_drift_db[-1]) == (1.5, 0.0)
+
+
+def test_a_drift_can_be_corrected_by_a_later_file(site: Site) -> None:
+    begin(site, OLD, 0)
+    windows(site, 0, 30)
+    for at, db in enumerate((0.9, 0.3, 0.0), 30):
+        (event,) = begin(site, NEW + FOUND + f"db = {db}\n", at * MINUTE).events
+        assert event.body["drift_db"] == db
+        with Record.open(site.record_path) as record:
+            seen = record.history(UTC0, UTC0 + 70 * MINUTE, 360)
+        assert set(seen.widened_by_drift_db) == {db}
+        assert seen.u_db[0] == pytest.approx(2 * math.sqrt(0.75**2 + db**2 / 3))
+
+
+def test_a_bound_that_is_stated_is_raised_by_the_drift(site: Site) -> None:
+    begin(site, OLD, 0)
+    windows(site, 0, 10)
+    windows(site, 10, 10, int(UPPER_BOUND))
+    begin(site, NEW + FOUND + "db = -1.0\n", 20 * MINUTE)
+    with Record.open(site.record_path) as record:
+        seen = record.history(UTC0, UTC0 + 70 * MINUTE, 360)
+    np.testing.assert_allclose(seen.e_high, [1.0] * 10 + [10 ** (1 / 20)] * 10)
 
 
 def test_hours_and_days_are_widened_too(site: Site) -> None:

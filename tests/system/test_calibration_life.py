@@ -12,7 +12,7 @@ import pytest
 from monitor.core.flags import Flag
 from monitor.record.reader import Record
 from monitor.record.types import EventRow
-from tests.system.commands import fieldsill, filled, wait_for
+from tests.system.commands import fieldsill, filled, start, wait_for
 from tests.system.desk import DATA, Desk, live
 
 
@@ -63,15 +63,22 @@ def test_a_box_with_a_record_measures_on_without_a_calibration_file(
     assert "calibration overdue" in now["flags"]
     assert "conforms" not in {row["verdict"] for row in now["exposures"]}
     assert last_flags(desk) & Flag.CALIBRATION_OVERDUE
-    (fault,) = events(desk, "fault")
+    fault = events(desk, "fault")[0]
     assert fault.name == "calibration file"
     assert "calibration.toml" in str(fault.body["why"])
     starts = events(desk, "start")
     assert {event.body["calibration"] for event in starts} == {fault.body["stands in"]}
+    if spoiled is None:  # so does the command that starts both halves
+        both = start("run", "--site", desk.folder / "site.toml")
+        try:
+            wait_for(lambda: (desk.now().get("device") or {}).get("connected"))
+        finally:
+            both.terminate()
+            assert both.wait(40) == 0
     good.write_text(whole)
     run(desk)
     assert not last_flags(desk) & Flag.CALIBRATION_OVERDUE
-    assert len(events(desk, "fault")) == 1
+    assert len(events(desk, "fault")) == (2 if spoiled is None else 1)
 
 
 def test_a_first_start_without_a_calibration_file_refuses(desk: Desk) -> None:
@@ -113,6 +120,8 @@ def test_another_board_or_part_than_the_calibrated_one_is_seen(desk: Desk) -> No
     path.write_text(text.replace('kind = "log"', 'kind = "log"\nserial = "another"', 1))
     run(desk)
     assert last_flags(desk) & Flag.ELEMENT_CHANGED
+    heard = fieldsill("check", "--site", site, "--listen", "1").stdout
+    assert "the device calls itself rehearsal-board, calibrated was another" in heard
     path.write_text(text)
     run(desk)
     assert not last_flags(desk) & Flag.ELEMENT_CHANGED
