@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-import hashlib
-import json
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from typing import Any
@@ -101,12 +99,6 @@ class Detector:
     def resolution(self) -> float | None:
         """What a count stands for; None for converter counts."""
         return self.source.resolution
-
-    @property
-    def identity(self) -> str:
-        """sha256 of what the table says, hex."""
-        text = json.dumps(self.values, sort_keys=True, default=str)
-        return hashlib.sha256(text.encode()).hexdigest()
 
     def fit(self, gain: str, band: str, low_hz: float, high_hz: float) -> Fit:
         """The detector at a gain step ('': the only one) from low_hz to high_hz (or at one).

@@ -37,6 +37,7 @@ command.add_command(calibration_chart.command)
 @click.option("--at", help="In force then, RFC 3339; default: at the newest start.")
 @click.option("--band", help="LOW:HIGH, for example 700MHz:2.7GHz; all of the tables if left out.")
 @click.option("--axes", help="For example xyz or z; all that the file serves if left out.")
+@click.option("--gain", default="", help="A receiver's gain step, where there are several.")
 @click.option("--shares", help="Each axis' part of E squared, for example 0.5,0.3,0.2; or equal.")
 @click.option(
     "--monte-carlo", "draws", type=click.IntRange(FEWEST_DRAWS, MOST_DRAWS),
@@ -50,6 +51,7 @@ def show(
     at: str | None,
     band: str | None,
     axes: str | None,
+    gain: str,
     shares: str | None,
     draws: int | None,
     seed: int,
@@ -57,7 +59,7 @@ def show(
 ) -> None:
     """Certificates, tables, response over the band, table of contributions, uncertainty."""
     (held,) = calibration_files.of([] if file is None else [file], record, at, 1)
-    shown = calreview.view(held, _axes(axes), _band(band))
+    shown = calreview.view(held, _axes(axes), _band(band), gain)
     parts = calreview.shares_of(shares, shown.axes)
     document = calreview.document(shown, parts, time.time_ns())
     document["monte_carlo"] = (
@@ -76,6 +78,7 @@ def show(
 @click.option("--at", help="In force then, RFC 3339; default: at the newest start.")
 @click.option("--band", help="LOW:HIGH; all that both files cover if left out.")
 @click.option("--axes", help="For example xyz or z; all that both files serve if left out.")
+@click.option("--gain", default="", help="A receiver's gain step, where there are several.")
 @click.option("--json", "as_json", is_flag=True, help="One JSON document.")
 def compare(
     files: tuple[Path, ...],
@@ -83,6 +86,7 @@ def compare(
     at: str | None,
     band: str | None,
     axes: str | None,
+    gain: str,
     as_json: bool,
 ) -> None:
     """What B has otherwise than A, and what that does to response and uncertainty."""
@@ -92,7 +96,7 @@ def compare(
     if not chosen:
         raise ConfigError("the calibration files serve no axis in common")
     band_hz = _band(band) or calreview.common_band(held, chosen)
-    views = [calreview.view(file, chosen, band_hz) for file in held]
+    views = [calreview.view(file, chosen, band_hz, gain) for file in held]
     document = calcompare.comparison(*views)
     if as_json:
         print_json(document)

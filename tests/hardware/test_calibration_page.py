@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 import re
+from dataclasses import replace
 from pathlib import Path
 
 import pytest
@@ -30,6 +31,7 @@ def completed(part: str) -> str:
         for table in tables
         if not (
             ('type = "antenna"' in table and 'type = "antenna"' in part)
+            or (table.startswith("[[element]]") and 'kind = "probe"' in part)
             or (table.startswith("[detector]") and "detector" in heads)
             or (table.startswith("[calibration]") and "calibration" in heads)
         )
@@ -45,7 +47,8 @@ def test_the_whole_file_gives_a_chain_that_lacks_nothing() -> None:
 @pytest.mark.parametrize("part", PARTS, ids=lambda part: part.split("\n")[1])
 def test_every_sample_is_read_and_gives_a_chain(part: str) -> None:
     file = calparts.parse(completed(part).encode())
-    held = chain(file, CHANNELS, BAND)
+    gain = next(iter(re.findall(r'^gain = "(.*)"$', part, re.MULTILINE)), "")
+    held = chain(file, [replace(channel, gain=gain) for channel in CHANNELS], BAND)
     assert len(held.k) == 3
     names = re.findall(r'^name = "(.*)"$', part, re.MULTILINE)
     assert set(names) <= {line.name for lines in held.contributions for line in lines}
@@ -69,6 +72,21 @@ def test_every_key_of_a_table_is_on_the_page(heading: str, before: str) -> None:
     known = str(caught.value).split("known: ")[1].split(", ")
     assert len(known) > 5
     assert [key for key in known if f"`{key}`" not in section] == []
+
+
+@pytest.mark.parametrize("part", [p for p in PARTS if p.startswith("[detector]")])
+def test_every_key_of_a_detector_is_on_the_page(part: str) -> None:
+    """Of each kind, and of what stands under it."""
+    section = PAGE[PAGE.index("\n## Detector\n") :]
+    heads = [line for line in part.split("\n") if line.startswith("[") and "element" not in line]
+    for head in dict.fromkeys(heads):
+        with pytest.raises(CalibrationError, match="unknown key; known: ") as caught:
+            calparts.parse(completed(part.replace(head, head + "\nqqqq = 1", 1)).encode())
+        known = str(caught.value).split("known: ")[1].split(", ")
+        assert len(known) > 1
+        assert [
+            key for key in known if f"`{key}`" not in section and f".{key}]]`" not in section
+        ] == []
 
 
 def test_every_key_of_what_was_found_is_on_the_page() -> None:
