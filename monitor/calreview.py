@@ -25,6 +25,8 @@ from monitor.core.limits import frequency_text
 from monitor.core.montecarlo import errors_db, spread
 from monitor.core.quantities import PORT_OHM
 from monitor.core.uncertainty import equal_shares, expanded_db
+from monitor.detectorfile import Detector
+from monitor.detectorkinds import ProbeSource
 from monitor.marking import DAY_NS
 
 Document = dict[str, object]
@@ -131,10 +133,17 @@ def _detectors(shown: View) -> list[Document]:
                 "averages": detector.averages,
                 "averaging_s": detector.averaging_s or None,
                 "range_dbm": list(detector.source.range_dbm),
+                "range_v_per_m": _range_v_per_m(detector),
                 "resolution": detector.resolution,
             }
         )
     return out
+
+
+def _range_v_per_m(detector: Detector) -> list[float] | None:
+    """Of a probe calibrated as a whole."""
+    source = detector.source
+    return list(source.law.range_v_per_m) if isinstance(source, ProbeSource) else None
 
 
 def _elements(file: CalibrationFile) -> list[Document]:

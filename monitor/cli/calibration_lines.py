@@ -30,9 +30,8 @@ def shown(document: Entry) -> Iterator[str]:
         yield "  (write a [[contribution]] of each such kind, even of zero: that confirms it)"
     yield ""
     for detector in document["detectors"]:
-        low, high = detector["range_dbm"]
         yield (
-            f"detector{_of_axis(detector)}: {detector['kind']}, {low:.1f} to {high:.1f} dBm,"
+            f"detector{_of_axis(detector)}: {detector['kind']}, {_range(detector)},"
             f" averages {detector['averages']}{_over(detector['averaging_s'])}"
         )
     for element in document["elements"]:
@@ -49,6 +48,13 @@ def shown(document: Entry) -> Iterator[str]:
 
 def _over(averaging_s: float | None) -> str:
     return f" over {averaging_s:g} s" if averaging_s else ""
+
+
+def _range(detector: Entry) -> str:
+    """Of a probe in the unit that its certificate has."""
+    if detector["range_v_per_m"]:
+        return "{:g} to {:g} V/m".format(*detector["range_v_per_m"])
+    return "{:.1f} to {:.1f} dBm".format(*detector["range_dbm"])
 
 
 def _of_axis(entry: Entry) -> str:

@@ -146,7 +146,7 @@ def _document(asked: Asked, found: Figure) -> dict[str, object]:
 def _lines(asked: Asked, found: Figure) -> list[str]:
     """The way from counts to V/m, one line a step."""
     axis = f", axis {asked.axis}" if asked.axis else ""
-    detector, *others = found.chain
+    others = found.chain[1:]
     head = [f"{found.certificate.id}, at {frequency_text(asked.frequency_hz)}{axis}", ""]
     if asked.form == "counts":
         head.append(_step("raw count", f"{asked.value:.0f}"))
@@ -159,14 +159,26 @@ def _lines(asked: Asked, found: Figure) -> list[str]:
     if found.temperature_db:
         taken = f"{-found.temperature_db:+.2f} dB"
         head.append(_step("for its temperature, in what follows", taken))
-    head.append(_step("power at its port", _level(found.p_dbm, "dBm"), detector))
-    losses = [link for link in others if link.kind not in PICKUPS and link.gain_db is not None]
-    at_antenna_dbm = found.p_dbm - sum(link.gain_db or 0.0 for link in losses)
-    head += [_step(*_loss(link), link) for link in losses]
-    head.append(_step("power at the antenna's port", _level(at_antenna_dbm, "dBm")))
-    head += [_step(*_loss(link), link) for link in others if link.kind in PICKUPS]
+    head += _on_the_way(found)
     head += [_step(link.element, "", link) for link in others if link.gain_db is None]
     return [*head, *_result(found), "", *_remarks(found), CAUTION]
+
+
+def _on_the_way(found: Figure) -> list[str]:
+    """From the detector's port to the antenna; a probe as a whole has neither port nor antenna."""
+    detector, *others = found.chain
+    pickups = [_step(*_loss(link), link) for link in others if link.kind in PICKUPS]
+    if any(link.kind == "probe" for link in others):
+        e = math.sqrt(quantities.w_from_dbm(found.p_dbm) * quantities.PORT_OHM)
+        return [_step("field strength by its linearity", _level(e, "V/m"), detector), *pickups]
+    losses = [link for link in others if link.kind not in PICKUPS and link.gain_db is not None]
+    at_antenna_dbm = found.p_dbm - sum(link.gain_db or 0.0 for link in losses)
+    return [
+        _step("power at its port", _level(found.p_dbm, "dBm"), detector),
+        *(_step(*_loss(link), link) for link in losses),
+        _step("power at the antenna's port", _level(at_antenna_dbm, "dBm")),
+        *pickups,
+    ]
 
 
 def _step(name: str, value: str, link: Link | None = None) -> str:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import re
 from pathlib import Path
 from typing import Any
 
@@ -49,6 +50,14 @@ def test_what_a_probe_indicates(capsys: pytest.CaptureFixture[str], tmp_path: Pa
         got = field(capsys, tmp_path, PROBE, "--frequency", "700MHz", *form)
         assert got["e_v_per_m"] == pytest.approx(5.0 * 10 ** (-0.5 / 20))
         assert got["chain"][1]["gain_db"] == pytest.approx(0.5)
+    path = tmp_path / "calibration.toml"
+    told = run(
+        capsys,
+        ["field", "--calibration", path, "--frequency", "700MHz", "--v-per-m", "5"],
+    ).out
+    assert re.search(r"field strength by its linearity +5\.00 V/m", told)
+    assert "port" not in told
+    assert "probe, 0.48 to 210 V/m" in run(capsys, ["calibration", "show", path]).out
     strong = field(capsys, tmp_path, PROBE, "--frequency", "700MHz", "--v-per-m", "300")
     assert strong["e_high_v_per_m"] is None
     weak = field(capsys, tmp_path, PROBE, "--frequency", "700MHz", "--v-per-m", "0.1")
