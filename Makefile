@@ -4,13 +4,14 @@
 BIN := .venv/bin
 ARGS ?=
 
-.PHONY: help run test lint bench lock clean tools
+.PHONY: help run test lint bench coverage lock clean tools
 
 help:
 	@echo "make run     the main job on a simulated detector"
 	@echo "make test    lint, types, import contracts and the tests"
 	@echo "make lint    the first three alone"
 	@echo "make bench   measures, each beside what it is compared with"
+	@echo "make coverage  10,000 draws a cell: how often the stated intervals hold the truth"
 	@echo "make lock    write the lock files anew from pyproject.toml"
 	@echo "make clean   remove .venv and what tools left behind (no record)"
 
@@ -30,6 +31,9 @@ lint: tools
 
 bench: tools
 	$(BIN)/python -m tests.bench $(ARGS)
+
+coverage: tools
+	$(BIN)/python -m tests.coverage $(ARGS)
 
 # One resolution for every supported Python and both architectures; no address of an index in it.
 LOCK = .venv/lock/bin/uv pip compile --quiet --upgrade --universal --fork-strategy fewest \
