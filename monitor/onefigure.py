@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import NamedTuple
 
 import numpy as np
 
@@ -15,35 +16,17 @@ from monitor.calparts import CalibrationFile, Certificate, axes_of, elements_of
 from monitor.config import Channel
 from monitor.core.averaging_law import UNDECLARED
 from monitor.core.budget import Contribution
-from monitor.core.calibration import FrequencyTable, e2_per_w, temperature_db
+from monitor.core.calibration import FrequencyTable, e2_per_w
 from monitor.core.errors import ConfigError
 from monitor.core.flags import LOWER_BOUND, UPPER_BOUND, Flag
+from monitor.core.interval import DETECTION, interval, total_db
 from monitor.core.keys import Table
-from monitor.core.law import CurveLaw, ProbeLaw, Said, ScaleLaw
 from monitor.core.limits import frequency_text
 from monitor.core.quantities import dbm_from_w, s_from_e, w_from_dbm
 from monitor.core.uncertainty import expanded_db
-from monitor.detectorfile import Detector, Fit
+from monitor.detectorkinds import Noise
 from monitor.marking import due_flags
-
-FORMS = ("counts", "volts", "dbm", "dbfs", "v_per_m")
-
-
-@dataclass(frozen=True, slots=True)
-class Asked:
-    """A figure in one of FORMS, and the circumstances. axis, gain '': the file knows one only.
-
-    signal, bandwidth_hz: of the band, as a site file says them; they matter to averaged logs.
-    """
-
-    form: str
-    value: float
-    frequency_hz: float
-    axis: str = ""
-    temperature_c: float | None = None
-    signal: str = "undeclared"
-    bandwidth_hz: float = 0.0
-    gain: str = ""
+from monitor.oneport import Asked, at_the_range, port_dbm, volts_of, warm_db
 
 
 @dataclass(frozen=True, slots=True)
@@ -67,7 +50,8 @@ class Link:
 class Figure:
     """Power at the port and what it stands for; nan where the figure is no reading.
 
-    temperature_db: what was taken off the power for the instrument's temperature.
+    temperature_db: what was taken off the power for the instrument's temperature; noise_dbm: noise
+    taken off for the field, None where there is none. p_dbm: as read.
 
     e_low, e_high: bounds at 95 %; 0 where the reading is an upper bound, inf where a lower one.
     """
@@ -84,6 +68,7 @@ class Figure:
     certificate: Certificate
     volts: float | None
     temperature_db: float
+    noise_dbm: float | None
 
     @property
     def expanded_db(self) -> float:
@@ -107,19 +92,19 @@ def through(file: CalibrationFile, asked: Asked, now_utc_ns: int) -> Figure:
     losses = [element.curve for element in elements if element.kind not in PICKUPS]
     fit = detector.fit(asked.gain, "", asked.frequency_hz, asked.frequency_hz)
     done = detector.treatment(asked.signal, asked.bandwidth_hz, UNDECLARED)
-    warm_db = _temperature_db(detector, fit, asked)
-    p_dbm, bits = _reported(_port_dbm(file, fit, asked), fit, done.correction_db, warm_db)
+    fit = fit.treated(done)
+    warm = warm_db(detector, fit, asked)
+    p_dbm, bits = at_the_range(port_dbm(file, fit, asked), fit, warm)
     per_w = float(e2_per_w(at, antenna.curve, losses)[0])
-    e = math.nan if math.isnan(p_dbm) else math.sqrt(w_from_dbm(p_dbm) * per_w)
     lines, bits_of_lines = _budget(file, channel, asked.frequency_hz)
-    lines = (*lines, *fit.contributions, *done.lines)
+    lines = (*lines, *fit.contributions)
     expanded, k = expanded_db([lines], np.ones((1, 1)))
     bits |= bits_of_lines | _circumstances(file, channel, asked, now_utc_ns) | done.flags
-    low, high = _bounds(e, float(expanded[0]), bits)
+    found = _field(w_from_dbm(p_dbm), fit.noise, per_w, float(expanded[0]), k, bits)
     return Figure(
-        p_dbm, e, s_from_e(e), float(expanded[0]) / k, k, low, high, bits,
-        _links(file, elements, asked.frequency_hz, lines), file.certificate,
-        _volts(fit, asked), warm_db,
+        p_dbm, found.e, s_from_e(found.e), found.expanded_db / k, k, found.low, found.high,
+        found.flags, _links(file, elements, asked.frequency_hz, lines), file.certificate,
+        volts_of(fit, asked), warm, dbm_from_w(fit.noise.w) if fit.noise.w else None,
     )  # fmt: skip
 
 
@@ -157,63 +142,6 @@ def _covers(where: Table, name: str, curve: FrequencyTable, frequency_hz: float)
         )
 
 
-def _port_dbm(file: CalibrationFile, fit: Fit, asked: Asked) -> Said:
-    """Power at the detector's port, dBm (nan: no reading), and flags."""
-    law = fit.law
-    if asked.form == "counts":
-        power_w, bits = fit.table.convert(np.array([int(asked.value)], np.int32))
-        p_w = float(power_w[0])
-        return (math.nan if math.isnan(p_w) else dbm_from_w(p_w)), int(bits[0])
-    if asked.form == "dbm":
-        return law.at_dbm(asked.value)
-    if asked.form == "volts" and isinstance(law, CurveLaw):
-        return law.at_volts(asked.value)
-    if asked.form == "dbfs" and isinstance(law, ScaleLaw) and law.quantity == "dbfs":
-        return law.at_dbm(asked.value + law.offset_db)
-    if asked.form == "v_per_m" and isinstance(law, ProbeLaw):
-        return law.at_v_per_m(asked.value)
-    gives, option = _own_form(fit)
-    raise ConfigError(
-        f"--{asked.form.replace('_', '-')}: the detector of {file.top.where} gives {gives}; give"
-        " --counts, --dbm" + ("" if option == "dbm" else f" or --{option}")
-    )
-
-
-def _own_form(fit: Fit) -> tuple[str, str]:
-    """What the detector's figures are in, and the option that takes them."""
-    if isinstance(fit.law, CurveLaw):
-        return "volts", "volts"
-    if isinstance(fit.law, ProbeLaw):
-        return "V/m", "v-per-m"
-    return {"dbm": "dBm", "dbfs": "dBFS"}[fit.law.quantity], fit.law.quantity
-
-
-def _temperature_db(detector: Detector, fit: Fit, asked: Asked) -> float:
-    """By how much a figure of the instrument is too high; a bare power is none of its figures."""
-    shown = asked.form != "dbm" or _own_form(fit)[1] == "dbm"
-    if asked.temperature_c is None or not shown:
-        return 0.0
-    return float(temperature_db(detector.temperature, np.array([asked.temperature_c]))[0])
-
-
-def _reported(said: Said, fit: Fit, correction_db: float, warm_db: float) -> Said:
-    """Corrected for averaged logs and temperature; what is below the range is its end, flagged."""
-    p_dbm, bits = said[0] + correction_db - warm_db, said[1]
-    least_dbm = fit.law.range_dbm[0] + correction_db
-    if p_dbm < least_dbm:
-        return least_dbm, bits | int(Flag.BELOW_RANGE)
-    return p_dbm, bits
-
-
-def _volts(fit: Fit, asked: Asked) -> float | None:
-    """Volts at the detector, where counts or volts were given and it has any."""
-    if not isinstance(fit.law, CurveLaw):
-        return None
-    if asked.form == "counts":
-        return asked.value * fit.law.volts_per_count
-    return asked.value if asked.form == "volts" else None
-
-
 def _circumstances(file: CalibrationFile, channel: Channel, asked: Asked, now_utc_ns: int) -> int:
     """Flags of the calibration, the time and the temperature; one axis is a component."""
     bits = Flag.COMPONENT_ONLY
@@ -229,14 +157,32 @@ def _circumstances(file: CalibrationFile, channel: Channel, asked: Asked, now_ut
     return int(bits)
 
 
-def _bounds(e: float, expanded_db: float, bits: int) -> tuple[float, float]:
-    """The component's bounds: a reading at an end of the range, or of averaged logs, has one."""
-    if math.isnan(e):
-        return math.nan, math.nan
-    factor = 10.0 ** (expanded_db / 20.0)
-    one_sided = LOWER_BOUND & ~Flag.COMPONENT_ONLY
-    low = 0.0 if bits & UPPER_BOUND else e / factor
-    return low, math.inf if bits & one_sided else e * factor
+class _Field(NamedTuple):
+    """E and its bounds, V/m; expanded uncertainty, dB; flags."""
+
+    e: float
+    low: float
+    high: float
+    expanded_db: float
+    flags: int
+
+
+def _field(
+    p_w: float, noise: Noise, per_w: float, expanded_db: float, k: float, bits: int
+) -> _Field:
+    """The component: noise taken off, one bound where the figure is at an end of the range or
+    below what the noise lets be seen, or where logs were averaged."""
+    if math.isnan(p_w):
+        return _Field(math.nan, math.nan, math.nan, expanded_db, bits)
+    limit_w, net_w = DETECTION * noise.u_w, p_w - noise.w
+    bits |= int(Flag.BELOW_RANGE) if net_w < limit_w else 0
+    e2, added = per_w * max(net_w, limit_w), per_w * noise.u_w * k
+    found = interval(e2, e2, expanded_db, added)
+    below, one_sided = bits & UPPER_BOUND, LOWER_BOUND & ~Flag.COMPONENT_ONLY
+    total = expanded_db if below else float(total_db(expanded_db, e2, added, bits))
+    low = 0.0 if below else math.sqrt(float(found.low))
+    high = math.inf if bits & one_sided else math.sqrt(float(found.high))
+    return _Field(math.sqrt(e2), low, high, total, bits)
 
 
 def _links(

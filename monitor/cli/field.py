@@ -19,7 +19,8 @@ from monitor.core.exposure import OUTSIDE_BUDGET
 from monitor.core.flags import LOWER_BOUND, UPPER_BOUND, Flag, words
 from monitor.core.limits import frequency_text
 from monitor.detectorkeys import MOST_V_PER_M
-from monitor.onefigure import FORMS, Asked, Figure, Link, through
+from monitor.onefigure import Figure, Link, through
+from monitor.oneport import FORMS, Asked
 
 UNITS = {
     "volts": {"": 1.0, "v": 1.0, "mv": 1e-3},
@@ -122,6 +123,7 @@ def _document(asked: Asked, found: Figure) -> dict[str, object]:
         "gain": asked.gain or None,
         "temperature_correction_db": -found.temperature_db,
         "p_dbm": found.p_dbm,
+        "noise_taken_off_dbm": found.noise_dbm,
         "e_v_per_m": found.e_v_per_m,
         "s_w_per_m2": found.s_w_per_m2,
         "standard_uncertainty_db": found.u_db,
@@ -172,11 +174,15 @@ def _on_the_way(found: Figure) -> list[str]:
         e = math.sqrt(quantities.w_from_dbm(found.p_dbm) * quantities.PORT_OHM)
         return [_step("field strength by its linearity", _level(e, "V/m"), detector), *pickups]
     losses = [link for link in others if link.kind not in PICKUPS and link.gain_db is not None]
+    taken = []
+    if found.noise_dbm is not None:
+        taken = [_step("noise taken off that power", f"{found.noise_dbm:.2f} dBm")]
     at_antenna_dbm = found.p_dbm - sum(link.gain_db or 0.0 for link in losses)
     return [
         _step("power at its port", _level(found.p_dbm, "dBm"), detector),
         *(_step(*_loss(link), link) for link in losses),
         _step("power at the antenna's port", _level(at_antenna_dbm, "dBm")),
+        *taken,
         *pickups,
     ]
 

@@ -106,3 +106,33 @@ def test_show_at_a_gain_step(capsys: pytest.CaptureFixture[str], tmp_path: Path)
     assert "say which" in run(capsys, asked).one_line
     shown = run(capsys, [*asked, "--gain", "0", "--json"]).document
     assert shown["detectors"][0]["range_dbm"] == [-75.0, 5.0]
+
+
+NOISY = """
+[detector]
+kind = "scale"
+resolution = 0.001
+range_dbm = [-75, 0]
+noise_dbm = -60
+noise_u_db = 0.2
+averages = "none"
+"""
+
+
+def test_noise_is_taken_off_and_what_it_hides_is_a_bound(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path
+) -> None:
+    """10 log(1 - 10^-1) = -0.46 dB, as a published answer on noise correction has it; the detection
+    limit is 3.29 times the uncertainty of the noise (Currie 1968, from memory)."""
+    strong = field(capsys, tmp_path, NOISY, "--frequency", "900MHz", "--dbm", "0")
+    plain = strong["e_v_per_m"] / math.sqrt(1 - 1e-6)  # for 0 dBm
+    seen = field(capsys, tmp_path, NOISY, "--frequency", "900MHz", "--dbm", "-50")
+    assert seen["noise_taken_off_dbm"] == pytest.approx(-60.0)
+    lowered_db = 20 * math.log10(seen["e_v_per_m"] / plain) + 50.0
+    assert lowered_db == pytest.approx(-0.46, abs=0.005)
+    hidden = field(capsys, tmp_path, NOISY, "--frequency", "900MHz", "--dbm", "-60")
+    assert words(Flag.BELOW_RANGE)[0] in hidden["flags"]
+    assert hidden["e_low_v_per_m"] == 0.0
+    limit_w = 3.29 * 1e-9 * 0.2 * math.log(10) / 10
+    assert hidden["e_v_per_m"] == pytest.approx(plain * math.sqrt(limit_w / 1e-3), rel=1e-3)
+    assert hidden["e_high_v_per_m"] > hidden["e_v_per_m"]
