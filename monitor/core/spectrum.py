@@ -11,6 +11,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import DTypeLike, NDArray
 
+from monitor.core.bandbins import band_slices
 from monitor.core.errors import ConfigError
 
 Samples = NDArray[np.complex64]
@@ -127,7 +128,9 @@ class BandAccumulator:
         self._batch = max(1, BATCH_SAMPLES // fft)
         self._window = 0.5 - 0.5 * np.cos(2.0 * np.pi * np.arange(fft) / fft)
         self._scale = 1.0 / (fft * float(np.sum(self._window**2)))
-        self._masks = _band_masks(rate_hz, bands, fft)
+        # numpy's fft begins with the centre frequency, the slices with the lowest
+        order = np.fft.fftshift(np.arange(fft))
+        self._masks = [order[bins] for bins in band_slices(rate_hz, bands, fft)]
         self._pending: Samples = np.empty(0, np.complex64)
         self._sum: Real = np.zeros(len(bands))
         self._peak: Real = np.full(len(bands), -np.inf)
@@ -189,22 +192,3 @@ class BandAccumulator:
 def _energy(samples: Samples) -> float:
     wide = samples.astype(np.complex128)
     return float(np.sum(wide.real**2 + wide.imag**2))
-
-
-def _band_masks(
-    rate_hz: float, bands: Sequence[tuple[float, float]], fft: int
-) -> list[NDArray[np.intp]]:
-    """The bins of each band, as indices into a spectrum in the order of numpy's fft."""
-    frequencies = np.fft.fftfreq(fft, 1.0 / rate_hz)
-    masks = []
-    for low, high in bands:
-        where = f"band {low:g}:{high:g} Hz"
-        if not low < high:
-            raise ConfigError(f"{where}: the low end must be below the high end")
-        if low < -rate_hz / 2 or high > rate_hz / 2:
-            raise ConfigError(f"{where}: outside the sampled span of +-{rate_hz / 2:g} Hz")
-        bins = np.flatnonzero((frequencies >= low) & (frequencies < high))
-        if bins.size == 0:
-            raise ConfigError(f"{where}: no bin of {rate_hz / fft:g} Hz in it; use a larger fft")
-        masks.append(bins)
-    return masks
