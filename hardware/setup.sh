@@ -43,6 +43,7 @@ look() {
     command -v sqlite3 >/dev/null || lack sqlite3
     command -v chromium >/dev/null || command -v chromium-browser >/dev/null ||
         lack chromium
+    command -v rtl_433 >/dev/null || lack rtl-433
 }
 
 install_packages() {

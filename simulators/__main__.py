@@ -1,4 +1,4 @@
-"""python -m simulators: the simulated detector board, and faults on command."""
+"""python -m simulators: a simulated detector board, a receiver's server, faults on command."""
 
 from __future__ import annotations
 
@@ -13,9 +13,12 @@ from datetime import UTC, datetime, timedelta
 from pathlib import Path
 from types import FrameType
 
-from simulators import control, scenario
+from simulators import control, iq_signals, scenario
 from simulators.board import Board
 from simulators.faults import KINDS, Faults, scheduled
+from simulators.iq_faults import KINDS as IQ_KINDS
+from simulators.iq_faults import StreamFault, StreamFaults
+from simulators.iq_server import Server
 from simulators.line import Line
 from simulators.source import Setup, Source
 
@@ -29,6 +32,8 @@ def main(argv: Sequence[str] | None = None) -> int:
         if options.command == "scenes":
             print("\n".join(scenario.available()))
             return 0
+        if options.command == "iq":
+            return _iq(options)
         return _board(options)
     except ValueError as error:
         print(f"simulators: {error}", file=sys.stderr)
@@ -43,13 +48,14 @@ def _parser() -> argparse.ArgumentParser:
         prog="python -m simulators", description="Simulated hardware; all of its data are invented."
     )
     commands = parser.add_subparsers(dest="command", required=True)
-    commands.add_parser("scenes", help="names of the scenes that are shipped")
+    commands.add_parser("scenes", help="names of the board's scenes that are shipped")
     _board_options(commands.add_parser("board", help="a detector board on a pseudo-terminal"))
+    _iq_options(commands.add_parser("iq", help="a receiver's samples on a TCP port"))
     fault = commands.add_parser("fault", help="a fault on command")
     fault.add_argument("--control", type=Path, required=True, metavar="SOCKET")
-    fault.add_argument("kind", choices=KINDS)
+    fault.add_argument("kind", choices=(*KINDS, *IQ_KINDS))
     amount = fault.add_mutually_exclusive_group()
-    amount.add_argument("--count", type=float, metavar="FRAMES")
+    amount.add_argument("--count", type=float, help="frames, samples, connections, bytes a second")
     amount.add_argument("--seconds", type=float, metavar="S")
     return parser
 
@@ -74,6 +80,20 @@ def _board_options(board: argparse.ArgumentParser) -> None:
     kinds = ", ".join(KINDS)
     at = "SECONDS:KIND[:AMOUNT]"
     add("--fault", action="append", default=[], metavar=at, help=f"at a board time; {kinds}")
+
+
+def _iq_options(server: argparse.ArgumentParser) -> None:
+    add = server.add_argument
+    add("--host", default="127.0.0.1")
+    add("--port", type=int, default=1234, help="0: any free one; it is told")
+    add("--air", default="town", metavar="NAME|FILE.toml", help="what is on the air")
+    add("--seed", type=int, default=1)
+    add("--truth", type=Path, metavar="FILE.csv")
+    add("--sent", type=Path, metavar="FILE.cu8", help="keeps what the last connection was sent")
+    add("--control", type=Path, metavar="SOCKET")
+    add("--with-parent", action="store_true", help="end when the starter does")
+    kinds, at = ", ".join(IQ_KINDS), "SECONDS:KIND[:AMOUNT]"
+    add("--fault", action="append", default=[], metavar=at, help=f"at a device time; {kinds}")
 
 
 def _fault(options: argparse.Namespace) -> int:
@@ -114,6 +134,34 @@ def _board(options: argparse.Namespace) -> int:
     return 0
 
 
+def _iq(options: argparse.Namespace) -> int:
+    if options.seed < 0:
+        raise ValueError("the seed must be 0 or more")
+    air = iq_signals.load(options.air)
+    faults = StreamFaults(scheduled(text, StreamFault) for text in options.fault)
+    signal.signal(signal.SIGTERM, _leave)
+    signal.signal(signal.SIGINT, _leave)
+    with ExitStack() as opened:
+        listening = None
+        if options.control:
+            listening = opened.enter_context(closing(control.Control(options.control)))
+        server = Server(
+            (options.host, options.port),
+            air,
+            options.seed,
+            truth=options.truth,
+            sent=options.sent,
+            control=listening,
+            faults=faults,
+            with_parent=options.with_parent,
+        )
+        opened.enter_context(closing(server))
+        host, port = server.address
+        _say(event="ready", host=host, port=port, truth=options.truth, control=options.control)
+        server.run()
+    return 0
+
+
 def _start_utc(text: str | None, history_s: float) -> datetime:
     if text is None:
         return datetime.now(UTC) - timedelta(seconds=history_s)
@@ -124,7 +172,7 @@ def _start_utc(text: str | None, history_s: float) -> datetime:
 
 
 def _say(**facts: object) -> None:
-    """One line of JSON on standard output, for whoever started the board."""
+    """One line of JSON on standard output, for whoever started us."""
     print(json.dumps({**facts, "simulated": True}, default=str), flush=True)
 
 

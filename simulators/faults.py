@@ -5,6 +5,7 @@ from __future__ import annotations
 import re
 from collections.abc import Iterable
 from dataclasses import dataclass
+from typing import ClassVar
 
 BY_COUNT = ("drop", "truncate", "corrupt", "repeat")
 BY_TIME = ("stick", "hang", "vanish")
@@ -20,22 +21,23 @@ class Fault:
 
     kind: str
     amount: float | None = None
+    kinds: ClassVar[tuple[str, ...]] = KINDS
 
     def __post_init__(self) -> None:
         """Raises ValueError for an unknown kind or an amount that means nothing."""
-        if self.kind not in KINDS:
-            raise ValueError(f"no fault {self.kind!r}; there are {', '.join(KINDS)}")
+        if self.kind not in self.kinds:
+            raise ValueError(f"no fault {self.kind!r}; there are {', '.join(self.kinds)}")
         if self.amount is not None and not self.amount > 0:
             raise ValueError(f"{self.kind}: {self.amount} must be more than zero")
 
 
-def scheduled(text: str) -> tuple[int, Fault]:
-    """'AT:KIND[:AMOUNT]', AT in board seconds, as (ms, fault). Raises ValueError."""
+def scheduled(text: str, make: type[Fault] = Fault) -> tuple[int, Fault]:
+    """'AT:KIND[:AMOUNT]', AT in device seconds, as (ms, fault). Raises ValueError."""
     found = re.fullmatch(r"(\d+(?:\.\d+)?):([a-z]+)(?::(\d+(?:\.\d+)?))?", text)
     if not found:
         raise ValueError(f"{text!r} is not SECONDS:KIND or SECONDS:KIND:AMOUNT")
     at_s, kind, amount = found.groups()
-    return round(float(at_s) * 1000.0), Fault(kind, None if amount is None else float(amount))
+    return round(float(at_s) * 1000.0), make(kind, None if amount is None else float(amount))
 
 
 class Faults:

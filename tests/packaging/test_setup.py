@@ -88,9 +88,9 @@ def test_missing_venv_is_named_alone(machine: Machine) -> None:
     assert_one_line(done, "apt-get install python3-venv")
 
 
-def test_tests_also_want_make_a_browser_and_a_stranger_to_the_record(machine: Machine) -> None:
+def test_tests_also_want_make_a_browser_and_strangers_to_our_formats(machine: Machine) -> None:
     done = machine("test", python3=GOOD_PYTHON, **{"apt-get": "exit 1"})
-    assert_one_line(done, "apt-get install make sqlite3 chromium")
+    assert_one_line(done, "apt-get install make sqlite3 chromium rtl-433")
 
 
 def test_a_machine_without_apt_is_told_so(machine: Machine) -> None:
