@@ -140,8 +140,8 @@ def e_interval(field: Mapping[str, Any], flags: Sequence[str]) -> str:
         return "not stated"
     added = bounds.number(field, "added_e2") or 0.0
     if kind is Kind.AT_LEAST and low is not None:
-        least = within(low**2, low**2, u_db, added).low
-        return f"not below {words.rounded_down(float(least) ** 0.5)} V/m"
+        bottom = float(within(low**2, low**2, u_db, added).low)
+        return f"not below {words.rounded_down(bottom**0.5)} V/m"
     if kind is Kind.BELOW and high is not None:
         return f"not above {words.rounded_up(high)} V/m"
     if mean is None:

@@ -63,8 +63,11 @@ class AlarmDesk:
         if do == "unshelve":
             return Event(now_ns, "muted", key, {"by": who, "until_ns": None})
         seconds = wanted.get("for_s", 1800)
-        number = isinstance(seconds, (int, float)) and not isinstance(seconds, bool)
-        if not number or not 0 < seconds <= LONGEST_MUTE_S:
+        if (
+            not isinstance(seconds, (int, float))
+            or isinstance(seconds, bool)
+            or not 0 < seconds <= LONGEST_MUTE_S
+        ):
             raise ConfigError(f"for_s: {seconds!r} is not between 0 and {LONGEST_MUTE_S} s")
         until = now_ns + round(seconds * NS_PER_S)
         return Event(now_ns, "muted", key, {"by": who, "until_ns": until})

@@ -78,7 +78,7 @@ def temperature_flags(batch: Batch, status: DeviceStatus, chain: Chain) -> NDArr
     unknown = np.isnan(celsius) & limited
     outside = (celsius < low) | (celsius > high)
     bits = unknown * int(Flag.TEMPERATURE_UNKNOWN) + outside * int(Flag.OUT_OF_TEMPERATURE)
-    return bits.astype(np.int32)
+    return np.asarray(bits, np.int32)
 
 
 def temperature_span_c(chain: Chain) -> tuple[float, float]:

@@ -225,4 +225,4 @@ def _same(old: np.ndarray, new: np.ndarray) -> bool:
     if old.shape != new.shape:
         return False
     bare = np.isnan(old) & np.isnan(new) if old.dtype.kind == "f" else np.zeros(old.shape, bool)
-    return old[~bare].tobytes() == new[~bare].tobytes()
+    return bool(old[~bare].tobytes() == new[~bare].tobytes())

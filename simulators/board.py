@@ -7,6 +7,7 @@ import os
 import select
 import time
 from collections.abc import Callable, Iterator
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -204,7 +205,8 @@ class Board:
         control = [self._control] if self._control is not None else []
         if not attached:
             timeout_s = min(timeout_s, LOOK_S)  # a reader's coming wakes nobody
-        ready, _, _ = select.select([*line, *control], line if writing else [], [], timeout_s)
+        waited: list[Any] = [*line, *control]
+        ready, _, _ = select.select(waited, line if writing else [], [], timeout_s)
         if self._line in ready and b"?" in self._line.read():
             self._asked = True
         if self._control is not None and self._control in ready:

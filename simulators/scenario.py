@@ -239,7 +239,7 @@ def _cell_e2(scene: Scene, seed: int, cell: int, rate_hz: float, midnight_s: flo
 def _traffic(source: Transmitter, utc_s: Floats) -> Floats:
     """Share of time with traffic: straight lines between the values at the full hours."""
     daily = np.array([*source.daily, source.daily[0]])
-    return np.interp(np.mod(utc_s, DAY_S) / HOUR_S, np.arange(25.0), daily)
+    return np.asarray(np.interp(np.mod(utc_s, DAY_S) / HOUR_S, np.arange(25.0), daily))
 
 
 def _on(burst: Burst, seed: int, index: int, times_s: Floats) -> NDArray[np.bool_]:

@@ -97,7 +97,8 @@ def _row(one: Entry, value: float) -> str:
 
 
 def _column(one: Entry, value: float) -> int:
-    scale_db = (one["action_db"][1] - one["centre_db"]) / ACTION_SIGMA * REACH_SIGMA
+    scale_db: float = (one["action_db"][1] - one["centre_db"]) / ACTION_SIGMA * REACH_SIGMA
     if scale_db == 0.0:
         return HALF_WIDTH if value == one["centre_db"] else -1 if value < one["centre_db"] else 99
-    return HALF_WIDTH + round((value - one["centre_db"]) / scale_db * HALF_WIDTH)
+    off_db: float = value - one["centre_db"]
+    return HALF_WIDTH + round(off_db / scale_db * HALF_WIDTH)

@@ -38,7 +38,9 @@ def command(
     """Limits and reference levels at a frequency, or the tables as they are held."""
     sets = [limitsets.load(name) for name in ([set_id] if set_id else limitsets.available())]
     if frequency is None:
-        document = {"limits": [row for held in sets for row in _whole(held, population)]}
+        document: dict[str, object] = {
+            "limits": [row for held in sets for row in _whole(held, population)]
+        }
     else:
         seconds = levels.duration_s(duration) if duration else None
         document = _at(sets, population, frequency_hz(frequency), seconds)

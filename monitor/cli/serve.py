@@ -69,7 +69,7 @@ def is_loopback(host: str) -> bool:
 
 def _serve(settings: dict[str, Any], host: str, port: int) -> None:
     # Imported here: a command that serves nothing must not pay for the web server.
-    from waitress.server import create_server
+    from waitress.server import create_server  # type: ignore[import-untyped]
 
     from dashboard.app import create_app
 
