@@ -237,10 +237,10 @@ class Receiver:
         front = self._air.front
         parts = out.view(np.float32)
         if front.imbalance_db or front.imbalance_deg:
-            off = np.deg2rad(front.imbalance_deg)
-            gain = 10.0 ** (front.imbalance_db / 20.0)
-            parts[1::2] *= np.float32(gain * np.cos(off))
-            parts[1::2] += np.float32(gain * np.sin(off)) * parts[0::2]
+            off, half = np.deg2rad(front.imbalance_deg), 10.0 ** (front.imbalance_db / 40.0)
+            parts[1::2] *= np.float32(half * np.cos(off))
+            parts[1::2] += np.float32(half * np.sin(off)) * parts[0::2]
+            parts[0::2] *= np.float32(1.0 / half)  # shared out, so that the power stays
         out += np.complex64(complex(128.0 + front.dc_lsb[0], 128.0 + front.dc_lsb[1]))
         np.clip(parts, 0.0, 255.0, out=parts)
         return parts.astype(np.uint8).tobytes()

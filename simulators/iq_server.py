@@ -108,9 +108,10 @@ class Server:
         try:
             listener.bind(address)
             listener.listen(1)
-        except OSError:
+        except OSError as error:
             listener.close()
-            raise
+            host, port = address
+            raise OSError(error.errno, error.strerror, f"{host}:{port}") from error
         listener.setblocking(False)
         return listener
 
@@ -193,6 +194,8 @@ class Server:
         if self._client is not None:
             self._client.link.close()
             self._client = None
+            if self._sent is not None:
+                self._sent.flush()
 
     def _begin(self, fault: Fault, now_s: float) -> None:
         if fault.kind == "shut":

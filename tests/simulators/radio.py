@@ -41,11 +41,10 @@ class Radio:
         """What the server says of itself."""
         return control.ask(self.control, {})
 
-    def fault(self, kind: str, *amount: str) -> None:
-        """A fault by the command that people use."""
-        command = [sys.executable, "-m", "simulators", "fault", "--control", str(self.control)]
-        done = subprocess.run([*command, kind, *amount], capture_output=True, text=True)
-        assert done.returncode == 0, done.stdout + done.stderr
+    def fault(self, kind: str, amount: float | None = None) -> None:
+        """A fault, at once."""
+        reply = control.ask(self.control, {"fault": kind, "amount": amount})
+        assert reply["ok"] is True, reply
 
     @contextmanager
     def client(self) -> Iterator[Client]:

@@ -126,20 +126,17 @@ def test_a_second_client_connects_and_hears_nothing_until_the_first_has_gone(ser
             assert second.read(12) == HEADER
 
 
-def _rate(client, seconds: float) -> float:
-    """Bytes a second, each piece stamped when it comes, from the first on."""
-    client.read(400_000)
-    start_s = time.monotonic()
-    n = client.listen(seconds)
-    return n / (time.monotonic() - start_s)
-
-
 @pytest.mark.parametrize("rate_hz", [1_024_000, 2_400_000])
 def test_samples_come_in_real_time(served, rate_hz) -> None:
     with served.client() as client:
         client.tell(2, rate_hz)
         _until(served, "rate_hz", rate_hz)
-        assert _rate(client, 2.0) == pytest.approx(2 * rate_hz, rel=0.08)
+        client.read(1_000_000)
+        start_s = time.monotonic()
+        n = client.listen(2.0)
+        took_s = time.monotonic() - start_s
+    # a transfer more or less, and half of one for a machine that is busy
+    assert n == pytest.approx(2 * rate_hz * took_s, abs=1.5 * 262_144)
 
 
 @pytest.mark.parametrize(("rate_hz", "frequency_hz"), [(2_400_000, 806e6), (3_200_000, 1421e6)])
@@ -155,7 +152,7 @@ def test_real_time_leaves_more_than_half_of_a_core(served, rate_hz, frequency_hz
         before_s, start_s = used_s(), time.monotonic()
         n = client.listen(3.0)
         took_s, cpu_s = time.monotonic() - start_s, used_s() - before_s
-    assert n == pytest.approx(2 * rate_hz * took_s, rel=0.08)
+    assert n == pytest.approx(2 * rate_hz * took_s, rel=0.1)
     assert cpu_s < 0.5 * took_s
 
 
@@ -163,7 +160,7 @@ def test_lost_samples_are_missing_by_their_number(served) -> None:
     with served.client() as client:
         client.tell(7, 1)
         client.read(1_500_000)
-        served.fault("lose", "--count", "1001")
+        served.fault("lose", 1001)
         data = np.frombuffer(client.read(4_000_000), np.uint8).astype(np.int64)
         state = served.state()
         client.tell(7, 0)
@@ -179,7 +176,7 @@ def test_a_stall_is_followed_by_the_stale_samples_at_once(served) -> None:
         client.tell(2, RATE)
         client.tell(7, 1)
         client.read(1_500_000)
-        served.fault("stall", "--seconds", "3")
+        served.fault("stall", 3)
         early = client.listen(2.0)
         start_s = time.monotonic()
         late = np.frombuffer(client.read(2 * 2 * RATE), np.uint8).astype(np.int64)
@@ -189,7 +186,7 @@ def test_a_stall_is_followed_by_the_stale_samples_at_once(served) -> None:
         client.read(10)
     assert early < 2 * RATE  # what was under way, less than half of what was made
     assert late.size == 2 * 2 * RATE  # two seconds' worth
-    assert took_s < 1.8
+    assert took_s < 2.5  # one of standing still, and two if nothing had waited
     assert set(np.diff(late) % 256) == {1}
 
 
@@ -197,7 +194,7 @@ def test_a_halted_receiver_makes_nothing_meanwhile(served) -> None:
     with served.client() as client:
         client.tell(2, RATE)
         client.read(500_000)
-        served.fault("halt", "--seconds", "1")
+        served.fault("halt", 1)
         client.listen(2.0)
         lost = served.state()["lost_samples"]
     assert lost == pytest.approx(RATE, rel=0.2)
@@ -206,9 +203,20 @@ def test_a_halted_receiver_makes_nothing_meanwhile(served) -> None:
 def test_a_slow_network_lets_through_what_it_was_told(served) -> None:
     with served.client() as client:
         client.read(400_000)
-        served.fault("slow", "--count", "200000")
+        served.fault("slow", 200000)
         client.listen(0.5)
         assert client.listen(2.0) == pytest.approx(400_000, rel=0.15)
+
+
+def test_a_fault_by_the_command_that_people_use(served, capsys) -> None:
+    words = ["fault", "--control", str(served.control)]
+    with served.client() as client:
+        assert client.read(12) == HEADER
+        assert main([*words, "lose", "--count", "500"]) == 0
+        client.read(600_000)
+        assert served.state()["lost_samples"] == 500
+    assert main([*words, "drop"]) == 2  # the board's, not the receiver's
+    assert "no fault 'drop'" in capsys.readouterr().out
 
 
 def test_a_closed_connection_can_be_opened_again(served) -> None:
@@ -233,12 +241,22 @@ def test_a_header_that_never_comes_and_one_that_is_wrong(served) -> None:
         assert client.read(12) == HEADER
 
 
+def _refused(served: Radio) -> bool:
+    try:
+        socket.create_connection(served.address, 1.0).close()
+    except ConnectionRefusedError:
+        time.sleep(0.05)
+        return True
+    return False
+
+
 def test_an_absent_server_refuses_and_comes_back_on_its_port(served) -> None:
-    served.fault("absent", "--seconds", "1")
+    served.fault("absent", 1)
     time.sleep(0.3)
-    with pytest.raises(ConnectionRefusedError):
-        socket.create_connection(served.address, 1.0)
-    time.sleep(1.0)
+    assert _refused(served)
+    end_s = time.monotonic() + PATIENCE_S
+    while _refused(served):
+        assert time.monotonic() < end_s
     with served.client() as client:
         assert client.read(12) == HEADER
 

@@ -9,9 +9,15 @@ import numpy as np
 import pytest
 
 from simulators import control, iq_signals
-from tests.simulators.radio import radio
+from tests.simulators.radio import Radio, band_dbfs, complex_of, radio
 
 CENTRE = 806_000_000
+
+
+def _rows(served: Radio) -> list[dict[str, float]]:
+    served.state()
+    lines = [line for line in served.truth.read_text().splitlines() if not line.startswith("#")]
+    return [{k: float(v) for k, v in row.items()} for row in csv.DictReader(lines)]
 
 
 def test_the_truth_file_holds_what_was_on_the_air(tmp_path: Path) -> None:
@@ -28,9 +34,7 @@ def test_the_truth_file_holds_what_was_on_the_air(tmp_path: Path) -> None:
     with radio(tmp_path, "--air", str(scene)) as served, served.client() as client:
         client.tell(1, CENTRE)
         client.read(16_000_000)
-        served.state()
-        lines = [x for x in served.truth.read_text().splitlines() if not x.startswith("#")]
-    rows = [{k: float(v) for k, v in row.items()} for row in csv.DictReader(lines)]
+        rows = _rows(served)
     early = [row for row in rows if row["device_s"] < 2.3]
     late = [row for row in rows if row["device_s"] > 2.6]
     assert np.mean([row["low_w"] for row in early]) == pytest.approx(0.5e-9, rel=1e-4)
@@ -59,6 +63,29 @@ def test_an_air_that_means_nothing_is_refused_by_name(tmp_path: Path, change, wo
     with pytest.raises(ValueError, match=word) as failed:
         iq_signals.load(path)
     assert str(path) in str(failed.value)
+
+
+@pytest.mark.parametrize("number", range(4), ids=["carrier", "noise", "tdd", "pulses"])
+def test_the_stream_read_by_plain_numpy_holds_what_the_truth_file_says(tmp_path, number) -> None:
+    name, low_hz, high_hz = iq_signals.load("town").bands[number]
+    centre_hz, rate_hz = int(low_hz + high_hz) // 2 + 100_000, 2_400_000
+    with radio(tmp_path) as served, served.client() as client:
+        for code, value in ((2, rate_hz), (1, centre_hz), (3, 1), (4, 197)):
+            client.tell(code, value)
+        client.read(12_000_000)
+        rows = _rows(served)
+        sent = served.sent.read_bytes()
+    part = [row for row in rows if (row["centre_hz"], row["gain_db"]) == (centre_hz, 19.7)][2:-2]
+    first = int(part[0]["first_sample"])
+    n = int(sum(row["samples"] for row in part))
+    assert n > rate_hz
+    samples = complex_of(sent[2 * first : 2 * (first + n)])
+    samples = samples[: rate_hz // 5 * 5]  # whole periods of all that is switched
+    real_hz = rate_hz * (1 + 2e-6)
+    shift_hz = -centre_hz * (1 + 2e-6)
+    read_dbm = band_dbfs(samples, real_hz, low_hz + shift_hz, high_hz + shift_hz) - 19.7 - 12.0
+    told_w = np.mean([row[f"{name}_w"] for row in part])
+    assert read_dbm == pytest.approx(10.0 * np.log10(told_w * 1e3), abs=0.05)
 
 
 def test_a_question_about_any_band_is_answered(tmp_path: Path) -> None:
