@@ -16,7 +16,7 @@ from monitor.core.spectrum import MAX_FFT, bytes_per_sample, datatype_of
 Real = NDArray[np.float64]
 
 MIN_FFT = 32
-BLOCK_SAMPLES = 32_768
+BLOCK_SAMPLES = 65_536
 """New samples worked on at once. Our choice, by measurement."""
 
 
@@ -107,8 +107,11 @@ class Engine:
         self._segments = Segments(fft, blocks, self._bins)
         self._squares: NDArray[np.float32] = aligned(self._segments.values.size, np.float32)
         self._powers: NDArray[np.float32] = aligned(self._squares.size // 2, np.float32)
-        self._pending = bytearray()
-        self._counted = 0  # samples at the head of pending that the time domain has seen already
+        # raw bytes of one block and the segment that reaches over its end; filled, then used again
+        self._raw: NDArray[np.uint8] = aligned((self._step + self._hop) * self._bytes, np.uint8)
+        self._codes = self._raw.view(self._layout.dtype)
+        self._filled = 0
+        self._counted = 0  # samples at the head that the time domain has seen already
         self._sums = self._nothing()
 
     def _nothing(self) -> _Sums:
@@ -116,14 +119,22 @@ class Engine:
 
     def add(self, raw: bytes | bytearray | memoryview) -> None:
         """Take bytes that follow those already added; part of a sample waits for its rest."""
-        self._pending += raw
-        need = self._step + self._hop
-        start = 0
-        while len(self._pending) - start >= need * self._bytes:
-            self._sums = self._sums.plus(self._measure(start, need, self._step))
-            self._counted = max(0, self._counted - self._step)
-            start += self._step * self._bytes
-        del self._pending[:start]
+        given = np.frombuffer(raw, np.uint8)
+        while given.size:
+            taken = given[: self._raw.size - self._filled]
+            self._raw[self._filled : self._filled + taken.size] = taken
+            self._filled += taken.size
+            given = given[taken.size :]
+            if self._filled == self._raw.size:
+                self._sums = self._sums.plus(self._measure(self._step + self._hop, self._step))
+                self._counted = max(0, self._counted - self._step)
+                self._drop(self._step)
+
+    def _drop(self, samples: int) -> None:
+        """Move what follows these samples to the head."""
+        rest = self._raw[samples * self._bytes : self._filled].copy()
+        self._raw[: rest.size] = rest
+        self._filled = rest.size
 
     def reset(self, continues: bool = True) -> None:
         """Begin a new interval.
@@ -133,25 +144,24 @@ class Engine:
         """
         self._sums = self._nothing()
         if not continues:
-            self._pending.clear()
-            self._counted = 0
+            self._filled = self._counted = 0
             return
-        waiting = len(self._pending) // self._bytes
+        waiting = self._filled // self._bytes
         done = self._segments_in(waiting) * self._hop
-        del self._pending[: done * self._bytes]
+        self._drop(done)
         self._counted = waiting - done
 
     def result(self) -> BandFigures:
         """The figures so far; more may be added afterwards."""
-        waiting = len(self._pending) // self._bytes
-        return self._figures(self._sums.plus(self._measure(0, waiting, waiting)))
+        waiting = self._filled // self._bytes
+        return self._figures(self._sums.plus(self._measure(waiting, waiting)))
 
     def _segments_in(self, samples: int) -> int:
         return max(0, samples // self._hop - 1)
 
-    def _measure(self, start: int, samples: int, ahead: int) -> _Sums:
-        """The samples from a byte on, of which the first ahead are this block's own."""
-        raw = np.frombuffer(self._pending, self._layout.dtype, 2 * samples, start)
+    def _measure(self, samples: int, ahead: int) -> _Sums:
+        """The samples at the head, of which the first ahead are this block's own."""
+        raw = self._codes[: 2 * samples]
         values = self._segments.values[: raw.size]
         values[:] = raw
         values += np.float32(self._layout.offset)
@@ -175,6 +185,8 @@ class Engine:
         if self._layout.rails is None:
             return 0
         low, high = self._layout.rails
+        if raw.min() > low and raw.max() < high:  # as a rule; cheaper than counting
+            return 0
         return int(np.count_nonzero(raw == low) + np.count_nonzero(raw == high))
 
     def _figures(self, sums: _Sums) -> BandFigures:

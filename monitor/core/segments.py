@@ -99,27 +99,30 @@ class Segments:
         self.values: NDArray[np.float32] = aligned(2 * (blocks + 1) * self.hop, np.float32)
         self._segments = np.lib.stride_tricks.sliding_window_view(self.values, 2 * fft)[::fft]
         self._spectra: Complex = aligned(self._batch * fft, np.complex128).reshape(-1, fft)
+        self._parts: Real = self._spectra.view(np.float64)
+        self._energy: Real = np.empty((blocks, len(bins.runs)), order="F")
+        self._columns = [self._energy[:, column] for column in range(len(bins.runs))]
+        self._runs = [slice(2 * run.start, 2 * run.stop) for run in bins.runs]
 
     def sums(self, count: int) -> SegmentSums:
         """Of the first count segments in values."""
-        total = SegmentSums.nothing(self._bins)
+        if not count:
+            return SegmentSums.nothing(self._bins)
+        energy = self._energy[:count]
+        near = np.zeros(2 * NEAR_BINS + 1, np.complex128)
         for first in range(0, count, self._batch):
-            total = total.plus(self._batch_sums(first, min(self._batch, count - first)))
-        return total
-
-    def _batch_sums(self, first: int, count: int) -> SegmentSums:
-        spectra = self._spectra[:count]
-        parts = spectra.view(np.float64)
-        # copied, then multiplied in place: numpy is faster at the two than at both in one
-        parts[:] = self._segments[first : first + count]
-        parts *= self._window
-        np.fft.fft(spectra, axis=1, out=spectra)
-        energy = np.empty((count, len(self._bins.runs)))
-        for column, run in enumerate(self._bins.runs):
-            part = parts[:, 2 * run.start : 2 * run.stop]
-            np.vecdot(part, part, out=energy[:, column])
+            past = min(first + self._batch, count)
+            spectra, parts = self._spectra[: past - first], self._parts[: past - first]
+            # copied, then multiplied in place: numpy is faster at the two than at both in one
+            parts[:] = self._segments[first:past]
+            parts *= self._window
+            np.fft.fft(spectra, axis=1, out=spectra)
+            for run, column in zip(self._runs, self._columns):
+                part = parts[:, run]
+                np.vecdot(part, part, out=column[first:past])
+            near += spectra[:, self._near].sum(axis=0)
         peak = (energy @ self._bins.used).max(axis=0)
-        return SegmentSums(energy.sum(axis=0), peak, spectra[:, self._near].sum(axis=0), count)
+        return SegmentSums(energy.sum(axis=0), peak, near, count)
 
     def offset_energy(self, sums: SegmentSums, mean: complex) -> Real:
         """float64 (b,), what a steady mean adds to the used bins: |X|^2 less |X - mean W|^2.
