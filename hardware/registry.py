@@ -11,7 +11,7 @@ from monitor.core.averaging_law import Averaging
 from monitor.core.errors import ConfigError
 from monitor.core.readings import FrontEnd
 
-KINDS = ("detector_board", "text_lines", "iq_file", "level_series")
+KINDS = ("detector_board", "text_lines", "iq_file", "iq_stream", "level_series")
 
 
 class Settings(Protocol):
@@ -61,6 +61,10 @@ def settings_for(kind: str, options: Mapping[str, object], folder: Path) -> Sett
         from hardware import iq_file
 
         settings = iq_file.settings_from(table, folder)
+    elif kind == "iq_stream":
+        from hardware import iq_options
+
+        settings = iq_options.settings_from(table)
     else:
         raise _unknown(kind)
     table.finish()
@@ -83,6 +87,10 @@ def declared(kind: str, options: Mapping[str, object]) -> Averaging:
         from hardware import iq_file
 
         return Averaging("power", table.number("interval_s", iq_file.INTERVAL_S, 0.0, 3600.0))
+    if kind == "iq_stream":
+        from hardware import iq_options
+
+        return iq_options.settings_from(table).averaging
     raise _unknown(kind)
 
 

@@ -25,7 +25,7 @@ from monitor.marking import DUE_SOON_DAYS
 
 AHEAD_OF_UTC = timedelta(hours=14)
 """Where the day begins first, a certificate may bear tomorrow's date of UTC (RFC 3339 offsets)."""
-TELL_NO_TEMPERATURE = ("text_lines", "level_series", "iq_file")
+TELL_NO_TEMPERATURE = ("text_lines", "level_series", "iq_file", "iq_stream")
 OUTSIDE_TEXTS = {
     "filter": "a filter keeps out signals outside it",
     "survey": "a survey rules out signals outside it",

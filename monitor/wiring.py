@@ -42,14 +42,33 @@ RECORDED = ("level_series", "iq_file")
 
 def sensor_settings(site: Site) -> Settings:
     """The front end's settings; the bands that it receives must be those of the site file."""
-    settings = settings_for(site.sensor_kind, site.sensor_options, site.path.parent)
+    settings = settings_for(site.sensor_kind, options_of(site), site.path.parent)
     compare_bands(site, getattr(settings, "bands_hz", None), getattr(settings, "bin_hz", 0.0))
+    round_s = getattr(settings, "round_s", 0.0)
+    if round_s > site.hold_s:
+        raise ConfigError(
+            f"{site.path.name}: sensor.hold_s: {site.hold_s:g} is shorter than {round_s:.4g} s, "
+            "the longest from one reading of a band to the next; make it longer"
+        )
     return settings
+
+
+def options_of(site: Site) -> dict[str, object]:
+    """The front end's own options; a receiver that can be tuned is told the site's bands."""
+    options = dict(site.sensor_options)
+    if site.sensor_kind != "iq_stream":
+        return options
+    if "bands" in options:
+        raise ConfigError(
+            f"{site.path.name}: sensor.bands: the bands are those of [[band]] here; take it out"
+        )
+    bands = [site.bands[channel.band] for channel in site.channels]
+    return options | {"bands": [(band.low_hz, band.high_hz) for band in bands]}
 
 
 def averaging_of(site: Site) -> Averaging:
     """What the site's front end averages; needs neither its device nor its file."""
-    return declared(site.sensor_kind, site.sensor_options)
+    return declared(site.sensor_kind, options_of(site))
 
 
 def chain_for(site: Site, settings: Settings) -> Chain:

@@ -4,15 +4,16 @@ from __future__ import annotations
 
 import ast
 import time
-import tomllib
 from pathlib import Path
 
 import numpy as np
 import pytest
 
 from hardware import declared, open_front_end, settings_for
+from monitor.config import load_site
 from monitor.core.averaging_law import UNDECLARED, Averaging
 from monitor.core.errors import ConfigError
+from monitor.wiring import averaging_of
 from tests.hardware.boards import board, counters, greet, until
 
 HARDWARE = Path(__file__).parents[2] / "hardware"
@@ -47,8 +48,7 @@ def test_what_a_front_end_declares(tmp_path, kind, options, holds):
     "path", sorted(HARDWARE.glob("examples/*-site.toml")), ids=lambda p: p.name
 )
 def test_every_example_declares(path):
-    sensor = tomllib.loads(path.read_text())["sensor"]
-    assert declared(sensor["kind"], sensor).kind in ("none", "power", "undeclared")
+    assert averaging_of(load_site(path)).kind in ("none", "power", "undeclared")
 
 
 @pytest.mark.parametrize(

@@ -1,0 +1,153 @@
+"""Options of [sensor] for a receiver on the network, read and checked."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from typing import ClassVar
+
+from hardware.iq_client import Radio, check_server
+from hardware.iq_count import RATES_HZ
+from hardware.iq_levels import COUNTS_PER_DB
+from hardware.iq_plan import fixed_tune, tunes
+from hardware.iq_receiver import Scheme
+from monitor.core.averaging_law import Averaging
+from monitor.core.errors import ConfigError
+from monitor.core.keys import Table
+from monitor.core.readings import FrontEnd
+
+PORT = 1234
+INTERVAL_S = 0.1
+DWELL_S = 0.2
+SETTLE_S = 0.25
+"""Our choice: four buffers of 64 ms (IQ.md) may be under way when the receiver is tuned anew."""
+SPAN_SHARE = 0.8
+"""Share of the rate that can be used (IQ.md: 75 to 80 %)."""
+SPIKE_HZ = 10e3
+AUTOMATIC = (
+    "automatic gain is refused: a level means nothing under it. A real recording wandered by 1.9 dB"
+    " within one second, at a fixed gain the same carrier held to 0.16 dB; give a number of dB"
+)
+
+
+@dataclass(frozen=True, slots=True)
+class Settings:
+    """Options of [sensor] for a receiver on the network. bands: (low, high) in Hz per channel.
+
+    seed: of the random starts; None takes the system's.
+    """
+
+    radio: Radio
+    scheme: Scheme
+    bands: tuple[tuple[float, float], ...]
+    seed: int | None = None
+    resolution: ClassVar[float | None] = 1.0 / COUNTS_PER_DB
+
+    @property
+    def bands_hz(self) -> tuple[tuple[float, float], ...]:
+        """(low, high) on the air per channel, Hz."""
+        return self.bands
+
+    @property
+    def bin_hz(self) -> float:
+        """Spacing of the spectrum's bins."""
+        return self.radio.rate_hz / self.scheme.fft
+
+    @property
+    def round_s(self) -> float:
+        """The longest time from one reading of a band to the next."""
+        return self.scheme.round_s
+
+    @property
+    def averaging(self) -> Averaging:
+        """A reading is the mean power of its interval or dwell."""
+        return Averaging("power", self.scheme.reading_s)
+
+    def check_device(self) -> None:
+        """DeviceError where no server answers."""
+        check_server(self.radio.host, self.radio.port, "sensor.host")
+
+    def open(
+        self,
+        channels: int,
+        boot_ns: Callable[[], int],
+        utc_ns: Callable[[], int],
+        simulated: bool,
+    ) -> FrontEnd:
+        """The front end, its process started; ConfigError unless there is a band per channel."""
+        from hardware.iq_stream import IqStream
+
+        if len(self.bands) != channels:
+            raise ConfigError(f"sensor.bands: {len(self.bands)} bands for {channels} channels")
+        return IqStream(self, boot_ns, simulated)
+
+
+def settings_from(table: Table) -> Settings:
+    """Settings from the options; ConfigError about each wrong key. No server is asked."""
+    host = table.text("host")
+    if not host.strip():
+        raise table.error("host", "is empty; name the machine that the receiver is plugged into")
+    port = table.whole("port", PORT, 1, 65_535)
+    rate_hz = _rate(table)
+    radio = Radio(host, port, rate_hz, _gain(table), table.whole("ppm", 0, -1000, 1000))
+    bands = _bands(table)
+    fft = table.whole("fft", 1024, 32, 1 << 20)
+    if fft % 2:
+        raise table.error("fft", f"{fft} is odd; a power of two is quickest")
+    if any(high - low < rate_hz / fft for low, high in bands):
+        raise table.error("fft", f"a band is narrower than one bin of {rate_hz / fft:g} Hz; more")
+    span_hz = table.number("span", SPAN_SHARE, 0.1, 1.0) * rate_hz
+    centre_hz = table.number("centre_hz", None, 1.0, 2.0**32 - 1.0)
+    least_s = 2 * fft / rate_hz
+    try:
+        places = (
+            tunes(bands, span_hz, SPIKE_HZ)
+            if centre_hz is None
+            else fixed_tune(bands, round(centre_hz), span_hz)
+        )
+    except ConfigError as error:
+        raise table.error("centre_hz", str(error)) from None
+    scheme = Scheme(
+        channels=len(bands),
+        tunes=places,
+        fft=fft,
+        interval_s=table.number("interval_s", INTERVAL_S, least_s, 3600.0),
+        dwell_s=table.number("dwell_s", DWELL_S, least_s, 3600.0),
+        settle_s=table.number("settle_s", SETTLE_S, 0.1, 60.0),
+    )
+    return Settings(radio, scheme, bands)
+
+
+def _rate(table: Table) -> int:
+    value = table.number("rate_hz")
+    if value != round(value) or not any(low <= value <= high for low, high in RATES_HZ):
+        ranges = " or ".join(f"{low} to {high}" for low, high in RATES_HZ)
+        raise table.error(
+            "rate_hz", f"{value:.12g} is refused by receivers; a whole number from {ranges}"
+        )
+    return round(value)
+
+
+def _gain(table: Table) -> float:
+    """A fixed gain in dB; ConfigError with the reason where it is to be automatic."""
+    if isinstance(table.any("gain_db"), str):
+        raise table.error("gain_db", AUTOMATIC)
+    if table.any("automatic_gain", False) is not False:
+        raise table.error("automatic_gain", AUTOMATIC)
+    gain_db = table.number("gain_db", low=-30.0, high=100.0)
+    if abs(gain_db * 10 - round(gain_db * 10)) > 1e-6:
+        raise table.error("gain_db", f"{gain_db:g} is finer than a tenth of a dB")
+    return gain_db
+
+
+def _bands(table: Table) -> tuple[tuple[float, float], ...]:
+    value = table.any("bands")
+    if not isinstance(value, (list, tuple)) or not value:
+        raise table.error("bands", "must be a list of [low, high] in Hz, one for each channel")
+    for pair in value:
+        good = isinstance(pair, (list, tuple)) and len(pair) == 2
+        if not good or not all(type(edge) in (int, float) for edge in pair):
+            raise table.error("bands", f"{pair!r} is not [low, high] in Hz")
+        if not 0.0 < pair[0] < pair[1] < 2.0**32:
+            raise table.error("bands", f"{pair!r}: above 0 and rising, below 4.29 GHz")
+    return tuple((float(low), float(high)) for low, high in value)

@@ -1,0 +1,199 @@
+"""A stream of samples turned into readings: tune, let settle, count, measure, tune again."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from random import Random
+
+import numpy as np
+
+from hardware.iq_client import Client, Radio
+from hardware.iq_count import SampleClock, real_rate_hz
+from hardware.iq_levels import Levels, counts
+from hardware.iq_plan import Tune
+from monitor.core.readings import NS_PER_S
+
+
+@dataclass(frozen=True, slots=True)
+class Scheme:
+    """How long is measured. interval_s: of one reading where one place of the tuner shows all;
+    dwell_s: at each place where there are several; settle_s: what is left out after tuning.
+    """
+
+    channels: int
+    tunes: tuple[Tune, ...]
+    fft: int
+    interval_s: float
+    dwell_s: float
+    settle_s: float
+
+    @property
+    def swept(self) -> bool:
+        """Whether the bands are looked at one after the other."""
+        return len(self.tunes) > 1
+
+    @property
+    def reading_s(self) -> float:
+        """Over how long a reading averages."""
+        return self.dwell_s if self.swept else self.interval_s
+
+    @property
+    def round_s(self) -> float:
+        """The longest time from one reading to the next: a dwell may begin a dwell late."""
+        if not self.swept:
+            return self.interval_s
+        return len(self.tunes) * (self.settle_s + 2.0 * self.dwell_s)
+
+
+@dataclass(frozen=True, slots=True)
+class Reading:
+    """Of all channels. start_ns: boot time of its first sample; end_ns: nothing else before it.
+
+    counts: milli-dBFS per channel; clipped: components at a rail.
+    """
+
+    start_ns: int
+    end_ns: int
+    counts: tuple[int, ...]
+    clipped: int
+
+
+class Receiver:
+    """One receiver at work. now_ns: a clock that never jumps (ns); seed: None takes the system's.
+
+    Where the bands are swept, each round takes the places in a new order, and each dwell begins at
+    random within a dwell's length, so that nothing periodic keeps step. A round is one reading,
+    stamped with its first sample.
+    """
+
+    def __init__(
+        self, radio: Radio, scheme: Scheme, now_ns: Callable[[], int], seed: int | None = None
+    ) -> None:
+        self._scheme = scheme
+        self._now_ns = now_ns
+        self._draws = Random(seed)
+        self._clipped, self._done, self._from_ns, self._start_ns = 0, 0, 0, -1
+        self._rate_hz = real_rate_hz(radio.rate_hz)
+        self._need = max(scheme.fft, round(scheme.reading_s * self._rate_hz))
+        self._levels = [Levels(self._rate_hz, tune.bands, scheme.fft) for tune in scheme.tunes]
+        self.client = Client(radio, scheme.tunes[0].centre_hz, now_ns)
+        self._generation = 0
+        self._settled_ns = 0
+        self._clock: SampleClock | None = None
+        self._lost = 0
+        self._order: list[int] = []
+        self._sums = np.zeros(scheme.channels)
+        self._upto_ns = now_ns()
+        self.counters = {"samples": 0, "readings": 0, "lost_samples": 0, "clipped_components": 0}
+        self._begin_round(now_ns())
+
+    @property
+    def problem(self) -> str:
+        """Why no readings come; empty while they do."""
+        if self.client.problem:
+            return self.client.problem
+        proved = self._clock is not None and self._clock.proved
+        return "" if proved else "counts samples, to see whether the rate is the one asked for"
+
+    @property
+    def upto_ns(self) -> int:
+        """Boot time before which no further reading will lie."""
+        if self.problem:  # what begins later is stamped later
+            self._upto_ns = max(self._upto_ns, self._now_ns())
+        return self._upto_ns
+
+    def work(self, timeout_s: float) -> list[Reading]:
+        """The readings that are complete; waits timeout_s at most for samples."""
+        raw = self.client.read(timeout_s)
+        now_ns = self._now_ns()
+        if self.client.generation != self._generation:
+            self._generation = self.client.generation
+            self._settled_ns = now_ns + round(self._scheme.settle_s * NS_PER_S)
+            self._clock = None
+        if not raw or now_ns < self._settled_ns:
+            return []
+        if self._clock is None:
+            self._clock = SampleClock(self._rate_hz, now_ns)
+            self._lost = 0
+        return self._take(self._clock, raw, now_ns)
+
+    def close(self) -> None:
+        """Let the connection go."""
+        self.client.close()
+
+    def _take(self, clock: SampleClock, raw: bytes, now_ns: int) -> list[Reading]:
+        first, was_proved = clock.samples, clock.proved
+        clock.count(len(raw) // 2, now_ns)
+        self.counters["samples"] += len(raw) // 2
+        if clock.lost != self._lost:
+            self.counters["lost_samples"] += clock.lost - self._lost
+            self._lost = clock.lost
+            self._restart(now_ns)
+        if clock.fault:
+            self.client.reopen("wrong", clock.fault)
+            self._clock = None
+            return []
+        if not clock.proved:
+            return []
+        if not was_proved:
+            self.client.well()
+            self._restart(now_ns)
+        return self._measure(clock, first, memoryview(raw))
+
+    def _restart(self, now_ns: int) -> None:
+        """Whatever was begun does not join on to what comes: leave it."""
+        self._levels[self._order[0]].drop()
+        self._begin_round(now_ns)
+
+    def _begin_round(self, now_ns: int) -> None:
+        self._order = list(range(len(self._scheme.tunes)))
+        self._draws.shuffle(self._order)
+        self._sums[:] = 0.0
+        self._clipped = 0
+        self._start_ns = -1
+        self._tune(now_ns)
+
+    def _tune(self, now_ns: int) -> None:
+        """Go to the first place of the order; where there is one only, no sample is left out."""
+        self._done = self._from_ns = 0
+        if self._scheme.swept:
+            wait_s = self._scheme.settle_s + self._draws.random() * self._scheme.dwell_s
+            self._from_ns = now_ns + round(wait_s * NS_PER_S)
+            self.client.tune(self._scheme.tunes[self._order[0]].centre_hz)
+
+    def _measure(self, clock: SampleClock, first: int, raw: memoryview) -> list[Reading]:
+        """Samples from number first on; those taken before the receiver had settled are left."""
+        found: list[Reading] = []
+        at = 0
+        while True:
+            if self._done == 0:
+                at = max(at, clock.sample_at(self._from_ns) - first)
+            n = min(self._need - self._done, len(raw) // 2 - at)
+            if n <= 0:
+                return found
+            if self._done == 0 and self._start_ns < 0:
+                self._start_ns = max(clock.time_ns(first + at), self._upto_ns)
+            self._levels[self._order[0]].add(bytes(raw[2 * at : 2 * (at + n)]))
+            self._done += n
+            at += n
+            if self._done == self._need:
+                found += self._dwelt(clock.time_ns(first + at))
+
+    def _dwelt(self, end_ns: int) -> Sequence[Reading]:
+        """A dwell is over: on to the next place, or the round is a reading."""
+        place = self._order.pop(0)
+        powers, clipped = self._levels[place].take()
+        for part, power in zip(self._scheme.tunes[place].parts, powers):
+            self._sums[part.channel] += power
+        self._clipped += clipped
+        self.counters["clipped_components"] += clipped
+        if self._order:
+            self._tune(self._now_ns())
+            return ()
+        self._upto_ns = max(end_ns, self._start_ns + 1)
+        self.counters["readings"] += 1
+        read = tuple(int(count) for count in counts(self._sums))
+        reading = Reading(self._start_ns, self._upto_ns, read, self._clipped)
+        self._begin_round(self._now_ns())
+        return (reading,)
