@@ -51,11 +51,12 @@ class Fit:
     def treated(self, done: Treatment) -> Fit:
         """Corrected for averaged logs: the noise, too, for it was found on uncorrected figures."""
         ratio = power_ratio_from_db(done.correction_db)
+        noise = self.noise.in_part() if done.noise_in_part else self.noise
         return replace(
             self,
             table=corrected(self.table, done.correction_db),
             contributions=self.contributions + done.lines,
-            noise=Noise(self.noise.w * ratio, self.noise.u_w * ratio),
+            noise=Noise(noise.w * ratio, noise.u_w * ratio),
             added_db=done.correction_db,
         )
 
@@ -88,11 +89,12 @@ class Detector:
     def treatment(self, signal: str, bandwidth_hz: float, front: Averaging) -> Treatment:
         """What holds of its readings of such a signal behind that front end.
 
-        Figures of a true-rms detector or of a probe follow the root of power: no correction is
-        known for their logs.
+        Figures of a true-rms detector or of a probe follow the root of power, and those of averaged
+        power hardly vary: no correction is known for their logs.
         """
         holds = joined(self.averaging, front)
-        known = "undeclared" if self.kind in ("rms", "probe") and signal == "noise" else signal
+        other = self.kind in ("rms", "probe") or self.averages == "power"
+        known = "undeclared" if other and signal == "noise" else signal
         return treatment(holds.kind, holds.seconds, known, bandwidth_hz)
 
     @property

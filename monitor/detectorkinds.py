@@ -30,6 +30,13 @@ class Noise:
     w: float = 0.0
     u_w: float = 0.0
 
+    def in_part(self) -> Noise:
+        """Of figures that hold between none and all of it: half, and rectangular between the two.
+
+        Of a part p from 0 to 1 times w: variance w^2 / 12 + u^2 / 3 (GUM 4.3.7).
+        """
+        return Noise(self.w / 2.0, math.hypot(self.w / math.sqrt(12.0), self.u_w / math.sqrt(3.0)))
+
 
 Fitted = tuple[Law, FrequencyTable | None, Noise, str]
 """Law, dB over frequency that it leaves out, noise, and the key that is at fault where the counts

@@ -57,6 +57,8 @@ def _told(band: Band, detector: Detector, holds: Averaging, front: Averaging) ->
         return f"averaged logs of bursts {bursts_text()}: {_BOUND}"
     if band.signal == "noise" and detector.kind == "rms":
         return f"averaged volts of a true-rms detector read low by what is not known: {_BOUND}"
+    if band.signal == "noise" and detector.averages == "power":
+        return f"averaged logs of averaged power read low by what is not known: {_BOUND}"
     if band.signal == "noise":
         return f"averaged logs of noise-like signals, {_lacks(band, holds)}: {_BOUND}"
     who = "mixed signals" if band.signal == "mixed" else "signals that are undeclared"

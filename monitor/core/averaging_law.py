@@ -57,11 +57,16 @@ UNDECLARED = Averaging("undeclared")
 
 @dataclass(frozen=True, slots=True)
 class Treatment:
-    """What is done about averaged logs: dB added to every power, budget lines, flags of figures."""
+    """What is done about averaged logs: dB added to every power, budget lines, flags of figures.
+
+    noise_in_part: averages hold all of the noise beside no signal, next to none beside a strong
+    one, and in between what is not known.
+    """
 
     correction_db: float
     lines: tuple[Contribution, ...]
     flags: int
+    noise_in_part: bool = False
 
 
 def log_bias_db(n: float) -> float:
@@ -134,7 +139,8 @@ def treatment(averages: str, averaging_s: float, signal: str, bandwidth_hz: floa
     if averages in ("none", "power"):
         return Treatment(0.0, (), 0)
     if averages == "log" and signal == "carrier":
-        return Treatment(0.0, (_line("envelope of the carrier", CARRIER_DB),), 0)
+        line = _line("envelope of the carrier", CARRIER_DB)
+        return Treatment(0.0, (line,), 0, noise_in_part=True)
     full = bandwidth_hz * averaging_s >= FULLY_AVERAGED
     if averages == "log" and signal == "noise" and full:
         line = _line("log-average correction, how noise-like", NOISE_LIKE_DB)

@@ -122,6 +122,8 @@ def test_one_channel_that_is_a_lower_bound_makes_the_station_one() -> None:
         ('averages = "power"', Averaging("power", 0.1), Flag(0), 0.1),
         ('averages = "power"\naveraging_s = 0.5', Averaging("power", 0.1), Flag(0), 0.1),
         ('averages = "none"', Averaging("none"), Flag(0), 0.0),
+        # of averaged power: psi(k) - ln k for k values, hardly anything, and not 2.51 dB
+        ('averages = "power"\naveraging_s = 1e-3', Averaging("log", 1.0), Flag.LOG_AVERAGED, 0.0),
     ],
 )
 def test_the_worse_of_calibration_and_front_end_holds(
@@ -129,6 +131,31 @@ def test_the_worse_of_calibration_and_front_end_holds(
 ) -> None:
     here = made(averages=averages, front=front)
     assert (here.flags, here.integration_s) == (int(flags), seconds)
+
+
+@pytest.mark.parametrize("snr_db", [-20.0, -5.0, 0.0, 3.0, 6.0, 10.0, 20.0])
+def test_noise_beside_a_carrier_in_averaged_logs(snr_db: float) -> None:
+    """Drawn: a carrier in complex Gaussian noise, its logs averaged. Beside it they hold less of
+    the noise than they hold without it; taken off whole, a carrier as strong as the noise would
+    read 1.65 dB low."""
+    rng = np.random.default_rng(7)
+    noise = rng.standard_normal((2, 1_000_000)) / math.sqrt(2.0)
+    shown = math.exp(np.log((noise**2).sum(axis=0)).mean())
+    carrier = 10.0 ** (snr_db / 10.0)
+    noise[0] += math.sqrt(carrier)
+    read = math.exp(np.log((noise**2).sum(axis=0)).mean())
+    dbm = 10.0 * math.log10(shown) - 60.0
+    of_noise = f"\nnoise_dbm = {dbm}\nnoise_u_db = 0.1"
+    here = made(replace(NOISE, signal="carrier"), averages=LOG + of_noise, axes="x")
+    noise_w, u_w = float(here.noise_w[0]) * 1e9, float(here.noise_u_w[0]) * 1e9
+    assert (noise_w, u_w) == pytest.approx((shown / 2.0, shown / math.sqrt(12.0)), rel=0.01)
+    assert abs(read - noise_w - carrier) <= 1.01 * shown / 2.0
+
+
+def test_noise_is_taken_off_whole_where_logs_are_not_averaged() -> None:
+    of_noise = 'averages = "none"\nnoise_dbm = -60\nnoise_u_db = 0.1'
+    here = made(replace(NOISE, signal="carrier"), averages=of_noise, axes="x")
+    assert here.noise_w[0] == pytest.approx(1e-9)
 
 
 def test_a_time_without_an_average_is_a_mistake() -> None:
