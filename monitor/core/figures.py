@@ -31,6 +31,7 @@ class Powers:
 
     The detector's own noise is taken off; what is left may be negative, and stays so in sums.
     unsure: standard uncertainty of each channel's zero, W (p, c); scatter: that of the mean.
+    overloaded (p,): some channel was above its range, so nothing bounds the field from above.
     """
 
     low: F
@@ -38,6 +39,7 @@ class Powers:
     high: F
     unsure: F
     scatter: F
+    overloaded: B
 
 
 def powers(sums: Sums, averaging_s: int, here: Station) -> Powers:
@@ -61,7 +63,15 @@ def powers(sums: Sums, averaging_s: int, here: Station) -> Powers:
         np.where(bare, np.nan, high - chain.noise_w),
         _unsure(mean, here),
         of_mean(sums, chain.integration_s, chain.bursty),
+        overloaded(sums),
     )
+
+
+def overloaded(sums: Sums) -> B:
+    """Whether a window (p,) holds readings above the range: then only a lower bound is known."""
+    bits = int(Flag.ABOVE_RANGE | Flag.CLIPPED)
+    found: B = np.bitwise_or.reduce(sums.flags & bits, axis=1) != 0
+    return found
 
 
 def _unsure(mean_w: F, here: Station) -> F:
@@ -100,7 +110,8 @@ def totals(
     unsure = over_channels(power.unsure, weights[1])
     added = np.hypot(unsure, over_channels(power.scatter, weights[1]))
     u_db = standard_db(budget, shares(power, weights[1]))
-    below = mean < DETECTION * unsure if below is None else below
+    if below is None:
+        below = (mean < DETECTION * unsure) & ~power.overloaded
     top = interval(0.0, np.maximum(high, DETECTION * unsure), k * u_db, k * added).high
     return Totals(
         np.where(below, 0.0, np.maximum(low, 0.0)),

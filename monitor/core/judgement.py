@@ -15,11 +15,11 @@ from monitor.core.figures import (
     exposures,
     fields,
     over_channels,
+    overloaded,
     powers,
     valid_share,
     windows,
 )
-from monitor.core.flags import Flag
 from monitor.core.gather import Gathered
 from monitor.core.readings import NS_PER_S
 from monitor.core.rows import Event
@@ -125,13 +125,6 @@ def _watch(
         figures = float(low[at]), float(mean[at]), float(points.share[at])
         out.events.append(_event(int(points.sums.end_ns[at]), raised, figures, watch))
     return followed.side
-
-
-def overloaded(sums: Sums) -> NDArray[np.bool_]:
-    """Whether a window (p,) holds readings above the range: then only a lower bound is known."""
-    bits = int(Flag.ABOVE_RANGE | Flag.CLIPPED)
-    found: NDArray[np.bool_] = np.bitwise_or.reduce(sums.flags & bits, axis=1) != 0
-    return found
 
 
 def _watch_instrument(

@@ -8,6 +8,7 @@ import numpy as np
 import pytest
 
 from monitor.core import pipeline
+from monitor.core.calibration import CountTable
 from monitor.core.exposure import Verdict
 from monitor.core.figures import exposures, fields, over_channels, powers
 from monitor.core.flags import Flag
@@ -16,7 +17,7 @@ from monitor.core.readings import Batch
 from monitor.core.rows import FieldRows
 from monitor.core.station import Station, station
 from monitor.core.windows import Sums
-from tests.core.stations import SCOPES, chain
+from tests.core.stations import FIRST, LAST, SCOPES, chain
 
 S = 1_000_000_000
 K = 1e5
@@ -163,3 +164,32 @@ def test_above_range_is_at_least_and_may_exceed() -> None:
     assert [e.name for e in out.events if e.kind == "alarm" and e.body["raised"]] == ["overload"]
     weak = noisy(ratio_per_watt=1e3)
     assert exposures(pipeline.live(state, 360, weak), 360, weak).verdict[0] == Verdict.UNDECIDED
+
+
+@pytest.mark.parametrize("kept", [False, True])
+def test_a_quiet_window_with_an_overload_in_it_is_no_upper_bound(kept: bool) -> None:
+    """A hundred seconds off the strong end, with a reading or without one: what is valid beside
+    them is quiet, and the field was anything but."""
+    base = noisy()
+    counts = np.arange(FIRST, LAST + 1)
+    over = counts > -59_000
+    bits = int(Flag.ABOVE_RANGE | (Flag(0) if kept else Flag.NO_SIGNAL_WIRE))
+    power_w = 1e-3 * 10.0 ** (np.minimum(counts, -59_000) / 10_000)
+    table = CountTable(
+        FIRST,
+        np.where(over & (not kept), np.nan, power_w),
+        np.where(over, bits, 0).astype(np.int32),
+    )
+    full = np.full((1, 2), 1.0)
+    vague = np.array([NOISE_W / 2])  # so that the end of the range is below the detection limit
+    here = station(
+        replace(base.chain, tables=(table,), noise_u_w=vague), SCOPES, full, full, (),
+        hold_s=3, silence_s=30, field_region="far", outside_excluded=True,
+    )  # fmt: skip
+    assert field(here, steady(0.0)).flags[0] & Flag.BELOW_RANGE
+    loud = steady(0.0)
+    loud[200:300] = 2e-3
+    row = field(here, loud)
+    assert row.flags[0] & Flag.ABOVE_RANGE
+    assert not row.flags[0] & Flag.BELOW_RANGE
+    assert exposures(window(here, loud), 360, here).verdict[0] == Verdict.UNDECIDED
