@@ -118,6 +118,7 @@ def _exposures(state: State, here: Station) -> list[dict[str, object]]:
         rows = figures.exposures(sums, averaging_s, here)
         share = float(figures.valid_share(sums, averaging_s)[0])
         bits = int(figures.field_flags(sums, averaging_s, here)[0])
+        seen = float(figures.seen_share(sums, averaging_s)[0])
         for i, index in enumerate(rows.scope.tolist()):
             scope = here.scopes[index]
             found.append(
@@ -137,7 +138,7 @@ def _exposures(state: State, here: Station) -> list[dict[str, object]]:
                     "added_ratio": _number(rows.added_ratio[i]),
                     "k": here.k_ratio,
                     "verdict": Verdict(int(rows.verdict[i])).name.lower(),
-                    "reasons": _reasons(rows, i, (share, bits), here, scope.verified),
+                    "reasons": _reasons(rows, i, (share, bits), seen, here, scope.verified),
                 }
             )
     return sorted(found, key=lambda item: int(str(item["index"])))
@@ -147,6 +148,7 @@ def _reasons(
     rows: ExposureRows,
     i: int,
     share_flags: tuple[float, int],
+    seen_share: float,
     here: Station,
     verified: bool,
 ) -> list[str]:
@@ -162,6 +164,7 @@ def _reasons(
         outside_excluded=here.outside_excluded,
         lowest_hz=here.lowest_hz,
         added=float(rows.added_ratio[i]) / here.k_ratio,
+        seen_share=seen_share,
     )
 
 

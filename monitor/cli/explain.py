@@ -200,4 +200,5 @@ def _reasons(kept: Kept, basis: Basis, i: int, verified: bool) -> list[str]:
         outside_excluded=here.outside_excluded,
         lowest_hz=here.lowest_hz,
         added=float(rows.added_ratio[i]) / here.k_ratio,
+        seen_share=float(kept.windows.covered_ns.max(initial=0)) / (kept.averaging_s * NS_PER_S),
     )

@@ -15,6 +15,10 @@ Real = NDArray[np.float64]
 
 GUARD = 1.64
 """One-sided 95 % quantile of a normal distribution (1.645, cut to the two digits in use)."""
+GUARD_K = 2.0
+"""Two-sided coverage factor up to which GUARD holds; a larger one tells of few degrees of freedom,
+and the guard grows with it: at least Student's one-sided 95 % up to 10 of them, above them 0.03 u
+less at most (tests; our choice)."""
 CAP_DB = 4.0
 """Largest expanded uncertainty with which anything may conform (common practice, no source)."""
 LEAST_VALID_SHARE = 0.75
@@ -68,6 +72,7 @@ def verdicts(
     cap_db: float = CAP_DB,
     lowest_hz: float = math.inf,
     added: ArrayLike = 0.0,
+    seen_share: ArrayLike = 1.0,
 ) -> NDArray[np.int8]:
     """Verdict of every window, int8 (n,).
 
@@ -76,9 +81,11 @@ def verdicts(
     the expanded one divided by its coverage factor k; cap_db holds for k * u. flags: Flag bits.
     field_region: only in the far field does E alone show conformity (ICNIRP 2020, notes to the
     reference levels). outside_excluded: see Station. lowest_hz: lower end of what the channels
-    receive, where E alone is measured. added: standard uncertainty of what adds to the ratio.
-    Decisions are taken in dB with a one-sided 95 % guard of 1.64 u, by interval() where something
-    adds. Below the detection limit ratio_high is a bound already. An exceedance
+    receive, where E alone is measured. added: standard uncertainty of what adds to the mean ratio.
+    seen_share: the largest valid share of any channel; with gaps as zero no more than that part of
+    the mean, and of what adds to it, is in ratio_low. Decisions are taken in dB with a one-sided
+    95 % guard(k) u, by interval() where something adds. Below the detection limit ratio_high is a
+    bound already. An exceedance
     stands at any valid share and with any U, for the guard counts it; what forbids "conforms" is
     listed in reasons().
     """
@@ -86,10 +93,10 @@ def verdicts(
     u, adds = np.asarray(u_db, np.float64), np.asarray(added, np.float64)
     share = np.asarray(valid_share, np.float64)
     bounded = (bits & int(UPPER_BOUND)) != 0
-    guarded = reported(ratio_low, ratio_high, GUARD * u, GUARD * adds, bits)
-    exceeds = (guarded.low > 1.0) & ~bounded
+    least, most = _guarded(ratio_low, ratio_high, u, factor, adds, bits, seen_share)
+    exceeds = (least > 1.0) & ~bounded
     conforms = (
-        (guarded.high < 1.0)
+        (most < 1.0)
         & (_capped_db(factor * u, ratio_mean, factor * adds, bits) <= cap_db)
         & (share >= LEAST_VALID_SHARE)
         & ((bits & int(LOWER_BOUND | OUTSIDE_BUDGET)) == 0)
@@ -102,6 +109,21 @@ def verdicts(
         exceeds, conforms = np.zeros_like(exceeds), np.zeros_like(conforms)
     found = np.where(exceeds, Verdict.EXCEEDS, np.where(conforms, Verdict.CONFORMS, 0))
     return np.atleast_1d(found).astype(np.int8)
+
+
+def guard(k: ArrayLike) -> Real:
+    """One-sided 95 % guard (n,), in standard uncertainties, where k is the two-sided factor."""
+    return GUARD * np.maximum(np.asarray(k, np.float64) / GUARD_K, 1.0)
+
+
+def _guarded(
+    low: ArrayLike, high: ArrayLike, u_db: ArrayLike, k: ArrayLike, added: ArrayLike,
+    flags: ArrayLike, seen_share: ArrayLike,
+) -> tuple[Real, Real]:  # fmt: skip
+    """What the ratio is at the least and at the most, one-sided."""
+    db, more = guard(k) * np.asarray(u_db), GUARD * np.asarray(added)
+    least = reported(low, high, db, more * np.asarray(seen_share), flags).low
+    return least, reported(low, high, db, more, flags).high
 
 
 def reasons(
@@ -119,6 +141,7 @@ def reasons(
     cap_db: float = CAP_DB,
     lowest_hz: float = math.inf,
     added: float = 0.0,
+    seen_share: float = 1.0,
 ) -> list[str]:
     """Plain words for one window: the figures behind the verdict, then all that forbids one.
 
@@ -127,11 +150,10 @@ def reasons(
     verdict = verdicts(
         ratio_low, ratio_mean, ratio_high, u_db, k, valid_share, flags,
         verified=verified, field_region=field_region, outside_excluded=outside_excluded,
-        cap_db=cap_db, lowest_hz=lowest_hz, added=added,
+        cap_db=cap_db, lowest_hz=lowest_hz, added=added, seen_share=seen_share,
     )[0]  # fmt: skip
-    least, most = (
-        float(end) for end in reported(ratio_low, ratio_high, GUARD * u_db, GUARD * added, flags)
-    )
+    ends = _guarded(ratio_low, ratio_high, u_db, k, added, flags, seen_share)
+    least, most = (float(end) for end in ends)
     said = [_comparison(int(verdict), least, ratio_mean, most)]
     said += _no_verdict(field_region, lowest_hz)
     if verdict == Verdict.EXCEEDS:

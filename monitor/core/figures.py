@@ -137,6 +137,12 @@ def valid_share(sums: Sums, averaging_s: int) -> F:
     return share
 
 
+def seen_share(sums: Sums, averaging_s: int) -> F:
+    """Share of the window with valid data in the channel that has most of it."""
+    share: F = sums.covered_ns.max(axis=1) / float(averaging_s * NS_PER_S)
+    return share
+
+
 def window_flags(sums: Sums, averaging_s: int) -> I:
     """Flags of any channel in the window, and gap where a part is not valid."""
     bits: I = np.bitwise_or.reduce(sums.flags, axis=1)
@@ -245,6 +251,7 @@ def exposures(sums: Sums, averaging_s: int, here: Station) -> ExposureRows:
             outside_excluded=here.outside_excluded,
             lowest_hz=here.lowest_hz,
             added=found.added,
+            seen_share=seen_share(sums, averaging_s),
         ).astype(np.int64)
         scope_index = np.full(share.size, index, np.int64)
         ratios = (found.low, found.mean, found.high, found.u_db * k)

@@ -9,8 +9,10 @@ import numpy as np
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+from scipy import stats
 
-from monitor.core.exposure import Verdict, reasons, scope_coefficients, verdicts
+from monitor.core.distributions import factor
+from monitor.core.exposure import Verdict, guard, reasons, scope_coefficients, verdicts
 from monitor.core.flags import Flag
 
 U = 1.0  # standard uncertainty, dB
@@ -62,6 +64,29 @@ def test_well_below_conforms_and_well_above_exceeds() -> None:
 def test_guard_is_one_sided_1_64_standard_uncertainties(db: float, expected: Verdict) -> None:
     """One-sided 95 % of a normal distribution: z = 1.645 (JCGM 106 table 1, from memory)."""
     assert verdict(**level(db)) is expected
+
+
+@pytest.mark.parametrize("degrees", [1.0, 2.0, 3.0, 5.0, 10.0, 30.0, 100.0])
+def test_guard_grows_where_degrees_of_freedom_are_few(degrees: float) -> None:
+    """A certificate's U from few readings: 1.64 u below the limit is then less than 95 % sure.
+    Student's t, one-sided (GUM G.3.2), from scipy."""
+    k = factor([("normal", 1.0, degrees)])
+    needed = float(stats.t.ppf(0.95, degrees))
+    assert guard(k) >= needed - (0.03 if degrees > 10 else 0.0)
+    small = 0.1  # so that the cap does not decide
+    assert verdict(**level(-0.98 * small * needed), u_db=small, k=k) is Verdict.UNDECIDED or (
+        degrees > 10
+    )
+    assert verdict(**level(-1.02 * float(guard(k)) * small), u_db=small, k=k) is Verdict.CONFORMS
+
+
+def test_what_adds_to_the_mean_adds_no_more_to_the_low_figure_than_its_part() -> None:
+    """A sixth of the time is valid and reads 9 times the limit, 1.2 of it unsure."""
+    thin = {"ratio_low": 1.5, "ratio_mean": 9.0, "ratio_high": 9.0, "u_db": 0.2, "added": 1.2}
+    assert verdict(**thin, valid_share=1 / 6) is Verdict.UNDECIDED
+    assert verdict(**thin, valid_share=1 / 6, seen_share=1 / 6) is Verdict.EXCEEDS
+    said = reasons(**arguments(**thin, valid_share=1 / 6, seen_share=1 / 6))
+    assert said == ["at least 1.15 of the limit, gaps counted as nothing"]
 
 
 def test_gaps_as_zero_above_the_limit_exceeds_at_any_valid_share() -> None:

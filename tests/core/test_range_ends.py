@@ -193,3 +193,15 @@ def test_a_quiet_window_with_an_overload_in_it_is_no_upper_bound(kept: bool) -> 
     assert row.flags[0] & Flag.ABOVE_RANGE
     assert not row.flags[0] & Flag.BELOW_RANGE
     assert exposures(window(here, loud), 360, here).verdict[0] == Verdict.UNDECIDED
+
+
+def test_a_minute_far_above_the_limit_exceeds_whatever_the_gap_before_it() -> None:
+    """Noise-like readings, 60 of 360 seconds valid, by the mean 10 times the limit."""
+    power_w = np.random.default_rng(5).exponential(size=(60, 1))
+    power_w *= 10 * 1e-6 / power_w.mean()
+    here = noisy(ratio_per_watt=1e6)
+    here = replace(here, budget=((),))
+    rows = exposures(window(here, power_w), 360, here)
+    assert rows.ratio_low[0] == pytest.approx(60 / 36, rel=0.02)
+    assert rows.added_ratio[0] / rows.ratio_low[0] > 1.0  # of the mean, that is
+    assert rows.verdict[0] == Verdict.EXCEEDS
