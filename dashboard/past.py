@@ -63,8 +63,18 @@ def series_of(history: History, scope: int | None, now_ns: int) -> Series:
     gaps = gaps_until(history.gaps, now_ns)
     return Series(
         history.utc_ns, low, mean, high, history.valid_share, gaps, history.bin_ns,
-        history.coverage, (history.flags & int(UPPER_BOUND)) != 0,
+        history.coverage, _all_below(history),
     )  # fmt: skip
+
+
+def _all_below(history: History) -> NDArray[np.bool_]:
+    """Where every average of a point is below its detection limit: none of them then has a U.
+
+    A point that stands for several has the flags of any of them, and the largest of their U.
+    """
+    below: NDArray[np.bool_] = (history.flags & int(UPPER_BOUND)) != 0
+    below &= np.isnan(history.u_db) & np.isfinite(history.e_mean)
+    return below
 
 
 def figures(history: History, scope: int | None) -> tuple[F, F, F]:

@@ -32,8 +32,9 @@ SCALE_MARGIN_DB = 20.0
 PROBE_MARGIN = 2.0
 """How far above its range a probe's figure is still a reading by default. Our choice."""
 MOST_V_PER_M = 1e5
-MOST_NOISE_U_DB = 3.0
-"""A noise known worse is not to be taken off; to first order its uncertainty means nothing."""
+LEAST_NOISE_U_DB, MOST_NOISE_U_DB = 0.01, 3.0
+"""A noise known worse is not to be taken off; to first order its uncertainty means nothing. One
+known exactly there is not, and an average below it would stay below 0 V/m (our choice)."""
 NO_NOISE = Noise()
 
 
@@ -54,7 +55,7 @@ def _noise(table: Table, usable: Ends, default: Noise = NO_NOISE) -> Noise:
 
 def _known_noise(table: Table, noise_w: float) -> Noise:
     """With noise_u_db: u of a power from u in dB, to first order (GUM 5.1.2)."""
-    u_db = table.number("noise_u_db", low=0.0, high=MOST_NOISE_U_DB)
+    u_db = table.number("noise_u_db", low=LEAST_NOISE_U_DB, high=MOST_NOISE_U_DB)
     return Noise(noise_w, noise_w * u_db * math.log(10.0) / 10.0)
 
 

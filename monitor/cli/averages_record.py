@@ -91,11 +91,13 @@ def _entries(history: History) -> list[dict[str, object]]:
 
 
 def _entry(end_ns: int, figures: dict[str, object], bits: int) -> dict[str, object]:
-    """A window below its detection limit has no mean: it has what it is below of. One that is a
-    lower bound has what it is at the least."""
+    """A window below its detection limit has no mean: it has what it is below of, unless logs were
+    averaged, for then the field may lie above. One that is a lower bound has what it is at the
+    least; with fewer than three axes both are of the component."""
     below, above = bits & flags.UPPER_BOUND, bits & flags.LOWER_BOUND
+    open_above = above & ~flags.Flag.COMPONENT_ONLY
     bound = {
-        "below_v_per_m": figures["e_high_v_per_m"] if below else None,
+        "below_v_per_m": figures["e_high_v_per_m"] if below and not open_above else None,
         "at_least_v_per_m": figures["e_low_v_per_m"] if above and not below else None,
     }
     unknown = {"e_rms_v_per_m": None} if below else {}

@@ -9,9 +9,9 @@ import sqlite3
 from collections.abc import Sequence
 
 import numpy as np
+from numpy.typing import NDArray
 
 from monitor.core.caldrift import widened_db
-from monitor.core.flags import UPPER_BOUND
 from monitor.record.uses import Calibrations, F, I, Segment, drift_over
 
 _K = (
@@ -36,13 +36,12 @@ def widened(
     return widened_db(u_db, _factors(db, boot, segments, after_ns, until_ns), drift_db), drift_db
 
 
-def raised(e2_high: F, flags: I, drift_db: F) -> F:
-    """Upper figures (n,), raised by the whole drift where they are a bound that is stated.
+def raised(figure: F, bound: NDArray[np.bool_], drift_db: F) -> F:
+    """Figures (n,) of power, raised by the whole drift where they are a bound that is stated.
 
     Such a bound holds its uncertainty already, so the line of a drift cannot widen it afterwards.
     """
-    bound = (flags & int(UPPER_BOUND)) != 0
-    return np.where(bound, e2_high * 10.0 ** (drift_db / 10.0), e2_high)
+    return np.where(bound, figure * 10.0 ** (drift_db / 10.0), figure)
 
 
 def _factors(

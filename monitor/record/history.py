@@ -11,6 +11,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from monitor.core.flags import UPPER_BOUND
 from monitor.core.interval import total_db
 from monitor.core.readings import NS_PER_S
 from monitor.record.coverage import Coverage, coverage
@@ -147,12 +148,19 @@ def _of_boot(
     wider = widened(db, held, boot.boot, start_ns, end_ns, table["u_db"])
     table["u_db"], table["widened_by_drift_db"] = wider
     table["flags"] = _placed(keys.size, place, flags, 0)
-    table["e2_high"] = raised(table["e2_high"], table["flags"], table["widened_by_drift_db"])
+    drift_db = table["widened_by_drift_db"]
+    bound = (table["flags"] & int(UPPER_BOUND)) != 0
+    # the mean of a row that stands for several is a bound only where none of them has a U
+    mean_too = bound & np.isnan(table["u_db"])
+    table["e2_high"] = raised(table["e2_high"], bound, drift_db)
+    table["e2_mean"] = raised(table["e2_mean"], mean_too, drift_db)
     for number in np.unique(scope).tolist():
         rows = scope == number
         place = np.searchsorted(keys, judged[rows])
         for name, column in zip(("ratio_low", "ratio_mean", "ratio_high"), ratios):
             table[f"{name} {number}"] = _placed(keys.size, place, column[rows])
+        for name, held_by in ((f"ratio_mean {number}", mean_too), (f"ratio_high {number}", bound)):
+            table[name] = raised(table[name], held_by, drift_db)
     return table
 
 

@@ -9,9 +9,9 @@ from pathlib import Path
 
 import numpy as np
 
-from dashboard import chart, events, span
+from dashboard import chart, events, past, span
 from dashboard.words import utc_of
-from monitor.core.flags import Flag
+from monitor.core.flags import UPPER_BOUND, Flag
 from monitor.record.types import EventRow, History, Latest, LatestExposure
 from tests.dashboard.fakes import DAY_NS, KEY, NOON_NS, SCOPES, FakeRecord, S, client_over, snapshot
 
@@ -45,7 +45,9 @@ class Flagged(FakeRecord):
         self, start_utc_ns: int, end_utc_ns: int, averaging_s: int, at_most: int
     ) -> History:
         found = super().history(start_utc_ns, end_utc_ns, averaging_s, at_most)
-        return dataclasses.replace(found, flags=np.full(found.utc_ns.size, int(self.flag)))
+        u_db = np.full(found.utc_ns.size, np.nan) if self.flag & UPPER_BOUND else found.u_db
+        flags = np.full(found.utc_ns.size, int(self.flag))
+        return dataclasses.replace(found, flags=flags, u_db=u_db)
 
 
 class Binned(Flagged):
@@ -138,3 +140,13 @@ def test_what_lies_ahead_is_not_called_unmeasured(tmp_path: Path) -> None:
     page = _get(tmp_path, "?from=2025-04-01&to=2025-04-02")
     assert "This span lies ahead: there is no six-minute average of it yet." in page
     assert "no measurement" not in page.replace("Hatched: no measurement", "")
+
+
+def test_a_point_is_below_only_where_all_of_its_averages_are() -> None:
+    """A point of an hour has the flags of any of its averages, and the U of those that have one."""
+    none = FakeRecord().history(DAY_NS, DAY_NS + 3600 * S, 360, 1000)
+    u_db = np.where(np.arange(none.utc_ns.size) % 2, 2.6, np.nan)
+    flags = np.full(none.utc_ns.size, int(Flag.BELOW_RANGE))
+    mixed = dataclasses.replace(none, flags=flags, u_db=u_db, bin_ns=1800 * S)
+    assert past.series_of(mixed, None, NOON_NS).below.tolist() == np.isnan(u_db).tolist()
+    assert not past.series_of(none, None, NOON_NS).below.any()

@@ -15,7 +15,8 @@ from monitor.calparts import CalibrationFile, parse
 from monitor.config import Site, load_site
 from monitor.core.errors import CalibrationError
 from monitor.core.flags import UPPER_BOUND
-from monitor.core.rows import Event, FieldRows
+from monitor.core.limits import Scope
+from monitor.core.rows import Event, ExposureRows, FieldRows
 from monitor.inforce import InForce, in_force
 from monitor.record import schema
 from monitor.record.reader import Record
@@ -110,7 +111,13 @@ def windows(site: Site, first_minute: int, n: int, flags: int = 0) -> None:
         np.full(n, flags), np.zeros(n),
     )  # fmt: skip
     writer = Writer(site.record_path, simulated=True)
-    writer.commit(writer.begin_boot("one", "machine"), Commit(fields=rows))
+    half = 0.5 * ones
+    ratios = ExposureRows(
+        ends, np.zeros(n, np.int64), half, half, half, 1.5 * ones, np.zeros(n, np.int64),
+        np.zeros(n),
+    )  # fmt: skip
+    writer.put_scopes([Scope("made-up", "1", "general_public", "local", 360.0, True, "test")])
+    writer.commit(writer.begin_boot("one", "machine"), Commit(fields=rows, exposures=ratios))
     writer.close()
 
 
@@ -162,7 +169,25 @@ def test_a_bound_that_is_stated_is_raised_by_the_drift(site: Site) -> None:
     begin(site, NEW + FOUND + "db = -1.0\n", 20 * MINUTE)
     with Record.open(site.record_path) as record:
         seen = record.history(UTC0, UTC0 + 70 * MINUTE, 360)
-    np.testing.assert_allclose(seen.e_high, [1.0] * 10 + [10 ** (1 / 20)] * 10)
+    for e in (seen.e_high, seen.e_mean):  # the mean of such a window is the bound as well
+        np.testing.assert_allclose(e, [1.0] * 10 + [10 ** (1 / 20)] * 10)
+    np.testing.assert_allclose(seen.e_low, 1.0)
+    ((low, mean, high),) = seen.ratios.values()
+    np.testing.assert_allclose(low, 0.5)
+    for ratio in (mean, high):
+        np.testing.assert_allclose(ratio, [0.5] * 10 + [0.5 * 10**0.1] * 10)
+
+
+def test_a_mean_beside_bounds_is_not_raised_with_them(site: Site) -> None:
+    """Of hours in which some windows were below their detection limit and some were not."""
+    begin(site, OLD, 0)
+    windows(site, 0, 3 * 24 * 60)
+    windows(site, 3 * 24 * 60, 30, int(UPPER_BOUND))
+    begin(site, NEW + FOUND + "db = -1.0\n", 4 * 24 * 60 * MINUTE)
+    with Record.open(site.record_path) as record:
+        hours = record.history(UTC0, UTC0 + 3 * 24 * 60 * MINUTE + 30 * MINUTE, 360, 20)
+    assert hours.bin_ns
+    np.testing.assert_allclose(hours.e_mean[:-1], 1.0)
 
 
 def test_hours_and_days_are_widened_too(site: Site) -> None:

@@ -39,6 +39,12 @@ MISTAKES = [
     (CURVES, '"none"', '"none"\naveraging_s = 1', "averaging_s: only where averages is"),
     (CURVES, "averages", "noise_dbm = -70\naverages", "detector.noise_u_db: missing"),
     (CURVES, "averages", "noise_dbm = 70\naverages", "detector.noise_dbm: 70 is outside -200 to 0"),
+    (
+        CURVES,
+        "averages",
+        "noise_dbm = -70\nnoise_u_db = 0\naverages",
+        "detector.noise_u_db: 0 is outside 0.01 to 3",
+    ),
     (CURVES, "averages", "noise_u_db = 1\naverages", "detector.noise_u_db: unknown key"),
     (
         CURVES,
