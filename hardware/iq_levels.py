@@ -7,36 +7,53 @@ from collections.abc import Sequence
 import numpy as np
 from numpy.typing import NDArray
 
+from monitor.core.bandpower import Engine
 from monitor.core.readings import MISSING
-from monitor.core.spectrum import BandAccumulator, clipped_components, samples_from_bytes
 
 DATATYPE = "cu8"
 COUNTS_PER_DB = 1000.0
+SPIKE_BINS = 3
+"""Half width of what is left out round the centre (our choice): a steady offset is taken off as the
+mean; of what wavers, the window passes on less than a thousandth beyond three bins."""
+CODE = 1.0 / 127.5
+FLOOR_SHARE = 0.1
+"""A band in which nothing remains once the converter's own noise is taken off reads as this share
+of that noise: not as zero, which has no dB, and not as a gap (our choice)."""
+
+
+def spike_hz(rate_hz: float, fft: int) -> float:
+    """Half width of what is left out round the centre, Hz."""
+    return SPIKE_BINS * rate_hz / fft
 
 
 class Levels:
-    """Adds up one interval after the other. bands: (low, high) in Hz from the centre."""
+    """Adds up one interval after the other. bands: (low, high) in Hz from the centre.
+
+    ConfigError for a band that cannot be measured.
+    """
 
     def __init__(self, rate_hz: float, bands: Sequence[tuple[float, float]], fft: int) -> None:
-        self._arguments = (rate_hz, bands, fft)
-        self._engine = BandAccumulator(*self._arguments)
-        self._clipped = 0
+        spike = spike_hz(rate_hz, fft)
+        self._engine = Engine(rate_hz, bands, datatype=DATATYPE, fft=fft, excluded_hz=spike)
+        widths_hz = np.array([high - low for low, high in bands])
+        self._floor = FLOOR_SHARE * CODE**2 / 6.0 * widths_hz / rate_hz
 
-    def add(self, raw: bytes) -> None:
+    def add(self, raw: bytes | memoryview) -> None:
         """Take samples that follow those already added."""
-        self._engine.add(samples_from_bytes(raw, DATATYPE))
-        self._clipped += clipped_components(raw, DATATYPE)[0]
+        self._engine.add(raw)
 
     def take(self) -> tuple[NDArray[np.float64], int]:
-        """Power of each band (1.0 = 0 dBFS) and how many components clipped; begins anew."""
-        taken = self._engine.result().power, self._clipped
-        self.drop()
-        return taken
+        """Power of each band (1.0 = 0 dBFS) and how many components clipped.
+
+        The next interval follows without a gap unless drop() is called.
+        """
+        found = self._engine.result()
+        self._engine.reset()
+        return np.maximum(found.power, self._floor), found.clipped
 
     def drop(self) -> None:
         """Begin anew: what follows does not join on to what was added."""
-        self._engine = BandAccumulator(*self._arguments)
-        self._clipped = 0
+        self._engine.reset(continues=False)
 
 
 def counts(powers: NDArray[np.float64]) -> NDArray[np.int32]:

@@ -8,8 +8,8 @@ from typing import ClassVar
 
 from hardware.iq_client import Radio, check_server
 from hardware.iq_count import RATES_HZ
-from hardware.iq_levels import COUNTS_PER_DB
-from hardware.iq_plan import fixed_tune, tunes
+from hardware.iq_levels import COUNTS_PER_DB, Levels, spike_hz
+from hardware.iq_plan import Tune, fixed_tune, tunes
 from hardware.iq_receiver import Scheme
 from monitor.core.averaging_law import Averaging
 from monitor.core.errors import ConfigError
@@ -23,7 +23,6 @@ SETTLE_S = 0.25
 """Our choice: four buffers of 64 ms (IQ.md) may be under way when the receiver is tuned anew."""
 SPAN_SHARE = 0.8
 """Share of the rate that can be used (IQ.md: 75 to 80 %)."""
-SPIKE_HZ = 10e3
 AUTOMATIC = (
     "automatic gain is refused: a level means nothing under it. A real recording wandered by 1.9 dB"
     " within one second, at a fixed gain the same carrier held to 0.16 dB; give a number of dB"
@@ -94,19 +93,10 @@ def settings_from(table: Table) -> Settings:
     fft = table.whole("fft", 1024, 32, 1 << 20)
     if fft % 2:
         raise table.error("fft", f"{fft} is odd; a power of two is quickest")
-    if any(high - low < rate_hz / fft for low, high in bands):
-        raise table.error("fft", f"a band is narrower than one bin of {rate_hz / fft:g} Hz; more")
     span_hz = table.number("span", SPAN_SHARE, 0.1, 1.0) * rate_hz
     centre_hz = table.number("centre_hz", None, 1.0, 2.0**32 - 1.0)
+    places = _places(table, bands, rate_hz, fft, span_hz, centre_hz)
     least_s = 2 * fft / rate_hz
-    try:
-        places = (
-            tunes(bands, span_hz, SPIKE_HZ)
-            if centre_hz is None
-            else fixed_tune(bands, round(centre_hz), span_hz)
-        )
-    except ConfigError as error:
-        raise table.error("centre_hz", str(error)) from None
     scheme = Scheme(
         channels=len(bands),
         tunes=places,
@@ -116,6 +106,29 @@ def settings_from(table: Table) -> Settings:
         settle_s=table.number("settle_s", SETTLE_S, 0.1, 60.0),
     )
     return Settings(radio, scheme, bands)
+
+
+def _places(
+    table: Table,
+    bands: tuple[tuple[float, float], ...],
+    rate_hz: int,
+    fft: int,
+    span_hz: float,
+    centre_hz: float | None,
+) -> tuple[Tune, ...]:
+    try:
+        if centre_hz is None:
+            places = tunes(bands, span_hz, spike_hz(rate_hz, fft))
+        else:
+            places = fixed_tune(bands, round(centre_hz), span_hz)
+    except ConfigError as error:
+        raise table.error("centre_hz", str(error)) from None
+    for place in places:
+        try:
+            Levels(rate_hz, place.bands, fft)
+        except ConfigError as error:
+            raise table.error("fft", f"round {place.centre_hz} Hz: {error}") from None
+    return places
 
 
 def _rate(table: Table) -> int:

@@ -8,6 +8,7 @@ from dataclasses import dataclass
 
 from monitor.core.errors import ConfigError
 
+_TRIED = 32
 Bands = Sequence[tuple[float, float]]
 
 
@@ -37,8 +38,10 @@ def tunes(bands: Bands, span_hz: float, spike_hz: float) -> tuple[Tune, ...]:
     """The places that show every band (low, high; Hz on the air). span_hz: what one place shows.
 
     A band wider than that is divided into equal slices, whose powers add. The centre, with its
-    spike of so many Hz to either side, is put where no band is, if there is such a place.
+    spike of so many Hz to either side, is put where no band is, if there is such a place, else
+    away from the middle of every band: what lies under it is not seen, and carriers like middles.
     """
+    span_hz -= 4 * spike_hz  # so that there always is a place two spikes off the middle
     slices: list[tuple[float, float, int]] = []
     for channel, (low, high) in enumerate(bands):
         n = math.ceil((high - low) / span_hz)
@@ -51,7 +54,7 @@ def tunes(bands: Bands, span_hz: float, spike_hz: float) -> tuple[Tune, ...]:
             groups[-1].append(one)
         else:
             groups.append([one])
-    return tuple(_tune(group, _centre(group, span_hz, spike_hz)) for group in groups)
+    return tuple(_tune(group, _centre(group, span_hz + 4 * spike_hz, spike_hz)) for group in groups)
 
 
 def fixed_tune(bands: Bands, centre_hz: int, span_hz: float) -> tuple[Tune, ...]:
@@ -68,14 +71,13 @@ def fixed_tune(bands: Bands, centre_hz: int, span_hz: float) -> tuple[Tune, ...]
 def _centre(group: Sequence[tuple[float, float, int]], span_hz: float, spike_hz: float) -> int:
     low, high = group[0][0], max(b for _, b, _ in group)
     first, last = math.ceil(high - span_hz / 2), math.floor(low + span_hz / 2)
-    ends = sorted(group)
-    gaps = [(a[1] + b[0]) / 2 for a, b in zip(ends, ends[1:])]
-    middle = round((low + high) / 2)
-    for place in (*(round(gap) for gap in gaps), first, last):
+    gaps = [round((a[1] + b[0]) / 2) for a, b in zip(group, group[1:])]
+    for place in (*gaps, first, last):
         clear = all(place + spike_hz <= a or place - spike_hz >= b for a, b, _ in group)
         if clear and first <= place <= last:
             return place
-    return middle
+    places = [first + (last - first) * i // _TRIED for i in range(_TRIED + 1)]
+    return max(places, key=lambda place: min(abs(place - (a + b) / 2) for a, b, _ in group))
 
 
 def _tune(group: Sequence[tuple[float, float, int]], centre_hz: int) -> Tune:

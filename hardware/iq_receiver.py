@@ -75,7 +75,8 @@ class Receiver:
         self._draws = Random(seed)
         self._clipped, self._done, self._from_ns, self._start_ns = 0, 0, 0, -1
         self._rate_hz = real_rate_hz(radio.rate_hz)
-        self._need = max(scheme.fft, round(scheme.reading_s * self._rate_hz))
+        half = scheme.fft // 2  # intervals of whole halves of a segment weigh exactly alike
+        self._need = max(2, round(scheme.reading_s * self._rate_hz / half)) * half
         self._levels = [Levels(self._rate_hz, tune.bands, scheme.fft) for tune in scheme.tunes]
         self.client = Client(radio, scheme.tunes[0].centre_hz, now_ns)
         self._generation = 0
@@ -174,7 +175,7 @@ class Receiver:
                 return found
             if self._done == 0 and self._start_ns < 0:
                 self._start_ns = max(clock.time_ns(first + at), self._upto_ns)
-            self._levels[self._order[0]].add(bytes(raw[2 * at : 2 * (at + n)]))
+            self._levels[self._order[0]].add(raw[2 * at : 2 * (at + n)])
             self._done += n
             at += n
             if self._done == self._need:
@@ -186,6 +187,8 @@ class Receiver:
         powers, clipped = self._levels[place].take()
         for part, power in zip(self._scheme.tunes[place].parts, powers):
             self._sums[part.channel] += power
+        if self._scheme.swept:
+            self._levels[place].drop()
         self._clipped += clipped
         self.counters["clipped_components"] += clipped
         if self._order:

@@ -35,9 +35,19 @@ def test_a_single_band_is_put_beside_the_centre_where_there_is_room():
     assert max(abs(low), abs(high)) <= SPAN_HZ / 2
 
 
-def test_a_band_without_room_is_put_in_the_middle():
-    (place,) = tunes([(100e6, 101.8e6)], SPAN_HZ, 10e3)
-    assert place.centre_hz == 100_900_000
+@pytest.mark.parametrize("width_hz", [1.0e6, 1.5e6, 1.88e6])
+def test_a_band_that_the_centre_must_lie_in_has_it_away_from_its_middle(width_hz):
+    """A carrier in the middle of its band is what there is most often."""
+    (place,) = tunes([(100e6, 100e6 + width_hz)], SPAN_HZ, 10e3)
+    assert abs(place.centre_hz - 100e6 - width_hz / 2) >= 20e3 - 1
+    (band,) = place.bands
+    assert max(abs(edge) for edge in band) <= SPAN_HZ / 2
+
+
+def test_of_bands_without_a_gap_between_none_has_the_centre_in_its_middle():
+    bands = [(100.0e6, 100.6e6), (100.6e6, 101.2e6), (101.2e6, 101.8e6)]
+    (place,) = tunes(bands, SPAN_HZ, 10e3)
+    assert all(abs(place.centre_hz - (a + b) / 2) >= 20e3 for a, b in bands)
 
 
 def test_a_wide_carrier_is_taken_in_equal_slices():
