@@ -13,7 +13,7 @@ from pathlib import Path
 from monitor.core.errors import RecordError
 
 APPLICATION_ID = 0x46534C4C
-SCHEMA_VERSION = 1
+SCHEMA_VERSION = 2
 DISK_TROUBLE = 75
 """Exit code of the schema's process where only the disk is in the way (EX_TEMPFAIL)."""
 _BUSY_MS = 2000
@@ -104,14 +104,19 @@ def for_writing(path: Path, simulated: bool) -> sqlite3.Connection:
     found = identify(path)
     refuse_other_mark(path, found.simulated, simulated)
     if found.version != SCHEMA_VERSION:
-        raise RecordError(
-            f"{path}: schema {found.version} is older than {SCHEMA_VERSION}; "
-            f"run python -m monitor.record.schema {path}"
-        )
+        raise RecordError(older(path, found))
     connection = _connect(path, "mode=rw", read_only_file=False)
     connection.execute("PRAGMA journal_mode=WAL")
     connection.execute("PRAGMA cell_size_check=ON")
     return connection
+
+
+def older(path: Path, found: Identity) -> str:
+    """What to say of a record that is not yet of this version's schema."""
+    return (
+        f"{path}: schema {found.version} is older than {SCHEMA_VERSION}; start fieldsill measure, "
+        f"or run python -m monitor.record.schema {path} --simulated {int(found.simulated)}"
+    )
 
 
 def failure(error: OSError | sqlite3.Error) -> type[RecordError]:

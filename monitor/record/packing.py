@@ -11,7 +11,9 @@ from numpy.typing import NDArray
 from monitor.core.errors import RecordError
 from monitor.core.readings import Batch
 
-VERSION = 1
+VERSION = 2
+_COLUMNS = {1: 2, 2: 3}
+"""Columns before the counts, by version: the first had no temperature."""
 _HEAD = struct.Struct("<IH")
 _COLUMN = struct.Struct("<QQB")
 _PLAIN = 128  # bit of the width byte: values, not steps
@@ -30,27 +32,31 @@ def pack(batch: Batch) -> bytes:
 
 def unpack(body: bytes, end_ns: int) -> Batch:
     """The very batch that pack() was given. RecordError where the blob is damaged."""
-    if not body or body[0] != VERSION:
+    if not body or body[0] not in _COLUMNS:
         raise RecordError(
             f"raw counts up to boot time {end_ns} ns have packing version "
-            f"{body[0] if body else 'none'}, this version reads {VERSION}; update fieldsill"
+            f"{body[0] if body else 'none'}, this version reads 1 to {VERSION}; update fieldsill"
         )
     try:
         data = zlib.decompress(body[1:])
         n, channels = _HEAD.unpack_from(data)
         at, columns = _HEAD.size, []
-        for _ in range(3 + channels):
+        for _ in range(_COLUMNS[body[0]] + channels):
             column, at = _unpacked(data, at, n)
             columns.append(column)
+        if at != len(data):
+            raise ValueError(f"{len(data) - at} bytes too many")
     except (zlib.error, struct.error, ValueError) as error:
         raise RecordError(
             f"raw counts up to boot time {end_ns} ns are damaged ({error}); restore a copy"
         ) from error
+    before = _COLUMNS[body[0]]
     counts = np.empty((n, channels), np.int32)
-    for i, column in enumerate(columns[3:]):
+    for i, column in enumerate(columns[before:]):
         counts[:, i] = _int32(column)
+    temperature_dc = _int32(columns[2]) if before > 2 else None
     times_ns = columns[0].view(np.int64)
-    return Batch(times_ns, counts, _int32(columns[1]), end_ns, _int32(columns[2]))
+    return Batch(times_ns, counts, _int32(columns[1]), end_ns, temperature_dc)
 
 
 def _packed(values: NDArray[np.signedinteger]) -> bytes:

@@ -262,6 +262,9 @@ class Record:
         try:
             yield
         except sqlite3.DatabaseError as error:
+            found = connect.identify(self.path)
+            if found.version < connect.SCHEMA_VERSION:
+                raise RecordError(connect.older(self.path, found)) from error
             raise RecordError(f"{self.path}: cannot be read: {error}; restore a copy") from error
 
 

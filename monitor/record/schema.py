@@ -32,16 +32,28 @@ def _v1(db: Database) -> None:
             db.execute(statement)
     for name, select in tables.V1_VIEWS.items():
         db.create_view(name, select)
-    db.table("flag_words").insert_all(
-        {"bit": int(bit), "meaning": word} for bit, word in WORDS.items()
-    )
     db.table("verdict_words").insert_all(
         {"verdict": i, "meaning": word} for i, word in enumerate(VERDICT_WORDS)
     )
+    db.execute("PRAGMA user_version = 1")
+
+
+@migrations(name="2")
+def _v2(db: Database) -> None:
+    for table, column in tables.V2_COLUMNS:
+        if column not in {one.name for one in db.table(table).columns}:
+            db.execute(f"ALTER TABLE {table} ADD COLUMN {column} REAL DEFAULT 0.0")
+    for name, select in tables.V2_VIEWS.items():
+        db.execute(f"DROP VIEW IF EXISTS {name}")
+        db.create_view(name, select)
+    db.execute("DELETE FROM flag_words")
+    db.table("flag_words").insert_all(
+        {"bit": int(bit), "meaning": word} for bit, word in WORDS.items()
+    )
     body = files("monitor.record").joinpath("FORMAT.md").read_bytes()
     digest = hashlib.sha256(body).hexdigest()
-    db.table("documents").insert({"hash": digest, "kind": "format", "body": body})
-    db.execute("PRAGMA user_version = 1")
+    db.table("documents").insert({"hash": digest, "kind": "format", "body": body}, ignore=True)
+    db.execute("PRAGMA user_version = 2")
 
 
 def create(path: Path, simulated: bool) -> None:

@@ -1,4 +1,4 @@
-"""The tables and views of schema 1, as text; FORMAT.md says what each column means."""
+"""The tables and views of each schema, as text; FORMAT.md says what each column means."""
 
 from __future__ import annotations
 
@@ -46,12 +46,12 @@ CREATE TABLE fields (
   derivation INTEGER NOT NULL, boot INTEGER NOT NULL, end_ns INTEGER NOT NULL,
   averaging_s INTEGER NOT NULL, e2_low REAL, e2_mean REAL, e2_high REAL, e2_max REAL,
   u_db REAL, k REAL, valid_share REAL NOT NULL, observed_share REAL NOT NULL,
-  flags INTEGER NOT NULL, added_e2 REAL,
+  flags INTEGER NOT NULL,
   PRIMARY KEY (derivation, boot, end_ns, averaging_s)) STRICT, WITHOUT ROWID;
 CREATE TABLE exposures (
   derivation INTEGER NOT NULL, boot INTEGER NOT NULL, end_ns INTEGER NOT NULL,
   scope INTEGER NOT NULL, ratio_low REAL, ratio_mean REAL, ratio_high REAL, u_db REAL,
-  verdict INTEGER NOT NULL, added_ratio REAL,
+  verdict INTEGER NOT NULL,
   PRIMARY KEY (derivation, boot, end_ns, scope)) STRICT, WITHOUT ROWID;
 CREATE TABLE field_spans (
   derivation INTEGER NOT NULL, boot INTEGER NOT NULL, day INTEGER NOT NULL,
@@ -111,6 +111,15 @@ SELECT {_UTC.format("end_ns")} AS end_utc, derivation, boot, averaging_s, name, 
   {_DBM.format("max_w")} AS max_dbm,
   covered_ns / (averaging_s * 1e9) AS valid_share, flags
 FROM windows LEFT JOIN channels USING (channel) LEFT JOIN boot_utc USING (boot)""",
+    "event_log": f"""
+SELECT {_UTC.format("boot_ns")} AS utc, boot, kind, name, body
+FROM events LEFT JOIN boot_utc USING (boot) ORDER BY event""",
+}
+
+V2_COLUMNS = (("fields", "added_e2"), ("exposures", "added_ratio"))
+"""REAL; 0 in the rows of a record that was made without them: nothing was added there."""
+
+V2_VIEWS = {
     "field_levels": f"""
 SELECT {_UTC.format("end_ns")} AS end_utc, derivation, boot, averaging_s,
   sqrt(e2_low) AS e_low_v_per_m, sqrt(e2_mean) AS e_mean_v_per_m,
@@ -124,7 +133,4 @@ SELECT {_UTC.format("end_ns")} AS end_utc, derivation, boot, set_id, edition, po
   meaning AS verdict, verified
 FROM exposures LEFT JOIN scopes USING (scope) LEFT JOIN verdict_words USING (verdict)
   LEFT JOIN boot_utc USING (boot)""",
-    "event_log": f"""
-SELECT {_UTC.format("boot_ns")} AS utc, boot, kind, name, body
-FROM events LEFT JOIN boot_utc USING (boot) ORDER BY event""",
 }

@@ -63,7 +63,7 @@ def test_bytes_are_those_of_the_format_page() -> None:
         np.zeros(2, np.int32), 110, np.array([213, 213], np.int32),
     )  # fmt: skip
     body = pack(batch)
-    assert body[0] == 1
+    assert body[0] == 2
     column = bytes.fromhex
     assert zlib.decompress(body[1:]) == (
         column("02000000 0100")

@@ -30,7 +30,7 @@ def _pragma(path: Path, name: str) -> object:
 def test_a_new_record_has_its_marks(tmp_path: Path) -> None:
     path = tmp_path / "site.db"
     connect.ensure(path, True)
-    assert connect.identify(path) == connect.Identity(1, True)
+    assert connect.identify(path) == connect.Identity(2, True)
     assert _pragma(path, "application_id") == 0x46534C4C
     assert _pragma(path, "page_size") == 1024
     assert _pragma(path, "journal_mode") == "wal"
@@ -102,9 +102,9 @@ def test_a_newer_record_is_refused(tmp_path: Path) -> None:
     path = tmp_path / "site.db"
     schema.create(path, False)
     db = sqlite3.connect(path)
-    db.execute("PRAGMA user_version = 2")
+    db.execute("PRAGMA user_version = 3")
     db.close()
-    with pytest.raises(RecordError, match="newer than this version's 1; update"):
+    with pytest.raises(RecordError, match="newer than this version's 2; update"):
         connect.ensure(path, False)
     with pytest.raises(RecordError, match="newer"):
         Writer(path, simulated=False)
@@ -144,17 +144,18 @@ def test_a_migration_that_fails_changes_nothing(
     writer_of(path).close()
     later = schema.Migrations("fieldsill")
     later(name="1")(schema._v1)  # noqa: SLF001
+    later(name="2")(schema._v2)  # noqa: SLF001
 
-    @later(name="2")
+    @later(name="3")
     def breaks(db: Database) -> None:
         db.execute("ALTER TABLE events ADD COLUMN who TEXT")
-        db.execute("PRAGMA user_version = 2")
+        db.execute("PRAGMA user_version = 3")
         db.execute("INSERT INTO nowhere VALUES (1)")
 
     monkeypatch.setattr(schema, "migrations", later)
     with pytest.raises(RecordError, match="nothing was changed"):
         schema.create(path, True)
-    assert _pragma(path, "user_version") == 1
+    assert _pragma(path, "user_version") == 2
     assert "who" not in {c.name for c in Database(path).table("events").columns}
 
 
@@ -163,15 +164,16 @@ def test_a_migration_keeps_what_is_there(tmp_path: Path, monkeypatch: pytest.Mon
     writer_of(path).close()
     later = schema.Migrations("fieldsill")
     later(name="1")(schema._v1)  # noqa: SLF001
+    later(name="2")(schema._v2)  # noqa: SLF001
 
-    @later(name="2")
+    @later(name="3")
     def widens(db: Database) -> None:
         db.execute("ALTER TABLE events ADD COLUMN who TEXT")
-        db.execute("PRAGMA user_version = 2")
+        db.execute("PRAGMA user_version = 3")
 
     monkeypatch.setattr(schema, "migrations", later)
     schema.create(path, True)
-    assert _pragma(path, "user_version") == 2
+    assert _pragma(path, "user_version") == 3
     assert Database(path).table("scopes").count == len(SCOPES)
 
 

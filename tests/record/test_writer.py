@@ -281,6 +281,6 @@ def test_an_older_record_asks_for_its_migration(
     path: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
     schema.create(path, False)
-    monkeypatch.setattr("monitor.record.connect.SCHEMA_VERSION", 2)
-    with pytest.raises(RecordError, match="schema 1 is older than 2; run python -m"):
+    monkeypatch.setattr("monitor.record.connect.SCHEMA_VERSION", 3)
+    with pytest.raises(RecordError, match="schema 2 is older than 3; start fieldsill"):
         Writer(path, simulated=False)
