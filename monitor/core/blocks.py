@@ -73,6 +73,7 @@ class Trace:
     end_ns: I
     energy_w_ns: F
     covered_ns: I
+    min_w: F
     max_w: F
     flags: I
 
@@ -105,6 +106,7 @@ def accumulate(opened: Blocks, pieces: Pieces, until: int) -> tuple[Blocks, Trac
     high = np.maximum.accumulate(high, axis=1)
     low = np.full(grid, np.inf)
     low[0, 0], low[at] = opened.min_w[0], np.where(valid, pieces.power_w, np.inf)
+    low = np.minimum.accumulate(low, axis=1)
     bits = np.zeros(grid, np.int64)
     bits[0, 0], bits[at] = opened.flags[0], pieces.flags
     bits = np.bitwise_or.accumulate(bits, axis=1)
@@ -113,9 +115,10 @@ def accumulate(opened: Blocks, pieces: Pieces, until: int) -> tuple[Blocks, Trac
 
     total = covered[:, -1]
     blocks = Blocks(
-        opened.first, energy[:, -1], total, total, low.min(axis=1), high[:, -1], n, bits[:, -1]
+        opened.first, energy[:, -1], total, total, low[:, -1], high[:, -1], n, bits[:, -1]
     )
-    return blocks, Trace(row, pieces.end_ns, energy[at], covered[at], high[at], bits[at])
+    sums = (energy[at], covered[at], low[at], high[at], bits[at])
+    return blocks, Trace(row, pieces.end_ns, *sums)
 
 
 def to_rows(blocks: Blocks, block_ns: int = BLOCK_NS) -> BlockRows:

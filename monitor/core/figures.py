@@ -61,7 +61,7 @@ def powers(sums: Sums, averaging_s: int, here: Station) -> Powers:
         low / whole_ns,
         mean - chain.noise_w,
         np.where(bare, np.nan, high - chain.noise_w),
-        _unsure(mean, here),
+        _unsure(mean, sums.min_w, here),
         of_mean(sums, chain.integration_s, chain.bursty),
         overloaded(sums),
     )
@@ -74,10 +74,15 @@ def overloaded(sums: Sums) -> B:
     return found
 
 
-def _unsure(mean_w: F, here: Station) -> F:
-    """Of the noise taken off, and of a mean below the range: it lies anywhere from 0 to there."""
+def _unsure(mean_w: F, min_w: F, here: Station) -> F:
+    """Of the noise taken off, and of what is below the range: it lies anywhere from 0 to there.
+
+    That is a mean below it. Where no noise is known it is single readings, too: for how much of the
+    time they were so weak is not known, and in pauses of the signal they may stand for nothing.
+    """
     chain = here.chain
-    under = np.where(mean_w < chain.least_w, np.maximum(chain.least_w - chain.noise_w, 0.0), 0.0)
+    weakest = np.where(chain.noise_w > 0.0, mean_w, np.minimum(mean_w, min_w))
+    under = np.where(weakest < chain.least_w, np.maximum(chain.least_w - chain.noise_w, 0.0), 0.0)
     return np.hypot(chain.noise_u_w, under / math.sqrt(3.0))
 
 

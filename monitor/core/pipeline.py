@@ -186,6 +186,7 @@ def live(state: State, averaging_s: int, here: Station) -> Sums:
         np.array([front], np.int64),
         opened.energy_w_ns,
         opened.covered_ns,
+        opened.min_w,
         opened.max_w,
         opened.flags,
     )

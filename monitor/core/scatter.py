@@ -29,7 +29,7 @@ def of_mean(sums: Sums, integration_s: float, bursty: NDArray[np.bool_]) -> Real
     """(p, c), W. integration_s: time over which each reading is a mean of power itself; readings
     that leave no time between them miss nothing. bursty (c,): see Chain; there what stays high or
     low for many blocks may be the readings keeping step with the signal, and counts as doubt."""
-    spread_w = np.where(bursty, _of_batches(sums), _of_pairs(sums))
+    spread_w = _skewed(sums, np.where(bursty, _of_batches(sums), _of_pairs(sums)))
     with np.errstate(divide="ignore", invalid="ignore"):
         spacing_s = sums.covered_ns / NS_PER_S / np.maximum(sums.n, 1)
         missed = np.clip(1.0 - integration_s / spacing_s, 0.0, 1.0)
@@ -55,7 +55,28 @@ def _of_batches(sums: Sums) -> Real:
         m = sums.batches.astype(np.float64)
         b = (m - 1.0) / (BATCHES - 1.0)
         variance = sums.batch_w2 / m * b / (m - 1.0)
-        return np.asarray(np.sqrt(variance) * STUDENT_OF_BATCHES)
+        degrees = np.minimum(1.5 * BATCHES, _events(sums))
+        return np.asarray(np.sqrt(variance) * student_ratio(degrees))
+
+
+def _events(sums: Sums) -> Real:
+    """Degrees of freedom where few bursts make up the mean: as many as they would be, were each as
+    strong as the strongest (our choice; held by drawing). Two at the least, where student_ratio
+    ends."""
+    with np.errstate(divide="ignore", invalid="ignore"):
+        strongest = sums.max_w * sums.mean_ns / np.maximum(sums.n, 1)
+        return np.asarray(np.maximum(sums.energy_w_ns / strongest, 2.0))
+
+
+def _skewed(sums: Sums, u_w: Real) -> Real:
+    """For a power cannot be below zero: half as wide as the interval of a lognormal law of the same
+    relative u, mean times sinh(k r) / k. Not beyond a mean anywhere up to the maximum, unless u is.
+    """
+    with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
+        mean_w = sums.energy_w_ns / sums.mean_ns
+        wide_w = mean_w * np.sinh(NORMAL_K * u_w / mean_w) / NORMAL_K
+    most_w = np.maximum(u_w, sums.max_w / math.sqrt(3.0))
+    return np.where(u_w > 0.0, np.minimum(wide_w, most_w), u_w)
 
 
 def student_ratio(degrees_of_freedom: Real) -> Real:
@@ -67,6 +88,3 @@ def student_ratio(degrees_of_freedom: Real) -> Real:
     third = (3.0 * z**6 + 19.0 * z**4 + 17.0 * z**2 - 15.0) / 384.0
     ratio: Real = 1.0 + first / v + second / v**2 + third / v**3
     return ratio
-
-
-STUDENT_OF_BATCHES = float(student_ratio(np.array(1.5 * BATCHES)))

@@ -26,6 +26,7 @@ class Sums:
 
     energy_low, energy_high: bounds where the window cuts its oldest block, else equal to energy.
     covered_ns: valid time, the least it can be; mean_ns: valid time that energy_w_ns is for.
+    min_w: smallest reading, infinite where there is none.
     present: something was read in the window, valid or not. turns_w2: sum of the squared
     differences of neighbouring blocks' means, W2, over pairs of them; n: readings. batch_w2: sum
     of the squared deviations of overlapping batches' means, W2, over batches of them; 0 batches
@@ -39,6 +40,7 @@ class Sums:
     mean_ns: F
     covered_ns: I
     observed_ns: I
+    min_w: F
     max_w: F
     flags: I
     present: NDArray[np.bool_]
@@ -53,31 +55,34 @@ class Sums:
         return Sums(*(getattr(self, name)[index] for name in Sums.__slots__))
 
 
-def _back(values: Array, rows: int) -> Array:
-    """Values moved rows later; nothing (0) before the first."""
+def _back(values: Array, rows: int, neutral: float) -> Array:
+    """Values moved rows later; neutral before the first."""
     if rows == 0:
         return values
-    moved = np.zeros_like(values)
-    moved[rows:] = values[:-rows] if rows < len(values) else 0
+    moved = np.full_like(values, neutral)
+    if rows < len(values):
+        moved[rows:] = values[:-rows]
     return moved
 
 
-def last_n(values: Array, n: int, add: Callable[[Array, Array], Array]) -> Array:
+def last_n(
+    values: Array, n: int, add: Callable[[Array, Array], Array], neutral: float = 0
+) -> Array:
     """Combination of the n rows that end with each row, always in the same association.
 
-    Rows before the first count as 0, which must be neutral for add.
+    Rows before the first count as neutral, which must be so for add.
     """
     total: Array | None = None
     reach, width, level = 0, 1, values
     while width <= n:
         if n & width:
-            part = _back(level, reach)
+            part = _back(level, reach, neutral)
             total = part if total is None else add(total, part)
             reach += width
         if width * 2 <= n:
-            level = add(level, _back(level, width))
+            level = add(level, _back(level, width, neutral))
         width *= 2
-    return np.zeros_like(values) if total is None else total
+    return np.full_like(values, neutral) if total is None else total
 
 
 def _turns(blocks: Blocks) -> tuple[F, I]:
@@ -135,6 +140,7 @@ def at_block_ends(
         covered.astype(np.float64),
         covered,
         last_n(blocks.observed_ns, n, np.add)[skip:],
+        last_n(blocks.min_w, n, np.minimum, np.inf)[skip:],
         last_n(blocks.max_w, n, np.maximum)[skip:],
         last_n(blocks.flags, n, np.bitwise_or)[skip:],
         np.any(last_n(blocks.n + blocks.covered_ns, n, np.add)[skip:], axis=1),
@@ -167,6 +173,8 @@ def inside_blocks(
     whole_ns = last_n(blocks.covered_ns, n - 1, np.add)[before] + trace.covered_ns
     high = np.maximum(last_n(blocks.max_w, n - 1, np.maximum)[before], trace.max_w)
     high = np.maximum(high, old_max)
+    weakest = last_n(blocks.min_w, n - 1, np.minimum, np.inf)[before]
+    weakest = np.minimum(np.minimum(weakest, trace.min_w), blocks.min_w[oldest])
     bits = last_n(blocks.flags, n - 1, np.bitwise_or)[before] | trace.flags
     turn, counts = _turns(blocks)
     deviations, batches = _batches(blocks, n - 1, batched)
@@ -179,6 +187,7 @@ def inside_blocks(
         whole_ns + share * old_covered,
         whole_ns + kept_ns,
         whole_ns + kept_ns,
+        weakest,
         high,
         bits | blocks.flags[oldest],
         np.ones(row.size, np.bool_),

@@ -136,6 +136,34 @@ def test_readings_below_the_range_do_not_mark_an_average_above_it() -> None:
     assert row.e2_mean[0] == pytest.approx(K * 0.5005e-6, rel=2e-2)
 
 
+@pytest.mark.parametrize("known", [True, False])
+def test_pauses_below_the_range_are_doubt_where_no_noise_is_known(known: bool) -> None:
+    """A tenth of the time on, in the pauses what a detector of unknown noise shows of nothing."""
+    least_w, shown_w, on_w = 1e-9, 0.6e-9, 2e-8
+    noise_w = shown_w if known else 0.0
+    base = chain(1, K)
+    made = replace(
+        noisy(),
+        chain=replace(
+            base,
+            least_w=np.array([least_w]),
+            noise_w=np.array([noise_w]),
+            noise_u_w=np.array([0.01 * noise_w]),
+        ),
+    )
+    power_w = np.full((400, 1), shown_w)
+    power_w[::10] = on_w
+    row = field(made, power_w)
+    zero = float(powers(window(made, power_w), 360, made).unsure[0, 0])
+    assert zero == pytest.approx(0.01 * shown_w if known else least_w / np.sqrt(3), rel=1e-6)
+    found = reported(row.e2_low, row.e2_high, row.u_db, row.added_e2, row.flags)
+    assert found.low[0] <= K * 0.1 * on_w <= found.high[0]
+    steady_w = np.full((400, 1), 2.0 * least_w)
+    assert powers(window(made, steady_w), 360, made).unsure[0, 0] == pytest.approx(
+        0.01 * noise_w, abs=1e-20
+    )
+
+
 def test_a_bound_below_the_limit_conforms() -> None:
     """Nothing found, and what could hide is far below: that is conformity, by the bound."""
     here = noisy(ratio_per_watt=1e-3 / MISSED_W)

@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+import tempfile
+from dataclasses import dataclass
 from functools import lru_cache
 from pathlib import Path
 from typing import NamedTuple
@@ -30,8 +31,8 @@ FILE = Path(__file__).parents[2] / "hardware/examples/detector-board-calibration
 FREQUENCY_HZ = 1.2e9
 """One frequency, half way between rows of the antenna's table: what a band adds is not asked."""
 BANDWIDTH_HZ, LOG_TIME_S = 5e6, 0.001
-NOISE_DBM, NOISE_SHARE = -57.0, 0.10
-"""The detector's noise at its port, as terminated at installation, and its standard uncertainty."""
+NOISE_DBM, NOISE_U_DB = -57.0, 0.434
+"""What the terminated port shows, as entered in the file, and its standard uncertainty: 10 %."""
 FLICKER = 0.1
 """Deviation of the noise from reading to reading: what a hundred values of it average to."""
 _AT_ONCE = 2_500_000
@@ -69,9 +70,15 @@ def chain_of(signal: str, noise: bool, averaged_logs: bool) -> Chain:
     """The example board's chain, at one frequency, with or without a declared noise."""
     band = Band("b", FREQUENCY_HZ, FREQUENCY_HZ, signal=signal, signal_bandwidth_hz=BANDWIDTH_HZ)
     front = Averaging("log", LOG_TIME_S) if averaged_logs else Averaging("none")
-    chain = load_chain(FILE, [Channel(a, a, "b") for a in "xyz"], {"b": band}, front)
-    noise_w = np.full(AXES, 1e-3 * 10.0 ** (NOISE_DBM / 10.0) if noise else 0.0)
-    return replace(chain, noise_w=noise_w, noise_u_w=NOISE_SHARE * noise_w)
+    channels, bands = [Channel(a, a, "b") for a in "xyz"], {"b": band}
+    if not noise:
+        return load_chain(FILE, channels, bands, front)
+    keys = f"[detector]\nnoise_dbm = {NOISE_DBM}\nnoise_u_db = {NOISE_U_DB}\n"
+    with tempfile.TemporaryDirectory() as folder:
+        path = Path(folder, FILE.name)
+        text = FILE.read_text(encoding="utf-8").replace("[detector]\n", keys)
+        path.write_text(text, encoding="utf-8")
+        return load_chain(path, channels, bands, front)
 
 
 def station_of(chain: Chain, hold_s: float = 15.0) -> Station:

@@ -20,7 +20,7 @@ SIMULATED_OTHERWISE = ("converter resolution",)
 Real = NDArray[np.float64]
 _SHIFT = 11
 """Bits of a power that are not looked at: it is then known to 0.001 dB."""
-_LEAST_W = np.float32(1e-13)
+_LEAST_W, _MOST_W = np.float32(1e-13), np.float32(10.0)
 
 
 class Response:
@@ -38,7 +38,7 @@ class Response:
         self.knots = np.vstack([curve, end])
         step_v = float(detector["reference_v"]) / 2 ** int(detector["bits"])
         self._base = int(_LEAST_W.view(np.int32)) >> _SHIFT
-        bits = (np.arange(self._base, int(np.float32(10.0).view(np.int32)) >> _SHIFT) << _SHIFT) + (
+        bits = (np.arange(self._base, int(_MOST_W.view(np.int32)) >> _SHIFT) << _SHIFT) + (
             1 << (_SHIFT - 1)
         )
         self._dbm = 10.0 * np.log10(bits.astype(np.int32).view(np.float32).astype(np.float64)) + 30
@@ -55,7 +55,7 @@ class Response:
         return self._bend[self._index(power_w)]
 
     def _index(self, power_w: NDArray[np.float32]) -> NDArray[np.int32]:
-        index = np.maximum(power_w, _LEAST_W).view(np.int32) >> _SHIFT
+        index = np.clip(power_w, _LEAST_W, _MOST_W * np.float32(0.9)).view(np.int32) >> _SHIFT
         index -= self._base
         return index
 
