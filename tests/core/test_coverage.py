@@ -1,13 +1,15 @@
-"""What the stated interval is worth: many instruments, their errors drawn from the stated budget.
+"""What the stated interval of a band is worth, step by step through the pipeline.
 
-The errors, the detector and the truth are made here, from the calibration file alone; only the
-way back, from counts to interval, is the product's.
+Few instruments, a signal anywhere in a wide band, two detectors; one frequency, but every class and
+decade of level, is in tests/coverage. The detector and the truth are made here, from the
+calibration file alone; only the way back, from counts to interval, is the product's.
 """
 
 from __future__ import annotations
 
 import sys
 import tomllib
+from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -17,11 +19,13 @@ import pytest
 from monitor.calfile import load_chain
 from monitor.config import Band, Channel
 from monitor.core import gather, pipeline
+from monitor.core.budget import Contribution
 from monitor.core.calibration import Chain
 from monitor.core.limits import Scope
 from monitor.core.quantities import frequency_hz
 from monitor.core.readings import Batch
 from monitor.core.station import Station, station
+from tests.coverage.instruments import errors_db
 
 ROOT = Path(__file__).parents[2]
 S = 1_000_000_000
@@ -55,19 +59,6 @@ def band_db(text: dict, case: Case) -> tuple[float, float]:
     return float(total.min()), float(total.max())
 
 
-def one_error(line: dict, rng: np.random.Generator) -> np.ndarray:
-    """One contribution on three axes, dB: the same on all where it is shared."""
-    n, value = (1 if line["shared"] else 3), line["value"]
-    drawn = {
-        "normal": lambda: rng.normal(0.0, value, n),
-        "expanded": lambda: rng.normal(0.0, value / line.get("k", 2.0), n),
-        "rectangular": lambda: rng.uniform(-value, value, n),
-        "triangular": lambda: rng.triangular(-value, 0.0, value, n) if value else np.zeros(n),
-        "u_shaped": lambda: value * np.cos(rng.uniform(0.0, np.pi, n)),
-    }[line["distribution"]]()
-    return np.broadcast_to(drawn, 3)
-
-
 def counts_of(text: dict, dbm: np.ndarray) -> np.ndarray:
     """What the detector of the file makes of a level at its port."""
     detector = text["detector"]
@@ -79,19 +70,20 @@ def counts_of(text: dict, dbm: np.ndarray) -> np.ndarray:
     return np.rint(volts / detector["volts_per_count"]).astype(np.int32)
 
 
-def six_minutes(text: dict, case: Case, seed: int) -> tuple[float, np.ndarray]:
+def six_minutes(
+    text: dict, case: Case, budget: Sequence[Sequence[Contribution]], seed: int
+) -> tuple[float, np.ndarray]:
     """True mean of E squared (V2/m2) over 360 s and the counts (360, 3) of one instrument."""
     rng = np.random.default_rng([20_260_301, seed])
     low_db, high_db = band_db(text, case)
-    errors_db = sum(one_error(line, rng) for line in text["contribution"])
-    errors_db = errors_db + rng.uniform(low_db - high_db, high_db - low_db) / 2
+    off_db = errors_db(budget, 1, rng)[0]
     e2_per_w = 50 * 10 ** ((low_db + high_db) / 20)
     level_dbm = case.level_dbm + rng.uniform(-6, 6)
     traffic = 10 ** (rng.uniform(-6, 6, 360) / 10)
     e2 = e2_per_w * 1e-3 * 10 ** (level_dbm / 10) * traffic
     per_axis = e2[:, None] * rng.dirichlet([2.0, 2.0, 2.0])
     dbm = 10 * np.log10(per_axis / e2_per_w / 1e-3)
-    return float(e2.mean()), counts_of(text, dbm + errors_db)
+    return float(e2.mean()), counts_of(text, dbm + off_db)
 
 
 def chain_of(case: Case) -> Chain:
@@ -130,7 +122,7 @@ def test_interval_contains_the_truth_as_often_as_it_says(
     here = station_of(chain_of(case))
     off_db, u_db = np.empty(INSTRUMENTS), np.empty(INSTRUMENTS)
     for seed in range(INSTRUMENTS):
-        truth, counts = six_minutes(text, case, seed)
+        truth, counts = six_minutes(text, case, here.chain.contributions, seed)
         e2, u_db[seed] = measured(here, counts)
         off_db[seed] = abs(10 * np.log10(e2 / truth))
     share = float(np.mean(off_db <= u_db))

@@ -5,6 +5,7 @@ Written from the calibration file alone; of the product only the budget's lines 
 
 from __future__ import annotations
 
+import math
 import tomllib
 from collections.abc import Sequence
 from pathlib import Path
@@ -89,6 +90,7 @@ def errors_db(budget: Sequence[Sequence[Contribution]], n: int, rng: np.random.G
 def _drawn(line: Contribution, n: int, rng: np.random.Generator) -> Real:
     """JCGM 101:2008, 6.4, by other ways than the product's where there is one."""
     value = line.value
+    assert math.isinf(line.degrees_of_freedom), line.name
     if line.distribution in ("normal", "expanded"):
         return rng.normal(0.0, value / (line.k if line.distribution == "expanded" else 1.0), n)
     if line.distribution == "rectangular":

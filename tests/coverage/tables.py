@@ -64,7 +64,7 @@ class Count(NamedTuple):
         """Where the true share lies with 95 %: Wilson's interval (1927, from memory)."""
         z, n, p = 1.959964, self.n, self.share
         middle, half = p + z * z / (2 * n), z * np.sqrt(p * (1 - p) / n + z * z / (4 * n * n))
-        return (middle - half) / (1 + z * z / n), (middle + half) / (1 + z * z / n)
+        return max(middle - half, 0.0) / (1 + z * z / n), (middle + half) / (1 + z * z / n)
 
 
 class Row(NamedTuple):
