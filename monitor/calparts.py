@@ -110,7 +110,7 @@ def _file(top: TopTable, body: bytes) -> CalibrationFile:
     elements = _joined([read_element(table) for table in top.tables("element")])
     contributions = tuple(read_line(table) for table in top.tables("contribution", []))
     found = top.any("as_found", None)
-    as_found = read_as_found(top.table("as_found"), certificate.date) if found else None
+    as_found = None if found is None else read_as_found(top.table("as_found"), certificate.date)
     top.finish()
     file = CalibrationFile(top, certificate, detectors, elements, contributions, body, as_found)
     if not file.lines:

@@ -230,9 +230,10 @@ def shares_of(text: str | None, axes: str) -> Real:
         raise ConfigError(f"shares {text!r}: write numbers, for example 0.5,0.3,0.2") from None
     if given.size != len(axes) or not np.isfinite(given).all() or (given < 0).any():
         raise ConfigError(f"shares {text!r}: one number of zero or more for each of {axes}")
-    if not given.sum() > 0:
+    if not given.any():
         raise ConfigError(f"shares {text!r}: all are zero")
-    return np.asarray(given / given.sum())
+    parts = given / given.max()  # a sum of large ones may be beyond any number
+    return np.asarray(parts / parts.sum())
 
 
 def common_band(files: Sequence[CalibrationFile], axes: str) -> tuple[float, float]:

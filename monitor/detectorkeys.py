@@ -31,7 +31,7 @@ SCALE_MARGIN_DB = 20.0
 """How far beyond its range a plain scale still gives readings by default. Our choice."""
 PROBE_MARGIN = 2.0
 """How far above its range a probe's figure is still a reading by default. Our choice."""
-MOST_V_PER_M = 1e5
+LEAST_V_PER_M, MOST_V_PER_M = 1e-6, 1e5
 LEAST_NOISE_U_DB, MOST_NOISE_U_DB = 0.01, 3.0
 """A noise known worse is not to be taken off; to first order its uncertainty means nothing. One
 known exactly there is not, and an average below it would stay below 0 V/m (our choice)."""
@@ -177,6 +177,8 @@ def _probe(table: Table) -> ProbeSource:
     except CalibrationError as error:
         raise table.error("linearity", str(error)) from None
     ends = float(linearity.true[0]), float(linearity.true[-1])
+    if ends[0] < LEAST_V_PER_M:
+        raise table.error("linearity", f"{ends[0]:g} V/m is below {LEAST_V_PER_M:g} V/m")
     usable = pair(table, "range_v_per_m", ends, most=MOST_V_PER_M)
     if usable[0] < ends[0] or usable[1] > ends[1]:
         raise table.error(

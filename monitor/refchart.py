@@ -6,7 +6,7 @@ import math
 
 from monitor import calparts
 from monitor.core.control_chart import BASELINE, State, chart
-from monitor.core.errors import CalibrationError
+from monitor.core.errors import CalibrationError, ConfigError
 from monitor.record.reader import Record
 from monitor.refchecks import Check, checks_of
 
@@ -21,8 +21,12 @@ def charts(record: Record, channel: str | None, floor_db: float | None) -> list[
     """One chart for each channel and place of application, of the checks that rest on the same
     count table as the last one: another table is another zero. None: every channel.
 
-    floor_db: least sigma; None: what the calibration in force states, else FLOOR_DB.
+    floor_db: least sigma; None: what the calibration in force states, else FLOOR_DB. ConfigError
+    where the record has no such channel.
     """
+    names = [row.name for row in record.channels()]
+    if channel is not None and channel not in names:
+        raise ConfigError(f"channel {channel!r}: the record has {', '.join(names) or 'none'}")
     stated = floor_db if floor_db is not None else stated_db(record)
     series: dict[tuple[str, str], list[Check]] = {}
     for check in checks_of(record):

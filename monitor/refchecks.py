@@ -10,7 +10,7 @@ import numpy as np
 
 from monitor.alarm_desk import text_of
 from monitor.core.blocks import BLOCK_NS
-from monitor.core.errors import ConfigError
+from monitor.core.errors import ConfigError, RecordError
 from monitor.core.flags import Flag, words
 from monitor.core.quantities import dbm_from_w
 from monitor.core.readings import NS_PER_S
@@ -28,6 +28,8 @@ LEAST_VALID = 0.5
 """Part of the time that must have readings (our choice)."""
 LOOK_BACK_NS = 3600 * NS_PER_S
 MOST_EVENTS = 1 << 40
+MOST = 1e9
+"""No level in dBm and no time in s of a check is larger."""
 NUMBERS = ("applied_dbm", "mean_dbm", "lowest_dbm", "highest_dbm", "valid_s")
 
 
@@ -167,8 +169,8 @@ def event_of(request: Mapping[str, object], channels: Sequence[str], now_ns: int
     for key in NUMBERS:
         value = request.get(key)
         number = isinstance(value, (int, float)) and not isinstance(value, bool)
-        if not number or not math.isfinite(value):  # type: ignore[arg-type]
-            raise ConfigError(f"{key}: {value!r} is not a number")
+        if not number or not abs(value) <= MOST:  # type: ignore[arg-type]
+            raise ConfigError(f"{key}: {value!r} is not a number, or beyond {MOST:g}")
         body[key] = float(value)  # type: ignore[arg-type]
     for key, longest in (("from_utc", 40), ("to_utc", 40), ("count_table", 64), ("note", 2000)):
         body[key] = text_of(request, key, longest, "")
@@ -179,15 +181,22 @@ def event_of(request: Mapping[str, object], channels: Sequence[str], now_ns: int
 
 
 def checks_of(record: Record) -> list[Check]:
-    """Every reference check of a record, in the order of time."""
-    found = [
-        Check(
-            event.name, str(event.body["at"]), str(event.body["from_utc"]),
-            str(event.body["to_utc"]), float(str(event.body["applied_dbm"])),
-            float(str(event.body["mean_dbm"])), str(event.body["count_table"]),
-            str(event.body["note"]),
-        )
-        for event in record.events(limit=MOST_EVENTS)
-        if event.kind == KIND
-    ]  # fmt: skip
-    return sorted(found, key=lambda check: utc_ns_of(check.to_utc) if check.to_utc else 0)
+    """Every reference check of a record, in the order of time; RecordError for one that is none."""
+    events = [event for event in record.events(limit=MOST_EVENTS) if event.kind == KIND]
+    try:
+        found = [_check(event.name, event.body) for event in events]
+        return sorted(found, key=lambda check: utc_ns_of(check.to_utc) if check.to_utc else 0)
+    except (KeyError, ValueError) as error:
+        raise RecordError(
+            f"{record.path}: a reference check in it cannot be read: {error}; restore a copy"
+        ) from error
+
+
+def _check(channel: str, body: Mapping[str, object]) -> Check:
+    applied_dbm, mean_dbm = (float(str(body[key])) for key in ("applied_dbm", "mean_dbm"))
+    if not math.isfinite(mean_dbm - applied_dbm):
+        raise ValueError(f"{mean_dbm} dBm read, {applied_dbm} dBm applied")
+    from_utc, to_utc, at, table, note = (
+        str(body[key]) for key in ("from_utc", "to_utc", "at", "count_table", "note")
+    )
+    return Check(channel, at, from_utc, to_utc, applied_dbm, mean_dbm, table, note)

@@ -75,6 +75,10 @@ def _refuse_huge(value: object) -> None:
         raise ValueError("an integer is beyond 64 bits")
 
 
+LAST_DAY = datetime.date(2261, 12, 31)
+"""The last whole year that nanoseconds since 1970 reach in 64 bits (2262-04-11)."""
+
+
 def pair(
     table: Table, key: str, default: Any = REQUIRED, most: float = MAX_FIGURE
 ) -> tuple[float, float]:
@@ -96,10 +100,12 @@ def date(table: Table, key: str, default: Any = REQUIRED) -> datetime.date:
         return value  # type: ignore[no-any-return]
     if isinstance(value, str):
         try:
-            return datetime.date.fromisoformat(value)
+            value = datetime.date.fromisoformat(value)
         except ValueError:
             value = repr(value)
-    elif isinstance(value, datetime.date) and not isinstance(value, datetime.datetime):
+    if isinstance(value, datetime.date) and not isinstance(value, datetime.datetime):
+        if value > LAST_DAY:
+            raise table.error(key, f"{value} is too far ahead; the last day is {LAST_DAY}")
         return value
     raise table.error(key, f"{value} is not a date; write for example 2025-11-30")
 
@@ -122,16 +128,21 @@ def rows(
     plain = []
     for i, row in enumerate(value, 1):
         try:
-            if frequency and isinstance(row, list) and row and isinstance(row[0], str):
+            if frequency and isinstance(row, list) and row and _figure(row[0]):
                 row = [frequency_hz(row[0]), *row[1:]]
         except ConfigError as error:
             raise table.error(key, f"row {i}: {error}") from None
-        if not _numbers(row, columns) or (frequency and row[0] <= 0):
+        if not _numbers(row, columns):
             raise table.error(key, f"row {i}: {row!r} is not {form}")
         if max(abs(v) for v in (row[1:] if frequency else row)) > most:
             raise table.error(key, f"row {i}: {row!r} is beyond {most:g}")
         plain.append(row)
     return np.array(plain, np.float64)
+
+
+def _figure(value: object) -> bool:
+    """Whether it may be a frequency: a text or a number."""
+    return isinstance(value, (str, int, float)) and not isinstance(value, bool)
 
 
 def _numbers(value: object, n: int) -> bool:

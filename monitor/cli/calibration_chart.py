@@ -9,6 +9,7 @@ from typing import Any
 import click
 
 from monitor.cli.averages_record import site_record
+from monitor.cli.levels import Within
 from monitor.cli.output import print_json
 from monitor.core.control_chart import ACTION_SIGMA, BASELINE
 from monitor.record.reader import Record
@@ -24,7 +25,7 @@ REACH_SIGMA = 4.0
 @click.option("--record", type=click.Path(path_type=Path), help="Default: the site's.")
 @click.option("--channel", help="All if left out.")
 @click.option(
-    "--repeatability", "floor_db", type=click.FloatRange(0.0, 10.0),
+    "--repeatability", "floor_db", type=Within(0.0, 10.0),
     help="Least sigma, dB; the calibration's lines of kind repeatability if left out.",
 )  # fmt: skip
 @click.option("--json", "as_json", is_flag=True, help="One JSON document.")

@@ -5,6 +5,7 @@ from __future__ import annotations
 import click
 
 from monitor.checks import findings
+from monitor.cli.levels import Within
 from monitor.cli.output import print_json
 from monitor.clock import SystemClock
 from monitor.config import default_site_path, load_site
@@ -15,7 +16,7 @@ from monitor.config import default_site_path, load_site
 @click.option(
     "--listen",
     "listen_s",
-    type=click.FloatRange(0.0, 600.0),
+    type=Within(0.0, 600.0),
     default=3.0,
     show_default=True,
     help="Seconds to listen to a serial line; 0: not at all.",

@@ -3,6 +3,9 @@
 from __future__ import annotations
 
 import math
+from typing import Any
+
+import click
 
 from monitor.core.errors import ConfigError
 from monitor.core.quantities import Z0_OHM, frequency_hz, s_from_e, split_unit
@@ -27,6 +30,19 @@ LARGEST = {
 LONGEST_S = 1e8
 """Three years: no averaging time comes near, and its ns leave room to reckon in 64 bits."""
 KNOWN = "V/m, mV/m, A/m, mA/m, W/m2, mW/m2, mW/cm2, uW/cm2"
+
+
+class Within(click.FloatRange):
+    """A number within a range; nan, which compares with nothing, is in none."""
+
+    def convert(
+        self, value: Any, param: click.Parameter | None, ctx: click.Context | None
+    ) -> float:
+        """The number, or click's error."""
+        number = float(super().convert(value, param, ctx))
+        if math.isnan(number):
+            self.fail(f"{value!r} is not a number", param, ctx)
+        return number
 
 
 def level(text: str) -> tuple[str, float]:

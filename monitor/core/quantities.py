@@ -74,6 +74,8 @@ def antenna_factor_db_per_m(gain_dbi: Real, frequency_hz: Real, load_ohm: float 
 
 
 _NUMBER = re.compile(r"^\s*([-+]?(?:\d+\.?\d*|\.\d+)(?:[eE][-+]?\d+)?)\s*([A-Za-z/2²]*)\s*$")
+FREQUENCIES_HZ = 1e-3, 1e18
+"""Beyond them a frequency is a slip of the point, and a grid over it would have no end."""
 _FREQUENCY = {"": 1.0, "hz": 1.0, "khz": 1e3, "mhz": 1e6, "ghz": 1e9}
 
 
@@ -86,12 +88,13 @@ def split_unit(text: str) -> tuple[float, str]:
 
 
 def frequency_hz(text: str | float) -> float:
-    """Frequency in Hz from '900MHz' or a bare number in Hz; positive and finite."""
+    """Frequency in Hz from '900MHz' or a bare number in Hz; ConfigError outside FREQUENCIES_HZ."""
     if isinstance(text, (int, float)):
         value, unit = float(text), ""
     else:
         value, unit = split_unit(text)
     scale = _FREQUENCY.get(unit.lower())
-    if scale is None or not math.isfinite(value) or value <= 0:
+    low, high = FREQUENCIES_HZ
+    if scale is None or not low <= value * scale <= high:
         raise ConfigError(f"{text!r}: not a frequency; write for example 900MHz or 1.8GHz")
     return value * scale

@@ -3,10 +3,26 @@
 from __future__ import annotations
 
 import json
+from typing import Any
 
 from monitor.core.rows import Event
 
 _LARGEST = 2**63 - 1
+
+
+class MalformedError(ValueError):
+    """An event in the file that is not as FORMAT.md says."""
+
+
+def body_of(text: str) -> dict[str, Any]:
+    """The body of an event as stored; MalformedError where it is no JSON object."""
+    try:
+        body = json.loads(text)
+    except (ValueError, RecursionError) as error:
+        raise MalformedError(f"an event's body is no JSON: {error}") from None
+    if not isinstance(body, dict):
+        raise MalformedError("an event's body is no JSON object")
+    return body
 
 
 def event_row(boot: int, event: Event) -> tuple[object, ...]:

@@ -6,6 +6,7 @@ import json
 import sqlite3
 from collections.abc import Sequence
 
+from monitor.record.eventrows import body_of
 from monitor.record.types import Boot, EventRow
 
 _ALARM_EVENTS = """
@@ -56,4 +57,4 @@ def _offsets(boots: Sequence[Boot]) -> str:
 def _event(
     utc_ns: int | None, boot: int, boot_ns: int, kind: str, name: str, body: str
 ) -> EventRow:
-    return EventRow(utc_ns, boot, boot_ns, kind, name, json.loads(body))
+    return EventRow(utc_ns, boot, boot_ns, kind, name, body_of(body))

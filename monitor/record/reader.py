@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import json
 import math
 import sqlite3
 from collections.abc import Iterator
@@ -18,6 +17,7 @@ from monitor.core.limits import Scope
 from monitor.core.readings import Batch
 from monitor.core.rows import BlockRows, ExposureRows, FieldRows, WindowRows
 from monitor.record import connect, happened, marks
+from monitor.record.eventrows import MalformedError, body_of
 from monitor.record.fetch import Rows, columns, kinds_of
 from monitor.record.fixes import winner
 from monitor.record.history import history
@@ -209,7 +209,8 @@ class Record:
         """(boot_ns, identity of the chain) of each start of the daemon in a boot, in order."""
         query = "SELECT boot_ns, body FROM events WHERE boot = ? AND kind = 'start' ORDER BY event"
         rows = self._all(query, boot)
-        return [(boot_ns, str(json.loads(body).get("chain", ""))) for boot_ns, body in rows]
+        with self._one_line():
+            return [(boot_ns, str(body_of(body).get("chain", ""))) for boot_ns, body in rows]
 
     def alarm_events(self) -> list[EventRow]:
         """The few events that leave every alarm as all events would, oldest first.
@@ -261,7 +262,7 @@ class Record:
     def _one_line(self) -> Iterator[None]:
         try:
             yield
-        except sqlite3.DatabaseError as error:
+        except (sqlite3.DatabaseError, MalformedError) as error:
             found = connect.identify(self.path)
             if found.version < connect.SCHEMA_VERSION:
                 raise RecordError(connect.older(self.path, found)) from error

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import json
 import sqlite3
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
@@ -10,9 +9,13 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from monitor.record.eventrows import MalformedError, body_of
+
 _STARTS = "SELECT boot, boot_ns, body FROM events WHERE kind = 'start' ORDER BY event"
 _DRIFTS = "SELECT body FROM events WHERE kind = 'calibration' AND name = 'drift' ORDER BY event"
 _LAST_NS = 2**63 - 1
+MOST_DB = 1000.0
+"""No drift is larger; beyond it nothing could be worked out."""
 
 F = NDArray[np.float64]
 I = NDArray[np.int64]  # noqa: E741
@@ -83,14 +86,21 @@ def drift_over(segments: Sequence[Segment], after_ns: I, until_ns: I) -> F:
 
 
 def calibrations(db: sqlite3.Connection) -> Calibrations:
-    """What the events of a record say of its calibrations."""
+    """What the events of a record say of its calibrations; MalformedError for one that is none."""
     uses = tuple(
-        Use(boot, boot_ns, {str(name): str(value) for name, value in json.loads(body).items()})
+        Use(boot, boot_ns, {str(name): str(value) for name, value in body_of(body).items()})
         for boot, boot_ns, body in db.execute(_STARTS)
     )
-    bodies = [json.loads(body) for (body,) in db.execute(_DRIFTS)]
-    drifts = tuple(
-        Drift(frozenset(body["documents"]), str(body["next"]), float(body["drift_db"]))
-        for body in bodies
-    )
-    return Calibrations(uses, drifts)
+    return Calibrations(uses, tuple(_drift(body_of(body)) for (body,) in db.execute(_DRIFTS)))
+
+
+def _drift(body: Mapping[str, object]) -> Drift:
+    """What a drift widens must be known: figures are not to be read as if there were none."""
+    documents, later, drift_db = (body.get(key) for key in ("documents", "next", "drift_db"))
+    if not (isinstance(documents, list) and all(isinstance(one, str) for one in documents)):
+        raise MalformedError("the event of a drift names no documents")
+    if isinstance(drift_db, bool) or not isinstance(drift_db, (int, float)):
+        raise MalformedError("the event of a drift has no drift_db")
+    if not abs(drift_db) <= MOST_DB:
+        raise MalformedError(f"the event of a drift has a drift_db of {drift_db}")
+    return Drift(frozenset(documents), str(later), float(drift_db))

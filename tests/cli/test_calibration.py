@@ -95,6 +95,11 @@ def test_table_of_contributions(capsys: pytest.CaptureFixture[str]) -> None:
     assert rows["mismatch"]["channels"] == 3
     assert rows["mismatch"]["degrees_of_freedom"] is None
     assert sum(row["variance_share"] for row in rows.values()) == pytest.approx(1.0)
+    huge = show(capsys, BOARD, "--band", BAND, "--shares", "1e308,1e308,1e308", "--json").document
+    assert huge["shares"] == pytest.approx([1 / 3] * 3)
+    assert huge["uncertainty"]["standard_db"] == pytest.approx(
+        document["uncertainty"]["standard_db"]
+    )
     alone = show(capsys, BOARD, "--band", BAND, "--shares", "0,0,7", "--json").document
     assert alone["shares"] == [0.0, 0.0, 1.0]
     rows = {row["name"]: row for row in alone["contributions"]}
@@ -168,6 +173,7 @@ def test_one_axis_of_a_file(tmp_path: Path, capsys: pytest.CaptureFixture[str]) 
         (["--shares", "1,2"], "one number of zero or more for each of xyz"),
         (["--shares", "a"], "write numbers"),
         (["--shares", "0,0,0"], "all are zero"),
+        (["--band", "1e-300:1e300"], "not a frequency"),
         (["--monte-carlo", "10"], "1000<=x<=10000000"),
     ],
 )

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import json
+import sqlite3
 from dataclasses import replace
 from pathlib import Path
 
@@ -235,3 +237,48 @@ def test_the_least_sigma_is_said_and_can_be_given(
 
 def test_without_checks_there_is_a_word(capsys: pytest.CaptureFixture[str], record: Path) -> None:
     assert "no reference check yet" in charted(capsys, record).out
+
+
+@pytest.mark.parametrize(
+    ("options", "words"),
+    [
+        (["--channel", "nowhere"], "channel 'nowhere': the record has east, north, up"),
+        (["--repeatability", "nan"], "'nan' is not a number"),
+    ],
+)
+def test_what_a_chart_cannot_be_asked(
+    capsys: pytest.CaptureFixture[str], record: Path, options: list[str], words: str
+) -> None:
+    kept(record, HAND)
+    found = charted(capsys, record, *options)
+    assert (found.code, found.out) == (2, "")
+    assert words in found.err
+
+
+@pytest.mark.parametrize(
+    "more",
+    [{"applied_dbm": "loud"}, {"mean_dbm": float("nan")}, {"to_utc": "at noon"}, {"at": None}],
+)
+def test_a_check_in_the_record_that_is_none_is_one_line(
+    capsys: pytest.CaptureFixture[str], record: Path, more: dict[str, object]
+) -> None:
+    body = {**event_of(REQUEST, ["east"], 5 * S).body, **more}
+    body = {key: value for key, value in body.items() if value is not None}
+    db = sqlite3.connect(record)
+    values = (KIND, "east", json.dumps(body))
+    db.execute(
+        "INSERT INTO events (boot, boot_ns, kind, name, body) VALUES (1, 5, ?, ?, ?)", values
+    )
+    db.commit()
+    db.close()
+    found = charted(capsys, record)
+    assert found.code == 3
+    assert "a reference check in it cannot be read" in found.err
+    assert found.err.count("\n") == 1
+
+
+@pytest.mark.parametrize("value", [1e300, -1e300, 10**400])
+def test_a_level_beyond_any_is_not_kept(value: float) -> None:
+    """The difference of two such would be no number, and its event could not be written."""
+    with pytest.raises(ConfigError, match="applied_dbm: .* is not a number, or beyond 1e"):
+        event_of({**REQUEST, "applied_dbm": value}, ["east"], 0)

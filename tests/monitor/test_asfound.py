@@ -221,3 +221,9 @@ def test_a_drift_that_does_not_cover_the_band_is_a_mistake_in_the_file(site: Sit
     assert (fault.kind, fault.body["stands in"]) == (
         "fault", hashlib.sha256(OLD.encode()).hexdigest(),
     )  # fmt: skip
+
+
+def test_an_empty_table_is_not_passed_over() -> None:
+    """Every key of the example taken in but one hash sign: nobody is to think that it counts."""
+    with pytest.raises(CalibrationError, match=r"as_found.date: missing"):
+        parse(NEW.encode() + b"\n[as_found]\n")

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import re
 from pathlib import Path
 
 import numpy as np
@@ -127,3 +128,26 @@ def test_what_points_cannot_be(tmp_path: Path, lines: str, words: str) -> None:
         read(tmp_path, text)
     assert "calibration.toml: contribution[2]." in str(caught.value)
     assert words in str(caught.value)
+
+
+@pytest.mark.parametrize("day", ["9999-12-31", '"9999-12-31"', "2262-01-01"])
+def test_a_due_day_that_no_clock_here_reaches_is_told(tmp_path: Path, day: str) -> None:
+    """64 bits of nanoseconds end on 2262-04-11; the day after 9999-12-31 does not exist."""
+    text = re.sub("(?m)^due = .*$", f"due = {day}", FILE)
+    assert text != FILE
+    with pytest.raises(CalibrationError, match="calibration.due: .* is too far ahead; the last"):
+        read(tmp_path, text)
+
+
+def test_the_last_day_is_taken(tmp_path: Path) -> None:
+    held = read(tmp_path, re.sub("(?m)^due = .*$", "due = 2261-12-31", FILE))
+    assert held.due_utc_ns is not None
+    assert held.due_utc_ns < 2**63
+
+
+@pytest.mark.parametrize("frequency", ["1e-300", '"1e-300Hz"', "0", "-1", "1e300", "inf", "nan"])
+def test_a_table_does_not_begin_at_nothing(tmp_path: Path, frequency: str) -> None:
+    text = FILE.replace('["700MHz"', f"[{frequency}", 1)
+    assert text != FILE
+    with pytest.raises(CalibrationError, match="row 1: .* not a (frequency|number)"):
+        read(tmp_path, text)

@@ -66,6 +66,7 @@ MISTAKES = [
     ),
     (PROBE, "[5, 5]", "[5, 0.4]", "detector.linearity: true 0.4 V/m at point 2; must be positive"),
     (PROBE, "[0.5, 0.48]", "[0, 0]", "detector.linearity: indicated 0 V/m at point 1"),
+    (PROBE, "[0.5, 0.48]", "[0.5, 1e-300]", "detector.linearity: 1e-300 V/m is below 1e-06 V/m"),
     (PROBE, "averages", "range_v_per_m = [0.1, 100]\naverages", "range_v_per_m: reaches beyond"),
     (PROBE, "averages", "valid_v_per_m = [1, 300]\naverages", "valid_v_per_m: must hold the lin"),
     (PROBE, "resolution = 0.01", "resolution = 0.001", "detector.resolution: 400002 counts"),

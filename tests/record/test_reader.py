@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import os
 import shutil
+import sqlite3
 import subprocess
 import sys
 import tempfile
@@ -15,6 +16,7 @@ import pytest
 from monitor.core.errors import RecordError
 from monitor.core.readings import empty_batch
 from monitor.core.rows import Event
+from monitor.inforce import Before, before_of
 from monitor.record.reader import Record
 from monitor.record.types import Commit
 from tests.record.making import (
@@ -217,3 +219,42 @@ def test_boots_and_runs_that_alternate_are_kept_apart(path: Path) -> None:
             cut = [t for b in record.raw_batches(boot, times[77], times[333]) for t in b.times_ns]
             assert cut == times[77:333]
         assert list(record.raw_batches(3)) == []
+
+
+@pytest.mark.parametrize(
+    ("kind", "name", "body", "words"),
+    [
+        ("calibration", "drift", "{}", "names no documents"),
+        ("calibration", "drift", '{"documents": [1], "drift_db": 1}', "names no documents"),
+        ("calibration", "drift", '{"documents": ["a"], "drift_db": null}', "has no drift_db"),
+        ("calibration", "drift", '{"documents": ["a"], "drift_db": true}', "has no drift_db"),
+        ("calibration", "drift", '{"documents": ["a"], "drift_db": NaN}', "a drift_db of nan"),
+        ("calibration", "drift", '{"documents": ["a"], "drift_db": -1e308}', "drift_db of -1e"),
+        ("calibration", "drift", "[]", "is no JSON object"),
+        ("start", "daemon", "[]", "is no JSON object"),
+        ("start", "daemon", "text", "is no JSON"),
+    ],
+)
+def test_an_event_that_is_none_is_one_clear_error(
+    path: Path, kind: str, name: str, body: str, words: str
+) -> None:
+    """A drift that is passed over would leave an uncertainty that is too small."""
+    writer = writer_of(path)
+    boot = writer.begin_boot("b", "machine")
+    writer.close()
+    db = sqlite3.connect(path)
+    values = (boot, kind, name, body)
+    db.execute(
+        "INSERT INTO events (boot, boot_ns, kind, name, body) VALUES (?, 5, ?, ?, ?)", values
+    )
+    db.commit()
+    db.close()
+    with Record.open(path) as record:
+        with pytest.raises(RecordError, match=words) as caught:
+            record.calibrations()
+        assert "\n" not in str(caught.value)
+        assert str(path) in str(caught.value)
+        if kind == "start":
+            with pytest.raises(RecordError, match=words):
+                record.starts(boot)
+    assert before_of(path) == Before()
