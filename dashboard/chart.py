@@ -31,7 +31,8 @@ class Series:
     """What is drawn: times (UTC ns) and figures of shape (n,); nan where there is no figure.
 
     coverage: how much of any part of the span was measured. below: where the figure is what the
-    average stays below; empty where that is nowhere.
+    average stays below; lower: where the average may be higher than it; empty where that is
+    nowhere.
     """
 
     utc_ns: I
@@ -43,6 +44,7 @@ class Series:
     bin_ns: int = 0
     coverage: Coverage = field(default_factory=Coverage)
     below: NDArray[np.bool_] = field(default_factory=lambda: np.empty(0, np.bool_))
+    lower: NDArray[np.bool_] = field(default_factory=lambda: np.empty(0, np.bool_))
 
 
 @dataclass(frozen=True, slots=True)

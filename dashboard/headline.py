@@ -107,7 +107,8 @@ def _open(ratio: Ratio, watched: list[Ratio], what: str) -> str:
     """Why nothing can be said to be below; '' where something can. ratio: that of the picture."""
     unbounded = next((one for one in [ratio, *watched] if _unbounded(one)), None)
     if unbounded is not None:
-        bound = "a bound neither way" if unbounded.kind is Kind.OPEN else "a lower bound"
+        neither = unbounded.kind is Kind.OPEN
+        bound = "neither an upper nor a lower bound" if neither else "a lower bound"
         figure = _capital(told.of_limit(unbounded))
         return f"{figure} {AT_ANTENNA}; {bound}: it cannot be said to be below {what}"
     if ratio.window.thin:

@@ -14,7 +14,7 @@ from dashboard.chart import Mark, Series
 from dashboard.span import Span
 from dashboard.words import figure, utc_of
 from monitor.core.alarms import ENOUGH_SHARE
-from monitor.core.flags import UPPER_BOUND
+from monitor.core.flags import LOWER_BOUND, UPPER_BOUND
 from monitor.record.types import WINDOW_EVERY_NS, History
 
 F = NDArray[np.float64]
@@ -30,7 +30,7 @@ class Row:
     """A line of the table: a part of the span; figures are None where there is no measurement.
 
     most_thin, least_thin: too little of that average's time is valid. most_below, least_below: it
-    is what that average stays below.
+    is what that average stays below. most_lower, least_lower: the average may be higher than it.
     """
 
     part: Span
@@ -43,6 +43,8 @@ class Row:
     least_thin: bool = False
     most_below: bool = False
     least_below: bool = False
+    most_lower: bool = False
+    least_lower: bool = False
 
 
 @dataclass(frozen=True, slots=True)
@@ -63,7 +65,7 @@ def series_of(history: History, scope: int | None, now_ns: int) -> Series:
     gaps = gaps_until(history.gaps, now_ns)
     return Series(
         history.utc_ns, low, mean, high, history.valid_share, gaps, history.bin_ns,
-        history.coverage, _all_below(history),
+        history.coverage, _all_below(history), (history.flags & int(LOWER_BOUND)) != 0,
     )  # fmt: skip
 
 
@@ -151,7 +153,9 @@ def _row(series: Series, part: Span, now_ns: int) -> Row:
         return Row(part, None, None, None, 0.0, gap_s)
     means = series.mean[inside]
     thin = ~(series.valid_share[inside] >= ENOUGH_SHARE)
-    below = series.below[inside] if series.below.size else np.zeros(means.size, np.bool_)
+    nowhere = np.zeros(means.size, np.bool_)
+    below = series.below[inside] if series.below.size else nowhere
+    lower = series.lower[inside] if series.lower.size else nowhere
     at, least = int(np.argmax(means)), int(np.argmin(means))
     return Row(
         part,
@@ -164,6 +168,8 @@ def _row(series: Series, part: Span, now_ns: int) -> Row:
         bool(thin[least]),
         bool(below[at]),
         bool(below[least]),
+        bool(lower[at]),
+        bool(lower[least]),
     )
 
 

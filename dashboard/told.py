@@ -47,7 +47,7 @@ def interval(ratio: Ratio) -> str:
     elif top is not None:
         said = f"not above {words.rounded_up(top)}, by {by}"
     elif ratio.stands is not None:
-        said = "a bound neither way"
+        said = "neither an upper nor a lower bound"
     return said + ("; the uncertainty is not stated" if said and ratio.u_db is None else "")
 
 
@@ -96,7 +96,10 @@ def level_label(ratio: Ratio | None, *, filled: bool) -> str:
     """The words beside the level in the picture."""
     if ratio is None or ratio.stands is None:
         return ""
-    return f"{'taken' if filled else 'level'} {figure(ratio)}"
+    what = "taken" if filled else "level"
+    if ratio.kind is Kind.OPEN and ratio.window.upper:
+        return f"seen: below {words.rounded_up(ratio.stands)}"  # longer words leave the drawing
+    return f"{what} {figure(ratio)}"
 
 
 def line(ratio: Ratio) -> str:

@@ -109,14 +109,23 @@ def through(file: CalibrationFile, asked: Asked, now_utc_ns: int) -> Figure:
 
 
 def _axis(file: CalibrationFile, axis: str) -> str:
-    """The axis, which must be named where a table is for one axis only."""
-    named = {d.axis for d in file.detectors} | {e.axis for e in file.elements}
-    known = sorted((named | {line.axis for line in file.lines}) - {""})
+    """The axis: named where a table is for one axis only, unless every detector is that one's."""
+    of_detectors = {detector.axis for detector in file.detectors}
+    known = sorted((_axes_named(file) | of_detectors) - {""})
+    if axis and "" not in of_detectors and axis not in of_detectors:
+        has = ", ".join(sorted(of_detectors))
+        raise ConfigError(f"{file.top.where}: has no detector of axis {axis}; it has {has}")
     if known and not axis:
+        if len(known) == 1 and "" not in of_detectors:
+            return known[0]
         raise ConfigError(
             f"{file.top.where}: has tables of its own for {', '.join(known)}; say which --axis"
         )
     return axis
+
+
+def _axes_named(file: CalibrationFile) -> set[str]:
+    return {element.axis for element in file.elements} | {line.axis for line in file.lines}
 
 
 def _budget(

@@ -13,7 +13,7 @@ from monitor.checks import refuse_future_date
 from monitor.cli.output import print_json
 from monitor.clock import SystemClock
 from monitor.core import quantities
-from monitor.core.averaging_law import SIGNALS
+from monitor.core.averaging_law import FULLY_AVERAGED, SIGNALS
 from monitor.core.errors import ConfigError
 from monitor.core.exposure import OUTSIDE_BUDGET
 from monitor.core.flags import LOWER_BOUND, UPPER_BOUND, Flag, words
@@ -163,7 +163,7 @@ def _lines(asked: Asked, found: Figure) -> list[str]:
         head.append(_step("for its temperature, in what follows", taken))
     head += _on_the_way(found)
     head += [_step(link.element, "", link) for link in others if link.gain_db is None]
-    return [*head, *_result(found), "", *_remarks(found), CAUTION]
+    return [*head, *_result(found), "", *_remarks(asked, found), CAUTION]
 
 
 def _on_the_way(found: Figure) -> list[str]:
@@ -176,13 +176,13 @@ def _on_the_way(found: Figure) -> list[str]:
     losses = [link for link in others if link.kind not in PICKUPS and link.gain_db is not None]
     taken = []
     if found.noise_dbm is not None:
-        taken = [_step("noise taken off that power", f"{found.noise_dbm:.2f} dBm")]
+        taken = [_step("of it noise, taken off for the field", f"{found.noise_dbm:.2f} dBm")]
     at_antenna_dbm = found.p_dbm - sum(link.gain_db or 0.0 for link in losses)
     return [
         _step("power at its port", _level(found.p_dbm, "dBm"), detector),
+        *taken,
         *(_step(*_loss(link), link) for link in losses),
         _step("power at the antenna's port", _level(at_antenna_dbm, "dBm")),
-        *taken,
         *pickups,
     ]
 
@@ -230,17 +230,25 @@ def _between(found: Figure) -> str:
     return f"{low:.4g} to {high:.4g} V/m"
 
 
-def _remarks(found: Figure) -> list[str]:
+def _remarks(asked: Asked, found: Figure) -> list[str]:
     """What the figures do not say by themselves; a range's end, the budget's, the axis's."""
-    ends = int(LOWER_BOUND | UPPER_BOUND) & ~int(Flag.COMPONENT_ONLY | Flag.LOG_AVERAGED)
-    said = [f"Note: {text}" for text in words(found.flags & ~int(OUTSIDE_BUDGET | LOWER_BOUND))]
-    if found.flags & ends and not math.isnan(found.e_v_per_m):
-        said = [f"Note: {', '.join(words(found.flags & ends))}; that end of it is shown"]
-    elif found.flags & ends:
-        said.append(f"Note: {', '.join(words(found.flags & ends))}")
+    bounds = int(LOWER_BOUND | UPPER_BOUND)
+    ends = found.flags & bounds & ~int(Flag.COMPONENT_ONLY | Flag.LOG_AVERAGED)
+    rest = found.flags & ~int(OUTSIDE_BUDGET) & ~bounds
+    said = [f"Note: {text}" for text in words(rest)]
+    if ends:
+        shown = "" if math.isnan(found.e_v_per_m) else "; that end of it is shown"
+        said.append(f"Note: {', '.join(words(ends))}{shown}")
     if found.flags & Flag.LOG_AVERAGED:
         said.append("Note: log averaged before linearising: bursts read low, a lower bound")
+    if found.flags & Flag.LOG_AVERAGED and asked.signal == "noise":
+        said.append(
+            "Note: noise is corrected only where --bandwidth times the averaging_s of the"
+            f" calibration file is {FULLY_AVERAGED:g} or more"
+        )
     outside = words(found.flags & int(OUTSIDE_BUDGET))
     if outside:
         said.append(f"Note: the stated uncertainty does not cover this: {', '.join(outside)}")
-    return [*said, "Note: fewer than three axes: the whole field is this much or more"]
+    whole = "more than this" if found.flags & UPPER_BOUND else "this much or more"
+    may = "may be" if found.flags & UPPER_BOUND else "is"
+    return [*said, f"Note: fewer than three axes: the whole field {may} {whole}"]

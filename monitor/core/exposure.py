@@ -154,7 +154,7 @@ def reasons(
     )[0]  # fmt: skip
     ends = _guarded(ratio_low, ratio_high, u_db, k, added, flags, seen_share)
     least, most = (float(end) for end in ends)
-    said = [_comparison(int(verdict), least, ratio_mean, most)]
+    said = [_comparison(int(verdict), least, ratio_mean, most, flags)]
     said += _no_verdict(field_region, lowest_hz)
     if verdict == Verdict.EXCEEDS:
         return said
@@ -219,13 +219,20 @@ def _no_verdict(field_region: str, lowest_hz: float) -> list[str]:
     return said
 
 
-def _comparison(verdict: int, least: float, mean: float, most: float) -> str:
+def _comparison(verdict: int, least: float, mean: float, most: float, flags: int) -> str:
+    """The interval, open where a flag leaves a side without a bound."""
     if verdict == Verdict.EXCEEDS:
         return f"at least {least:.3g} of the limit, gaps counted as nothing"
     if not math.isfinite(mean):
         return "no valid part in the averaging time"
     if verdict == Verdict.CONFORMS:
         return f"at most {most:.3g} of the limit, gaps counted at the highest reading"
+    if flags & LOWER_BOUND and flags & UPPER_BOUND:
+        return f"what is seen is below {_number(most)} of the limit, the whole field is not known"
+    if flags & LOWER_BOUND:
+        return f"at least {_number(least)} of the limit; how much more is not known"
+    if flags & UPPER_BOUND:
+        return f"below {_number(most)} of the limit"
     holds = "; the limit lies between" if least <= 1.0 <= most else ""
     return f"{_number(least)} to {_number(most)} of the limit{holds}"
 

@@ -231,6 +231,24 @@ def test_reasons_name_an_obstacle_whenever_the_figures_alone_would_decide(
 
 
 @pytest.mark.parametrize(
+    ("flags", "said"),
+    [
+        (Flag.ABOVE_RANGE, "at least 0.4 of the limit; how much more is not known"),
+        (Flag.COMPONENT_ONLY, "at least 0.4 of the limit; how much more is not known"),
+        (Flag.BELOW_RANGE, "below 1.2 of the limit"),
+        (
+            Flag.BELOW_RANGE | Flag.COMPONENT_ONLY,
+            "what is seen is below 1.2 of the limit, the whole field is not known",
+        ),
+    ],
+)
+def test_a_bound_is_no_interval(flags: Flag, said: str) -> None:
+    """A lower bound has no upper end to state, and the other way about (our choice of words)."""
+    one = arguments(ratio_low=0.4, ratio_mean=0.5, ratio_high=1.2, u_db=0.0, flags=int(flags))
+    assert reasons(**one)[0] == said
+
+
+@pytest.mark.parametrize(
     ("changed", "word"),
     [
         ({"verified": False}, "from memory"),

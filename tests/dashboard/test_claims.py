@@ -176,8 +176,11 @@ def test_flags_either_way_leave_a_bound_neither_way(tmp_path: Path) -> None:
     now = edited(snapshot(0.31), f_flags=[BELOW_RANGE, LOWER[0]])
     heading = _heading(now, tmp_path)
     assert "What is seen stays below" in heading
-    assert "a bound neither way: it cannot be said to be below" in heading
+    assert "neither an upper nor a lower bound: it cannot be said to be below" in heading
     assert _ratio(now).kind is Kind.OPEN
+    label = told.level_label(_ratio(now), filled=False)
+    assert label.startswith("seen: below 0.")
+    assert len(label) <= 24  # what the recess of 260 has room for at 18 px
 
 
 def test_reasons_in_plain_words() -> None:

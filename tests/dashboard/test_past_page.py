@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import re
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -11,6 +12,8 @@ import pytest
 
 from dashboard import past, span
 from dashboard.words import utc_of
+from monitor.core.flags import Flag
+from monitor.record.types import History
 from tests.dashboard.fakes import DAY_NS, NOON_NS, FakeRecord, S, client_over, snapshot
 
 MINUTE = 60 * S
@@ -179,3 +182,21 @@ def test_history_as_json(tmp_path: Path) -> None:
         {"start_utc": "2025-03-01T03:10:00Z", "end_utc": "2025-03-01T04:25:00Z"}
     ]
     assert client.get("/api/history?at_most=0").status_code == 400
+
+
+def test_a_lower_bound_in_the_table_is_marked_as_one(tmp_path: Path) -> None:
+    """A figure of one axis, or above the range, must not read like a whole one (our choice)."""
+    mark, said = "†", "the field may have been higher"
+    plain = _get(tmp_path)
+    assert mark not in plain
+    assert said not in plain
+
+    class Component(FakeRecord):
+        def history(self, *asked: int) -> History:
+            found = super().history(*asked)
+            bits = found.flags | int(Flag.COMPONENT_ONLY)
+            return replace(found, flags=bits)
+
+    page = _get(tmp_path, record=Component())
+    assert f"</b>{mark}" in page
+    assert said in page
