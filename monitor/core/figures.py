@@ -30,7 +30,8 @@ class Powers:
     """Mean power (W, at the port) per channel (p, c): gaps as zero, valid part, gaps at maximum.
 
     The detector's own noise is taken off; what is left may be negative, and stays so in sums.
-    unsure: standard uncertainty of each channel's zero, W (p, c); scatter: that of the mean.
+    unsure: standard uncertainty of each channel's zero, W (p, c); scatter: that of the mean, and of
+    it noise_scatter, what the noise has by itself, if it varies no less than the signal.
     overloaded (p,): some channel was above its range, so nothing bounds the field from above.
     """
 
@@ -39,6 +40,7 @@ class Powers:
     high: F
     unsure: F
     scatter: F
+    noise_scatter: F
     overloaded: B
 
 
@@ -55,14 +57,17 @@ def powers(sums: Sums, averaging_s: int, here: Station) -> Powers:
     bare = sums.mean_ns == 0
     with np.errstate(invalid="ignore", divide="ignore"):
         mean = sums.energy_w_ns / sums.mean_ns
+        of_noise = np.where(mean > chain.noise_w, chain.noise_w / mean, 1.0)
     missing = np.maximum(whole_ns - sums.covered_ns, 0)
     high = (sums.energy_high + missing * sums.max_w) / whole_ns
+    scatter = of_mean(sums, chain.integration_s, chain.bursty)
     return Powers(
         low / whole_ns,
         mean - chain.noise_w,
         np.where(bare, np.nan, high - chain.noise_w),
         _unsure(mean, sums.min_w, here),
-        of_mean(sums, chain.integration_s, chain.bursty),
+        scatter,
+        scatter * of_noise * (chain.noise_w > 0.0),
         overloaded(sums),
     )
 
@@ -115,9 +120,10 @@ def totals(
     unsure = over_channels(power.unsure, weights[1])
     added = np.hypot(unsure, over_channels(power.scatter, weights[1]))
     u_db = standard_db(budget, shares(power, weights[1]))
+    limit = DETECTION * np.hypot(unsure, over_channels(power.noise_scatter, weights[1]))
     if below is None:
-        below = (mean < DETECTION * unsure) & ~power.overloaded
-    top = interval(0.0, np.maximum(high, DETECTION * unsure), k * u_db, k * added).high
+        below = (mean < limit) & ~power.overloaded
+    top = interval(0.0, np.maximum(high, limit), k * u_db, k * added).high
     return Totals(
         np.where(below, 0.0, np.maximum(low, 0.0)),
         np.where(below, top, np.maximum(mean, 0.0)),

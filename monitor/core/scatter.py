@@ -31,7 +31,9 @@ def of_mean(sums: Sums, integration_s: float, bursty: NDArray[np.bool_]) -> Real
     low for many blocks may be the readings keeping step with the signal, and counts as doubt."""
     spread_w = _skewed(sums, np.where(bursty, _of_batches(sums), _of_pairs(sums)))
     with np.errstate(divide="ignore", invalid="ignore"):
-        spacing_s = sums.covered_ns / NS_PER_S / np.maximum(sums.n, 1)
+        # by the channel with most valid time: n counts readings that are none on another one, too
+        covered_ns = sums.covered_ns.max(axis=1, keepdims=True)
+        spacing_s = covered_ns / NS_PER_S / np.maximum(sums.n, 1)
         missed = np.clip(1.0 - integration_s / spacing_s, 0.0, 1.0)
     u_w = np.where(sums.pairs < FEWEST_PAIRS, sums.max_w / math.sqrt(3.0), spread_w)
     return np.where(sums.covered_ns > 0, u_w * np.sqrt(missed), 0.0)

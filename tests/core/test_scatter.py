@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 
 import numpy as np
 import pytest
@@ -139,3 +140,19 @@ def test_the_factor_for_few_is_students(degrees_of_freedom: float) -> None:
     found = float(student_ratio(np.array(degrees_of_freedom)))
     assert found == pytest.approx(true, rel=0.05)
     assert degrees_of_freedom < 5 or found == pytest.approx(true, rel=2e-3)
+
+
+def test_readings_that_are_none_on_one_channel_do_not_lie_closer_together() -> None:
+    """Each a mean over half the time to the next; on one of two channels every second is none."""
+    readings = correlated(0.0, 360, 4)[:200]
+    one = windows_of(readings, 10)
+    half = one.covered_ns // 2
+    both = replace(
+        one,
+        **{name: np.repeat(getattr(one, name), 2, axis=1) for name in Sums.__slots__
+           if getattr(one, name).ndim == 2 and name != "covered_ns"},
+        covered_ns=np.concatenate([half, one.covered_ns], axis=1),
+    )  # fmt: skip
+    u = of_mean(both, 0.5, np.array([False, False]))
+    assert u[:, 0] == pytest.approx(u[:, 1])
+    assert np.all(u[:, 0] > 0.0)
