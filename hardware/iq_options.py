@@ -60,7 +60,7 @@ class Settings:
     @property
     def averaging(self) -> Averaging:
         """A reading is the mean power of its interval or dwell."""
-        return Averaging("power", self.scheme.reading_s)
+        return Averaging("power", self.scheme.reading_s, sparse=self.scheme.swept)
 
     def check_device(self) -> None:
         """DeviceError where no server answers."""
@@ -101,8 +101,8 @@ def settings_from(table: Table) -> Settings:
         channels=len(bands),
         tunes=places,
         fft=fft,
-        interval_s=table.number("interval_s", INTERVAL_S, least_s, 3600.0),
-        dwell_s=table.number("dwell_s", DWELL_S, least_s, 3600.0),
+        interval_s=_whole(table.number("interval_s", INTERVAL_S, least_s, 3600.0), fft / rate_hz),
+        dwell_s=_whole(table.number("dwell_s", DWELL_S, least_s, 3600.0), fft / rate_hz),
         settle_s=table.number("settle_s", SETTLE_S, 0.1, 60.0),
     )
     return Settings(radio, scheme, bands)
@@ -129,6 +129,11 @@ def _places(
         except ConfigError as error:
             raise table.error("fft", f"round {place.centre_hz} Hz: {error}") from None
     return places
+
+
+def _whole(seconds: float, segment_s: float) -> float:
+    """In whole halves of a segment: such stretches weigh all their samples exactly alike."""
+    return round(seconds / segment_s * 2.0) * segment_s / 2.0
 
 
 def _rate(table: Table) -> int:

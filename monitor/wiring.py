@@ -120,6 +120,7 @@ def station_for(
         silence_s=site.silence_after_s,
         field_region=site.field_region,
         outside_excluded=all(band.outside != "undeclared" for band in site.bands.values()),
+        averaging=averaging_of(site),
     )
 
 

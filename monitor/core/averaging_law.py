@@ -43,11 +43,13 @@ CARRIER_DB = 0.2
 class Averaging:
     """What is averaged before a reading is given, one of KINDS or undeclared, and over how long.
 
-    seconds: 0 where a reading is momentary, or where nobody said.
+    seconds: 0 where a reading is momentary, or where nobody said. sparse: a reading stands for
+    longer than it was averaged, because the receiver looks at something else in between.
     """
 
     kind: str
     seconds: float = 0.0
+    sparse: bool = False
 
 
 BURSTY = ("bursts", "mixed")

@@ -73,14 +73,19 @@ class Trace:
     end_ns: I
     energy_w_ns: F
     covered_ns: I
+    observed_ns: I
     min_w: F
     max_w: F
     flags: I
 
 
-def accumulate(opened: Blocks, pieces: Pieces, until: int) -> tuple[Blocks, Trace]:
+def accumulate(
+    opened: Blocks, pieces: Pieces, until: int, look_ns: int | None = None
+) -> tuple[Blocks, Trace]:
     """Add pieces to the open block and those after it, up to and including index until.
 
+    look_ns: for how long a reading was really looked at, counted from its beginning; None: for all
+    of the time that it holds.
     Sums run in time order from what the open block already holds, so any division of the same
     pieces over calls gives the same bits.
     """
@@ -93,6 +98,7 @@ def accumulate(opened: Blocks, pieces: Pieces, until: int) -> tuple[Blocks, Trac
     valid = ~np.isnan(pieces.power_w)
     power = np.where(valid, pieces.power_w, 0.0)
     span = np.where(valid, pieces.span_ns[:, None], 0)
+    looked = span if look_ns is None else np.where(valid, _looked(pieces, look_ns), 0)
     at = (row, place)
 
     energy = np.zeros(grid)
@@ -101,6 +107,9 @@ def accumulate(opened: Blocks, pieces: Pieces, until: int) -> tuple[Blocks, Trac
     covered = np.zeros(grid, np.int64)
     covered[0, 0], covered[at] = opened.covered_ns[0], span
     covered = np.add.accumulate(covered, axis=1)
+    observed = np.zeros(grid, np.int64)
+    observed[0, 0], observed[at] = opened.observed_ns[0], looked
+    observed = np.add.accumulate(observed, axis=1)
     high = np.zeros(grid)
     high[0, 0], high[at] = opened.max_w[0], power
     high = np.maximum.accumulate(high, axis=1)
@@ -113,12 +122,14 @@ def accumulate(opened: Blocks, pieces: Pieces, until: int) -> tuple[Blocks, Trac
     n = np.repeat(np.bincount(row[pieces.head], minlength=size)[:, None], channels, axis=1)
     n[0] += opened.n[0]
 
-    total = covered[:, -1]
-    blocks = Blocks(
-        opened.first, energy[:, -1], total, total, low[:, -1], high[:, -1], n, bits[:, -1]
-    )
-    sums = (energy[at], covered[at], low[at], high[at], bits[at])
-    return blocks, Trace(row, pieces.end_ns, *sums)
+    last = (energy[:, -1], covered[:, -1], observed[:, -1], low[:, -1], high[:, -1], n, bits[:, -1])
+    sums = (energy[at], covered[at], observed[at], low[at], high[at], bits[at])
+    return Blocks(opened.first, *last), Trace(row, pieces.end_ns, *sums)
+
+
+def _looked(pieces: Pieces, look_ns: int) -> I:
+    """(m, 1): what of each piece lies within look_ns of its reading's beginning."""
+    return np.clip(look_ns - pieces.since_ns, 0, pieces.span_ns)[:, None]
 
 
 def to_rows(blocks: Blocks, block_ns: int = BLOCK_NS) -> BlockRows:

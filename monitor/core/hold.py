@@ -64,7 +64,7 @@ def complete(
 class Pieces:
     """Segments cut at the block grid: block, end_ns, span_ns, head (m,); power_w, flags (m, c).
 
-    head marks the piece with which a reading begins.
+    head marks the piece with which a reading begins; since_ns (m,): how long before the piece.
     """
 
     block: I
@@ -73,6 +73,7 @@ class Pieces:
     head: NDArray[np.bool_]
     power_w: F
     flags: I
+    since_ns: I
 
     def part(self, first: int, last: int) -> Pieces:
         """Pieces first to last, the last one left out."""
@@ -86,11 +87,13 @@ def cut(segments: Segments, block_ns: int) -> Pieces:
     if count.size == 0 or int(count.max()) == 1:
         span = segments.end_ns - segments.start_ns
         head = np.ones(first.size, np.bool_)
-        return Pieces(first, segments.end_ns, span, head, segments.power_w, segments.flags)
+        none = np.zeros(first.size, np.int64)
+        return Pieces(first, segments.end_ns, span, head, segments.power_w, segments.flags, none)
     row = np.repeat(np.arange(first.size), count)
     offset = np.arange(row.size) - np.repeat(np.cumsum(count) - count, count)
     block = first[row] + offset
     start = np.maximum(segments.start_ns[row], block * block_ns)
     end = np.minimum(segments.end_ns[row], (block + 1) * block_ns)
     power, flags = segments.power_w[row], segments.flags[row]
-    return Pieces(block, end, end - start, offset == 0, power, flags)
+    since = start - segments.start_ns[row]
+    return Pieces(block, end, end - start, offset == 0, power, flags, since)

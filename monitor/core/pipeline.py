@@ -159,7 +159,7 @@ def close(state: State, pieces: Pieces, until: int, here: Station, out: Gathered
         left, right = pieces.part(0, middle), pieces.part(middle, pieces.block.size)
         state = close(state, left, int(right.block[0]), here, out)
         return close(state, right, until, here, out)
-    blocks, trace = accumulate(state.opened, pieces, until)
+    blocks, trace = accumulate(state.opened, pieces, until, here.look_ns)
     known = join(state.history, blocks)
     closed = known.part(0, known.size - 1)
     if blocks.size > 1:
@@ -186,6 +186,7 @@ def live(state: State, averaging_s: int, here: Station) -> Sums:
         np.array([front], np.int64),
         opened.energy_w_ns,
         opened.covered_ns,
+        opened.observed_ns,
         opened.min_w,
         opened.max_w,
         opened.flags,

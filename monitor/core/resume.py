@@ -80,7 +80,7 @@ def _stood(history: Blocks, here: Station, raised: frozenset[str]) -> tuple[Side
     none = np.empty((0, here.channels))
     nowhere = np.empty(0, np.int64)
     counts = none.astype(np.int64)
-    trace = Trace(nowhere, nowhere, none, counts, none, none, counts)
+    trace = Trace(nowhere, nowhere, none, counts, counts, none, none, counts)
     known = join(history, empty_blocks(history.first + history.size, 1, here.channels))
     begin = sides(here, (history.first + full) * BLOCK_NS, raised)
     return judge(known, history, trace, full, begin, here, nothing())

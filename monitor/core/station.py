@@ -8,6 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from monitor.core.alarms import Watch
+from monitor.core.averaging_law import UNDECLARED, Averaging
 from monitor.core.budget import Contribution
 from monitor.core.calibration import BAND_KIND, Chain, CountTable
 from monitor.core.flags import Flag
@@ -29,7 +30,8 @@ class Station:
     kept out by filter or shown by survey to be none. averagings_s:
     every averaging time kept, whole multiples of a block. floor_w: f8 (c,), what a reading below
     the range counts as. lowest_hz: lower end of what the channels receive. corrections: per channel
-    what temperature does to its power, or None.
+    what temperature does to its power, or None. look_ns: for how long a reading was really looked
+    at, ns; None where for all the time until the next one.
     """
 
     chain: Chain
@@ -48,6 +50,7 @@ class Station:
     floor_w: F
     lowest_hz: float
     corrections: tuple[Correction | None, ...]
+    look_ns: int | None = None
 
     @property
     def batched(self) -> bool:
@@ -71,8 +74,12 @@ def station(
     silence_s: float,
     field_region: str,
     outside_excluded: bool,
+    averaging: Averaging = UNDECLARED,
 ) -> Station:
-    """A station that keeps 360 s and 1800 s and whatever else its scopes ask for."""
+    """A station that keeps 360 s and 1800 s and whatever else its scopes ask for.
+
+    averaging: what its front end declares.
+    """
     budget = tuple(
         tuple(line for line in lines if line.kind != BAND_KIND) for lines in chain.contributions
     )
@@ -97,6 +104,7 @@ def station(
         ),
         min(float(grid.min()) for grid in chain.frequencies_hz),
         corrections,
+        round(averaging.seconds * NS_PER_S) if averaging.sparse else None,
     )
 
 

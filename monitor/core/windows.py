@@ -169,6 +169,8 @@ def inside_blocks(
     old_energy, old_max = blocks.energy_w_ns[oldest], blocks.max_w[oldest]
     old_covered = blocks.covered_ns[oldest]
     kept_ns = np.maximum(old_covered - (block_ns - left_ns), 0)
+    seen_ns = np.maximum(blocks.observed_ns[oldest] - (block_ns - left_ns), 0)
+    seen_ns += last_n(blocks.observed_ns, n - 1, np.add)[before] + trace.observed_ns
     whole = last_n(blocks.energy_w_ns, n - 1, np.add)[before] + trace.energy_w_ns
     whole_ns = last_n(blocks.covered_ns, n - 1, np.add)[before] + trace.covered_ns
     high = np.maximum(last_n(blocks.max_w, n - 1, np.maximum)[before], trace.max_w)
@@ -186,7 +188,7 @@ def inside_blocks(
         whole + np.minimum(np.minimum(old_energy, left_ns * old_max), kept_ns * high),
         whole_ns + share * old_covered,
         whole_ns + kept_ns,
-        whole_ns + kept_ns,
+        seen_ns,
         weakest,
         high,
         bits | blocks.flags[oldest],

@@ -207,14 +207,15 @@ def test_wrong_options_are_one_line(tmp_path, options, words):
 
 def test_what_a_reading_averages_is_declared(tmp_path):
     near = settings_for("iq_stream", OPTIONS, tmp_path)
-    assert (near.averaging.kind, near.averaging.seconds) == ("power", 0.1)
-    assert near.round_s == 0.1
+    assert (near.averaging.kind, near.averaging.sparse) == ("power", False)
+    assert near.averaging.seconds == near.round_s == 195 * 1024 / 1e6 / 2  # whole half segments
     far = {"bands": [BANDS[0], [900e6, 901e6]], "dwell_s": 0.5, "settle_s": 0.3}
     swept = settings_for("iq_stream", OPTIONS | far, tmp_path)
     assert swept.scheme.swept
-    assert swept.averaging.seconds == 0.5
+    assert swept.averaging.sparse
+    assert swept.averaging.seconds == pytest.approx(0.5, abs=256e-6)
     assert declared("iq_stream", OPTIONS | far) == swept.averaging
-    assert swept.round_s == pytest.approx(len(swept.scheme.tunes) * 1.3)
+    assert swept.round_s == pytest.approx(len(swept.scheme.tunes) * 1.3, abs=0.01)
     assert swept.bands_hz == ((868.0e6, 868.2e6), (900e6, 901e6))
 
 
