@@ -182,7 +182,7 @@ def event_of(request: Mapping[str, object], channels: Sequence[str], now_ns: int
 
 def checks_of(record: Record) -> list[Check]:
     """Every reference check of a record, in the order of time; RecordError for one that is none."""
-    events = [event for event in record.events(limit=MOST_EVENTS) if event.kind == KIND]
+    events = record.events(limit=MOST_EVENTS, rare=KIND)
     try:
         found = [_check(event.name, event.body) for event in events]
         return sorted(found, key=lambda check: utc_ns_of(check.to_utc) if check.to_utc else 0)

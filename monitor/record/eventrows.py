@@ -8,6 +8,8 @@ from typing import Any
 from monitor.core.rows import Event
 
 _LARGEST = 2**63 - 1
+RARE = "kind IN ('start', 'calibration', 'reference check')"
+"""What a query must say, in these words, to be answered by the index calibration_events."""
 
 
 class MalformedError(ValueError):

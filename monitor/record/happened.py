@@ -6,7 +6,7 @@ import json
 import sqlite3
 from collections.abc import Sequence
 
-from monitor.record.eventrows import body_of
+from monitor.record.eventrows import RARE, body_of
 from monitor.record.types import Boot, EventRow
 
 _ALARM_EVENTS = """
@@ -31,14 +31,17 @@ _EVENTS = (
 
 
 def between(
-    db: sqlite3.Connection, boots: Sequence[Boot], span: tuple[int | None, int | None], limit: int
-) -> list[EventRow]:
+    db: sqlite3.Connection, boots: Sequence[Boot], span: tuple[int | None, int | None], limit: int,
+    rare: str = "",
+) -> list[EventRow]:  # fmt: skip
     """See Record.events; span: [start, end) in UTC ns, None: open."""
     query = (
         _EVENTS + "WHERE (?2 IS NULL OR boot_ns + offset_ns >= ?2) "
-        "AND (?3 IS NULL OR boot_ns + offset_ns < ?3) ORDER BY event DESC LIMIT ?4"
+        "AND (?3 IS NULL OR boot_ns + offset_ns < ?3) "
+        + (f"AND {RARE} AND kind = ?5 " if rare else "")
+        + "ORDER BY event DESC LIMIT ?4"
     )
-    rows = db.execute(query, (_offsets(boots), *span, limit)).fetchall()
+    rows = db.execute(query, (_offsets(boots), *span, limit, *([rare] if rare else []))).fetchall()
     return [_event(*row) for row in reversed(rows)]
 
 

@@ -17,7 +17,7 @@ from monitor.core.limits import Scope
 from monitor.core.readings import Batch
 from monitor.core.rows import BlockRows, ExposureRows, FieldRows, WindowRows
 from monitor.record import connect, happened, marks
-from monitor.record.eventrows import MalformedError, body_of
+from monitor.record.eventrows import MalformedError
 from monitor.record.fetch import Rows, columns, kinds_of
 from monitor.record.fixes import winner
 from monitor.record.history import history
@@ -31,7 +31,7 @@ from monitor.record.types import (
     LatestExposure,
     LatestField,
 )
-from monitor.record.uses import Calibrations, calibrations
+from monitor.record.uses import Calibrations, calibrations, starts
 
 FIRST_NS, LAST_NS = -(2**63), 2**63 - 1
 _TABLES: dict[type, tuple[str, str]] = {
@@ -190,15 +190,16 @@ class Record:
             return history(self._db, self.boots(), span, averaging_s, at_most)
 
     def events(
-        self, start_utc_ns: int | None = None, end_utc_ns: int | None = None, limit: int = 1000
-    ) -> list[EventRow]:
-        """The newest events in [start, end) of UTC, oldest first.
+        self, start_utc_ns: int | None = None, end_utc_ns: int | None = None, limit: int = 1000,
+        *, rare: str = "",
+    ) -> list[EventRow]:  # fmt: skip
+        """The newest events in [start, end) of UTC, oldest first. rare: of that kind of RARE only.
 
         Events of a boot without a clock fix are given only where no span is asked for.
         """
         boots = self.boots()
         with self._one_line():
-            return happened.between(self._db, boots, (start_utc_ns, end_utc_ns), limit)
+            return happened.between(self._db, boots, (start_utc_ns, end_utc_ns), limit, rare)
 
     def calibrations(self) -> Calibrations:
         """The calibrations that figures rest on, and the drifts that were found of them."""
@@ -207,10 +208,9 @@ class Record:
 
     def starts(self, boot: int) -> list[tuple[int, str]]:
         """(boot_ns, identity of the chain) of each start of the daemon in a boot, in order."""
-        query = "SELECT boot_ns, body FROM events WHERE boot = ? AND kind = 'start' ORDER BY event"
-        rows = self._all(query, boot)
         with self._one_line():
-            return [(boot_ns, str(body_of(body).get("chain", ""))) for boot_ns, body in rows]
+            found = starts(self._db)
+        return [(use.boot_ns, use.hashes.get("chain", "")) for use in found if use.boot == boot]
 
     def alarm_events(self) -> list[EventRow]:
         """The few events that leave every alarm as all events would, oldest first.

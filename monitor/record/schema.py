@@ -43,6 +43,7 @@ def _v2(db: Database) -> None:
     for table, column in tables.V2_COLUMNS:
         if column not in {one.name for one in db.table(table).columns}:
             db.execute(f"ALTER TABLE {table} ADD COLUMN {column} REAL DEFAULT 0.0")
+    db.execute(tables.V2_INDEX)
     for name, select in tables.V2_VIEWS.items():
         db.execute(f"DROP VIEW IF EXISTS {name}")
         db.create_view(name, select)

@@ -119,6 +119,11 @@ FROM events LEFT JOIN boot_utc USING (boot) ORDER BY event""",
 V2_COLUMNS = (("fields", "added_e2"), ("exposures", "added_ratio"))
 """REAL; 0 in the rows of a record that was made without them: nothing was added there."""
 
+V2_INDEX = """
+CREATE INDEX calibration_events ON events (kind)
+  WHERE kind IN ('start', 'calibration', 'reference check')"""
+"""Few among many events, and every look at the past asks for them."""
+
 V2_VIEWS = {
     "field_levels": f"""
 SELECT {_UTC.format("end_ns")} AS end_utc, derivation, boot, averaging_s,

@@ -9,10 +9,16 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from monitor.record.eventrows import MalformedError, body_of
+from monitor.record.eventrows import RARE, MalformedError, body_of
 
-_STARTS = "SELECT boot, boot_ns, body FROM events WHERE kind = 'start' ORDER BY event"
-_DRIFTS = "SELECT body FROM events WHERE kind = 'calibration' AND name = 'drift' ORDER BY event"
+_STARTS = (
+    f"SELECT boot, boot_ns, body FROM events WHERE {RARE} AND kind = 'start' "  # noqa: S608
+    "ORDER BY event"
+)
+_DRIFTS = (
+    f"SELECT body FROM events WHERE {RARE} AND kind = 'calibration' "  # noqa: S608
+    "AND name = 'drift' ORDER BY event"
+)
 _LAST_NS = 2**63 - 1
 MOST_DB = 1000.0
 """No drift is larger; beyond it nothing could be worked out."""
@@ -87,11 +93,15 @@ def drift_over(segments: Sequence[Segment], after_ns: I, until_ns: I) -> F:
 
 def calibrations(db: sqlite3.Connection) -> Calibrations:
     """What the events of a record say of its calibrations; MalformedError for one that is none."""
-    uses = tuple(
+    return Calibrations(starts(db), tuple(_drift(body_of(body)) for (body,) in db.execute(_DRIFTS)))
+
+
+def starts(db: sqlite3.Connection) -> tuple[Use, ...]:
+    """Every start of the program, in order; MalformedError as of calibrations."""
+    return tuple(
         Use(boot, boot_ns, {str(name): str(value) for name, value in body_of(body).items()})
         for boot, boot_ns, body in db.execute(_STARTS)
     )
-    return Calibrations(uses, tuple(_drift(body_of(body)) for (body,) in db.execute(_DRIFTS)))
 
 
 def _drift(body: Mapping[str, object]) -> Drift:

@@ -17,6 +17,7 @@ from monitor.core.errors import RecordError
 from monitor.core.readings import empty_batch
 from monitor.core.rows import Event
 from monitor.inforce import Before, before_of
+from monitor.record import uses
 from monitor.record.reader import Record
 from monitor.record.types import Commit
 from tests.record.making import (
@@ -258,3 +259,26 @@ def test_an_event_that_is_none_is_one_clear_error(
             with pytest.raises(RecordError, match=words):
                 record.starts(boot)
     assert before_of(path) == Before()
+
+
+def test_what_calibrations_rest_on_is_found_among_many_events_by_an_index(path: Path) -> None:
+    """Every look at the past asks for it: it must not read a year of a device's events."""
+    writer_of(path).close()
+    with Record.open(path) as record:
+        for query in (uses._STARTS, uses._DRIFTS):  # noqa: SLF001
+            plan = record._all(f"EXPLAIN QUERY PLAN {query}")  # noqa: SLF001
+            assert "calibration_events" in str(plan)
+
+
+def test_events_of_a_rare_kind(path: Path) -> None:
+    writer = writer_of(path)
+    boot = writer.begin_boot("b", "machine")
+    kinds = ("note", "reference check", "start", "reference check")
+    events = tuple(Event(i * S, kind, f"n{i}", {"i": i}) for i, kind in enumerate(kinds))
+    writer.commit(boot, Commit(events=events))
+    writer.close()
+    with Record.open(path) as record:
+        found = record.events(rare="reference check")
+        newest = record.events(limit=1, rare="reference check")
+    assert [event.name for event in found] == ["n1", "n3"]
+    assert [event.name for event in newest] == ["n3"]
