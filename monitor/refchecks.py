@@ -174,10 +174,20 @@ def event_of(request: Mapping[str, object], channels: Sequence[str], now_ns: int
         body[key] = float(value)  # type: ignore[arg-type]
     for key, longest in (("from_utc", 40), ("to_utc", 40), ("count_table", 64), ("note", 2000)):
         body[key] = text_of(request, key, longest, "")
+    for key in ("from_utc", "to_utc"):
+        _refuse_no_time(key, str(body[key]))
     off_db = float(body["mean_dbm"]) - float(body["applied_dbm"])  # type: ignore[arg-type]
     text = f"{body['applied_dbm']:.2f} dBm applied, read {off_db:+.2f} dB otherwise"
     body |= {"difference_db": off_db, "text": f"{text}; {body['note']}" if body["note"] else text}
     return Event(now_ns, KIND, channel, body)
+
+
+def _refuse_no_time(key: str, text: str) -> None:
+    """ConfigError: the chart, which goes by it, could not be read any more."""
+    try:
+        utc_ns_of(text or "1970-01-01T00:00:00Z")
+    except ValueError as error:
+        raise ConfigError(f"{key}: {error}") from None
 
 
 def checks_of(record: Record) -> list[Check]:
