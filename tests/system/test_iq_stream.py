@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import os
 import re
 import signal
 import subprocess
@@ -53,6 +54,17 @@ full_scale_dbm = -12.0
 noise_figure_db = 6.0
 crystal_ppm = 2.0
 """
+FAR = """
+[[band]]
+name = "pager"
+low_hz = 466.0e6
+high_hz = 466.4e6
+[[signal]]
+name = "pager"
+kind = "carrier"
+frequency_hz = 466.23e6
+level_dbm = -45.0
+"""
 TRUTH_DBFS = (
     -48.0 - FULL_SCALE_DBM + GAIN_DB,
     -50.0 + 10 * np.log10(0.75) - FULL_SCALE_DBM + GAIN_DB,
@@ -62,7 +74,7 @@ TRUTH_DBFS = (
 @pytest.fixture
 def place(tmp_path):
     """A folder with a site, its calibration and a receiver at work: (folder, simulator)."""
-    (tmp_path / "air.toml").write_text(AIR)
+    (tmp_path / "air.toml").write_text(AIR.replace("[receiver]", FAR + "[receiver]"))
     server = subprocess.Popen(
         [
             sys.executable, "-m", "simulators", "iq", "--port", "0", "--air", tmp_path / "air.toml",
@@ -98,6 +110,14 @@ def device(folder):
         return control.ask(folder / "watch.sock", {"do": "now"})["now"]["device"]
     except DeviceError:
         return {}
+
+
+def child_of(pid):
+    """The one process that this one has started."""
+    stats = (path.read_text() for path in Path("/proc").glob("[0-9]*/stat"))
+    fields = [(stat.split()[0], stat.rpartition(")")[2].split()[1]) for stat in stats]
+    (child,) = (int(own) for own, parent in fields if int(parent) == pid)
+    return child
 
 
 def ended(process):
@@ -150,3 +170,85 @@ def test_check_hears_the_receiver_and_finds_what_cannot_work(place):
         assert done.returncode == code, (old, done.stdout, done.stderr)
         assert words in done.stderr
         assert len(done.stderr.splitlines()) == 1
+
+
+def test_each_fault_of_the_server_is_noticed_and_got_over(place):
+    """In the times of hardware/IQ.md; the daemon is told why, and measures on."""
+    daemon = start("measure", "--site", place / "site.toml")
+    try:
+        wait_for(lambda: device(place).get("connected"))
+        for words, counter, within_s in (
+            (["halt", "--seconds", "3"], "stalls", 2.0),
+            (["shut"], "closed", 0.0),
+            (["absent", "--seconds", "2"], "connect_failures", 0.5),
+        ):
+            before = device(place)["counters"][counter]
+            fault(place, *words)
+            wait_for(lambda: device(place)["counters"][counter] > before, within_s + 2.0)  # noqa: B023
+            wait_for(lambda: device(place).get("connected"), 15)
+        for kind, counter, within_s in (("mislabel", "wrong", 0.5), ("mute", "no_header", 5.5)):
+            before = device(place)["counters"][counter]
+            fault(place, kind)
+            fault(place, "shut")
+            wait_for(lambda: device(place)["counters"][counter] > before, within_s + 2.5)  # noqa: B023
+            wait_for(lambda: device(place).get("connected"), 15)
+    finally:
+        ended(daemon)
+
+
+def test_a_process_that_stood_still_takes_nothing_old_for_new(place):
+    """Stopped for 3.5 s, less than it takes to be thought dead; the samples of that time wait."""
+    daemon = start("measure", "--site", place / "site.toml")
+    try:
+        wait_for(lambda: device(place).get("connected"))
+        worker = child_of(daemon.pid)
+        os.kill(worker, signal.SIGSTOP)
+        time.sleep(3.5)
+        os.kill(worker, signal.SIGCONT)
+        wait_for(lambda: device(place)["counters"].get("stale") == 1, 3)
+        wait_for(lambda: device(place).get("connected"))
+        assert device(place)["counters"]["worker_starts"] == 1
+    finally:
+        ended(daemon)
+
+
+def test_bands_far_apart_are_swept_and_the_record_tells_how_little_was_observed(place):
+    """Source: levels of the air; a carrier of -45 dBm at 466 MHz beside the bands at 868 MHz."""
+    text = filled(
+        (place / "site.toml").read_text(),
+        {
+            "hold_s = 0.5": "hold_s = 2.0",
+            '[[channel]]\nname = "lower"': '[[band]]\nname = "pager"\nlow = "466MHz"\n'
+            'high = "466.4MHz"\n\n[[channel]]\nname = "pager"\nband = "pager"\n\n'
+            '[[channel]]\nname = "lower"',
+        },
+    )
+    (place / "site.toml").write_text(text)
+    calibration = filled(
+        (place / "iq-stream-calibration.toml").read_text(),
+        {
+            '["800MHz", 25.1]': '["400MHz", 20.0], ["800MHz", 25.1]',
+            '["500MHz", 0.6]': '["400MHz", 0.5]',
+        },
+    )
+    (place / "iq-stream-calibration.toml").write_text(calibration)
+    daemon = start("measure", "--site", place / "site.toml")
+    try:
+        wait_for(lambda: device(place).get("connected"))
+        assert "2 places of the tuner in turn" in device(place)["text"]
+        time.sleep(24.0)
+    finally:
+        ended(daemon)
+    with Record.open(place / "watch.db") as record:
+        boot = record.boots()[0].boot
+        counts = np.concatenate([b.counts for b in record.raw_batches(boot)])
+        blocks = record.blocks(boot)
+    truths = (-45.0 - FULL_SCALE_DBM + GAIN_DB, *TRUTH_DBFS)
+    for channel, truth in enumerate(truths):
+        mean_dbfs = 10 * np.log10(np.mean(10 ** (counts[:, channel] / 10_000)))
+        assert mean_dbfs == pytest.approx(truth, abs=0.1)
+    whole = blocks.covered_ns == 10_000_000_000
+    assert whole.sum() >= 3
+    share = blocks.observed_ns[whole] / blocks.covered_ns[whole]
+    # a round is two places of 0.25 s, a dwell of 0.2 s and up to as much again before it
+    assert ((0.1 < share) & (share < 0.25)).all()
