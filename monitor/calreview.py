@@ -96,7 +96,8 @@ def response_db(shown: View, axis: str, frequencies_hz: Real) -> Real:
 def document(shown: View, shares: Real, now_utc_ns: int) -> Document:
     """All of it. shares: (c,), each axis' part of E squared."""
     file, certificate = shown.file, shown.file.certificate
-    overdue = [due for due in file.dues(shown.axes) if now_utc_ns >= due.utc_ns]
+    dues = file.dues(shown.axes)
+    overdue = [due for due in dues if now_utc_ns >= due.utc_ns]
     return {
         "file": file.top.where,
         "identity": shown.chain.identity,
@@ -105,7 +106,8 @@ def document(shown: View, shares: Real, now_utc_ns: int) -> Document:
         "certificate": certificate.number,
         "date": certificate.date.isoformat(),
         "due": certificate.due.isoformat(),
-        "due_in_days": (file.dues(shown.axes)[0].utc_ns - now_utc_ns) // DAY_NS,
+        "due_in_days": (dues[0].utc_ns - now_utc_ns) // DAY_NS,
+        "due_first": dues[0].what,
         "overdue": bool(overdue),
         "overdue_parts": [due.what for due in overdue],
         "invented": file.invented,
@@ -169,9 +171,12 @@ def _elements(file: CalibrationFile) -> list[Document]:
 
 
 def _certified(element: Element) -> Document:
-    """U of the certificate, the largest of its table, and its factor; None where not given."""
-    line = element.line.contribution if element.line else None
-    return {"u_db": line.value if line else None, "k": line.k if line else None}
+    """U of the certificate, smallest and largest of its table, its factor; None: not given."""
+    if element.line is None:
+        return {"u_db": None, "u_db_smallest": None, "k": None}
+    line, curve = element.line.contribution, element.line.curve
+    smallest = line.value if curve is None else float(curve.db.min())
+    return {"u_db": line.value, "u_db_smallest": smallest, "k": line.k}
 
 
 def _response(shown: View) -> list[Document]:

@@ -12,7 +12,7 @@ from monitor.calparts import CalibrationFile, dated, parse, read
 from monitor.calterms import assumed_kinds, is_component
 from monitor.changed import not_as_calibrated
 from monitor.config import Site
-from monitor.core.alarms import watches
+from monitor.core.alarms import AlertRule, watches
 from monitor.core.averaging_law import UNDECLARED, Averaging
 from monitor.core.calibration import Chain
 from monitor.core.errors import CalibrationError, ConfigError, LimitError
@@ -70,9 +70,7 @@ def findings(
     for scope, top in tops:
         yield _limit(scope, top)
     for rule in site.alerts:
-        n = len(watches([rule], [scope for scope, _ in tops]))
-        text = f"{rule.name}: raised at an exposure ratio of {rule.ratio:g}, in {n} scopes"
-        yield Finding("alert", text, n > 0)
+        yield _alert(rule, tops)
 
 
 def refuse_future(site: Site, now_utc_ns: int) -> None:
@@ -246,6 +244,17 @@ def _scopes(site: Site) -> list[Scope]:
             )
         found += here
     return found
+
+
+def _alert(rule: AlertRule, tops: Sequence[tuple[Scope, float]]) -> Finding:
+    """Where it is raised, and in how many scopes the detector's range ends below its ratio."""
+    watched = [top for scope, top in tops if watches([rule], [scope])]
+    text = f"{rule.name}: raised at an exposure ratio of {rule.ratio:g}, in {len(watched)} scopes"
+    beyond = sum(top < rule.ratio for top in watched)
+    if beyond:
+        text += f"; in {beyond} of them the detector's range ends below that: never raised there,"
+        text += " only the alarm of readings above the range is"
+    return Finding("alert", text, bool(watched) and not beyond)
 
 
 def _limit(scope: Scope, top: float) -> Finding:

@@ -131,7 +131,11 @@ class ScaleSource:
             return self.steps[0]
         known = ", ".join(step.gain for step in self.steps)
         if not gain and len(self.steps) > 1:
-            raise where.error("step", f"several gain steps; say which, as gain = ...: {known}")
+            raise where.error(
+                "step",
+                f"several gain steps; say which, as gain = ...: {known}"
+                " (of the site file's [[channel]], or --gain)",
+            )
         for step in self.steps:
             if step.gain == gain or not gain:
                 return step

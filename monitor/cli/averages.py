@@ -48,8 +48,10 @@ class Averages:
 @click.command("averages")
 @click.argument("file", required=False, type=click.Path(path_type=Path))
 @click.option("--averaging", default="360", show_default=True, help="Seconds, or 6min, 24h.")
-@click.option("--every", default="60", show_default=True, help="Step from end to end, seconds.")
-@click.option("--hold", help="Longest time that a reading stands for; three median intervals.")
+@click.option("--every", help="Step from end to end, seconds; 60 if left out. Of a FILE only.")
+@click.option(
+    "--hold", help="Longest time that a reading of a FILE stands for; three median intervals."
+)
 @click.option("--record", type=click.Path(path_type=Path), help="A record; the site's if left out.")
 @click.option("--from", "start", help="Begin of a record's span, RFC 3339.")
 @click.option("--to", "end", help="End of a record's span, RFC 3339.")
@@ -57,7 +59,7 @@ class Averages:
 def command(
     file: Path | None,
     averaging: str,
-    every: str,
+    every: str | None,
     hold: str | None,
     record: Path | None,
     start: str | None,
@@ -70,12 +72,14 @@ def command(
     """
     averaging_s = levels.duration_s(averaging)
     if file is None:
+        if every or hold:
+            raise ConfigError("--every and --hold go with a FILE; a record's averages are as kept")
         averages_record.show(record, averaging_s, start, end, as_json)
         return
     if record or start or end:
         raise ConfigError("--record, --from and --to go with a record; leave FILE out, or them")
     series = read_series(file)
-    steps = _steps(file, series, averaging_s, levels.duration_s(every), hold)
+    steps = _steps(file, series, averaging_s, levels.duration_s(every or "60"), hold)
     found = _average(series, steps)
     if as_json:
         print_json({"averages": _entries(series, found), "hold_s": steps.hold_ns / NS_PER_S})

@@ -111,6 +111,7 @@ def _line(row: dict[str, object]) -> str:
         said["e_rms_v_per_m"] = f"<{_figure(row['below_v_per_m'])}"
     elif row["at_least_v_per_m"] is not None:
         said["e_rms_v_per_m"] = f">={_figure(row['at_least_v_per_m'])}"
+        said["e_high_v_per_m"] = "-"  # by gaps and band alone; nothing bounds it above
     figures = " ".join(f"{said[name]:>9}" for name in names)
     words = list(row["flags"])  # type: ignore[call-overload]
     drift_db = float(row["widened_by_drift_db"])  # type: ignore[arg-type]

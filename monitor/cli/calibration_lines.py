@@ -19,7 +19,7 @@ def shown(document: Entry) -> Iterator[str]:
     if document["overdue"]:
         yield f"  OVERDUE: {', '.join(document['overdue_parts'])}; nothing conforms"
     elif document["due_in_days"] < DUE_SOON_DAYS:
-        yield f"  due soon: in {document['due_in_days']} days, whichever part comes first"
+        yield f"  due soon: {document['due_first']}, in {document['due_in_days']} days"
     low_c, high_c = document["valid_temperature_c"]
     yield f"  valid from {low_c:g} to {high_c:g} °C; identity {document['identity'][:12]}"
     if document["invented"]:
@@ -81,12 +81,20 @@ def _certificate(element: Entry) -> str:
         parts.append(f"by {element['laboratory']}")
     parts += [f"{key} {element[key]}" for key in ("date", "due") if element[key]]
     if element["u_db"] is not None:
-        parts.append(f"U {element['u_db']:g} dB (k = {element['k']:g})")
+        least = element["u_db_smallest"]
+        span = f"{least:g} to " if least < element["u_db"] else ""
+        parts.append(f"U {span}{element['u_db']:g} dB (k = {element['k']:g})")
     return ", ".join(parts)
 
 
 def _response(document: Entry) -> Iterator[str]:
-    yield f"Response over {_span(document['band'])}: antenna factor and losses, E² per watt"
+    probe = any(element["type"] == "probe" for element in document["elements"])
+    what = (
+        "true less indicated field, E² per watt at the port that stands for it"
+        if probe
+        else "antenna factor and losses, E² per watt"
+    )
+    yield f"Response over {_span(document['band'])}: {what}"
     yield "  (its spread over the band is part of U: give the band of the site file with --band)"
     rows = document["response"]
     for axis, row in _merged(rows, document["axes"]):

@@ -127,3 +127,21 @@ def test_below_the_detection_limit_it_says_below_and_no_mean(
     assert row["at_least_v_per_m"] is None
     assert row["expanded_uncertainty_db"] is None
     assert ("<10" in run(capsys, ["averages", "--record", path]).out) is bounded
+
+
+def test_a_lower_bound_has_no_highest_figure(
+    capsys: pytest.CaptureFixture[str], record: Path
+) -> None:
+    """By hand: low 2.5, high 10, largest 15 V/m; a clipped converter hides how much more it was."""
+    out = run(capsys, ["averages", "--record", record]).out
+    row = next(line for line in out.splitlines() if FIRST in line)
+    assert row.split()[1:5] == ["2.5", ">=2.5", "-", "15"]
+
+
+@pytest.mark.parametrize("option", ["--every", "--hold"])
+def test_options_of_a_file_are_not_passed_over(
+    capsys: pytest.CaptureFixture[str], record: Path, option: str
+) -> None:
+    found = run(capsys, ["averages", "--record", record, option, "600"])
+    assert found.code == 2
+    assert "--every and --hold go with a FILE" in found.one_line

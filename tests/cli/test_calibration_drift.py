@@ -42,6 +42,8 @@ def test_show_and_field_announce_a_due_date(
     shown = run(capsys, ["calibration", "show", path, "--json"]).document
     assert shown["due_in_days"] == days  # to the end of the due day
     assert not shown["overdue"]
-    assert ("due soon: in 20 days" in run(capsys, ["calibration", "show", path]).out) is soon
+    assert (
+        "due soon: calibration, in 20 days" in run(capsys, ["calibration", "show", path]).out
+    ) is soon
     asked = ["field", "--calibration", path, "--frequency", "900MHz", "--counts", "2000", "--json"]
     assert ("calibration due soon" in run(capsys, asked).document["flags"]) is soon

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from datetime import UTC, datetime, timedelta
 from pathlib import Path
 
 import pytest
@@ -74,3 +75,14 @@ def test_an_antenna_by_gain_against_the_same_by_factor(
     assert found["element antenna: quantity"] == ("antenna_factor", "gain")
     out = run(capsys, ["calibration", "show", new]).out
     assert "antenna a1: certificate K 1; 1 GHz to 6 GHz, gain 0.226 to 15.789 dBi" in out
+
+
+def test_show_tells_the_whole_span_of_u_and_what_is_due_first(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path
+) -> None:
+    """One figure would pass for that of every frequency; one date for that of the whole chain."""
+    soon = datetime.now(UTC).date() + timedelta(days=20)
+    path = written(tmp_path / "cal.toml", AMPLIFIER.replace("2030-01-01", f"{soon}"))
+    out = run(capsys, ["calibration", "show", path]).out
+    assert "U 0.4 to 0.6 dB (k = 2)" in out
+    assert "due soon: preamplifier p1, in 20 days" in out

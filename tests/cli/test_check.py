@@ -10,7 +10,7 @@ from pathlib import Path
 import pytest
 
 from monitor.calfile import load_chain
-from monitor.checks import findings
+from monitor.checks import Finding, findings
 from monitor.cli import main
 from monitor.config import load_site
 
@@ -107,6 +107,20 @@ def test_what_limits_a_verdict_is_noted(folder: Path) -> None:
     assert any("above 4 dB nothing will conform" in text for text in notes)
     assert any("no verdict from E alone" in text for text in notes)
     assert any("range ends at" in text for text in notes)
+
+
+def test_an_alert_beyond_the_detectors_range_is_noted(folder: Path) -> None:
+    """It can never be raised: somebody would wait for it in vain."""
+
+    def alert() -> Finding:
+        found = findings(load_site(folder / SITE), NOW_NS, lambda _: [])
+        return next(f for f in found if f.where == "alert")
+
+    change(folder / SITE, "ratio = 0.1\nreturns_at = 0.08", "ratio = 1e-6\nreturns_at = 8e-7")
+    assert alert().ok
+    change(folder / SITE, "ratio = 1e-6\nreturns_at = 8e-7", "ratio = 1e6\nreturns_at = 8e5")
+    assert not alert().ok
+    assert "in 6 of them the detector's range ends below that: never raised there" in alert().text
 
 
 def test_terms_that_nobody_wrote_are_named(folder: Path) -> None:

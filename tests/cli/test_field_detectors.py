@@ -41,7 +41,9 @@ def test_a_gain_step(capsys: pytest.CaptureFixture[str], tmp_path: Path) -> None
     asked = ("--frequency", "1GHz", "--dbfs", "-30")
     got = field(capsys, tmp_path, RECEIVER, *asked, "--gain", "20.7")
     assert (got["p_dbm"], got["gain"]) == (pytest.approx(-42.9), "20.7")
-    assert "say which, as gain = ...: 20.7, 0" in field(capsys, tmp_path, RECEIVER, *asked)
+    assert "say which, as gain = ...: 20.7, 0 (of the site file's [[channel]], or --gain)" in field(
+        capsys, tmp_path, RECEIVER, *asked
+    )
 
 
 def test_what_a_probe_indicates(capsys: pytest.CaptureFixture[str], tmp_path: Path) -> None:
@@ -136,3 +138,14 @@ def test_noise_is_taken_off_and_what_it_hides_is_a_bound(
     limit_w = 3.29 * 1e-9 * 0.2 * math.log(10) / 10
     assert hidden["e_v_per_m"] == pytest.approx(plain * math.sqrt(limit_w / 1e-3), rel=1e-3)
     assert hidden["e_high_v_per_m"] > hidden["e_v_per_m"]
+
+
+def test_show_of_a_probe_speaks_of_its_correction(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path
+) -> None:
+    """A probe as a whole has no antenna factor on its certificate."""
+    path = tmp_path / "probe.toml"
+    path.write_text(with_detector(PROBE), encoding="utf-8")
+    out = run(capsys, ["calibration", "show", path]).out
+    assert "true less indicated field" in out
+    assert "antenna factor" not in out
