@@ -44,7 +44,8 @@ def _of_pairs(sums: Sums) -> Real:
     pairs = sums.pairs.astype(np.float64)
     with np.errstate(divide="ignore", invalid="ignore"):
         variance = sums.turns_w2 / (2.0 * pairs * (pairs + 1.0))
-        return np.asarray(np.sqrt(variance) * student_ratio(WORTH * pairs))
+        degrees = np.minimum(WORTH * pairs, _events(sums))
+        return np.asarray(np.sqrt(variance) * student_ratio(degrees))
 
 
 def _of_batches(sums: Sums) -> Real:
@@ -62,9 +63,9 @@ def _of_batches(sums: Sums) -> Real:
 
 
 def _events(sums: Sums) -> Real:
-    """Degrees of freedom where few bursts make up the mean: as many as they would be, were each as
-    strong as the strongest (our choice; held by drawing). Two at the least, where student_ratio
-    ends."""
+    """Degrees of freedom where few strong readings make up the mean: as many as they would be, were
+    each as strong as the strongest (our choice; held by drawing). Two at the least, where
+    student_ratio ends."""
     with np.errstate(divide="ignore", invalid="ignore"):
         strongest = sums.max_w * sums.mean_ns / np.maximum(sums.n, 1)
         return np.asarray(np.maximum(sums.energy_w_ns / strongest, 2.0))
