@@ -12,6 +12,8 @@ import pytest
 
 DEPLOY = Path("hardware/deploy")
 UNITS = sorted(DEPLOY.glob("*.service"))
+RECEIVER = DEPLOY / "fieldsill-receiver.service"
+HALVES = [path for path in UNITS if path != RECEIVER]
 
 
 class Unit(configparser.RawConfigParser):
@@ -31,10 +33,20 @@ def unit(path):
 
 
 def test_there_is_a_unit_for_each_half():
-    assert [path.stem for path in UNITS] == ["fieldsill-measure", "fieldsill-pages"]
+    assert [path.stem for path in HALVES] == ["fieldsill-measure", "fieldsill-pages"]
 
 
-@pytest.mark.parametrize("path", UNITS, ids=lambda path: path.stem)
+def test_the_bridge_is_started_by_the_python_that_has_the_binding():
+    receiver = unit(RECEIVER)["Service"]
+    assert receiver["ExecStart"] == "/usr/bin/python3 /opt/fieldsill/soapy_bridge.py $OPTIONS"
+    assert (receiver["Restart"], receiver["NoNewPrivileges"]) == ("always", "yes")
+    assert unit(RECEIVER)["Unit"]["StartLimitIntervalSec"] == "0"
+    guide = (DEPLOY / "README.md").read_text(encoding="utf-8")
+    assert "install -m 644 hardware/soapy_bridge.py /opt/fieldsill/" in guide
+    assert f"`OPTIONS=--device driver=...` in\n  `{receiver['EnvironmentFile']}`" in guide
+
+
+@pytest.mark.parametrize("path", HALVES, ids=lambda path: path.stem)
 def test_a_unit_restarts_for_ever_and_calls_a_command_that_exists(path):
     service = unit(path)["Service"]
     assert service["Restart"] == "always"
@@ -53,7 +65,7 @@ def test_a_unit_restarts_for_ever_and_calls_a_command_that_exists(path):
 
 
 def test_the_daemon_may_ask_for_the_clocks_state_and_the_pages_reach_no_device():
-    measure, pages = (unit(path)["Service"] for path in UNITS)
+    measure, pages = (unit(path)["Service"] for path in HALVES)
     assert "ProtectClock" not in measure
     assert "adjtimex" in measure["SystemCallFilter"]
     assert pages["PrivateDevices"] == "yes"
