@@ -232,7 +232,7 @@ def test_every_rail_of_a_converter_is_a_rail_of_the_wire():
         assert clipped_components(form.cu8(rails), "cu8") == (2, 2), form
         below = (rails * 0.9).astype(rails.dtype)
         assert clipped_components(form.cu8(below), "cu8") == (0, 2), form
-    beyond = Format("CF32", 1.0).cu8(np.array([-9.0, 9.0, -np.finfo("f4").max], "f4"))
+    beyond = Format("CF32", 1.0).cu8(np.array([-9.0, 9.0, -1e30], "f4"))
     assert beyond == bytes([0, 255, 0])
 
 
