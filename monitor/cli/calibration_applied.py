@@ -65,7 +65,9 @@ def command(
     request = request_of(mean, channel, at, applied_dbm, note)
     event_of(request, names, 0)  # a mistake is told before the daemon is asked
     kept_by = _keep(path, request, mean, names, simulated)
-    document = {**request, "difference_db": mean.mean_dbm - applied_dbm, "kept_by": kept_by}
+    # What is not known stands as an empty text in an event, and as null in a document.
+    document = {key: None if value == "" else value for key, value in request.items()}
+    document |= {"difference_db": mean.mean_dbm - applied_dbm, "kept_by": kept_by}
     del document["do"]
     if as_json:
         print_json(document)

@@ -44,7 +44,10 @@ def blocks(
     )  # fmt: skip
 
 
-def fill(path: Path, rows: BlockRows, *, table: str = "a" * 64, boot: str = "one") -> None:
+def fill(
+    path: Path, rows: BlockRows, *, table: str = "a" * 64, boot: str = "one",
+    fixes: tuple[ClockFix, ...] = (ClockFix(0, UTC0, "test", 0),),
+) -> None:  # fmt: skip
     """A run of the daemon's: its start, one reading at the end, and blocks."""
     writer = writer_of(path)
     number = writer.begin_boot(boot, "machine")
@@ -55,7 +58,7 @@ def fill(path: Path, rows: BlockRows, *, table: str = "a" * 64, boot: str = "one
         Commit(
             raw=last_reading(int(rows.start_ns.max()) + 9 * S), blocks=rows,
             events=(Event(at, "start", "daemon", hashes),),
-            clock_fixes=(ClockFix(0, UTC0, "test", 0),),
+            clock_fixes=fixes,
         ),
     )  # fmt: skip
     writer.close()
@@ -99,6 +102,15 @@ def test_power_is_averaged_over_the_newest_minute(
     assert (check.channel, check.at, check.note) == ("east", "port", "generator 3")
     assert check.count_table == "a" * 64
     assert event.boot_ns == 120 * S
+
+
+def test_what_is_not_known_is_null(capsys: pytest.CaptureFixture[str], tmp_path: Path) -> None:
+    """A boot whose UTC nothing told, and no note: the rule for every document, absent is null."""
+    path = tmp_path / "record.db"
+    fill(path, blocks(0, [-30.0] * 6), fixes=())
+    document = applied(capsys, path, "--level", "-30dBm", "--json").document
+    assert [document[key] for key in ("from_utc", "to_utc", "note")] == [None] * 3
+    assert document["channel"] == "east"
 
 
 def test_a_time_can_be_named(capsys: pytest.CaptureFixture[str], record: Path) -> None:
@@ -275,16 +287,3 @@ def test_a_check_in_the_record_that_is_none_is_one_line(
     assert found.code == 3
     assert "a reference check in it cannot be read" in found.err
     assert found.err.count("\n") == 1
-
-
-@pytest.mark.parametrize("value", [1e300, -1e300, 10**400])
-def test_a_level_beyond_any_is_not_kept(value: float) -> None:
-    """The difference of two such would be no number, and its event could not be written."""
-    with pytest.raises(ConfigError, match="applied_dbm: .* is not a number, or beyond 1e"):
-        event_of({**REQUEST, "applied_dbm": value}, ["east"], 0)
-
-
-@pytest.mark.parametrize("key", ["from_utc", "to_utc"])
-def test_a_check_without_a_time_of_the_calendar_is_not_kept(key: str) -> None:
-    with pytest.raises(ConfigError, match=f"{key}: 'at noon' is not an RFC 3339 time"):
-        event_of({**REQUEST, key: "at noon"}, ["east"], 0)
