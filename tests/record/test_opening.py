@@ -122,7 +122,7 @@ def test_a_disk_on_which_nothing_can_be_written(tmp_path: Path, there: bool) -> 
         "resource.setrlimit(resource.RLIMIT_FSIZE, (0, 0))\n"
         "begin = lambda writer: writer.begin_boot('b', 'machine')\n"
         "thread = WriterThread.opening(Path(sys.argv[1]), True, begin, 4)\n"
-        "print(thread.boot, thread.alive, bool(thread.error), thread.close(1.0))\n"
+        "print(thread.boot, thread.alive, bool(thread.error), thread.close(20.0))\n"
     )
     done = subprocess.run(
         [sys.executable, "-c", code, str(path)], capture_output=True, text=True, check=False
