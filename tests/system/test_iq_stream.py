@@ -114,9 +114,15 @@ def device(folder):
 
 def child_of(pid):
     """The one process that this one has started."""
-    stats = (path.read_text() for path in Path("/proc").glob("[0-9]*/stat"))
-    fields = [(stat.split()[0], stat.rpartition(")")[2].split()[1]) for stat in stats]
-    (child,) = (int(own) for own, parent in fields if int(parent) == pid)
+    found = []
+    for path in Path("/proc").glob("[0-9]*/stat"):
+        try:
+            stat = path.read_text()
+        except OSError:  # gone meanwhile
+            continue
+        if int(stat.rpartition(")")[2].split()[1]) == pid:
+            found.append(int(stat.split()[0]))
+    (child,) = found
     return child
 
 
