@@ -32,11 +32,24 @@ _ANSWERABLE = (ArithmeticError, AttributeError, LookupError, OSError, RuntimeErr
                ValueError)  # fmt: skip
 
 
+class NoDaemonError(DeviceError):
+    """Nothing listens there: a request was not even begun."""
+
+
+def _connect(connection: socket.socket, path: Path) -> None:
+    try:
+        connection.connect(str(path))
+    except (ConnectionRefusedError, FileNotFoundError) as error:
+        raise NoDaemonError(
+            f"no answer from the daemon at {path}; start it with fieldsill measure"
+        ) from error
+
+
 def ask(path: Path, request: Mapping[str, object], timeout_s: float = 2.0) -> dict[str, object]:
     """Send one request and return the daemon's reply, which has "ok" in it.
 
-    DeviceError where no whole reply comes within timeout_s; ConfigError where the request holds
-    what no line can.
+    NoDaemonError where nothing listens; DeviceError where no whole reply comes within timeout_s;
+    ConfigError where the request holds what no line can.
     """
     _refuse_long(path)
     try:
@@ -47,9 +60,11 @@ def ask(path: Path, request: Mapping[str, object], timeout_s: float = 2.0) -> di
     try:
         with socket.socket(socket.AF_UNIX, socket.SOCK_STREAM) as connection:
             connection.settimeout(timeout_s)
-            connection.connect(str(path))
+            _connect(connection, path)
             connection.sendall(line)
             reply = json.loads(_received(connection, until))
+    except NoDaemonError:
+        raise
     except (OSError, ValueError) as error:
         raise DeviceError(
             f"no answer from the daemon at {path}; start it with fieldsill measure"

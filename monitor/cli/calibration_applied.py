@@ -10,8 +10,8 @@ import click
 from monitor.cli.averages_record import site_record, utc_ns_asked
 from monitor.cli.levels import duration_s
 from monitor.cli.output import print_json
-from monitor.control import ask
-from monitor.core.errors import ConfigError, DeviceError
+from monitor.control import NoDaemonError, ask
+from monitor.core.errors import ConfigError
 from monitor.core.readings import NS_PER_S
 from monitor.record.reader import Record
 from monitor.record.types import Commit
@@ -88,10 +88,14 @@ def level_dbm(text: str) -> float:
 def _keep(
     path: Path, request: dict[str, object], mean: Mean, names: list[str], simulated: bool
 ) -> str:
-    """Through the daemon where one answers; else by this process, which then is the writer."""
+    """Through the daemon where one listens; else by this process, which then is the writer.
+
+    A daemon that took it and has not answered may still keep it: that is an error, or it would be
+    kept twice.
+    """
     try:
         reply = ask(path.with_suffix(".sock"), request)
-    except DeviceError:
+    except NoDaemonError:
         writer = Writer(path, simulated=simulated)
         try:
             event = event_of(request, names, mean.end_ns)

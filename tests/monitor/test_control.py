@@ -13,7 +13,7 @@ from pathlib import Path
 import pytest
 
 from monitor import control
-from monitor.control import MAX_REQUEST_BYTES, Server, ask
+from monitor.control import MAX_REQUEST_BYTES, NoDaemonError, Server, ask
 from monitor.core.errors import ConfigError, DeviceError
 
 Request = dict[str, object]
@@ -143,7 +143,7 @@ def test_more_connections_than_it_serves(server: Server, path: Path) -> None:
 
 def test_nobody_there(path: Path) -> None:
     message = f"no answer from the daemon at {path}; start it with fieldsill measure"
-    with pytest.raises(DeviceError) as caught:
+    with pytest.raises(NoDaemonError) as caught:
         ask(path, {"do": "now"})
     assert str(caught.value) == message
 
@@ -166,8 +166,9 @@ def test_an_answer_that_is_none(path: Path, reply: bytes | None) -> None:
 
     thread = threading.Thread(target=serve)
     thread.start()
-    with pytest.raises(DeviceError, match="no answer from the daemon"):
+    with pytest.raises(DeviceError, match="no answer from the daemon") as caught:
         ask(path, {"do": "now"}, timeout_s=0.3)
+    assert not isinstance(caught.value, NoDaemonError)  # it may have been taken: not to be repeated
     gone.set()
     thread.join()
     listener.close()
