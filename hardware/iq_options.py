@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from pathlib import Path
 from typing import ClassVar
 
 from hardware.iq_client import Radio, check_server
@@ -11,10 +12,11 @@ from hardware.iq_count import RATES_HZ
 from hardware.iq_levels import COUNTS_PER_DB, Levels, spike_hz
 from hardware.iq_plan import Tune, fixed_tune, tunes
 from hardware.iq_receiver import Scheme
+from hardware.thermometer import tenths_of
 from monitor.core.averaging_law import Averaging
-from monitor.core.errors import ConfigError
+from monitor.core.errors import ConfigError, DeviceError
 from monitor.core.keys import Table
-from monitor.core.readings import FrontEnd
+from monitor.core.readings import MISSING, FrontEnd
 
 PORT = 1234
 INTERVAL_S = 0.1
@@ -33,19 +35,26 @@ AUTOMATIC = (
 class Settings:
     """Options of [sensor] for a receiver on the network. bands: (low, high) in Hz per channel.
 
-    seed: of the random starts; None takes the system's.
+    seed: of the random starts; None takes the system's. thermometer: the file that tells the
+    receiver's temperature, None where nothing does.
     """
 
     radio: Radio
     scheme: Scheme
     bands: tuple[tuple[float, float], ...]
     seed: int | None = None
+    thermometer: Path | None = None
     resolution: ClassVar[float | None] = 1.0 / COUNTS_PER_DB
 
     @property
     def bands_hz(self) -> tuple[tuple[float, float], ...]:
         """(low, high) on the air per channel, Hz."""
         return self.bands
+
+    @property
+    def gain_db(self) -> float:
+        """The gain that is set, dB: the calibration must be of that step."""
+        return self.radio.gain_db
 
     @property
     def bin_hz(self) -> float:
@@ -63,7 +72,12 @@ class Settings:
         return Averaging("power", self.scheme.reading_s, sparse=self.scheme.swept)
 
     def check_device(self) -> None:
-        """DeviceError where no server answers."""
+        """DeviceError where no server answers, or the thermometer cannot be read."""
+        if self.thermometer is not None and tenths_of(self.thermometer) == MISSING:
+            raise DeviceError(
+                f"sensor.temperature_file: {self.thermometer} holds no thousandths of a degree; "
+                "correct the path, or take it out"
+            )
         check_server(self.radio.host, self.radio.port, "sensor.host")
 
     def open(
@@ -105,7 +119,14 @@ def settings_from(table: Table) -> Settings:
         dwell_s=_whole(table.number("dwell_s", DWELL_S, least_s, 3600.0), fft / rate_hz),
         settle_s=table.number("settle_s", SETTLE_S, 0.1, 60.0),
     )
-    return Settings(radio, scheme, bands)
+    return Settings(radio, scheme, bands, thermometer=_thermometer(table))
+
+
+def _thermometer(table: Table) -> Path | None:
+    name = table.text("temperature_file", "")
+    if name and not Path(name).is_absolute():
+        raise table.error("temperature_file", f"{name!r} is no absolute path; begin it with /")
+    return Path(name) if name else None
 
 
 def _places(

@@ -17,6 +17,7 @@ import numpy as np
 
 from hardware.iq_options import Settings
 from hardware.iq_worker import settings_text
+from hardware.thermometer import Thermometer
 from monitor.core.flags import Flag
 from monitor.core.readings import NS_PER_S, Batch, DeviceStatus, empty_batch
 
@@ -160,6 +161,7 @@ class IqStream:
         self._upto_ns = boot_ns()
         self._told: dict[str, object] = {}
         self._counters: dict[str, int] = {}
+        self._thermometer = Thermometer(settings.thermometer, boot_ns)
 
     def read(self, timeout_s: float) -> Batch:
         """Readings since the last call; waits timeout_s at most."""
@@ -184,6 +186,7 @@ class IqStream:
             np.array(counts, np.int32),
             np.array(flags, np.int32),
             self._upto_ns,
+            np.full(len(times), self._thermometer.tenths(), np.int32),
         )
 
     def status(self) -> DeviceStatus:
@@ -196,6 +199,7 @@ class IqStream:
         return DeviceStatus(
             connected=not problem,
             text=f"{problem}; trying again" if problem else text,
+            temperature_c=self._thermometer.celsius(),
             counters=self._counters | self._worker.counters,
         )
 

@@ -164,7 +164,8 @@ def _as_found(site: Site, file: CalibrationFile) -> Iterator[Finding]:
 
 
 def _temperature(site: Site, chain: Chain) -> Iterator[Finding]:
-    if site.sensor_kind in TELL_NO_TEMPERATURE:
+    told = bool(site.sensor_options.get("temperature_file"))
+    if site.sensor_kind in TELL_NO_TEMPERATURE and not told:
         low, high = chain.valid_temperature_c
         yield Finding(
             "sensor",

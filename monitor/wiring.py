@@ -30,6 +30,7 @@ from monitor.core.station import Station, station
 from monitor.daemon import RECORD, Daemon
 from monitor.inforce import before_of, in_force
 from monitor.listening import heard, left_alone, named
+from monitor.receiver import refuse_other_gain
 from monitor.record import connect
 from monitor.record.background import WriterThread
 from monitor.record.writer import Writer
@@ -83,6 +84,9 @@ def _made(file: CalibrationFile, site: Site, settings: Settings) -> Chain:
             f"{site.path.name}: sensor.resolution: {settings.resolution} differs from "
             f"{chain.resolution} in {site.calibration.name}: detector.resolution; make them equal"
         )
+    gain_db = getattr(settings, "gain_db", None)
+    if gain_db is not None:
+        refuse_other_gain(site, file, gain_db)
     return chain
 
 
