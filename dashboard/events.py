@@ -95,11 +95,24 @@ def _stop(event: EventRow, name: str) -> tuple[str, str]:
     return "Monitor", "stopped"
 
 
+def _evidence(event: EventRow, name: str) -> tuple[str, str]:
+    """name is that of a file and stays as it is written."""
+    size, why = bounds.number(event.body, "bytes"), str(event.body.get("why") or "")
+    megabytes = "" if size is None else f", {size / 1e6:.1f} MB"
+    if event.body.get("removed"):
+        return "Recording removed", f"{event.name}{megabytes}; {why}"
+    if why:
+        return "Recording", f"not kept: {why}"
+    covers = "" if event.body.get("covers", True) else "; the moment itself was no longer there"
+    return "Recording kept", f"{event.name}{megabytes}, of the samples when an alarm began{covers}"
+
+
 _KINDS: dict[str, Callable[[EventRow, str], tuple[str, str]]] = {
     "alarm": _alarm,
     "confirmed": _confirmed,
     "muted": _muted,
     "device": _device,
+    "evidence": _evidence,
     "note": _note,
     "start": _start,
     "stop": _stop,

@@ -9,6 +9,7 @@ from typing import ClassVar
 
 from hardware.iq_client import Radio, check_server
 from hardware.iq_count import RATES_HZ
+from hardware.iq_keep import recording_bytes
 from hardware.iq_levels import COUNTS_PER_DB, Levels, spike_hz
 from hardware.iq_plan import Tune, fixed_tune, tunes
 from hardware.iq_receiver import Scheme
@@ -23,6 +24,7 @@ INTERVAL_S = 0.1
 DWELL_S = 0.2
 SETTLE_S = 0.25
 """Our choice: four buffers of 64 ms (IQ.md) may be under way when the receiver is tuned anew."""
+EVIDENCE_MB = 64.0
 SPAN_SHARE = 0.8
 """Share of the rate that can be used (IQ.md: 75 to 80 %)."""
 AUTOMATIC = (
@@ -36,7 +38,7 @@ class Settings:
     """Options of [sensor] for a receiver on the network. bands: (low, high) in Hz per channel.
 
     seed: of the random starts; None takes the system's. thermometer: the file that tells the
-    receiver's temperature, None where nothing does.
+    receiver's temperature, None where nothing does. evidence_bytes: for recordings, 0 for none.
     """
 
     radio: Radio
@@ -44,6 +46,7 @@ class Settings:
     bands: tuple[tuple[float, float], ...]
     seed: int | None = None
     thermometer: Path | None = None
+    evidence_bytes: int = 0
     resolution: ClassVar[float | None] = 1.0 / COUNTS_PER_DB
 
     @property
@@ -119,7 +122,13 @@ def settings_from(table: Table) -> Settings:
         dwell_s=_whole(table.number("dwell_s", DWELL_S, least_s, 3600.0), fft / rate_hz),
         settle_s=table.number("settle_s", SETTLE_S, 0.1, 60.0),
     )
-    return Settings(radio, scheme, bands, thermometer=_thermometer(table))
+    return Settings(
+        radio,
+        scheme,
+        bands,
+        thermometer=_thermometer(table),
+        evidence_bytes=_evidence(table, rate_hz),
+    )
 
 
 def _thermometer(table: Table) -> Path | None:
@@ -127,6 +136,18 @@ def _thermometer(table: Table) -> Path | None:
     if name and not Path(name).is_absolute():
         raise table.error("temperature_file", f"{name!r} is no absolute path; begin it with /")
     return Path(name) if name else None
+
+
+def _evidence(table: Table, rate_hz: int) -> int:
+    """Bytes that recordings may take; a budget that not even one fits in is a mistake."""
+    budget = round(table.number("evidence_mb", EVIDENCE_MB, 0.0, 1e6) * 1e6)
+    least = recording_bytes(rate_hz)
+    if 0 < budget < least:
+        raise table.error(
+            "evidence_mb",
+            f"{budget / 1e6:g} holds no recording, which has {least / 1e6:.3g} MB; 0 keeps none",
+        )
+    return budget
 
 
 def _places(

@@ -12,6 +12,7 @@ from hardware.iq_client import Client, Radio
 from hardware.iq_count import SampleClock, real_rate_hz
 from hardware.iq_levels import Levels, counts
 from hardware.iq_plan import Tune
+from hardware.iq_ring import Ring
 from monitor.core.readings import NS_PER_S
 
 
@@ -60,7 +61,8 @@ class Reading:
 
 
 class Receiver:
-    """One receiver at work. now_ns: a clock that never jumps (ns); seed: None takes the system's.
+    """One receiver at work. now_ns: a clock that never jumps (ns); seed: None takes the system's;
+    ring: keeps the samples that were measured.
 
     Where the bands are swept, each round takes the places in a new order, and each dwell begins at
     random within a dwell's length, so that nothing periodic keeps step. A round is one reading,
@@ -68,10 +70,12 @@ class Receiver:
     """
 
     def __init__(
-        self, radio: Radio, scheme: Scheme, now_ns: Callable[[], int], seed: int | None = None
-    ) -> None:
+        self, radio: Radio, scheme: Scheme, now_ns: Callable[[], int], seed: int | None = None,
+        ring: Ring | None = None,
+    ) -> None:  # fmt: skip
         self._scheme = scheme
         self._now_ns = now_ns
+        self._ring = ring
         self._draws = Random(seed)
         self._clipped, self._done, self._from_ns, self._start_ns = 0, 0, 0, -1
         self._rate_hz = real_rate_hz(radio.rate_hz)
@@ -145,6 +149,8 @@ class Receiver:
     def _restart(self, now_ns: int) -> None:
         """Whatever was begun does not join on to what comes: leave it."""
         self._levels[self._order[0]].drop()
+        if self._ring is not None:
+            self._ring.cut()
         self._begin_round(now_ns)
 
     def _begin_round(self, now_ns: int) -> None:
@@ -175,7 +181,10 @@ class Receiver:
                 return found
             if self._done == 0 and self._start_ns < 0:
                 self._start_ns = max(clock.time_ns(first + at), self._upto_ns)
-            self._levels[self._order[0]].add(raw[2 * at : 2 * (at + n)])
+            place, part = self._order[0], raw[2 * at : 2 * (at + n)]
+            self._levels[place].add(part)
+            if self._ring is not None:
+                self._ring.add(part, clock.time_ns(first + at), place, first + at)
             self._done += n
             at += n
             if self._done == self._need:

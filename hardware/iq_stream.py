@@ -10,7 +10,7 @@ import os
 import selectors
 import subprocess
 import sys
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 from pathlib import Path
 
 import numpy as np
@@ -41,7 +41,7 @@ class Worker:
         self._selector = selectors.DefaultSelector()
         self._wake_r, self._wake_w = os.pipe()
         self._selector.register(self._wake_r, selectors.EVENT_READ)
-        self._rest = b""
+        self._rest = self._unsaid = b""
         self._spoken = False
         self._heard_ns = self._start_at_ns = now_ns()
         self._back_off_s = BACK_OFF_S
@@ -57,6 +57,7 @@ class Worker:
     def lines(self, timeout_s: float) -> list[bytes]:
         """What it said since the last call; waits timeout_s at most."""
         now_ns = self._now_ns()
+        self._flush()
         if self._process is None and not self._closed and now_ns >= self._start_at_ns:
             self._start(now_ns)
         if self._closed or not self._selector.select(max(timeout_s, 0.0)):
@@ -76,6 +77,24 @@ class Worker:
             self._back_off_s = BACK_OFF_S
         self._patience()
         return lines
+
+    def say(self, line: bytes) -> bool:
+        """Tell it a line, without waiting; False where it is not there or has not read the last."""
+        if self._process is None or self._unsaid:
+            return False
+        self._unsaid = line
+        self._flush()
+        return self._process is not None
+
+    def _flush(self) -> None:
+        if self._process is None or self._process.stdin is None or not self._unsaid:
+            return
+        try:
+            self._unsaid = self._unsaid[os.write(self._process.stdin.fileno(), self._unsaid) :]
+        except BlockingIOError:
+            return
+        except OSError:  # it has ended, which its output will tell
+            self._unsaid = b""
 
     def close(self) -> None:
         """End it: at the end of its input it goes by itself; else it is killed."""
@@ -102,10 +121,12 @@ class Worker:
             self._later(f"the receiver's process cannot be started: {error.strerror}")
             return
         assert self._process.stdout is not None
+        assert self._process.stdin is not None
         os.set_blocking(self._process.stdout.fileno(), False)
         self._selector.register(self._process.stdout, selectors.EVENT_READ)
         self.counters["worker_starts"] += 1
-        self._heard_ns, self._spoken, self._rest = now_ns, False, b""
+        os.set_blocking(self._process.stdin.fileno(), False)
+        self._heard_ns, self._spoken, self._rest, self._unsaid = now_ns, False, b"", b""
         self.problem = "the receiver's process is starting"
 
     def _said(self, descriptor: int) -> bytes | None:
@@ -156,8 +177,11 @@ class IqStream:
         self._bits = int(Flag.SIMULATED) if simulated else 0
         self._boot_ns = boot_ns
         self._worker = Worker(
-            settings_text(settings.radio, settings.scheme, settings.seed), boot_ns
+            settings_text(settings.radio, settings.scheme, settings.seed, settings.evidence_bytes),
+            boot_ns,
         )
+        self.keeps = settings.evidence_bytes > 0
+        self._kept: list[Mapping[str, object]] = []
         self._upto_ns = boot_ns()
         self._told: dict[str, object] = {}
         self._counters: dict[str, int] = {}
@@ -170,6 +194,9 @@ class IqStream:
         flags: list[int] = []
         for line in self._worker.lines(timeout_s):
             said = json.loads(line)
+            if "upto" not in said:
+                self._kept.append(said)
+                continue
             self._told, self._counters = said, said["counters"]
             start_ns = said.get("at", 0)
             if start_ns >= self._upto_ns:
@@ -202,6 +229,15 @@ class IqStream:
             temperature_c=self._thermometer.celsius(),
             counters=self._counters | self._worker.counters,
         )
+
+    def keep(self, request: Mapping[str, object]) -> bool:
+        """Ask for the samples round a moment as a recording; see monitor.evidence.Keeper."""
+        return self._worker.say(json.dumps(request).encode() + b"\n")
+
+    def kept(self) -> list[Mapping[str, object]]:
+        """What became of that, since the last call."""
+        kept, self._kept = self._kept, []
+        return kept
 
     def close(self) -> None:
         """End the process."""

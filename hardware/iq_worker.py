@@ -13,6 +13,8 @@ import time
 from collections.abc import Callable, Sequence
 
 from hardware.iq_client import Radio
+from hardware.iq_count import real_rate_hz
+from hardware.iq_keep import Keeper, ring_for
 from hardware.iq_plan import Part, Tune
 from hardware.iq_receiver import Reading, Receiver, Scheme
 
@@ -20,8 +22,10 @@ SAY_S = 0.5
 """A line comes at least so often, with or without a reading."""
 
 
-def settings_text(radio: Radio, scheme: Scheme, seed: int | None = None) -> str:
-    """All that the process must know, as JSON."""
+def settings_text(
+    radio: Radio, scheme: Scheme, seed: int | None = None, evidence_bytes: int = 0
+) -> str:
+    """All that the process must know, as JSON. evidence_bytes: for recordings, 0 for none."""
     tunes = [
         [tune.centre_hz, [[part.channel, part.low_hz, part.high_hz] for part in tune.parts]]
         for tune in scheme.tunes
@@ -33,19 +37,26 @@ def settings_text(radio: Radio, scheme: Scheme, seed: int | None = None) -> str:
             scheme.channels, scheme.fft, scheme.interval_s, scheme.dwell_s, scheme.settle_s,
         ],
         "seed": seed,
+        "evidence": evidence_bytes,
     }  # fmt: skip
     return json.dumps(own)
 
 
-def receiver_of(text: str, now_ns: Callable[[], int]) -> Receiver:
-    """The receiver of these settings."""
+def receiver_of(text: str, now_ns: Callable[[], int]) -> tuple[Receiver, Keeper | None]:
+    """The receiver of these settings, and what keeps samples of it, if any are to be kept."""
     own = json.loads(text)
     tunes = tuple(
         Tune(centre_hz, tuple(Part(*part) for part in parts)) for centre_hz, parts in own["tunes"]
     )
     channels, fft, interval_s, dwell_s, settle_s = own["scheme"]
     scheme = Scheme(channels, tunes, fft, interval_s, dwell_s, settle_s)
-    return Receiver(Radio(*own["radio"]), scheme, now_ns, own["seed"])
+    radio, rate_hz = Radio(*own["radio"]), real_rate_hz(own["radio"][2])
+    ring = ring_for(rate_hz, scheme.round_s) if own["evidence"] else None
+    receiver = Receiver(radio, scheme, now_ns, own["seed"], ring)
+    if ring is None:
+        return receiver, None
+    text = f"receiver of the 8-bit dongle class, gain {radio.gain_db:g} dB"
+    return receiver, Keeper(ring, rate_hz, tunes, own["evidence"], text)
 
 
 def line_of(reading: Reading | None, receiver: Receiver, unsaid: int) -> bytes:
@@ -61,23 +72,87 @@ def line_of(reading: Reading | None, receiver: Receiver, unsaid: int) -> bytes:
     return json.dumps(said, separators=(",", ":")).encode() + b"\n"
 
 
-def run(receiver: Receiver, now_ns: Callable[[], int], source: int, sink: int) -> None:
+class Speaker:
+    """Lines to a descriptor whose reader may not read: then they are lost, and counted."""
+
+    def __init__(self, sink: int) -> None:
+        os.set_blocking(sink, False)
+        self._sink = sink
+        self.unsaid = 0
+        self.heard = True
+
+    def say(self, line: bytes) -> bool:
+        """Whether the line was taken; a line of up to 4096 bytes is taken whole or not at all."""
+        try:
+            os.write(self._sink, line)
+        except BlockingIOError:
+            self.unsaid += 1
+            return False
+        except BrokenPipeError:
+            self.heard = False
+            return False
+        return True
+
+
+class Listener:
+    """Requests from a descriptor, a line of JSON each."""
+
+    def __init__(self, source: int) -> None:
+        self._source, self._rest = source, b""
+        self.ended = False
+
+    def requests(self) -> list[dict[str, object]]:
+        """What was asked since the last call; does not wait."""
+        *lines, self._rest = (self._rest + self._came()).split(b"\n")
+        return [json.loads(line) for line in lines]
+
+    def _came(self) -> bytes:
+        if self.ended or not select.select([self._source], [], [], 0)[0]:
+            return b""
+        data = os.read(self._source, 1 << 16)
+        self.ended = not data
+        return data
+
+
+def run(
+    receiver: Receiver,
+    now_ns: Callable[[], int],
+    source: int,
+    sink: int,
+    keeper: Keeper | None = None,
+) -> None:
     """Work until the descriptor source ends. A reader that does not read loses lines, counted."""
-    os.set_blocking(sink, False)
+    speaker, listener = Speaker(sink), Listener(source)
     receiver.client.watch(source)
-    said_ns, unsaid, problem = 0, 0, ""
-    while not select.select([source], [], [], 0)[0]:
+    said_ns, problem = 0, ""
+    untold: list[dict[str, object]] = []
+    while speaker.heard and not listener.ended:
         readings = receiver.work(SAY_S)
         due = now_ns() - said_ns >= SAY_S * 1e9 or receiver.problem != problem
         nothing: list[Reading | None] = [None] if due else []
         for reading in readings or nothing:
             said_ns, problem = now_ns(), receiver.problem
-            try:
-                os.write(sink, line_of(reading, receiver, unsaid))
-            except BlockingIOError:
-                unsaid += 1
-            except BrokenPipeError:
-                return
+            speaker.say(line_of(reading, receiver, speaker.unsaid))
+        asked = listener.requests()
+        if keeper is not None:
+            untold = _kept(keeper, asked, now_ns(), untold, speaker)
+
+
+def _kept(
+    keeper: Keeper,
+    asked: Sequence[dict[str, object]],
+    now_ns: int,
+    untold: list[dict[str, object]],
+    speaker: Speaker,
+) -> list[dict[str, object]]:
+    """Serve the keeper; what became of a request is said until it is heard."""
+    for request in asked:
+        keeper.ask(request)
+    keeper.turn(now_ns)
+    untold = untold + keeper.said()
+    while untold and speaker.say(json.dumps(untold[0]).encode() + b"\n"):
+        untold = untold[1:]
+    return untold
 
 
 def _boot_ns() -> int:
@@ -86,11 +161,13 @@ def _boot_ns() -> int:
 
 def main(arguments: Sequence[str]) -> None:
     """The process; arguments as in sys.argv."""
-    receiver = receiver_of(arguments[1], _boot_ns)
+    receiver, keeper = receiver_of(arguments[1], _boot_ns)
     try:
-        run(receiver, _boot_ns, 0, 1)
+        run(receiver, _boot_ns, 0, 1, keeper)
     finally:
         receiver.close()
+        if keeper is not None:
+            keeper.close()
 
 
 if __name__ == "__main__":

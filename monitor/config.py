@@ -53,6 +53,11 @@ class Site:
         """The control socket, beside the record."""
         return self.record_path.with_suffix(".sock")
 
+    @property
+    def evidence_path(self) -> Path:
+        """The folder of recordings, beside the record."""
+        return self.record_path.with_suffix(".iq")
+
 
 def default_site_path(explicit: Path | str | None = None) -> Path:
     """The site file to use: the one asked for, $FIELDSILL_SITE, ./site.toml, /etc/fieldsill's.

@@ -16,6 +16,7 @@ from monitor.core.judgement import MINUTE_NS
 from monitor.core.readings import NS_PER_S, Batch, DeviceStatus, FrontEnd
 from monitor.core.rows import Event
 from monitor.core.station import Station
+from monitor.evidence import evidence_of
 from monitor.fixes import Clock, Fixes
 from monitor.marking import NOTHING, Standing, marked
 from monitor.record.background import WriterThread
@@ -57,6 +58,7 @@ class Daemon:
         self._history_ns = None if history_s is None else round(history_s * NS_PER_S)
         self._standing = standing
         self._bulk_ns = state.front_ns
+        self._evidence = evidence_of(front, site, here)
         self._spool = Spool()
         if rows is not None:
             self._spool.add_rows(rows)
@@ -130,6 +132,7 @@ class Daemon:
             self._heard_ns = self._clock.boot_ns()
         for event in out.events:
             self._desk.apply(event)
+        self._keep_evidence(out.events)
         self._spool.add(batch, out)
 
     def _after_the_end_ns(self, batch: Batch) -> int:
@@ -137,6 +140,13 @@ class Daemon:
         last = int(batch.times_ns[-1]) if batch.n else self._state.last_ns
         end = max(batch.now_ns, last + self._here.hold_ns)
         return -(-end // MINUTE_NS) * MINUTE_NS
+
+    def _keep_evidence(self, events: Sequence[Event]) -> None:
+        now_ns = self._clock.boot_ns()
+        offset_ns = self._fixes.offset_ns if self._fixes.synchronised else None
+        self._evidence.notice(events, offset_ns, now_ns)
+        for event in self._evidence.events(self._state.front_ns, now_ns):
+            self._spool.event(event)
 
     def _tell_device(self) -> None:
         """Events for what the device does, at most one a minute for mere text."""

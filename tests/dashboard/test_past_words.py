@@ -8,6 +8,7 @@ import re
 from pathlib import Path
 
 import numpy as np
+import pytest
 
 from dashboard import chart, events, past, span
 from dashboard.words import utc_of
@@ -150,3 +151,23 @@ def test_a_point_is_below_only_where_all_of_its_averages_are() -> None:
     mixed = dataclasses.replace(none, flags=flags, u_db=u_db, bin_ns=1800 * S)
     assert past.series_of(mixed, None, NOON_NS).below.tolist() == np.isnan(u_db).tolist()
     assert not past.series_of(none, None, NOON_NS).below.any()
+
+
+@pytest.mark.parametrize(
+    ("name", "body", "what", "text"),
+    [
+        ("000007-x_y", {"bytes": 4_900_000, "covers": True}, "Recording kept",
+         "000007-x_y, 4.9 MB, of the samples when an alarm began"),
+        ("000007-x", {"bytes": 4_900_000, "covers": False}, "Recording kept",
+         "000007-x, 4.9 MB, of the samples when an alarm began; the moment itself was no longer "
+         "there"),
+        ("000001-x", {"removed": True, "bytes": 4_900_000, "why": "the budget is full"},
+         "Recording removed", "000001-x, 4.9 MB; the budget is full"),
+        ("", {"why": "no samples came"}, "Recording", "not kept: no samples came"),
+        ("000007-x", {"bytes": "many"}, "Recording kept",
+         "000007-x, of the samples when an alarm began"),
+    ],
+)  # fmt: skip
+def test_what_became_of_recordings_in_words(name, body, what, text) -> None:
+    line = events.line(EventRow(DAY_NS, 3, 0, "evidence", name, body))
+    assert (line.what, line.text) == (what, text)

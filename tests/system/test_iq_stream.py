@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import hashlib
 import json
 import os
 import re
@@ -258,3 +259,32 @@ def test_bands_far_apart_are_swept_and_the_record_tells_how_little_was_observed(
     share = blocks.observed_ns[whole] / blocks.covered_ns[whole]
     # a round is two places of 0.25 s, a dwell of 0.2 s and up to as much again before it
     assert ((0.1 < share) & (share < 0.25)).all()
+
+
+def test_a_crossed_level_leaves_a_recording_that_the_record_vouches_for(place):
+    """Source: hashes by hashlib; the level is so low that the simulated air is above it."""
+    site = (place / "site.toml").read_text()
+    (place / "site.toml").write_text(
+        filled(site, {"ratio = 0.1": "ratio = 1e-9", "returns_at = 0.08": "returns_at = 1e-10"})
+    )
+    daemon = start("measure", "--site", place / "site.toml")
+    folder = place / "watch.iq"
+    try:
+        wait_for(lambda: folder.is_dir() and any(folder.glob("*.sigmf-meta")), 30)
+        time.sleep(1.0)
+    finally:
+        ended(daemon)
+    with Record.open(place / "watch.db") as record:
+        events = record.events()
+    kept = [one for one in events if one.kind == "evidence"]
+    assert len(kept) == 1
+    data = (folder / f"{kept[0].name}.sigmf-data").read_bytes()
+    meta = (folder / f"{kept[0].name}.sigmf-meta").read_bytes()
+    assert kept[0].body["sha256"] == hashlib.sha256(data).hexdigest()
+    assert kept[0].body["meta_sha256"] == hashlib.sha256(meta).hexdigest()
+    alarms = {one.name for one in events if one.kind == "alarm" and one.body["raised"]}
+    assert set(kept[0].body["alarms"]) <= alarms
+    document = json.loads(meta)
+    assert document["global"]["fieldsill:simulated"] is True
+    labels = {one["core:label"] for one in document["annotations"]}
+    assert labels >= {"lower carrier", "upper carrier"}
