@@ -78,11 +78,11 @@ class Ratio:
 
     @property
     def stands(self) -> float | None:
-        """The figure that is said first; None where there is none."""
+        """The figure that is said first, with U counted in a bound; None where there is none."""
         if self.kind is Kind.NONE:
             return None
         if self.kind is Kind.AT_LEAST:
-            return self.low
+            return self.bottom
         if self.kind is Kind.BELOW:
             return self.mean if self.high is None else self.high
         return self.low if self.mean is None else self.mean

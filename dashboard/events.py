@@ -64,7 +64,7 @@ def _alarm(event: EventRow, name: str) -> tuple[str, str]:
     lone = "ratio_mean" in event.body and bounds.number(event.body, "ratio_mean") is None
     if low is not None and (lone or (share is not None and not share >= ENOUGH_SHARE)):
         part = "" if share is None else f"; {words.share(share)} of the averaging time is valid"
-        return name, f"went over, at least {words.rounded_down(low)} of the limit{part}"
+        return name, f"went over, at {words.rounded_down(low)} of the limit, gaps as nothing{part}"
     return name, f"went over, at {words.ratio_figure(crossed)} of the limit"
 
 

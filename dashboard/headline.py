@@ -49,9 +49,11 @@ def _measuring(live: Live, station: Station) -> Headline:
     above = [e for e in applying if live.ratio(e).exceeds]
     if above:
         worst = max(above, key=live.rank)
-        figure = told.figure(live.ratio(worst))
-        text = f"Above the limit {AT_ANTENNA}: {figure} of it"
-        spans = told.interval(live.ratio(worst))
+        ratio = live.ratio(worst)
+        text = f"Above the limit {AT_ANTENNA}"
+        if ratio.kind is not Kind.AT_LEAST or (ratio.stands or 0) > 1:
+            text += f": {told.figure(ratio)} of it"  # a verdict is one-sided, an interval is not
+        spans = told.interval(ratio)
         line = f"{title(worst)}: exceeds" + (f"; {spans}" if spans else "")
         return Headline("limit", text, (line, *_carried(live)))
     near = [e for e in applying if not live.ratio(e).window.thin and live.rank(e) >= 1]

@@ -60,8 +60,12 @@ def _largest(at_ns: int, index: int, wish: Wish, found: History, record: RecordL
         "flags": flags.words(int(found.flags[index])),
     }
     if wish.show == "e":
-        return f"{told.e_words({**row, 'e_low': low, 'e_mean': mean, 'e_high': high}, ())} V/m"
+        u = {"u_db": found.base_u_db[index], "added_e2": found.added_e2[index]}
+        return f"{told.e_words({**row, **u, 'e_low': low, 'e_mean': mean, 'e_high': high}, ())} V/m"
     exposure = {**row, "ratio_low": low, "ratio_mean": mean, "ratio_high": high}
+    if scope is not None and scope in found.ratio_u:
+        u_db, added = found.ratio_u[scope]
+        exposure |= {"u_db": u_db[index], "added_ratio": added[index]}
     return told.of_limit(bounds.ratio(exposure, [row]))
 
 

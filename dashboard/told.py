@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping, Sequence
 from typing import Any
 
@@ -9,6 +10,7 @@ from dashboard import bounds, words
 from dashboard.bounds import Kind, Ratio, Window
 from monitor.core.interval import interval as within
 
+COUNTED = "U is counted in the bound"
 SEEN = "what is seen stays"
 """Of a part of the field: it is below its detection limit, the whole may not be."""
 
@@ -36,14 +38,18 @@ def of_limit(ratio: Ratio) -> str:
 
 
 def interval(ratio: Ratio) -> str:
-    """The interval in words; '' where there is no figure."""
+    """The interval in words, but for an end that the figure has said; '' where there is none."""
     bottom, top = ratio.bottom, ratio.top
     by = "gaps and expanded uncertainty" if ratio.u_db is not None else "gaps alone"
     said = ""
+    if ratio.kind is Kind.AT_LEAST or (bottom is not None and words.rounded_down(bottom) == "0"):
+        bottom = None  # said as the figure, or nothing that is worth saying
     if bottom is not None and top is not None:
         said = f"between {words.rounded_down(bottom)} and {words.rounded_up(top)}, by {by}"
-    elif bottom is not None:
-        said = f"not below {words.rounded_down(bottom)}, by {by}; how much more is not known"
+    elif ratio.kind is Kind.AT_LEAST and top is None:
+        said = f"by {by}; how much more is not known"
+    elif ratio.kind is Kind.BELOW and top is not None:
+        said = f"by {by}"
     elif top is not None:
         said = f"not above {words.rounded_up(top)}, by {by}"
     elif ratio.stands is not None:
@@ -69,7 +75,7 @@ def why(ratio: Ratio, reasons: Sequence[str]) -> list[str]:
     found = [str(reason) for reason in reasons[1:]]
     if ratio.mean is None and ratio.stands is not None:
         found.insert(0, "no moment is valid on every channel")
-    elif ratio.holds_limit and (ratio.kind is not Kind.AT_LEAST or (ratio.stands or 0) >= 1):
+    elif ratio.holds_limit and (ratio.kind is not Kind.AT_LEAST or (ratio.low or 0) >= 1):
         found.insert(0, "the interval holds the limit")
     return found or [str(reason) for reason in reasons[:1]]
 
@@ -119,12 +125,12 @@ def space_label(ratio: Ratio | None) -> str:
 
 
 def e_words(field: Mapping[str, Any], flags: Sequence[str]) -> str:
-    """The field strength of one averaging time, V/m."""
+    """The field strength of one averaging time, V/m; a bound has U counted."""
     low, mean, high = (bounds.number(field, f"e_{which}") for which in ("low", "mean", "high"))
     window = bounds.window(field, flags)
     kind = window.kind(low, mean)
     if kind is Kind.AT_LEAST and low is not None:
-        return f"at least {words.rounded_down(low)}"
+        return f"at least {words.rounded_down(_bottom(field, low))}"
     if kind is Kind.BELOW:
         most = mean if high is None else high
         return words.figure(None) if most is None else f"below {words.rounded_up(most)}"
@@ -135,23 +141,26 @@ def e_words(field: Mapping[str, Any], flags: Sequence[str]) -> str:
 
 
 def e_interval(field: Mapping[str, Any], flags: Sequence[str]) -> str:
-    """The interval of the field strength with U: what is said first, wider by U, in V/m."""
+    """The interval of the field strength with U, V/m; a bound that is said first has it already."""
     low, mean, high = (bounds.number(field, f"e_{which}") for which in ("low", "mean", "high"))
     u_db = bounds.number(field, "u_db")
     kind = bounds.window(field, flags).kind(low, mean)
     if u_db is None or kind in (Kind.NONE, Kind.OPEN):
         return "not stated"
-    added = bounds.number(field, "added_e2") or 0.0
-    if kind is Kind.AT_LEAST and low is not None:
-        bottom = float(within(low**2, low**2, u_db, added).low)
-        return f"not below {words.rounded_down(bottom**0.5)} V/m"
-    if kind is Kind.BELOW and high is not None:
-        return f"not above {words.rounded_up(high)} V/m"
+    if kind in (Kind.AT_LEAST, Kind.BELOW):
+        return COUNTED
     if mean is None:
         return "not stated"
+    added = bounds.number(field, "added_e2") or 0.0
     ends = within(mean**2, mean**2, u_db, added)
     least, most = (words.figure(float(end) ** 0.5) for end in ends)
     return f"{least} to {most} V/m"
+
+
+def _bottom(field: Mapping[str, Any], low: float) -> float:
+    """The lower end with U, V/m, as Ratio.bottom has it for a ratio."""
+    u_db, added = (bounds.number(field, key) or 0.0 for key in ("u_db", "added_e2"))
+    return math.sqrt(float(within(low**2, low**2, u_db, added).low))
 
 
 def e_spread(field: Mapping[str, Any], flags: Sequence[str]) -> str:

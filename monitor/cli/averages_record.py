@@ -4,14 +4,18 @@ from __future__ import annotations
 
 import math
 import re
+from decimal import ROUND_CEILING, ROUND_FLOOR, Context
 from pathlib import Path
 from typing import TYPE_CHECKING
 
 import click
+import numpy as np
+from numpy.typing import NDArray
 
 from monitor.cli.output import print_json
 from monitor.core import flags
 from monitor.core.errors import ConfigError
+from monitor.core.interval import interval
 from monitor.times import text_of, utc_ns_of
 
 if TYPE_CHECKING:
@@ -82,6 +86,7 @@ def _entries(history: History) -> list[dict[str, object]]:
         "e_high_v_per_m": history.e_high,
         "expanded_uncertainty_db": history.u_db,
         "widened_by_drift_db": history.widened_by_drift_db,
+        "at_least_v_per_m": _at_least(history),
     }
     rows = zip(history.utc_ns.tolist(), *(column.tolist() for column in columns.values()))
     return [
@@ -90,15 +95,21 @@ def _entries(history: History) -> list[dict[str, object]]:
     ]
 
 
+def _at_least(history: History) -> NDArray[np.float64]:
+    """Lower end of the interval with U (n,), V/m."""
+    e2_low = history.e_low**2
+    return np.sqrt(interval(e2_low, e2_low, history.base_u_db, history.added_e2).low)
+
+
 def _entry(end_ns: int, figures: dict[str, object], bits: int) -> dict[str, object]:
     """A window below its detection limit has no mean: it has what it is below of, unless logs were
     averaged, for then the field may lie above. One that is a lower bound has what it is at the
-    least; with fewer than three axes both are of the component."""
+    least with U counted; with fewer than three axes both are of the component."""
     below, above = bits & flags.UPPER_BOUND, bits & flags.LOWER_BOUND
     open_above = above & ~flags.Flag.COMPONENT_ONLY
     bound = {
         "below_v_per_m": figures["e_high_v_per_m"] if below and not open_above else None,
-        "at_least_v_per_m": figures["e_low_v_per_m"] if above and not below else None,
+        "at_least_v_per_m": figures["at_least_v_per_m"] if above and not below else None,
     }
     unknown = {"e_rms_v_per_m": None} if below else {}
     return {"end": text_of(end_ns), **figures, **unknown, **bound, "flags": flags.words(bits)}
@@ -108,9 +119,9 @@ def _line(row: dict[str, object]) -> str:
     names = ("e_low_v_per_m", "e_rms_v_per_m", "e_high_v_per_m", "e_max_v_per_m")
     said = {name: _figure(row[name]) for name in names}
     if row["below_v_per_m"] is not None:
-        said["e_rms_v_per_m"] = f"<{_figure(row['below_v_per_m'])}"
+        said["e_rms_v_per_m"] = f"<{_towards(row['below_v_per_m'], ROUND_CEILING)}"
     elif row["at_least_v_per_m"] is not None:
-        said["e_rms_v_per_m"] = f">={_figure(row['at_least_v_per_m'])}"
+        said["e_rms_v_per_m"] = f">={_towards(row['at_least_v_per_m'], ROUND_FLOOR)}"
         said["e_high_v_per_m"] = "-"  # by gaps and band alone; nothing bounds it above
     figures = " ".join(f"{said[name]:>9}" for name in names)
     words = list(row["flags"])  # type: ignore[call-overload]
@@ -121,6 +132,14 @@ def _line(row: dict[str, object]) -> str:
         f"{row['end']!s:>24} {figures}      {_figure(row['expanded_uncertainty_db']):>6}"
         f" {row['valid_share']:>7.1%}  {', '.join(words)}"
     )
+
+
+def _towards(value: object, rounding: str) -> str:
+    """A bound, never more than what is known."""
+    number = float(value)  # type: ignore[arg-type]
+    if not math.isfinite(number):
+        return "-"
+    return _figure(float(Context(prec=4, rounding=rounding).create_decimal_from_float(number)))
 
 
 def _figure(value: object) -> str:

@@ -59,8 +59,14 @@ class Standing:
 
     @property
     def ratio(self) -> float | None:
-        """The figure of the largest exposure ratio."""
+        """The figure by which boxes are ranked."""
         return None if self.largest is None else _rank(self.largest)
+
+    @property
+    def _told(self) -> float | None:
+        """The figure of the largest exposure ratio as it is said: a bound has U counted."""
+        bound = self.largest is not None and self.largest.kind is bounds.Kind.AT_LEAST
+        return self.largest.stands if bound and self.largest else self.ratio
 
     def document(self) -> dict[str, object]:
         """As JSON."""
@@ -71,7 +77,7 @@ class Standing:
             "text": self.text,
             "answering": self.live,
             "simulated": self.simulated,
-            "largest_exposure_ratio": self.ratio,
+            "largest_exposure_ratio": self._told,
             "largest_is": None if self.largest is None else str(self.largest.kind),
             "not_judged": NOT_JUDGED,
             "now": dict(self.now),

@@ -34,9 +34,10 @@ def field(row: Row, carried: list[str]) -> str:
     e = told.e_words(row, carried)
     if e == words.figure(None):
         return f"{_minutes(row)}   E: {e}"
+    interval = told.e_interval(row, carried)
+    with_u = interval if interval == told.COUNTED else f"with U {interval}"
     return (
-        f"{_minutes(row)}   E {e} V/m, "
-        f"with U {told.e_interval(row, carried)}, "
+        f"{_minutes(row)}   E {e} V/m, {with_u}, "
         f"largest reading {_figure(row, 'e_max')} V/m, U {_figure(row, 'u_db')} dB, "
         f"valid share {words.share(bounds.number(row, 'valid_share'))}"
     )

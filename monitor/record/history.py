@@ -26,6 +26,7 @@ _VALUES = "e2_low, e2_mean, e2_high, e2_max, u_db, valid_share, flags"
 _ADDED = {"fields": "added_e2", "field_spans": "0.0"}
 """A span keeps the largest total of its windows; of a window it is still to be made."""
 _RATIOS = "scope, ratio_low, ratio_mean, ratio_high"
+_RATIO_U = {"exposures": "u_db, added_ratio", "exposure_spans": "NULL, NULL"}
 _OF_AVERAGING = "scope IN (SELECT scope FROM scopes WHERE averaging_s = ?4)"
 _DAYS = (
     "WITH RECURSIVE days (d) AS (SELECT ?2 UNION ALL SELECT d + 1 FROM days WHERE d < ?3) "
@@ -53,7 +54,9 @@ def _spans(unit_ns: int, query: str, key: str) -> _Source:
     fields = query.format(
         f"{key}, end_ns, {_VALUES}, {_ADDED['field_spans']}", "field_spans", "averaging_s = ?4"
     )
-    ratios = query.format(f"{key}, end_ns, {_RATIOS}", "exposure_spans", _OF_AVERAGING)
+    ratios = query.format(
+        f"{key}, end_ns, {_RATIOS}, {_RATIO_U['exposure_spans']}", "exposure_spans", _OF_AVERAGING
+    )
     return _Source(unit_ns, fields, ratios)
 
 
@@ -65,7 +68,9 @@ _SOURCES = (
         _WINDOWS.format(
             f"end_ns, end_ns, {_VALUES}, {_ADDED['fields']}", "fields", "averaging_s = ?4"
         ),
-        _WINDOWS.format(f"end_ns, end_ns, {_RATIOS}", "exposures", _OF_AVERAGING),
+        _WINDOWS.format(
+            f"end_ns, end_ns, {_RATIOS}, {_RATIO_U['exposures']}", "exposures", _OF_AVERAGING
+        ),
     ),
 )
 """Coarse to fine: bins at least half as wide as the unit are drawn from its extremes."""
@@ -73,6 +78,8 @@ _EXTENT = (
     "SELECT (SELECT min(end_ns) FROM fields WHERE derivation = 0 AND boot = ?1), "
     "(SELECT max(end_ns) FROM fields WHERE derivation = 0 AND boot = ?1)"
 )
+_OF_RATIO = ("ratio_low", "ratio_mean", "ratio_high", "ratio_u_db", "ratio_added")
+_RAISED = ("e2_mean", "e2_high", "ratio_mean", "ratio_high")
 _SMALLEST = ("e2_low", "valid_share", "ratio_low")
 
 Column = NDArray[Any]
@@ -132,16 +139,18 @@ def _of_boot(
     values = (boot.boot, start, end, averaging_s)
     with closing(db.execute(source.fields, values)) as cursor:
         key, ends, *fields, flags, added = columns(cursor, "iiffffffif")
+    base_u_db = fields[4]
     fields[4] = total_db(fields[4], fields[1], added, flags if not source.unit_ns else 0)
     with closing(db.execute(source.ratios, values)) as cursor:
-        judged, judged_ends, scope, *ratios = columns(cursor, "iiifff")
+        judged, judged_ends, scope, *ratios = columns(cursor, "iiifffff")
     keys = np.union1d(key, judged)
     utc = np.zeros(keys.size, np.int64)
     utc[np.searchsorted(keys, judged)] = judged_ends
     utc[np.searchsorted(keys, key)] = ends
     table: Table = {"utc_ns": np.clip(utc + offset, span[0] + 1, span[1])}
     place = np.searchsorted(keys, key)
-    for name, column in zip((*_E2, "u_db", "valid_share"), fields):
+    named = zip((*_E2, "u_db", "valid_share"), fields)
+    for name, column in (*named, ("base_u_db", base_u_db), ("added_e2", added)):
         table[name] = _placed(keys.size, place, column)
     start_ns = keys * (source.unit_ns or 1) - averaging_s * NS_PER_S
     end_ns = (keys + 1) * source.unit_ns if source.unit_ns else keys
@@ -152,15 +161,24 @@ def _of_boot(
     bound = (table["flags"] & int(UPPER_BOUND)) != 0
     # the mean of a row that stands for several is a bound only where none of them has a U
     mean_too = bound & np.isnan(table["u_db"])
-    table["e2_high"] = raised(table["e2_high"], bound, drift_db)
-    table["e2_mean"] = raised(table["e2_mean"], mean_too, drift_db)
+    table |= _of_scopes(keys, judged, scope, ratios)
+    for name, column in table.items():
+        kind = name.split()[0]
+        if kind in ("base_u_db", "ratio_u_db"):
+            table[name] = widened(db, held, boot.boot, start_ns, end_ns, column)[0]
+        elif kind in _RAISED:
+            table[name] = raised(column, mean_too if "mean" in kind else bound, drift_db)
+    return table
+
+
+def _of_scopes(keys: I, judged: I, scope: I, ratios: Sequence[Column]) -> Table:
+    """The columns of every scope, one row for each key."""
+    table: Table = {}
     for number in np.unique(scope).tolist():
         rows = scope == number
         place = np.searchsorted(keys, judged[rows])
-        for name, column in zip(("ratio_low", "ratio_mean", "ratio_high"), ratios):
+        for name, column in zip(_OF_RATIO, ratios):
             table[f"{name} {number}"] = _placed(keys.size, place, column[rows])
-        for name, held_by in ((f"ratio_mean {number}", mean_too), (f"ratio_high {number}", bound)):
-            table[name] = raised(table[name], held_by, drift_db)
     return table
 
 
@@ -212,9 +230,12 @@ def _as_history(
             n: (column(f"ratio_low {n}"), column(f"ratio_mean {n}"), column(f"ratio_high {n}"))
             for n in numbers
         },
+        ratio_u={n: (column(f"ratio_u_db {n}"), column(f"ratio_added {n}")) for n in numbers},
         gaps=measured.gaps(*span),
         bin_ns=bin_ns,
         measured_share=measured.share(span[0], min(span[1], measured.until_ns)),
         coverage=measured,
         widened_by_drift_db=column("widened_by_drift_db"),
+        base_u_db=column("base_u_db"),
+        added_e2=column("added_e2"),
     )

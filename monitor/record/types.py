@@ -148,6 +148,9 @@ class History:
     are the smallest in the bin, all else the largest, and flags are those of any window in it.
     u_db: expanded uncertainty of the mean with all that adds; nan below the detection limit.
     widened_by_drift_db: the drift of the calibration, found later, that is in u_db; 0 where none.
+    base_u_db, added_e2: expanded uncertainty of what multiplies and of what adds to E squared, for
+    the ends of an interval; ratio_u: the same two of each scope's ratio, nan where each point is an
+    hour or a day.
     measured_share: of the span up to the last sign of life in the record; coverage answers the
     same for any part of the span.
     """
@@ -167,3 +170,6 @@ class History:
     measured_share: float = math.nan
     coverage: Coverage = field(default_factory=Coverage)
     widened_by_drift_db: F = field(default_factory=lambda: np.empty(0))
+    base_u_db: F = field(default_factory=lambda: np.empty(0))
+    added_e2: F = field(default_factory=lambda: np.empty(0))
+    ratio_u: Mapping[int, tuple[F, F]] = field(default_factory=dict)

@@ -60,7 +60,7 @@ def test_every_window_with_its_three_figures(
         "e_low_v_per_m": pytest.approx(2.5),
         "e_high_v_per_m": pytest.approx(10.0),
         "below_v_per_m": None,
-        "at_least_v_per_m": pytest.approx(2.5),
+        "at_least_v_per_m": pytest.approx(2.5 / 10**0.125),  # with U of 2.5 dB
         "expanded_uncertainty_db": pytest.approx(2.5),
         "widened_by_drift_db": 0.0,
         "flags": ["converter clipped"],
@@ -132,10 +132,11 @@ def test_below_the_detection_limit_it_says_below_and_no_mean(
 def test_a_lower_bound_has_no_highest_figure(
     capsys: pytest.CaptureFixture[str], record: Path
 ) -> None:
-    """By hand: low 2.5, high 10, largest 15 V/m; a clipped converter hides how much more it was."""
+    """By hand: low 2.5 / 10^(2.5 / 20) with U, rounded down, high 10, largest 15 V/m;
+    a clipped converter hides how much more it was."""
     out = run(capsys, ["averages", "--record", record]).out
     row = next(line for line in out.splitlines() if FIRST in line)
-    assert row.split()[1:5] == ["2.5", ">=2.5", "-", "15"]
+    assert row.split()[1:5] == ["2.5", ">=1.874", "-", "15"]
 
 
 @pytest.mark.parametrize("option", ["--every", "--hold"])

@@ -157,17 +157,18 @@ def _exposure(**changes: object) -> list[dict[str, object]]:
         (
             {"flags": ["converter clipped"]},
             [
-                "ratio at least 0.10 (not below 0.061,",
-                "E at least 1.00 V/m, with U not below 0.74 V/m",
+                # 0.1 / 10^(2.1 / 10) and 1 / 10^(2.5 / 20), rounded down
+                "ratio at least 0.061 (by gaps and expanded uncertainty; how much more",
+                "E at least 0.74 V/m, U is counted in the bound",
             ],
         ),
         (
             {"flags": ["below the detection limit"]},
-            ["ratio below 0.30 (not above 0.30,", "E below 2.0 V/m, with U not above 2.0 V/m"],
+            ["ratio below 0.30 (by gaps and", "E below 2.0 V/m, U is counted in the bound"],
         ),
         (
             {"exposures": _exposure(ratio_low=27.0, ratio_mean=None, verdict="exceeds")},
-            ["ratio at least 27 (", "a limit is exceeded"],
+            ["ratio at least 16 (", "a limit is exceeded"],
         ),
         (
             {"exposures": _exposure(ratio_low=0.9, ratio_mean=1.1, ratio_high=1.2)},
@@ -192,8 +193,9 @@ def test_a_figure_without_a_mean_ranks_by_its_lower_bound(tmp_path: Path) -> Non
     line = _run(tmp_path).output.splitlines()[0]
     document = json.loads(_run("--record", path, "--json").output)
     server.close()
-    assert "ratio at least 27" in line
-    assert (document["largest_exposure_ratio"], document["largest_is"]) == (27.0, "at_least")
+    assert "ratio at least 16" in line
+    assert document["largest_is"] == "at_least"
+    assert document["largest_exposure_ratio"] == pytest.approx(27.0 / 10**0.21)  # U 2.1 dB
 
 
 def _told(tmp_path: Path, **changes: object) -> str:

@@ -201,6 +201,8 @@ class FakeRecord:
             },
             [gap] if start_utc_ns < gap[1] and end_utc_ns > gap[0] else [],
             0,
+            base_u_db=np.full(t.size, 2.6),
+            added_e2=np.zeros(t.size),
         )  # fmt: skip
 
 

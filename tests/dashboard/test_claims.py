@@ -105,7 +105,7 @@ def test_above_the_limit_only_where_it_is_exceeded(tmp_path: Path) -> None:
 def test_little_valid_data_is_said_before_its_figure(tmp_path: Path) -> None:
     now = edited(snapshot(1.4), ratio_low=0.0039, verdict="undecided", f_valid_share=5.5 / 1800)
     heading = _heading(now, tmp_path)
-    assert "Only 5 s of 30 min are valid; at least 0.0039 of the limit" in heading
+    assert "Only 5 s of 30 min are valid; at least 0.0024 of the limit" in heading
     assert "bove the limit" not in heading
     assert "1.4 in the 5 s of 30 min that are valid" in _page(now, tmp_path)
 
@@ -140,6 +140,18 @@ def test_the_drawn_limit_is_the_worst_known_with_or_without_a_mean(tmp_path: Pat
     assert "47 CFR 1.1310, general public, whole body, 30 min The ledge" in _page(now, tmp_path)
 
 
+def test_an_end_at_nothing_is_left_out() -> None:
+    now = edited(snapshot(0.3), ratio_low=0.0, ratio_high=0.4, u_db=TWICE_DB)
+    assert told.interval(_ratio(now)) == "not above 0.81, by gaps and expanded uncertainty"
+
+
+def test_a_verdict_stands_without_a_figure_below_the_limit(tmp_path: Path) -> None:
+    """1.2 less 1.64 u of 0.45 dB is above 1, less U of 0.9 dB below: the verdict is one-sided."""
+    heading = _heading(edited(dead_axis(1.2), u_db=0.9), tmp_path)
+    assert "Above the limit at the monitor's antenna" in heading
+    assert "at least" not in heading
+
+
 @pytest.mark.parametrize("flag", LOWER)
 @pytest.mark.parametrize("place", ["snapshot", "field"])
 def test_a_lower_bound_is_never_below_a_level(flag: str, place: str, tmp_path: Path) -> None:
@@ -149,10 +161,12 @@ def test_a_lower_bound_is_never_below_a_level(flag: str, place: str, tmp_path: P
     page = _page(now, tmp_path)
     heading = page.split("Alarms")[0]
     assert "Below" not in heading
-    assert "At least 0.30 of the limit" in heading
+    assert "At least 0.19 of the limit" in heading  # 0.31 * 0.98 / 10^(2.0 / 10), U counted
     assert "a lower bound: it cannot be said to be below the alert levels" in heading
     assert "how much more is not known" in page
-    assert "at least 22 V/m" in page
+    assert "at least 16 V/m" in page  # 22.05 / 10^(2.6 / 20), U counted
+    assert "U is counted in the bound" in page
+    assert "not below" not in page
     assert "22 V/m; highest not known" in page
     assert "The line is what is known at the least" in page
 
@@ -223,11 +237,16 @@ def test_an_alarm_in_the_past_claims_what_was_sure_then() -> None:
         "valid_share": 0.375,
     }  # fmt: skip
     said = line(EventRow(0, 1, 0, "alarm", "half", body)).text
-    assert said == "went over, at least 0.52 of the limit; 37 % of the averaging time is valid"
+    assert (
+        said
+        == "went over, at 0.52 of the limit, gaps as nothing; 37 % of the averaging time is valid"
+    )
     enough = line(EventRow(0, 1, 0, "alarm", "half", {**body, "valid_share": 0.9})).text
     assert enough == "went over, at 1.4 of the limit"
     lone = {**body, "ratio_mean": None, "ratio_low": 27.0, "exposure_ratio": 27.0}
-    assert "at least 27 of the limit" in line(EventRow(0, 1, 0, "alarm", "half", lone)).text
+    assert (
+        "at 27 of the limit, gaps as nothing" in line(EventRow(0, 1, 0, "alarm", "half", lone)).text
+    )
 
 
 @pytest.mark.parametrize(

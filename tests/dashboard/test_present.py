@@ -95,7 +95,7 @@ def test_an_average_of_little_data_is_said_in_the_heading(tmp_path: Path) -> Non
     for one in thin["fields"]:
         one["valid_share"] = 0.05
     heading = _heading(_page(thin, tmp_path))
-    assert "Only 90 s of 30 min are valid; at least 0.098 of the limit" in heading
+    assert "Only 90 s of 30 min are valid; at least 0.061 of the limit" in heading
     assert "gaps leave the rest open" in heading
     assert "Below" not in heading
     assert "Only 5 % of the six-minute average is valid." in heading

@@ -59,6 +59,9 @@ def test_every_window_where_they_fit(writer: Writer) -> None:
     assert np.allclose(found.e_max**2, 3 * e2, rtol=1e-15)
     assert np.array_equal(found.ratios[1][1], e2 / 100)
     assert list(found.ratios) == [1]
+    assert [set(column.tolist()) for column in found.ratio_u[1]] == [{1.5}, {0.0}]
+    assert np.array_equal(found.base_u_db, found.u_db)  # nothing adds in these rows
+    assert not found.added_e2.any()
     assert found.gaps == []
     assert other.utc_ns.size == 0
     assert other.gaps == []  # a gap is one whatever the averaging time
