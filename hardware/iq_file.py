@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import BinaryIO, ClassVar
 
@@ -19,7 +19,7 @@ from monitor.core.errors import ConfigError, DeviceError
 from monitor.core.flags import Flag
 from monitor.core.keys import REQUIRED, Table
 from monitor.core.readings import MISSING, NS_PER_S, Batch, DeviceStatus, FrontEnd, empty_batch
-from monitor.core.sigmf import IqFormat
+from monitor.core.sigmf import DATA, IqFormat
 from monitor.core.spectrum import (
     DATATYPES,
     BandAccumulator,
@@ -40,7 +40,7 @@ Bands = tuple[tuple[float, float], ...]
 class Settings:
     """Options of [sensor] for an I/Q file. bands: (low, high) in Hz from centre_hz, per channel.
 
-    start_utc_ns: of the first sample; start_source: where that was found.
+    start_utc_ns: of the first sample; start_source: where that was found. form: what the file says.
     """
 
     file: Path
@@ -53,8 +53,7 @@ class Settings:
     interval_s: float
     start_utc_ns: int
     start_source: str
-    skip_bytes: int
-    trailing_bytes: int
+    form: IqFormat
     real_pace: bool
     resolution: ClassVar[float | None] = 1.0 / COUNTS_PER_DB
 
@@ -95,8 +94,15 @@ class Settings:
 
 def settings_from(table: Table, folder: Path) -> Settings:
     """Settings from the options; ConfigError about each wrong key, DeviceError without the file."""
-    data, form = sigmf.find(existing_file(table, "file", folder))
+    capture = table.any("capture", None)
+    if capture is not None:
+        capture = table.whole("capture", 0, 0, 1 << 31)
+    data, form = sigmf.find(existing_file(table, "file", folder), capture)
     known = form or IqFormat("")
+    if data.suffix != DATA:
+        known = replace(known, header_bytes=table.whole("header_bytes", 0, 0, 1 << 31))
+        if capture is not None:
+            raise table.error("capture", f"{data.name} has no header with captures; leave it out")
     datatype = table.text("datatype", known.datatype or REQUIRED, tuple(DATATYPES))
     rate_hz = _agreed(table, "rate_hz", known.rate_hz)
     fft = table.whole("fft", 1024, 8, 1 << 20)
@@ -112,8 +118,7 @@ def settings_from(table: Table, folder: Path) -> Settings:
         interval_s=table.number("interval_s", INTERVAL_S, fft / rate_hz, 3600.0),
         start_utc_ns=start_utc_ns,
         start_source=source,
-        skip_bytes=known.header_bytes,
-        trailing_bytes=known.trailing_bytes,
+        form=known,
         real_pace=pace(table),
     )
     _accumulator(settings, table)
@@ -178,9 +183,9 @@ class IqFile:
         self._size = bytes_per_sample(settings.datatype)
         self._interval = max(settings.fft, round(settings.interval_s * settings.rate_hz))
         self._file = _opened(settings.file)
-        end = self._file.seek(0, 2) - settings.trailing_bytes
-        self._file.seek(settings.skip_bytes)
-        self._samples = max(0, end - settings.skip_bytes) // self._size
+        first, end = settings.form.span(self._file.seek(0, 2))
+        self._file.seek(first)
+        self._samples = (end - first) // self._size
         self._at = 0
         self._now_ns = 0
         self._ended = False
@@ -244,7 +249,7 @@ class IqFile:
         result = accumulator.result()
         self._counters["samples"] += result.samples
         self._counters["clipped_components"] += clipped
-        return result.power, clipped
+        return result.power * self._settings.form.scale**2, clipped
 
     def _take(self, size: int) -> bytes:
         try:

@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 
 import click
 
 from monitor import iqfile
 from monitor.cli.output import print_json
+from monitor.core.bandpower import BandFigures, Engine
 from monitor.core.errors import ConfigError
 from monitor.core.limits import frequency_text
 from monitor.core.quantities import frequency_hz, split_unit
@@ -27,13 +28,22 @@ RAW = (
     "raw figures relative to full scale: no mean, DC or quantisation correction; without a"
     " calibration and a fixed gain they say nothing about a field strength"
 )
+CORRECTED = (
+    "corrected: the offset and the converter's rounding noise taken off, three bins to each side of"
+    " the centre left out and made good from the rest of the band"
+)
+SPIKE_BINS = 3
 
 
 @dataclass(frozen=True, slots=True)
 class Measured:
-    """What was found in a file. clipped: share of components at a rail; None without a rail."""
+    """What was found in a file. clipped: share of components at a rail; None without a rail.
+
+    corrected: None unless asked for.
+    """
 
     powers: BandPowers
+    corrected: BandFigures | None
     clipped: float | None
     half_sample: bool
 
@@ -48,6 +58,9 @@ class Measured:
 @click.option(
     "--overlap", default=0.5, show_default=True, help="Overlap of segments, 0 to below 1."
 )
+@click.option("--capture", type=int, help="Number of a SigMF capture, from 0; else all.")
+@click.option("--header-bytes", type=click.IntRange(0), help="To skip before the samples.")
+@click.option("--corrected", is_flag=True, help="Also band powers as the live engine finds them.")
 @click.option("--json", "as_json", is_flag=True, help="One JSON document.")
 def command(
     file: Path,
@@ -57,17 +70,22 @@ def command(
     bands: tuple[str, ...],
     fft: int,
     overlap: float,
+    capture: int | None,
+    header_bytes: int | None,
+    corrected: bool,
     as_json: bool,
 ) -> None:
     """Total and band powers of recorded I/Q, in dBFS; the peak is that of the strongest segment."""
-    path, form = iqfile.open_format(file, datatype)
+    path, form = iqfile.open_format(file, datatype, capture, header_bytes)
     rate_hz = frequency_hz(rate) if rate else form.rate_hz
     centre_hz = frequency_hz(centre) if centre else form.centre_hz
     spans = [_band(text) for text in bands]
     if spans and rate_hz is None:
         raise ConfigError(f"{path}: the sampling rate is not known; give --rate, e.g. 2.4MHz")
     # Without bands the rate only sets the scale of an axis that nobody asks for.
-    measured = _measure(path, form, BandAccumulator(rate_hz or 1.0, spans, fft, overlap))
+    accumulator = BandAccumulator(rate_hz or 1.0, spans, fft, overlap)
+    engine = _engine(form, rate_hz, spans, fft) if corrected else None
+    measured = _measure(path, form, accumulator, engine)
     _check(path, measured, bool(spans), fft)
     document = _document(measured, spans, rate_hz, centre_hz, form)
     if as_json:
@@ -88,16 +106,40 @@ def _offset_hz(text: str) -> float:
     return math.copysign(frequency_hz(f"{abs(value)}{unit}"), value) if value else 0.0
 
 
-def _measure(path: Path, form: IqFormat, accumulator: BandAccumulator) -> Measured:
+def _engine(
+    form: IqFormat, rate_hz: float | None, spans: list[tuple[float, float]], fft: int
+) -> Engine:
+    if rate_hz is None or not spans:
+        raise ConfigError("--corrected: give --band, and --rate where the file does not tell it")
+    spike_hz = SPIKE_BINS * rate_hz / fft
+    return Engine(rate_hz, spans, datatype=form.datatype, fft=fft, excluded_hz=spike_hz)
+
+
+def _measure(
+    path: Path, form: IqFormat, accumulator: BandAccumulator, engine: Engine | None
+) -> Measured:
     clipped = components = left = 0
     width = bytes_per_sample(form.datatype)
     for piece in iqfile.pieces(path, form):
         hits, total = clipped_components(piece, form.datatype)
         clipped, components, left = clipped + hits, components + total, len(piece) % width
         accumulator.add(samples_from_bytes(piece, form.datatype))
+        if engine is not None:
+            engine.add(piece)
     rails = datatype_of(form.datatype).rails
     share = clipped / components if rails is not None and components else None
-    return Measured(accumulator.result(), share, left > 0)
+    found = engine.result() if engine else None
+    return Measured(_scaled(accumulator.result(), form.scale), found, share, left > 0)
+
+
+def _scaled(powers: BandPowers, scale: float) -> BandPowers:
+    square = scale**2
+    return replace(
+        powers,
+        power=powers.power * square,
+        peak=powers.peak * square,
+        total_power=powers.total_power * square,
+    )
 
 
 def _check(path: Path, measured: Measured, with_bands: bool, fft: int) -> None:
@@ -124,16 +166,22 @@ def _document(
     form: IqFormat,
 ) -> dict[str, object]:
     powers = measured.powers
+    bands: list[dict[str, float]] = [
+        {
+            "low_hz": low,
+            "high_hz": high,
+            "power_dbfs": _dbfs(float(power)),
+            "peak_dbfs": _dbfs(float(peak)),
+        }
+        for (low, high), power, peak in zip(spans, powers.power, powers.peak)
+    ]
+    if measured.corrected is not None:
+        figures = measured.corrected
+        for band, power, share in zip(bands, figures.power, figures.usable_share):
+            band["corrected_dbfs"] = _dbfs(float(power) * form.scale**2)
+            band["usable_share"] = float(share)
     return {
-        "bands": [
-            {
-                "low_hz": low,
-                "high_hz": high,
-                "power_dbfs": _dbfs(float(power)),
-                "peak_dbfs": _dbfs(float(peak)),
-            }
-            for (low, high), power, peak in zip(spans, powers.power, powers.peak)
-        ],
+        "bands": bands,
         "total_power_dbfs": _dbfs(powers.total_power),
         "clipped_fraction": measured.clipped,
         "samples": powers.samples,
@@ -142,12 +190,16 @@ def _document(
         "datatype": form.datatype,
         "rate_hz": rate_hz,
         "centre_hz": centre_hz,
-        "notes": _notes(measured),
+        "notes": _notes(measured, form),
     }
 
 
-def _notes(measured: Measured) -> list[str]:
+def _notes(measured: Measured, form: IqFormat) -> list[str]:
     notes = [RAW]
+    if measured.corrected is not None:
+        notes.append(CORRECTED)
+    if form.scale != 1.0:
+        notes.append(f"stored values were multiplied by {form.scale:g}, as the metadata say")
     if measured.clipped:
         notes.append(
             f"the converter was at its rails in {measured.clipped:.3g} of all components: every"
@@ -171,11 +223,13 @@ def _print(path: Path, document: dict[str, object]) -> None:
     click.echo(f"clipped      {'cannot be seen' if clipped is None else f'{clipped:.3%}'}")
     bands: list[dict[str, float]] = document["bands"]  # type: ignore[assignment]
     if bands:
-        click.echo(f"{'from, Hz':>14} {'below, Hz':>14} {'mean, dBFS':>12} {'peak, dBFS':>12}")
+        heads = f"{'from, Hz':>14} {'below, Hz':>14} {'mean, dBFS':>12} {'peak, dBFS':>12}"
+        click.echo(heads + (f" {'corrected':>12}" if "corrected_dbfs" in bands[0] else ""))
     for band in bands:
+        more = f" {_level(band['corrected_dbfs']):>12}" if "corrected_dbfs" in band else ""
         click.echo(
             f"{band['low_hz']:>14,.0f} {band['high_hz']:>14,.0f}"
-            f" {_level(band['power_dbfs']):>12} {_level(band['peak_dbfs']):>12}"
+            f" {_level(band['power_dbfs']):>12} {_level(band['peak_dbfs']):>12}{more}"
         )
     for note in document["notes"]:  # type: ignore[attr-defined]
         click.echo(f"Note: {note}")

@@ -95,6 +95,79 @@ def test_bytes_round_the_samples_are_left_out(
     assert found["total_power_dbfs"] == pytest.approx(-6.02, abs=0.01)
 
 
+def retuned(folder: Path) -> Path:
+    """A tone at half scale, then one at a quarter after a retune; a raw header before each."""
+    meta = sigmf(folder)
+    loud = meta.with_suffix(".sigmf-data").read_bytes()
+    weak = write(folder / "w", tone() / 2, "<i2", 32768.0).read_bytes()
+    meta.with_suffix(".sigmf-data").write_bytes(bytes(128) + loud + bytes(64) + weak)
+    document = json.loads(meta.read_text(encoding="utf-8"))
+    document["captures"] = [
+        {"core:sample_start": 0, "core:frequency": 1.8e9, "core:header_bytes": 128},
+        {"core:sample_start": 4096, "core:frequency": 1.9e9, "core:header_bytes": 64},
+    ]
+    meta.write_text(json.dumps(document), encoding="utf-8")
+    return meta
+
+
+def test_one_capture_of_a_retuned_recording(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path
+) -> None:
+    meta = retuned(tmp_path)
+    assert "choose one capture, 0 to 1" in run(capsys, ["iq", meta, "--json"]).one_line
+    for number, (centre_hz, dbfs) in enumerate(((1.8e9, -6.02), (1.9e9, -12.04))):
+        found = run(capsys, ["iq", meta, "--capture", number, "--json"]).document
+        assert (found["centre_hz"], found["samples"]) == (centre_hz, 4096)
+        assert found["total_power_dbfs"] == pytest.approx(dbfs, abs=0.01)
+
+
+def test_a_raw_header_is_skipped_where_it_is_told(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path
+) -> None:
+    path = write(tmp_path / "a.cs16", tone(), "<i2", 32768.0)
+    path.write_bytes(b"\x7f" * 128 + path.read_bytes())
+    found = run(capsys, ["iq", path, "--header-bytes", 128, "--json"]).document
+    assert found["samples"] == 4096
+    assert found["total_power_dbfs"] == pytest.approx(-6.02, abs=0.01)
+
+
+def test_floats_are_scaled_as_their_metadata_say(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path
+) -> None:
+    """Stored in codes of 16 bits: 20 log 32768 = 90.3 dB higher than full scale."""
+    meta = sigmf(tmp_path, **{"core:datatype": "cf32_le"})
+    write(meta.with_suffix(".sigmf-data"), tone(), "<f4", 32768.0)
+    document = json.loads(meta.read_text(encoding="utf-8"))
+    document["captures"][0]["capture_details:acq_scale_factor"] = 1 / 32768
+    meta.write_text(json.dumps(document), encoding="utf-8")
+    more = ["--band", "90kHz:110kHz", "--corrected", "--json"]
+    found = run(capsys, ["iq", meta, *more]).document
+    assert found["total_power_dbfs"] == pytest.approx(-6.02, abs=0.01)
+    for key in ("power_dbfs", "peak_dbfs", "corrected_dbfs"):
+        assert found["bands"][0][key] == pytest.approx(-6.02, abs=0.01)
+    assert any("multiplied by 3.05176e-05" in note for note in found["notes"])
+
+
+def test_corrected_figures_have_a_key_of_their_own(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path
+) -> None:
+    """An offset of 20 codes beside a tone of 0.1, by hand: -20 dB, with the offset -13.3 dB."""
+    path = write(tmp_path / "a.cs8", tone() * 0.2 + 20 / 128, "i1", 128.0)
+    arguments = ["iq", path, "--rate", "1.6MHz", "--band=-200kHz:200kHz"]
+    (plain,) = run(capsys, [*arguments, "--json"]).document["bands"]
+    (band,) = run(capsys, [*arguments, "--corrected", "--json"]).document["bands"]
+    assert set(plain) == {"low_hz", "high_hz", "power_dbfs", "peak_dbfs"}
+    assert plain == {key: band[key] for key in plain}
+    assert band["power_dbfs"] == pytest.approx(10 * np.log10(0.01 + (20 / 128) ** 2), abs=0.1)
+    # the tone leaks nothing into the bins that are left out; they count as the rest of the band
+    assert band["corrected_dbfs"] == pytest.approx(
+        -20.0 - 10 * np.log10(band["usable_share"]), abs=0.1
+    )
+    assert band["usable_share"] == pytest.approx(249 / 256, abs=0.01)
+    assert "corrected" in run(capsys, [*arguments, "--corrected"]).out
+    assert "--band" in run(capsys, ["iq", path, "--corrected"]).one_line
+
+
 def test_for_people(capsys: pytest.CaptureFixture[str], tmp_path: Path) -> None:
     out = run(capsys, ["iq", sigmf(tmp_path), "--band", "90kHz:110kHz"]).out
     assert "ci16_le, 4096 samples, 0.00256 s" in out
@@ -130,6 +203,8 @@ def test_silence_has_no_level(capsys: pytest.CaptureFixture[str], tmp_path: Path
         ("a.cu8", bytes(4096), ["--fft", "0"], 2, "fft"),
         ("a.cf32", b"\0\0\xc0\x7f" * 64, [], 2, "not numbers"),
         ("a.sigmf-meta", b"{", [], 3, "no such file"),
+        ("a.sigmf", bytes(4096), [], 2, "unpack it first"),
+        ("a.cu8", bytes(4096), ["--capture", "0"], 2, "--capture"),
     ],
 )
 def test_mistakes_are_one_line(

@@ -158,6 +158,39 @@ def test_a_pair_brings_its_own_header(tmp_path):
         assert "header" in front_end.status().text
 
 
+def test_a_capture_of_several_and_what_has_none(tmp_path):
+    meta = pair(tmp_path)
+    document = json.loads(meta.read_text(encoding="utf-8"))
+    document["captures"].append({"core:sample_start": 8000, "core:frequency": 2 * CENTRE_HZ})
+    meta.write_text(json.dumps(document), encoding="utf-8")
+    with pytest.raises(ConfigError, match="choose one capture, 0 to 1"):
+        iq(meta)
+    for capture, centre_hz, samples in ((0, CENTRE_HZ, 8000), (1, 2 * CENTRE_HZ, 2000)):
+        front_end = iq(meta, capture=capture, centre_hz=centre_hz)
+        assert len(all_of(front_end)) == 1
+        assert front_end.status().counters["samples"] == samples
+    with pytest.raises(ConfigError, match="no number 2"):
+        iq(meta, capture=2)
+    raw = tmp_path / "a.cs16"
+    raw.write_bytes(meta.with_suffix(".sigmf-data").read_bytes())
+    front_end = iq(raw, rate_hz=RATE_HZ, header_bytes=8)
+    assert abs(int(all_of(front_end)[0].counts[0, 0]) + 6021) <= 2
+    with pytest.raises(ConfigError, match="sensor.capture"):
+        iq(raw, rate_hz=RATE_HZ, capture=0)
+    with pytest.raises(ConfigError, match="header_bytes"):
+        iq(meta, capture=0, header_bytes=8)
+    with pytest.raises(ConfigError, match="unpack it first"):
+        iq(raw.rename(tmp_path / "a.sigmf"), rate_hz=RATE_HZ)
+
+
+def test_floats_take_the_scale_of_their_header(tmp_path):
+    meta = pair(tmp_path, {"core:datatype": "cf32_le"}, {"capture_details:acq_scale_factor": 1e-3})
+    samples = KINDS["cf32"](tone(10_000) * 1000)
+    meta.with_suffix(".sigmf-data").write_bytes(bytes(8) + samples.tobytes() + bytes(4))
+    (batch,) = all_of(iq(meta))
+    assert abs(int(batch.counts[0, 0]) + 6021) <= 2
+
+
 def test_without_a_known_start_the_time_of_the_file_stands_in_and_is_named(tmp_path):
     path = tmp_path / "a.cf32"
     path.write_bytes(KINDS["cf32"](tone(10_000)).tobytes())
