@@ -57,7 +57,8 @@ def _by(event: EventRow) -> str:
 def _alarm(event: EventRow, name: str) -> tuple[str, str]:
     raised, crossed = event.body.get("raised"), bounds.number(event.body, "exposure_ratio")
     if crossed is None:
-        return name, "alarm began" if raised else "alarm ended"
+        text = _text(event)
+        return name, f"alarm {'began' if raised else 'ended'}{f'; {text}' if text else ''}"
     if not raised:
         return name, f"returned below, at {words.ratio_figure(crossed)} of the limit"
     share, low = bounds.number(event.body, "valid_share"), bounds.number(event.body, "ratio_low")

@@ -26,6 +26,12 @@ def spike_hz(rate_hz: float, fft: int) -> float:
     return SPIKE_BINS * rate_hz / fft
 
 
+def least_power(rate_hz: float, bands: Sequence[tuple[float, float]]) -> NDArray[np.float64]:
+    """What a band (b,) reads at the least, 1.0 = 0 dBFS: FLOOR_SHARE of the rounding noise."""
+    widths_hz = np.array([high - low for low, high in bands])
+    return np.asarray(FLOOR_SHARE * CODE**2 / 6.0 * widths_hz / rate_hz)
+
+
 class Levels:
     """Adds up one interval after the other. bands: (low, high) in Hz from the centre.
 
@@ -35,8 +41,7 @@ class Levels:
     def __init__(self, rate_hz: float, bands: Sequence[tuple[float, float]], fft: int) -> None:
         spike = spike_hz(rate_hz, fft)
         self._engine = Engine(rate_hz, bands, datatype=DATATYPE, fft=fft, excluded_hz=spike)
-        widths_hz = np.array([high - low for low, high in bands])
-        self._floor = FLOOR_SHARE * CODE**2 / 6.0 * widths_hz / rate_hz
+        self._floor = least_power(rate_hz, bands)
 
     def add(self, raw: bytes | memoryview) -> None:
         """Take samples that follow those already added."""

@@ -10,6 +10,7 @@ import numpy as np
 
 from hardware.iq_client import Client, Radio
 from hardware.iq_count import SampleClock, real_rate_hz
+from hardware.iq_floor import Floors
 from hardware.iq_levels import Levels, counts
 from hardware.iq_plan import Tune
 from hardware.iq_ring import Ring
@@ -82,6 +83,7 @@ class Receiver:
         half = scheme.fft // 2  # intervals of whole halves of a segment weigh exactly alike
         self._need = max(2, round(scheme.reading_s * self._rate_hz / half)) * half
         self._levels = [Levels(self._rate_hz, tune.bands, scheme.fft) for tune in scheme.tunes]
+        self._floors = Floors(self._rate_hz, scheme.tunes, scheme.fft, self._need)
         self.client = Client(radio, scheme.tunes[0].centre_hz, now_ns)
         self._generation = 0
         self._settled_ns = 0
@@ -107,6 +109,11 @@ class Receiver:
         if self.problem:  # what begins later is stamped later
             self._upto_ns = max(self._upto_ns, self._now_ns())
         return self._upto_ns
+
+    @property
+    def floors(self) -> tuple[int, ...]:
+        """Noise floor per channel, milli-dBFS, MISSING where it is not known."""
+        return self._floors.counts(self._scheme.channels, self._now_ns())
 
     def work(self, timeout_s: float) -> list[Reading]:
         """The readings that are complete; waits timeout_s at most for samples."""
@@ -149,6 +156,7 @@ class Receiver:
     def _restart(self, now_ns: int) -> None:
         """Whatever was begun does not join on to what comes: leave it."""
         self._levels[self._order[0]].drop()
+        self._floors.leave()
         if self._ring is not None:
             self._ring.cut()
         self._begin_round(now_ns)
@@ -183,6 +191,7 @@ class Receiver:
                 self._start_ns = max(clock.time_ns(first + at), self._upto_ns)
             place, part = self._order[0], raw[2 * at : 2 * (at + n)]
             self._levels[place].add(part)
+            self._floors.offer(place, part, clock.time_ns(first + at))
             if self._ring is not None:
                 self._ring.add(part, clock.time_ns(first + at), place, first + at)
             self._done += n
@@ -198,6 +207,7 @@ class Receiver:
             self._sums[part.channel] += power
         if self._scheme.swept:
             self._levels[place].drop()
+            self._floors.leave()
         self._clipped += clipped
         self.counters["clipped_components"] += clipped
         if self._order:

@@ -228,6 +228,7 @@ class IqStream:
             text=f"{problem}; trying again" if problem else text,
             temperature_c=self._thermometer.celsius(),
             counters=self._counters | self._worker.counters,
+            floors=() if problem else tuple(self._told.get("floors", ())),  # type: ignore[arg-type]
         )
 
     def keep(self, request: Mapping[str, object]) -> bool:

@@ -65,6 +65,7 @@ def line_of(reading: Reading | None, receiver: Receiver, unsaid: int) -> bytes:
         "upto": reading.end_ns if reading else receiver.upto_ns,
         "problem": receiver.problem,
         "told": receiver.client.told,
+        "floors": receiver.floors,
         "counters": receiver.client.counters | receiver.counters | {"unsaid": unsaid},
     }
     if reading:

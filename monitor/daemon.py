@@ -19,6 +19,7 @@ from monitor.core.station import Station
 from monitor.evidence import evidence_of
 from monitor.fixes import Clock, Fixes
 from monitor.marking import NOTHING, Standing, marked
+from monitor.noise_watch import NoiseWatch
 from monitor.record.background import WriterThread
 from monitor.record.types import ClockFix
 from monitor.snapshot import View, snapshot
@@ -57,6 +58,7 @@ class Daemon:
         self._clock, self._state, self._desk = clock, state, desk
         self._history_ns = None if history_s is None else round(history_s * NS_PER_S)
         self._standing = standing
+        self._noise = NoiseWatch(here, [c.name for c in site.channels], desk.raised())
         self._bulk_ns = state.front_ns
         self._evidence = evidence_of(front, site, here)
         self._spool = Spool()
@@ -130,6 +132,7 @@ class Daemon:
         self._state, out = pipeline.step(self._state, batch, self._here)
         if self._state.hearing.last_ns != heard_ns:
             self._heard_ns = self._clock.boot_ns()
+        out.events += self._noise.look(out.blocks, self._status)
         for event in out.events:
             self._desk.apply(event)
         self._keep_evidence(out.events)

@@ -23,6 +23,7 @@ from monitor.core.errors import ConfigError
 from monitor.core.exposure import least_coefficient, scope_coefficients
 from monitor.core.judgement import INSTRUMENT_KEYS
 from monitor.core.limits import LimitSet, Scope, ratio_per_e2, scopes
+from monitor.core.noise_floor import KEYS
 from monitor.core.readings import FrontEnd
 from monitor.core.rows import Event
 from monitor.core.silence import KEY as SILENCE
@@ -237,7 +238,7 @@ def _first_events(
     events = [Event(at_ns, "start", "daemon", body | {"chain": run.chain})]
     if found.trouble:
         events.append(Event(at_ns, "fault", "windows begin empty", {"why": found.trouble}))
-    watched = {watch.key for watch in here.watches} | {SILENCE, RECORD, *INSTRUMENT_KEYS}
+    watched = {watch.key for watch in here.watches} | {SILENCE, RECORD, *INSTRUMENT_KEYS, *KEYS}
     gone: dict[str, object] = {"raised": False, "why": "no longer watched"}
     return events + [
         Event(at_ns, "alarm", key, gone) for key in sorted(found.desk.raised() - watched)

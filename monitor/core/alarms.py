@@ -137,6 +137,9 @@ INSTRUMENT_TEXTS = {
     "overload": "readings above the detector's range",
     "gaps": "less than three quarters of the last six minutes is measured",
     "record": "the record cannot be written",
+    "receiver noise high": "the receiver's noise is above its calibration",
+    "receiver noise low": "the receiver's noise is below its calibration",
+    "signals vanished": "all signals that were always there are gone",
 }
 """What the alarms about the monitor itself say, by key."""
 

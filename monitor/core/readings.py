@@ -89,7 +89,8 @@ def empty_batch(channels: int, now_ns: int) -> Batch:
 class DeviceStatus:
     """State of the device behind a front end, for pages and events.
 
-    name: what the device calls itself; "" where it has not said or cannot.
+    name: what the device calls itself; "" where it has not said or cannot. floors: raw counts per
+    channel of the noise floor that it tracks, MISSING where it is not known; () without tracking.
     """
 
     connected: bool
@@ -99,6 +100,7 @@ class DeviceStatus:
     counters: Mapping[str, int] = field(default_factory=dict)
     ended: bool = False
     name: str = ""
+    floors: tuple[int, ...] = ()
 
 
 class FrontEnd(Protocol):
