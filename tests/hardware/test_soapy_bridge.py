@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import ast
 import os
 import re
 import shutil
@@ -280,3 +281,12 @@ def test_the_real_binding_without_a_receiver(real_binding, device, says):
     assert run.returncode == 3
     assert run.stderr.count("\n") == 1
     assert says in run.stderr
+
+
+def test_the_stand_in_has_no_call_that_the_real_binding_lacks(real_binding):
+    tree = ast.parse((STAND_IN / "SoapySDR.py").read_text(encoding="utf-8"))
+    calls = {d.name for d in ast.walk(tree) if isinstance(d, ast.FunctionDef) and d.name[0] != "_"}
+    ask = "import SoapySDR, sys; print(*(hasattr(SoapySDR.Device, n) for n in sys.argv[1:]))"
+    run = [real_binding, "-c", ask, *calls]
+    assert len(calls) > 15
+    assert set(subprocess.check_output(run, env={}, text=True).split()) == {"True"}
