@@ -6,7 +6,7 @@ import threading
 from collections.abc import Mapping, Sequence
 from dataclasses import replace
 
-from monitor import refchecks
+from monitor import refchecks, refstrikes
 from monitor.alarm_desk import AlarmDesk, text_of
 from monitor.config import Site
 from monitor.core import pipeline
@@ -251,12 +251,14 @@ class Daemon:
         elif do == "note":
             body: dict[str, object] = {"text": text_of(request, "text", 2000)}
             event = Event(now_ns, "note", text_of(request, "by", 200, ""), body)
-        elif do == refchecks.KIND:
+        elif do in (refchecks.KIND, refstrikes.KIND):
             names = [channel.name for channel in self._site.channels]
-            event = refchecks.event_of(request, names, now_ns)
+            made = refchecks.event_of if do == refchecks.KIND else refstrikes.event_of
+            event = made(request, names, now_ns)
         else:
             raise ConfigError(
-                f"do: {do!r} is not now, acknowledge, shelve, unshelve, note or {refchecks.KIND}"
+                f"do: {do!r} is not now, acknowledge, shelve, unshelve, note, {refchecks.KIND} or"
+                f" {refstrikes.KIND}"
             )
         self.note(event)
         return {}

@@ -8,7 +8,8 @@ from monitor import calparts
 from monitor.core.control_chart import BASELINE, State, chart
 from monitor.core.errors import CalibrationError, ConfigError
 from monitor.record.reader import Record
-from monitor.refchecks import Check, checks_of
+from monitor.refchecks import Check
+from monitor.refstrikes import judged
 
 Document = dict[str, object]
 FLOOR_DB = 0.05
@@ -29,7 +30,7 @@ def charts(record: Record, channel: str | None, floor_db: float | None) -> list[
         raise ConfigError(f"channel {channel!r}: the record has {', '.join(names) or 'none'}")
     stated = floor_db if floor_db is not None else stated_db(record)
     series: dict[tuple[str, str], list[Check]] = {}
-    for check in checks_of(record):
+    for check in judged(record):
         if channel in (None, check.channel):
             series.setdefault((check.channel, check.at), []).append(check)
     return [_document(checks, stated) for checks in series.values()]
@@ -48,14 +49,17 @@ def stated_db(record: Record) -> float:
 
 
 def _document(checks: list[Check], floor_db: float) -> Document:
-    mine = [check for check in checks if check.count_table == checks[-1].count_table]
+    stand = [check for check in checks if check.struck is None]
+    struck = [check for check in checks if check.struck is not None]
+    table = (stand or struck)[-1].count_table
+    mine = [check for check in stand if check.count_table == table]
     found = chart([check.difference_db for check in mine], floor_db)
     lines = found.lines
     return {
-        "channel": mine[0].channel,
-        "at": mine[0].at,
-        "count_table": mine[0].count_table,
-        "checks_on_other_tables": len(checks) - len(mine),
+        "channel": checks[0].channel,
+        "at": checks[0].at,
+        "count_table": table,
+        "checks_on_other_tables": len(stand) - len(mine),
         "baseline": BASELINE,
         "least_sigma_db": floor_db,
         "centre_db": lines and lines.centre,
@@ -63,18 +67,20 @@ def _document(checks: list[Check], floor_db: float) -> Document:
         "sigma_is_least": lines and lines.floored,
         "warning_db": list(lines.warning) if lines else None,
         "action_db": list(lines.action) if lines else None,
-        "last": found.states[-1],
-        "action": found.states[-1] is State.ACTION,
-        "checks": [
-            {
-                "from": check.from_utc or None,
-                "to": check.to_utc or None,
-                "applied_dbm": check.applied_dbm,
-                "mean_dbm": check.mean_dbm,
-                "difference_db": check.difference_db,
-                "state": state,
-                "note": check.note,
-            }
-            for check, state in zip(mine, found.states)
-        ],
+        "last": found.states[-1] if mine else None,
+        "action": bool(mine) and found.states[-1] is State.ACTION,
+        "checks": [{**_entry(check), "state": state} for check, state in zip(mine, found.states)],
+        "struck": [{**_entry(check), "why": check.struck or None} for check in struck],
+    }
+
+
+def _entry(check: Check) -> Document:
+    return {
+        "number": check.number,
+        "from": check.from_utc or None,
+        "to": check.to_utc or None,
+        "applied_dbm": check.applied_dbm,
+        "mean_dbm": check.mean_dbm,
+        "difference_db": check.difference_db,
+        "note": check.note,
     }

@@ -50,7 +50,10 @@ class Mean:
 
 @dataclass(frozen=True, slots=True)
 class Check:
-    """One reference check as kept."""
+    """One reference check as kept. number: in the order of keeping, from 1; struck: why it was
+    struck out, None where it stands."""
+
+    number: int
 
     channel: str
     at: str
@@ -60,6 +63,7 @@ class Check:
     mean_dbm: float
     count_table: str
     note: str
+    struck: str | None = None
 
     @property
     def difference_db(self) -> float:
@@ -194,7 +198,7 @@ def checks_of(record: Record) -> list[Check]:
     """Every reference check of a record, in the order of time; RecordError for one that is none."""
     events = record.events(limit=MOST_EVENTS, rare=KIND)
     try:
-        found = [_check(event.name, event.body) for event in events]
+        found = [_check(i, event.name, event.body) for i, event in enumerate(events, 1)]
         return sorted(found, key=lambda check: utc_ns_of(check.to_utc) if check.to_utc else 0)
     except (KeyError, ValueError) as error:
         raise RecordError(
@@ -202,11 +206,11 @@ def checks_of(record: Record) -> list[Check]:
         ) from error
 
 
-def _check(channel: str, body: Mapping[str, object]) -> Check:
+def _check(number: int, channel: str, body: Mapping[str, object]) -> Check:
     applied_dbm, mean_dbm = (float(str(body[key])) for key in ("applied_dbm", "mean_dbm"))
     if not math.isfinite(mean_dbm - applied_dbm):
         raise ValueError(f"{mean_dbm} dBm read, {applied_dbm} dBm applied")
     from_utc, to_utc, at, table, note = (
         str(body[key]) for key in ("from_utc", "to_utc", "at", "count_table", "note")
     )
-    return Check(channel, at, from_utc, to_utc, applied_dbm, mean_dbm, table, note)
+    return Check(number, channel, at, from_utc, to_utc, applied_dbm, mean_dbm, table, note)

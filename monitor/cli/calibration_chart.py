@@ -62,17 +62,25 @@ def lines(one: Entry) -> Iterator[str]:
         yield f"  centre {one['centre_db']:+.3f}, sigma {one['sigma_db']:.3f}{least}"
         yield f"  warning beyond {low:+.3f} and {high:+.3f}"
         yield f"  action beyond {lowest:+.3f} and {highest:+.3f}"
-        yield f"  {'':<20} {'':>8}  ! action line   : warning line   | centre   o check"
+        yield f"  {'':<25} {'':>8}  ! action line   : warning line   | centre   o check"
     for check in one["checks"]:
         yield (
-            f"  {check['to'] or 'time not known':<20.20} {check['difference_db']:>+8.3f}"
+            f"  {_name(check)} {check['difference_db']:>+8.3f}"
             f"  {_row(one, check['difference_db'])}  {_word(check, one['centre_db'])}"
         ).rstrip()
+    for check in one["struck"]:
+        why = f": {check['why']}" if check["why"] else ""
+        yield f"  {_name(check)} {check['difference_db']:>+8.3f}  struck{why}"
     if one["action"]:
         yield (
             "  The last check calls for action: look for what changed (connector, cable, detector)"
             " and have the chain calibrated before its figures are used."
         )
+
+
+def _name(check: Entry) -> str:
+    """The check's number, by which it can be struck, and when it was."""
+    return f"{check['number']:>4} {check['to'] or 'time not known':<20.20}"
 
 
 def _word(check: Entry, centre_db: float | None) -> str:

@@ -38,7 +38,8 @@ def between(
     query = (
         _EVENTS + "WHERE (?2 IS NULL OR boot_ns + offset_ns >= ?2) "
         "AND (?3 IS NULL OR boot_ns + offset_ns < ?3) "
-        + (f"AND {RARE} AND kind = ?5 " if rare else "")
+        + (f"AND {RARE} " if f"'{rare}'" in RARE else "")
+        + ("AND kind = ?5 " if rare else "")
         + "ORDER BY event DESC LIMIT ?4"
     )
     rows = db.execute(query, (_offsets(boots), *span, limit, *([rare] if rare else []))).fetchall()

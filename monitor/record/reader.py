@@ -193,7 +193,7 @@ class Record:
         self, start_utc_ns: int | None = None, end_utc_ns: int | None = None, limit: int = 1000,
         *, rare: str = "",
     ) -> list[EventRow]:  # fmt: skip
-        """The newest events in [start, end) of UTC, oldest first. rare: of that kind of RARE only.
+        """The newest events in [start, end) of UTC, oldest first. rare: of one kind only.
 
         Events of a boot without a clock fix are given only where no span is asked for.
         """

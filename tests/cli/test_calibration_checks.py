@@ -127,6 +127,8 @@ def test_a_time_can_be_named(capsys: pytest.CaptureFixture[str], record: Path) -
     ("more", "line"),
     [
         (["--level", "-30"], "write a level in dBm"),
+        ([], "give --channel and --level, or --strike"),
+        (["--level", "-30dBm", "--strike", "1"], "--strike goes with --note alone"),
         (["--level", "300dBm"], "write a level in dBm"),
         (["--level", "-30dBm", "--channel", "west"], "the record has east, north, up"),
         (["--level", "-30dBm", "--last", "400s"], "only 120 s of 400 s have readings"),
@@ -207,7 +209,7 @@ def test_the_chart_has_lines_signs_and_words(
     assert "  action beyond -0.218 and +0.618" in lines
     assert lines[-1].endswith("WARNING, above")
     centre, low, high = "       o       ", "    !   :", ":   !"
-    assert lines[-2] == f"  2023-11-15T05:14:20Z   +0.200  {low}{centre}{high}      within"
+    assert lines[-2] == f"     8 2023-11-15T05:14:20Z   +0.200  {low}{centre}{high}      within"
     assert lines[-1].split("Z")[1] == "   +0.500      !   :       |       :o  !      WARNING, above"
     kept(record, [-0.3])
     found = charted(capsys, record)

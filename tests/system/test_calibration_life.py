@@ -150,6 +150,9 @@ def test_a_reference_check_goes_through_the_daemon_and_after_it_into_the_file(de
         assert event.body["count_table"] == told["count_table"] != ""
     charted = json.loads(fieldsill("calibration", "chart", "--record", record, "--json").stdout)
     assert [row["applied_dbm"] for row in charted["charts"][0]["checks"]] == [-30.0, -31.0]
+    # the simulated field, not a generator, was read: the difference tells of a slip
+    assert not any("not compared" in note for note in after["notes"])
+    assert any("look for a wrong level, channel or cable" in note for note in after["notes"])
     shown = json.loads(fieldsill("calibration", "show", "--record", record, "--json").stdout)
     assert shown["identity"] == events(desk, "start")[0].body["calibration"]
     assert fieldsill("explain", "--record", record).returncode == 0
