@@ -33,14 +33,24 @@ def least_power(rate_hz: float, bands: Sequence[tuple[float, float]]) -> NDArray
 
 
 class Levels:
-    """Adds up one interval after the other. bands: (low, high) in Hz from the centre.
+    """Adds up one interval after the other. bands: (low, high) in Hz from the centre; spurs: the
+    same of lines that the receiver makes itself, left out with as many bins as the centre's spike.
 
     ConfigError for a band that cannot be measured.
     """
 
-    def __init__(self, rate_hz: float, bands: Sequence[tuple[float, float]], fft: int) -> None:
+    def __init__(
+        self,
+        rate_hz: float,
+        bands: Sequence[tuple[float, float]],
+        fft: int,
+        spurs: Sequence[tuple[float, float]] = (),
+    ) -> None:
         spike = spike_hz(rate_hz, fft)
-        self._engine = Engine(rate_hz, bands, datatype=DATATYPE, fft=fft, excluded_hz=spike)
+        wider = [(low - spike, high + spike) for low, high in spurs]
+        self._engine = Engine(
+            rate_hz, bands, datatype=DATATYPE, fft=fft, excluded_hz=spike, excluded=wider
+        )
         self._floor = least_power(rate_hz, bands)
 
     def add(self, raw: bytes | memoryview) -> None:

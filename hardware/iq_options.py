@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
-from dataclasses import dataclass
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import ClassVar
 
@@ -73,6 +73,19 @@ class Settings:
     def averaging(self) -> Averaging:
         """A reading is the mean power of its interval or dwell."""
         return Averaging("power", self.scheme.reading_s, sparse=self.scheme.swept)
+
+    def without(self, spurs_hz: Sequence[tuple[float, float]]) -> Settings:
+        """The same, lines from low to high (Hz on the air) that the receiver makes left out.
+
+        ConfigError where that leaves nothing of a band.
+        """
+        places = []
+        for place in self.scheme.tunes:
+            at_hz = place.centre_hz
+            spurs = tuple((low - at_hz, high - at_hz) for low, high in spurs_hz)
+            Levels(self.radio.rate_hz, place.bands, self.scheme.fft, spurs)
+            places.append(replace(place, spurs=spurs))
+        return replace(self, scheme=replace(self.scheme, tunes=tuple(places)))
 
     def check_device(self) -> None:
         """DeviceError where no server answers, or the thermometer cannot be read."""

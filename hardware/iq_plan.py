@@ -23,10 +23,12 @@ class Part:
 
 @dataclass(frozen=True, slots=True)
 class Tune:
-    """One place of the tuner and what is seen there."""
+    """One place of the tuner and what is seen there. spurs: (low, high) in Hz from the centre of
+    lines that the receiver makes itself."""
 
     centre_hz: int
     parts: tuple[Part, ...]
+    spurs: tuple[tuple[float, float], ...] = ()
 
     @property
     def bands(self) -> tuple[tuple[float, float], ...]:

@@ -82,7 +82,9 @@ class Receiver:
         self._rate_hz = real_rate_hz(radio.rate_hz)
         half = scheme.fft // 2  # intervals of whole halves of a segment weigh exactly alike
         self._need = max(2, round(scheme.reading_s * self._rate_hz / half)) * half
-        self._levels = [Levels(self._rate_hz, tune.bands, scheme.fft) for tune in scheme.tunes]
+        self._levels = [
+            Levels(self._rate_hz, tune.bands, scheme.fft, tune.spurs) for tune in scheme.tunes
+        ]
         self._floors = Floors(self._rate_hz, scheme.tunes, scheme.fft, self._need)
         self.client = Client(radio, scheme.tunes[0].centre_hz, now_ns)
         self._generation = 0

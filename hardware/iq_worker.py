@@ -27,7 +27,11 @@ def settings_text(
 ) -> str:
     """All that the process must know, as JSON. evidence_bytes: for recordings, 0 for none."""
     tunes = [
-        [tune.centre_hz, [[part.channel, part.low_hz, part.high_hz] for part in tune.parts]]
+        [
+            tune.centre_hz,
+            [[part.channel, part.low_hz, part.high_hz] for part in tune.parts],
+            tune.spurs,
+        ]
         for tune in scheme.tunes
     ]
     own = {
@@ -46,7 +50,8 @@ def receiver_of(text: str, now_ns: Callable[[], int]) -> tuple[Receiver, Keeper 
     """The receiver of these settings, and what keeps samples of it, if any are to be kept."""
     own = json.loads(text)
     tunes = tuple(
-        Tune(centre_hz, tuple(Part(*part) for part in parts)) for centre_hz, parts in own["tunes"]
+        Tune(centre_hz, tuple(Part(*part) for part in parts), tuple((a, b) for a, b in spurs))
+        for centre_hz, parts, spurs in own["tunes"]
     )
     channels, fft, interval_s, dwell_s, settle_s = own["scheme"]
     scheme = Scheme(channels, tunes, fft, interval_s, dwell_s, settle_s)

@@ -26,8 +26,9 @@ from monitor.core.montecarlo import errors_db, spread
 from monitor.core.quantities import PORT_OHM
 from monitor.core.uncertainty import equal_shares, expanded_db
 from monitor.detectorfile import Detector
-from monitor.detectorkinds import ProbeSource
+from monitor.detectorkinds import ProbeSource, ScaleSource
 from monitor.marking import DAY_NS
+from monitor.spurs import text_of
 
 Document = dict[str, object]
 
@@ -125,6 +126,14 @@ def document(shown: View, shares: Real, now_utc_ns: int) -> Document:
     }
 
 
+def _spurs(detector: Detector) -> list[Document]:
+    """Of a receiver: each line that it makes itself, which is left out of bands."""
+    source = detector.source
+    if not isinstance(source, ScaleSource):
+        return []
+    return [asdict(spur) | {"text": text_of(spur)} for spur in source.spurs]
+
+
 def _detectors(shown: View) -> list[Document]:
     out: list[Document] = []
     for detector in shown.file.detectors:
@@ -137,6 +146,7 @@ def _detectors(shown: View) -> list[Document]:
                 "range_dbm": list(detector.source.range_dbm),
                 "range_v_per_m": _range_v_per_m(detector),
                 "resolution": detector.resolution,
+                "spurs": _spurs(detector),
             }
         )
     return out

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 
 import numpy as np
 
@@ -21,6 +22,7 @@ from monitor.detectorkinds import (
     ProbeSource,
     ScaleSource,
     Source,
+    Spur,
     Step,
 )
 from monitor.sitebands import frequency
@@ -70,7 +72,7 @@ def _scale(table: Table) -> ScaleSource:
         usable = pair(table, "range_dbm")
         valid = _valid_dbm(table, usable)
         step = Step("", offset_db, valid, usable, _noise(table, usable))
-        return ScaleSource(quantity, resolution, (step,))
+        return ScaleSource(quantity, resolution, (step,), _spurs(table, quantity, [""]))
     usable = pair(table, "range_dbm", None)
     noise = _noise(table, usable or (-200.0, 200.0))
     valid = pair(table, "valid_dbm", None)
@@ -79,7 +81,27 @@ def _scale(table: Table) -> ScaleSource:
     for name in names:
         if names.count(name) > 1:
             raise table.error("step", f"gain {name!r} stands twice")
-    return ScaleSource(quantity, resolution, steps)
+    return ScaleSource(quantity, resolution, steps, _spurs(table, quantity, ["", *names]))
+
+
+def _spurs(table: Table, quantity: str, gains: Sequence[str]) -> tuple[Spur, ...]:
+    """The [[detector.spur]] of a receiver. gains: the steps that there are, '' for every one."""
+    tables = table.tables("spur", [])
+    if tables and quantity != "dbfs":
+        raise table.error("spur", 'only where quantity is "dbfs"; take it out')
+    found = []
+    for one in tables:
+        spur = Spur(
+            frequency(one, "frequency"),
+            frequency(one, "width"),
+            one.number("level_dbm", low=-250.0, high=100.0),
+            one.text("gain", "", gains).strip(),
+        )
+        one.finish()
+        if spur.width_hz >= spur.frequency_hz:
+            raise one.error("width", "is no less than the frequency; correct one of them")
+        found.append(spur)
+    return tuple(found)
 
 
 def _step(table: Table, usable: Ends | None, valid: Ends | None, noise: Noise) -> Step:

@@ -86,13 +86,29 @@ class Step:
     noise: Noise
 
 
+@dataclass(frozen=True, slots=True)
+class Spur:
+    """A line that the receiver makes itself; gain: the step at which it does, '' at every one."""
+
+    frequency_hz: float
+    width_hz: float
+    level_dbm: float
+    gain: str = ""
+
+    @property
+    def ends_hz(self) -> Ends:
+        """Its lower and upper end."""
+        return self.frequency_hz - self.width_hz / 2.0, self.frequency_hz + self.width_hz / 2.0
+
+
 @dataclass(frozen=True, slots=True, eq=False)
 class ScaleSource:
-    """Figures in dBm, or in dBFS at one or more gain steps."""
+    """Figures in dBm, or in dBFS at one or more gain steps; spurs: what is left out of bands."""
 
     quantity: str
     resolution: float
     steps: tuple[Step, ...]
+    spurs: tuple[Spur, ...] = ()
 
     @property
     def range_dbm(self) -> Ends:

@@ -37,6 +37,7 @@ from monitor.record.background import WriterThread
 from monitor.record.writer import Writer
 from monitor.recovery import Recovered, Run, recovered
 from monitor.snapshot import rfc3339
+from monitor.spurs import cleared
 
 QUEUE_DEPTH = 8
 RECORDED = ("level_series", "iq_file")
@@ -151,8 +152,9 @@ def limit_rules(site: Site, found: Sequence[Scope]) -> list[AlertRule]:
 def check(site: Site) -> list[Finding]:
     """Whether sensor, calibration and record fit together; errors are raised, nothing written."""
     settings = sensor_settings(site)
-    station_for(site, chain_for(site, settings))
-    settings.check_device()
+    chain = chain_for(site, settings)
+    station_for(site, chain)
+    cleared(settings, site, chain).check_device()
     found = [Finding("sensor", f"{site.sensor_kind}: can be reached")]
     if site.record_path.exists():
         mark = connect.identify(site.record_path).simulated
@@ -196,8 +198,9 @@ def daemon_for(site: Site, *, history_s: float | None = None) -> Daemon:
     if site.sensor_kind in RECORDED or not site.record_path.exists():
         settings.check_device()
     front = open_front_end(
-        settings, len(site.channels), clock.boot_ns, clock.utc_ns, site.simulated
-    )
+        cleared(settings, site, chain),
+        len(site.channels), clock.boot_ns, clock.utc_ns, site.simulated,
+    )  # fmt: skip
     boot_id, kind = _boot(site, front, clock)
     documents = _documents(site, chain)
 

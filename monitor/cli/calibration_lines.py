@@ -34,6 +34,7 @@ def shown(document: Entry) -> Iterator[str]:
             f"detector{_of_axis(detector)}: {detector['kind']}, {_range(detector)},"
             f" averages {detector['averages']}{_over(detector['averaging_s'])}"
         )
+        yield from (f"  {spur['text']}: left out of bands" for spur in detector["spurs"])
     for element in document["elements"]:
         yield _element(element)
     yield ""

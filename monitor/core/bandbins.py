@@ -58,10 +58,17 @@ class BandBins:
     used_mask: Mask
 
 
-def fit_bins(rate_hz: float, fft: int, excluded_hz: float, edge_share: float) -> Mask:
+def fit_bins(
+    rate_hz: float,
+    fft: int,
+    excluded_hz: float,
+    edge_share: float,
+    excluded: Sequence[tuple[float, float]] = (),
+) -> Mask:
     """bool (fft,): false within excluded_hz of the centre (0: nothing) and at the span's ends.
 
-    edge_share: the share of the span left out at each end. ConfigError outside 0 <= x < 0.5.
+    edge_share: the share of the span left out at each end. excluded: (low, high) in Hz from the
+    centre, ends included, that are left out besides. ConfigError for a share outside 0 <= x < 0.5.
     """
     if not 0.0 <= edge_share < 0.5:
         raise ConfigError(f"edge_share {edge_share:g}: must be at least 0 and below 0.5")
@@ -72,6 +79,8 @@ def fit_bins(rate_hz: float, fft: int, excluded_hz: float, edge_share: float) ->
     fit = (frequencies >= -reach_hz) & (frequencies < reach_hz)
     if excluded_hz > 0.0:
         fit &= np.abs(frequencies) > excluded_hz
+    for low, high in excluded:
+        fit &= (frequencies < low) | (frequencies > high)
     return np.asarray(fit)
 
 
@@ -84,7 +93,7 @@ def band_bins(
         masks[bins, column] = True
         if not np.any(fit[bins]):
             raise ConfigError(
-                f"band {low:g}:{high:g} Hz: every bin is left out (centre or end of the span);"
+                f"band {low:g}:{high:g} Hz: every bin is left out (centre, end of the span, spurs);"
                 " tune elsewhere or leave out less"
             )
     kinds = np.column_stack([masks, fit])

@@ -73,8 +73,9 @@ class Engine:
     rate_hz: complex samples a second. bands: (low, high) in Hz from the centre; whole bins with
     low <= f < high. datatype: as in spectrum.DATATYPES. fft: segment length, even. excluded_hz:
     half width round the centre that is left out, 0 for nothing. edge_share: share of the span left
-    out at each end. What is left out of a band is made good by the band's other bins, as if the
-    spectrum were flat inside the band. ConfigError for what cannot be measured.
+    out at each end. excluded: (low, high) in Hz from the centre, left out too. What is left out of
+    a band is made good by the band's other bins, as if the spectrum were flat inside the band.
+    ConfigError for what cannot be measured.
 
     Method: averaged spectra (P. D. Welch, IEEE Trans. Audio Electroacoust. 15 (1967) 70) of
     half-overlapping segments under a window whose shifted squares add up to 1, so that every
@@ -93,6 +94,7 @@ class Engine:
         fft: int = 1024,
         excluded_hz: float = 0.0,
         edge_share: float = 0.0,
+        excluded: Sequence[tuple[float, float]] = (),
     ) -> None:
         if not MIN_FFT <= fft <= MAX_FFT or fft % 2:
             raise ConfigError(f"fft {fft}: must be even and from {MIN_FFT} to {MAX_FFT}")
@@ -101,7 +103,8 @@ class Engine:
         self._layout = datatype_of(datatype)
         self._bytes = bytes_per_sample(datatype)
         self._fft, self._hop = fft, fft // 2
-        self._bins = band_bins(rate_hz, bands, fft, fit_bins(rate_hz, fft, excluded_hz, edge_share))
+        fit = fit_bins(rate_hz, fft, excluded_hz, edge_share, excluded)
+        self._bins = band_bins(rate_hz, bands, fft, fit)
         blocks = max(1, BLOCK_SAMPLES // self._hop)
         self._step = blocks * self._hop
         self._segments = Segments(fft, blocks, self._bins)
