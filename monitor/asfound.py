@@ -54,6 +54,12 @@ class AsFound:
         except CalibrationError as error:
             raise CalibrationError(str(self.where.error("table", str(error)))) from None
 
+    def spans_hz(self, axes: str) -> list[tuple[float, float]]:
+        """Lowest and highest frequency of each table of a drift that serves one of the axes."""
+        tables = [part.db for part in self.parts if part.axis in ("", *axes)]
+        curves = [db.frequencies_hz for db in tables if isinstance(db, FrequencyTable)]
+        return [(float(f[0]), float(f[-1])) for f in curves]
+
     def over(self, channels: Iterable[Channel], bands: Mapping[str, Band]) -> float:
         """The largest drift of any channel over its band, dB; CalibrationError as of drift_db."""
         each = ((channel.axis, bands[channel.band]) for channel in channels)

@@ -16,6 +16,7 @@ from monitor.calreview import Document, View, knots_hz, response_db, uncertainty
 from monitor.core.budget import Contribution
 from monitor.core.caldrift import drift_line
 from monitor.core.calibration import CountTable
+from monitor.core.errors import CalibrationError
 from monitor.core.quantities import dbm_from_w
 from monitor.core.uncertainty import equal_shares
 
@@ -51,7 +52,10 @@ def drift_between(a: CalibrationFile, b: View) -> Document | None:
     found = b.file.as_found
     if found is None:
         return None
-    sizes = [found.drift_db(axis, b.band.low_hz, b.band.high_hz) for axis in b.axes]
+    try:
+        sizes = [found.drift_db(axis, b.band.low_hz, b.band.high_hz) for axis in b.axes]
+    except CalibrationError as error:
+        raise CalibrationError(f"{error}, or name a band that it covers with --band") from None
     line = drift_line(max(sizes))
     names = (a.certificate.id, hashlib.sha256(a.body).hexdigest())
     return {

@@ -149,6 +149,14 @@ def dated(document: bytes) -> tuple[str, datetime.date]:
     return max(found, key=lambda one: one[1])
 
 
+def ahead(day: datetime.date, now_utc_ns: int) -> bool:
+    """Whether a day has begun nowhere yet. Where it begins first, a certificate may bear tomorrow's
+    date of UTC (RFC 3339 offsets)."""
+    epoch = datetime.datetime(1970, 1, 1, tzinfo=datetime.UTC)
+    now = epoch + datetime.timedelta(microseconds=now_utc_ns // 1000)
+    return day > (now + datetime.timedelta(hours=14)).date()
+
+
 def _certificate(table: Table) -> Certificate:
     invented = table.flag("invented", False)
     texts = {}

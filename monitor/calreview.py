@@ -13,7 +13,7 @@ import numpy as np
 
 from monitor.calelements import Element
 from monitor.calfile import chain
-from monitor.calparts import CalibrationFile, axes_of, elements_of
+from monitor.calparts import CalibrationFile, ahead, axes_of, dated, elements_of
 from monitor.calterms import assumed_kinds
 from monitor.config import Band, Channel
 from monitor.core.budget import combined, factors, table
@@ -35,12 +35,15 @@ Document = dict[str, object]
 
 @dataclass(frozen=True, slots=True, eq=False)
 class View:
-    """A file, the axes and the band that it is looked at for, and the chain that this gives."""
+    """A file, the axes and the band that it is looked at for, and the chain that this gives.
+
+    gain: the receiver's gain step, '' where there is one only."""
 
     file: CalibrationFile
     axes: str
     band: Band
     chain: Chain
+    gain: str = ""
 
 
 def view(
@@ -60,7 +63,7 @@ def view(
     text = f"{frequency_text(low_hz)} to {frequency_text(high_hz)}"
     band = Band(text, low_hz, high_hz)
     channels = [Channel(axis, axis, band.name, gain) for axis in axes]
-    return View(file, axes, band, chain(file, channels, {band.name: band}))
+    return View(file, axes, band, chain(file, channels, {band.name: band}), gain)
 
 
 def span_hz(file: CalibrationFile, axes: str) -> tuple[float, float]:
@@ -99,6 +102,7 @@ def document(shown: View, shares: Real, now_utc_ns: int) -> Document:
     file, certificate = shown.file, shown.file.certificate
     dues = file.dues(shown.axes)
     overdue = [due for due in dues if now_utc_ns >= due.utc_ns]
+    dated_by, last_day = dated(file.body)
     return {
         "file": file.top.where,
         "identity": shown.chain.identity,
@@ -106,6 +110,7 @@ def document(shown: View, shares: Real, now_utc_ns: int) -> Document:
         "laboratory": certificate.laboratory,
         "certificate": certificate.number,
         "date": certificate.date.isoformat(),
+        "in_the_future": dated_by if ahead(last_day, now_utc_ns) else None,
         "due": certificate.due.isoformat(),
         "due_in_days": (dues[0].utc_ns - now_utc_ns) // DAY_NS,
         "due_first": dues[0].what,
@@ -143,13 +148,21 @@ def _detectors(shown: View) -> list[Document]:
                 "kind": detector.kind,
                 "averages": detector.averages,
                 "averaging_s": detector.averaging_s or None,
-                "range_dbm": list(detector.source.range_dbm),
+                "range_dbm": _range_dbm(shown, detector),
                 "range_v_per_m": _range_v_per_m(detector),
                 "resolution": detector.resolution,
                 "spurs": _spurs(detector),
             }
         )
     return out
+
+
+def _range_dbm(shown: View, detector: Detector) -> list[float]:
+    """Of the gain step that is looked at; of all of them for an axis that is not."""
+    source = detector.source
+    if isinstance(source, ScaleSource) and detector.axis in ("", *shown.axes):
+        return list(source.step(detector.where, shown.gain).range_dbm)
+    return list(source.range_dbm)
 
 
 def _range_v_per_m(detector: Detector) -> list[float] | None:
@@ -251,10 +264,18 @@ def shares_of(text: str | None, axes: str) -> Real:
     return np.asarray(parts / parts.sum())
 
 
-def common_band(files: Sequence[CalibrationFile], axes: str) -> tuple[float, float]:
-    """The frequencies that all the files cover; CalibrationError where there are none."""
+def common_band(
+    files: Sequence[CalibrationFile], axes: str, *, drift: bool = True
+) -> tuple[float, float]:
+    """The frequencies that all the files cover; with drift, those of the tables that the last one
+    has of what it found, too. CalibrationError where there are none."""
     spans = [span_hz(file, axes) for file in files]
+    found = files[-1].as_found
+    spans += found.spans_hz(axes) if drift and found is not None else []
     low, high = max(s[0] for s in spans), min(s[1] for s in spans)
     if not low < high:
-        raise CalibrationError("the calibration files have no band in common")
+        raise CalibrationError(
+            "the calibration files have no band in common, [as_found] of the later one included;"
+            " name one with --band"
+        )
     return low, high

@@ -8,7 +8,7 @@ from dataclasses import dataclass
 from datetime import UTC, date, datetime, timedelta
 
 from monitor import calfile, limitsets, signalwords
-from monitor.calparts import CalibrationFile, dated, parse, read
+from monitor.calparts import CalibrationFile, ahead, dated, parse, read
 from monitor.calterms import assumed_kinds, is_component
 from monitor.changed import not_as_calibrated
 from monitor.config import Site
@@ -23,8 +23,6 @@ from monitor.core.quantities import dbm_from_w
 from monitor.core.uncertainty import equal_shares, expanded_db
 from monitor.marking import DUE_SOON_DAYS
 
-AHEAD_OF_UTC = timedelta(hours=14)
-"""Where the day begins first, a certificate may bear tomorrow's date of UTC (RFC 3339 offsets)."""
 TELL_NO_TEMPERATURE = ("text_lines", "level_series", "iq_file", "iq_stream")
 OUTSIDE_TEXTS = {
     "filter": "a filter keeps out signals outside it",
@@ -64,6 +62,8 @@ def findings(
     yield from _as_found(site, file)
     yield from _temperature(site, chain)
     yield from _channels(site, chain)
+    if signalwords.trusted(site, file, front):
+        yield Finding("calibration", signalwords.NOTHING_AVERAGED)
     for text, ok in signalwords.told(site, file, front):
         yield Finding("band.signal", text, ok)
     yield from front_end(site)
@@ -81,8 +81,8 @@ def refuse_future(site: Site, now_utc_ns: int) -> None:
 
 def refuse_future_date(name: str, key: str, date: date, now_utc_ns: int) -> None:
     """CalibrationError where a date of the calibration file of that name lies in the future."""
-    now = _EPOCH + timedelta(microseconds=now_utc_ns // 1000)
-    if date > (now + AHEAD_OF_UTC).date():
+    if ahead(date, now_utc_ns):
+        now = _EPOCH + timedelta(microseconds=now_utc_ns // 1000)
         raise CalibrationError(
             f"{name}: {key}: {date} lies in the future, this machine's "
             f"clock says {now:%Y-%m-%d}; look at the date or the clock"

@@ -125,7 +125,7 @@ class ScaleSource:
 
     def fit(self, where: Table, gain: str, low_hz: float, high_hz: float) -> Fitted:
         """For a gain step and a band; ConfigError where it lacks them."""
-        step = self._step(where, gain)
+        step = self.step(where, gain)
         valid, usable = step.valid_dbm, step.range_dbm
         if isinstance(step.offset, float):
             law = ScaleLaw(self.quantity, self.resolution, step.offset, valid, usable)
@@ -140,7 +140,7 @@ class ScaleSource:
         law = ScaleLaw(self.quantity, self.resolution, middle_db, valid, usable)
         return law, rest, step.noise, "resolution"
 
-    def _step(self, where: Table, gain: str) -> Step:
+    def step(self, where: Table, gain: str) -> Step:
         """The step of that name; the only one where none is named."""
         if not self.steps[0].gain:
             _no_steps(where, gain)

@@ -17,6 +17,10 @@ from monitor.core.averaging_law import (
 from monitor.core.flags import Flag
 from monitor.detectorfile import Detector
 
+NOTHING_AVERAGED = (
+    'averages = "none" in the calibration holds for the board\'s firmware, too: where it averages'
+    " readings, say so there with averages"
+)
 _USUAL_FLOOR_DB = -30.0
 _BOUND = "lower bounds only: nothing will conform"
 
@@ -26,6 +30,14 @@ def bursts_text() -> str:
     least = -burst_bias_db(0.75, _USUAL_FLOOR_DB)
     most = NOISE_CORRECTION_DB - burst_bias_db(0.25, _USUAL_FLOOR_DB)
     return f"read {least:.0f} to {most:.0f} dB low"
+
+
+def trusted(site: Site, file: CalibrationFile, front: Averaging) -> bool:
+    """Whether NOTHING_AVERAGED is taken on trust for a channel: nobody declares more than none."""
+    return any(
+        joined(detector_of(file, channel).averaging, front).kind == "none"
+        for channel in site.channels
+    )
 
 
 def told(site: Site, file: CalibrationFile, front: Averaging) -> Iterator[tuple[str, bool]]:

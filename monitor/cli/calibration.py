@@ -62,6 +62,7 @@ def show(
     shown = calreview.view(held, _axes(axes), _band(band), gain)
     parts = calreview.shares_of(shares, shown.axes)
     document = calreview.document(shown, parts, time.time_ns())
+    document["band_given"] = band is not None
     document["monte_carlo"] = (
         calreview.monte_carlo(shown.chain, parts, draws, seed) if draws else None
     )
@@ -96,8 +97,9 @@ def compare(
     if not chosen:
         raise ConfigError("the calibration files serve no axis in common")
     band_hz = _band(band) or calreview.common_band(held, chosen)
+    narrowed = band is None and band_hz != calreview.common_band(held, chosen, drift=False)
     views = [calreview.view(file, chosen, band_hz, gain) for file in held]
-    document = calcompare.comparison(*views)
+    document = {**calcompare.comparison(*views), "band_by_as_found": narrowed}
     if as_json:
         print_json(document)
         return

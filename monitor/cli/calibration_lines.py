@@ -22,6 +22,11 @@ def shown(document: Entry) -> Iterator[str]:
         yield f"  due soon: {document['due_first']}, in {document['due_in_days']} days"
     low_c, high_c = document["valid_temperature_c"]
     yield f"  valid from {low_c:g} to {high_c:g} °C; identity {document['identity'][:12]}"
+    if document["in_the_future"]:
+        yield (
+            f"  Note: {document['in_the_future']} lies in the future by this machine's clock; look"
+            " at the date or the clock: nothing measures with it"
+        )
     if document["invented"]:
         yield "  figures of an example, invented: nothing conforms with them"
     if document["assumed"]:
@@ -96,7 +101,8 @@ def _response(document: Entry) -> Iterator[str]:
         else "antenna factor and losses, E² per watt"
     )
     yield f"Response over {_span(document['band'])}: {what}"
-    yield "  (its spread over the band is part of U: give the band of the site file with --band)"
+    remedy = "" if document["band_given"] else ": give the band of the site file with --band"
+    yield f"  (its spread over the band is part of U{remedy})"
     rows = document["response"]
     for axis, row in _merged(rows, document["axes"]):
         yield (
@@ -123,7 +129,7 @@ def _budget(document: Entry) -> Iterator[str]:
     width = max(len(row["name"]) for row in rows)
     yield (
         f"  {'':<{width}}  {'distribution':<16} {'value':>8} {'dB/unit':>8}"
-        f" {'axes':<9} {'u, dB':>6} {'degrees':>8} {'of variance':>11}"
+        f" {'axes':<9} {'u, dB':>6} {'degrees':>8}   of variance"
     )
     for row in rows:
         distribution = row["distribution"].replace("_", "-")
@@ -133,7 +139,7 @@ def _budget(document: Entry) -> Iterator[str]:
         yield (
             f"  {row['name']:<{width}}  {distribution:<16} {_figure(row['value'])}"
             f" {_figure(row['sensitivity'])} {axes:<9} {row['u']:>6.3f}"
-            f" {_degrees(row['degrees_of_freedom']):>8} {100 * row['variance_share']:>9.1f} %"
+            f" {_degrees(row['degrees_of_freedom']):>8} {100 * row['variance_share']:>11.1f} %"
         )
 
 
@@ -188,6 +194,8 @@ def compared(document: Entry) -> Iterator[str]:
         yield f"  {entry['what']}: {_side(entry['a'])} -> {_side(entry['b'])}"
     yield ""
     yield f"Response over {_span(document['band'])}, B less A (what E² and S become higher by):"
+    if document["band_by_as_found"]:
+        yield "  (as far as [as_found] of B has a table; another band with --band)"
     for axis, row in _merged(document["response"], document["axes"]):
         yield f"  {axis}{frequency_text(row['frequency_hz']):>12} {row['db']:>+8.2f} dB"
     yield from _drift(document["drift"])
@@ -195,7 +203,7 @@ def compared(document: Entry) -> Iterator[str]:
         name = f"Detector {axis}".strip()
         if row["largest_db"] is None:
             yield f"{name}: no count within the range of both"
-        else:
+        elif abs(row["largest_db"]) >= 0.005:
             yield (
                 f"{name}: the same count reads up to {row['largest_db']:+.2f} dB otherwise"
                 f" (at {row['at_dbm']:.1f} dBm)"

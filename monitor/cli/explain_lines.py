@@ -7,9 +7,12 @@ from collections.abc import Iterator
 from typing import Any
 
 from monitor.cli.explain_temperature import line_of_readings, words_of_channel
+from monitor.core.flags import UPPER_BOUND, words
 from monitor.core.limits import frequency_text
 
 Document = dict[str, Any]
+NO_DB = "none in dB: below the detection limit"
+UPPER_WORDS = frozenset(words(int(UPPER_BOUND)))
 VERDICTS = {"exceeds": "exceeds", "conforms": "conforms", "undecided": "cannot be decided"}
 CAUTION = (
     "At this instrument's place. Which limits bind is for local codes and licensed practice to say."
@@ -39,7 +42,7 @@ def lines(told: Document) -> Iterator[str]:
     yield from _budget(told["uncertainty"], told["field"])
     yield "\n6. Against the limits"
     for exposure in told["exposures"]:
-        yield from _exposure(exposure)
+        yield from _exposure(exposure, _below(told["field"]))
     if not told["exposures"]:
         yield f"  no limit is averaged over {told['averaging_s']} s"
     yield "\n7. Files it rests on, by their SHA-256"
@@ -106,7 +109,10 @@ def _budget(budget: list[Document] | None, field: Document) -> Iterator[str]:
         f"  what multiplies: {_number(field['instrument_expanded_db'])} dB; what adds (noise taken"
         f" off, scatter of a varying signal): {_number(field['added_e2_v2_per_m2'])} V2/m2"
     )
-    yield f"  expanded uncertainty of the mean {u_db} dB at 95 %, k = {_number(field['k'])}"
+    if math.isfinite(field["expanded_uncertainty_db"]) or not _below(field):
+        yield f"  expanded uncertainty of the mean {u_db} dB at 95 %, k = {_number(field['k'])}"
+    else:
+        yield f"  expanded uncertainty of the mean: {NO_DB}"
     if field["widened_by_drift_db"]:
         yield (
             f"  a later calibration found a drift of {field['widened_by_drift_db']:.2g} dB: with it"
@@ -124,7 +130,12 @@ def _known(line: Document) -> str:
     return said
 
 
-def _exposure(exposure: Document) -> Iterator[str]:
+def _below(field: Document) -> bool:
+    """Whether the mean is a bound that it stays below."""
+    return not UPPER_WORDS.isdisjoint(field["flags"])
+
+
+def _exposure(exposure: Document, below: bool) -> Iterator[str]:
     population, scope = (exposure[key].replace("_", " ") for key in ("population", "scope"))
     verdict = VERDICTS[exposure["verdict"]]
     yield f"  {exposure['set']}, {population}, {scope} ({exposure['clause']}): {verdict}"
@@ -133,7 +144,10 @@ def _exposure(exposure: Document) -> Iterator[str]:
         yield f"    limit over the band {low:.4g} to {high:.4g} V/m"
     ratios = " / ".join(_number(exposure[f"ratio_{name}"]) for name in ("low", "mean", "high"))
     u_db = _number(exposure["expanded_uncertainty_db"])
-    yield f"    exposure ratio low / mean / high {ratios}; U {u_db} dB, the band apart"
+    if math.isfinite(exposure["expanded_uncertainty_db"]) or not below:
+        yield f"    exposure ratio low / mean / high {ratios}; U {u_db} dB, the band apart"
+    else:
+        yield f"    exposure ratio low / mean / high {ratios}; U: {NO_DB}"
     for reason in exposure["reasons"] or ["why is not known"]:
         yield f"    {reason}"
 
