@@ -107,7 +107,7 @@ def _add_headers(response: Response) -> Response:
 
 
 _OWN_WORDS = {
-    404: "There is no page at this address. The pages of this monitor are Now and History.",
+    404: "There is no page at this address. The pages here are Now, History and Spectrum.",
     405: "This address takes no such request; follow a link instead.",
     413: "That is more than a form of these pages holds; open the page again and repeat.",
     500: "The pages have met a fault of their own; open the page again. The monitor goes on.",

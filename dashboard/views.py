@@ -9,7 +9,7 @@ from typing import Any
 from flask import Blueprint, current_app, redirect, render_template, request, url_for
 from flask.typing import ResponseReturnValue
 
-from dashboard import headline, history, now, reservations, wish, words
+from dashboard import headline, history, now, reservations, spectrum, wish, words
 from dashboard.models import (
     ASK_TIMEOUT_S,
     UNREACHABLE,
@@ -112,13 +112,20 @@ def alarms() -> ResponseReturnValue:
 
 
 def _send(wish: Mapping[str, object]) -> None:
+    _asked(wish, "not done: ")
+
+
+def _asked(wish: Mapping[str, object], failed: str = "") -> Mapping[str, Any]:
+    """The daemon's answer. failed: what a refusal or a silence begins with."""
     context = _context()
     try:
         answer = context.doors.ask(context.station.control_path, wish, ASK_TIMEOUT_S)
     except UNREACHABLE as error:
-        raise DeviceError(f"not done: the monitor does not answer ({error}); try again") from error
+        why = f"{failed}the monitor does not answer ({error}); try again"
+        raise DeviceError(why) from error
     if not answer.get("ok"):
-        raise ConfigError(f"not done: {answer.get('error', 'the monitor refused')}")
+        raise ConfigError(f"{failed}{answer.get('error', 'the monitor refused')}")
+    return answer
 
 
 @pages.get("/history")
@@ -127,6 +134,21 @@ def past() -> ResponseReturnValue:
     context = _context()
     values = history.page(context.station, context.doors, request.args)
     return render_template("history.html", **values)
+
+
+@pages.get("/spectrum")
+def spectral() -> ResponseReturnValue:
+    """The page of the spectrum."""
+    context = _context()
+    answer = _asked({"do": "spectrum"})
+    found = answer.get("spectrum")
+    return render_template("spectrum.html", **spectrum.page(found, context.station))
+
+
+@pages.get("/api/spectrum")
+def api_spectrum() -> ResponseReturnValue:
+    """The daemon's own document of the spectrum; null where its sensor gives none."""
+    return {"spectrum": _asked({"do": "spectrum"}).get("spectrum")}
 
 
 @pages.get("/api/now")

@@ -12,6 +12,7 @@ from hardware.iq_client import Client, Radio
 from hardware.iq_count import SampleClock, real_rate_hz
 from hardware.iq_floor import Floors
 from hardware.iq_levels import Levels, counts
+from hardware.iq_picture import Picture
 from hardware.iq_plan import Tune
 from hardware.iq_ring import Ring
 from monitor.core.readings import NS_PER_S
@@ -63,7 +64,7 @@ class Reading:
 
 class Receiver:
     """One receiver at work. now_ns: a clock that never jumps (ns); seed: None takes the system's;
-    ring: keeps the samples that were measured.
+    ring: keeps the samples that were measured; picture: looks at them.
 
     Where the bands are swept, each round takes the places in a new order, and each dwell begins at
     random within a dwell's length, so that nothing periodic keeps step. A round is one reading,
@@ -72,11 +73,11 @@ class Receiver:
 
     def __init__(
         self, radio: Radio, scheme: Scheme, now_ns: Callable[[], int], seed: int | None = None,
-        ring: Ring | None = None,
+        ring: Ring | None = None, picture: Picture | None = None,
     ) -> None:  # fmt: skip
         self._scheme = scheme
         self._now_ns = now_ns
-        self._ring = ring
+        self._ring, self._picture = ring, picture
         self._draws = Random(seed)
         self._clipped, self._done, self._from_ns, self._start_ns = 0, 0, 0, -1
         self._rate_hz = real_rate_hz(radio.rate_hz)
@@ -196,6 +197,8 @@ class Receiver:
             self._floors.offer(place, part, clock.time_ns(first + at))
             if self._ring is not None:
                 self._ring.add(part, clock.time_ns(first + at), place, first + at)
+            if self._picture is not None:
+                self._picture.add(place, part, clock.time_ns(first + at))
             self._done += n
             at += n
             if self._done == self._need:

@@ -12,10 +12,12 @@ import subprocess
 import sys
 from collections.abc import Callable, Mapping
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 
 from hardware.iq_options import Settings
+from hardware.iq_shown import Shown
 from hardware.iq_worker import settings_text
 from hardware.thermometer import Thermometer
 from monitor.core.flags import Flag
@@ -182,6 +184,7 @@ class IqStream:
         )
         self.keeps = settings.evidence_bytes > 0
         self._kept: list[Mapping[str, object]] = []
+        self._shown = Shown()
         self._upto_ns = boot_ns()
         self._told: dict[str, object] = {}
         self._counters: dict[str, int] = {}
@@ -195,7 +198,7 @@ class IqStream:
         for line in self._worker.lines(timeout_s):
             said = json.loads(line)
             if "upto" not in said:
-                self._kept.append(said)
+                self._apart(said)
                 continue
             self._told, self._counters = said, said["counters"]
             start_ns = said.get("at", 0)
@@ -203,6 +206,7 @@ class IqStream:
                 times.append(start_ns)
                 counts.append(said["counts"])
                 flags.append(self._bits | (int(Flag.CLIPPED) if said["clipped"] else 0))
+                self._shown.note(start_ns, counts[-1], flags[-1])
             self._upto_ns = max(self._upto_ns, said["upto"])
         if self._worker.problem:  # whatever comes from a process yet to start is later
             self._upto_ns = max(self._upto_ns, self._boot_ns())
@@ -230,6 +234,17 @@ class IqStream:
             counters=self._counters | self._worker.counters,
             floors=() if problem else tuple(self._told.get("floors", ())),  # type: ignore[arg-type]
         )
+
+    def _apart(self, said: Mapping[str, Any]) -> None:
+        """What is no reading."""
+        if "picture" in said:
+            self._shown.take(said["picture"])
+        else:
+            self._kept.append(said)
+
+    def shown(self) -> Mapping[str, Any]:
+        """The newest spectrum for people to look at, see iq_shown.py; from any thread."""
+        return self._shown.view
 
     def keep(self, request: Mapping[str, object]) -> bool:
         """Ask for the samples round a moment as a recording; see monitor.evidence.Keeper."""

@@ -11,10 +11,13 @@ import select
 import sys
 import time
 from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from random import Random
 
 from hardware.iq_client import Radio
 from hardware.iq_count import real_rate_hz
 from hardware.iq_keep import Keeper, ring_for
+from hardware.iq_picture import Picture
 from hardware.iq_plan import Part, Tune
 from hardware.iq_receiver import Reading, Receiver, Scheme
 
@@ -46,8 +49,23 @@ def settings_text(
     return json.dumps(own)
 
 
-def receiver_of(text: str, now_ns: Callable[[], int]) -> tuple[Receiver, Keeper | None]:
-    """The receiver of these settings, and what keeps samples of it, if any are to be kept."""
+@dataclass(frozen=True, slots=True)
+class Work:
+    """What the process does: the receiver, what looks at its samples, and what keeps some."""
+
+    receiver: Receiver
+    picture: Picture
+    keeper: Keeper | None
+
+    def close(self) -> None:
+        """Let the connection go, and finish what is being written."""
+        self.receiver.close()
+        if self.keeper is not None:
+            self.keeper.close()
+
+
+def work_of(text: str, now_ns: Callable[[], int]) -> Work:
+    """The work of these settings."""
     own = json.loads(text)
     tunes = tuple(
         Tune(centre_hz, tuple(Part(*part) for part in parts), tuple((a, b) for a, b in spurs))
@@ -57,11 +75,12 @@ def receiver_of(text: str, now_ns: Callable[[], int]) -> tuple[Receiver, Keeper 
     scheme = Scheme(channels, tunes, fft, interval_s, dwell_s, settle_s)
     radio, rate_hz = Radio(*own["radio"]), real_rate_hz(own["radio"][2])
     ring = ring_for(rate_hz, scheme.round_s) if own["evidence"] else None
-    receiver = Receiver(radio, scheme, now_ns, own["seed"], ring)
+    picture = Picture(rate_hz, tunes, Random(own["seed"]))
+    receiver = Receiver(radio, scheme, now_ns, own["seed"], ring, picture)
     if ring is None:
-        return receiver, None
-    text = f"receiver of the 8-bit dongle class, gain {radio.gain_db:g} dB"
-    return receiver, Keeper(ring, rate_hz, tunes, own["evidence"], text)
+        return Work(receiver, picture, None)
+    about = f"receiver of the 8-bit dongle class, gain {radio.gain_db:g} dB"
+    return Work(receiver, picture, Keeper(ring, rate_hz, tunes, own["evidence"], about))
 
 
 def line_of(reading: Reading | None, receiver: Receiver, unsaid: int) -> bytes:
@@ -120,15 +139,9 @@ class Listener:
         return data
 
 
-def run(
-    receiver: Receiver,
-    now_ns: Callable[[], int],
-    source: int,
-    sink: int,
-    keeper: Keeper | None = None,
-) -> None:
+def run(work: Work, now_ns: Callable[[], int], source: int, sink: int) -> None:
     """Work until the descriptor source ends. A reader that does not read loses lines, counted."""
-    speaker, listener = Speaker(sink), Listener(source)
+    receiver, speaker, listener = work.receiver, Speaker(sink), Listener(source)
     receiver.client.watch(source)
     said_ns, problem = 0, ""
     untold: list[dict[str, object]] = []
@@ -139,9 +152,11 @@ def run(
         for reading in readings or nothing:
             said_ns, problem = now_ns(), receiver.problem
             speaker.say(line_of(reading, receiver, speaker.unsaid))
+        for picture in work.picture.due(now_ns()):
+            speaker.say(json.dumps(picture, separators=(",", ":")).encode() + b"\n")
         asked = listener.requests()
-        if keeper is not None:
-            untold = _kept(keeper, asked, now_ns(), untold, speaker)
+        if work.keeper is not None:
+            untold = _kept(work.keeper, asked, now_ns(), untold, speaker)
 
 
 def _kept(
@@ -167,13 +182,11 @@ def _boot_ns() -> int:
 
 def main(arguments: Sequence[str]) -> None:
     """The process; arguments as in sys.argv."""
-    receiver, keeper = receiver_of(arguments[1], _boot_ns)
+    work = work_of(arguments[1], _boot_ns)
     try:
-        run(receiver, _boot_ns, 0, 1, keeper)
+        run(work, _boot_ns, 0, 1)
     finally:
-        receiver.close()
-        if keeper is not None:
-            keeper.close()
+        work.close()
 
 
 if __name__ == "__main__":

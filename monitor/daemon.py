@@ -6,7 +6,7 @@ import threading
 from collections.abc import Mapping, Sequence
 from dataclasses import replace
 
-from monitor import refchecks, refstrikes
+from monitor import refchecks, refstrikes, spectrumview
 from monitor.alarm_desk import AlarmDesk, text_of
 from monitor.config import Site
 from monitor.core import pipeline
@@ -244,6 +244,10 @@ class Daemon:
         do = request.get("do")
         if do == "now":
             return {"now": snapshot(self.view(), self._here, self._site)}
+        if do == "spectrum":
+            shown = getattr(self._front, "shown", None)
+            found = None if shown is None else shown()
+            return {"spectrum": spectrumview.document(found, self.view(), self._here, self._site)}
         now_ns = self._state.front_ns
         if do in ("acknowledge", "shelve", "unshelve"):
             event = self._desk.request(request, now_ns)
@@ -257,8 +261,8 @@ class Daemon:
             event = made(request, names, now_ns)
         else:
             raise ConfigError(
-                f"do: {do!r} is not now, acknowledge, shelve, unshelve, note, {refchecks.KIND} or"
-                f" {refstrikes.KIND}"
+                f"do: {do!r} is not now, spectrum, acknowledge, shelve, unshelve, note, "
+                f"{refchecks.KIND} or {refstrikes.KIND}"
             )
         self.note(event)
         return {}

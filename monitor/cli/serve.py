@@ -23,7 +23,7 @@ THREADS = 4
 @click.option("--host", help="Address to listen on; default: the site's, else 127.0.0.1.")
 @click.option("--port", type=click.IntRange(0, 65535), help="Port; 0 takes a free one.")
 def command(site: Path | None, record: Path | None, host: str | None, port: int | None) -> None:
-    """Serve the pages: now and history. Each part of the monitor can end alone."""
+    """Serve the pages: now, history and spectrum. Each part of the monitor can end alone."""
     settings = _settings(site, record)
     host = host or settings.pop("host")
     port = settings.pop("port") if port is None else port

@@ -143,12 +143,15 @@ class FakeDaemon:
         self.now = now
         self.asked: list[dict[str, object]] = []
         self.refusal = ""
+        self.spectrum: Mapping[str, Any] | None = None
 
     def ask(self, path: Path, what: Mapping[str, object], timeout_s: float) -> Mapping[str, Any]:
         if self.now is None:
             raise DeviceError(f"{path.name}: no daemon listens")
         if what["do"] == "now":
             return {"ok": True, "now": self.now}
+        if what["do"] == "spectrum":
+            return {"ok": True, "spectrum": self.spectrum}
         self.asked.append(dict(what))
         return {"ok": False, "error": self.refusal} if self.refusal else {"ok": True}
 
