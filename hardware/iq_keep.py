@@ -21,7 +21,7 @@ from monitor.core.readings import NS_PER_S
 
 KEPT_S = 1.0
 """How much is kept: half before the moment, half after it."""
-RING_S = 3.0
+RING_S = 2.0
 """An alarm comes a reading and a turn of the daemon's loop after what it is about."""
 RING_BYTES = 32_000_000
 META_BYTES = 100_000

@@ -18,7 +18,7 @@ FFT = 1024
 GROUPS = 256
 IN_GROUP = FFT // GROUPS
 SPIKE_BINS = 3
-LOOKED = 8
+LOOKED = 16
 """One sample of so many is looked at: enough for a picture, and cheap (our choice)."""
 EVERY_S = 3.0
 TENTHS = 10
