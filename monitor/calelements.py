@@ -29,10 +29,10 @@ class Element:
     """One part between field and detector; axis '' serves every axis.
 
     quantity: what its table holds, antenna_factor, gain (of an antenna or a preamplifier), loss, or
-    correction (of a probe, true less indicated). given_db: (n,), that table. curve: what it takes
-    from a level, an antenna factor (dB/m) or a loss (dB), below zero where it amplifies.
-    laboratory '', date and due None where not given. line: the certificate's
-    uncertainty, where it is given.
+    correction (of a probe, true less indicated). isotropic: it sees the whole field. given_db:
+    (n,), that table. curve: what it takes from a level, an antenna factor (dB/m) or a loss (dB),
+    below zero where it amplifies. laboratory '', date and due None where not given. line: the
+    certificate's uncertainty, where it is given.
     """
 
     where: Table
@@ -47,6 +47,7 @@ class Element:
     date: datetime.date | None
     due: datetime.date | None
     line: Line | None
+    isotropic: bool = False
 
     @property
     def name(self) -> str:
@@ -82,11 +83,22 @@ def read_element(table: Table) -> Element:
     day, due = date(table, "date", None), date(table, "due", None)
     if day and due and due <= day:
         raise table.error("due", f"{due} is not after date, {day}")
+    isotropic = _isotropic(table, kind, axis)
     table.finish()
     return Element(
         table, kind, serial, certificate, axis, quantity, values[:, 1], curve, laboratory, day, due,
-        line,
+        line, isotropic,
     )  # fmt: skip
+
+
+def _isotropic(table: Table, kind: str, axis: str) -> bool:
+    """Whether it gives one figure of the whole field."""
+    isotropic: bool = table.flag("isotropic", False)
+    if isotropic and kind != "probe":
+        raise table.error("isotropic", "is for a probe calibrated as a whole; take it out")
+    if isotropic and axis:
+        raise table.error("axis", "stands beside isotropic: it has no axis; take one out")
+    return isotropic
 
 
 def _table(table: Table) -> Real:

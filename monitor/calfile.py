@@ -91,7 +91,8 @@ def _chain(
         k=tuple(k for _, k in responses),
         k_mid=np.array([cal.middle(k) for _, k in responses]),
         contributions=contributions,
-        flags=_flags(file, done, any(assumed for _, assumed in terms)) | _missing_axes(bands, axes),
+        flags=_flags(file, done, any(assumed for _, assumed in terms))
+        | _missing_axes(file, channels, bands, axes),
         valid_temperature_c=file.certificate.valid_temperature_c,
         due_utc_ns=file.dues("".join(channel.axis for channel in channels))[0].utc_ns,
         resolution=_resolution(file, chosen),
@@ -204,16 +205,40 @@ def _agree(file: CalibrationFile, budget: Sequence[Lines]) -> None:
 def _terms(file: CalibrationFile, channel: Channel, band: Band, axes: int) -> tuple[Lines, Lines]:
     """The lines that the file writes for a channel, and those assumed where it writes none."""
     written = budget_of(file, channel, band.low_hz, band.high_hz)
-    return written, calterms.assumed(written, calterms.needed(axes, band.polarisation))
+    return written, calterms.assumed(
+        written, calterms.needed(axes, band.polarisation, isotropic=isotropic(file, channel))
+    )
 
 
 def _treated(detector: Detector, band: Band, front: Averaging) -> Treatment:
     return detector.treatment(band.signal, band.signal_bandwidth_hz, front)
 
 
-def _missing_axes(bands: Mapping[str, Band], axes: Mapping[str, int]) -> int:
-    """COMPONENT_ONLY where a band has fewer than three axes and no survey for the others."""
-    parts = (calterms.is_component(n, bands[name].polarisation) for name, n in axes.items())
+def isotropic(file: CalibrationFile, channel: Channel) -> bool:
+    """Whether the channel sees the whole field by itself; ConfigError as of antenna_of."""
+    return antenna_of(file, channel).isotropic
+
+
+def _missing_axes(
+    file: CalibrationFile, channels: Sequence[Channel], bands: Mapping[str, Band],
+    axes: Mapping[str, int],
+) -> int:  # fmt: skip
+    """COMPONENT_ONLY where a band has fewer than three axes and no survey for the others.
+
+    ConfigError where a probe of the whole field would be counted several times in a band.
+    """
+    whole = {channel.band for channel in channels if isotropic(file, channel)}
+    for name in whole:
+        if axes[name] > 1:
+            raise file.top.error(
+                "element",
+                f"an isotropic probe sees the whole field, but band {name!r} has {axes[name]}"
+                " channels, which are summed; leave one",
+            )
+    parts = (
+        calterms.is_component(n, bands[name].polarisation, isotropic=name in whole)
+        for name, n in axes.items()
+    )
     return int(Flag.COMPONENT_ONLY) if any(parts) else 0
 
 

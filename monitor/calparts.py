@@ -188,11 +188,14 @@ def elements_of(file: CalibrationFile, axis: str) -> list[Element]:
 
 
 def axes_of(file: CalibrationFile) -> str:
-    """The axes that have a detector and an antenna, of 'xyz'; all where none has."""
+    """The axes that have a detector and an antenna, of 'xyz'; all where none has. Of a probe of the
+    whole field, which serves any, one."""
     served = [
         axis
         for axis in AXES
         if any(e.kind in PICKUPS for e in elements_of(file, axis))
         and any(detector.axis in ("", axis) for detector in file.detectors)
     ]
+    if any(element.isotropic for element in file.elements):
+        served = served[:1]
     return "".join(served or AXES)

@@ -31,18 +31,19 @@ WORDS = {
 }
 
 
-def is_component(axes: int, polarisation: str) -> bool:
-    """Whether a band of so many axes sees a part of the field only. polarisation: of the Band."""
-    return axes < len(AXES) and polarisation != "survey"
+def is_component(axes: int, polarisation: str, *, isotropic: bool = False) -> bool:
+    """Whether a band of so many axes sees a part of the field only. polarisation: of the Band;
+    isotropic: its one channel is a probe of the whole field."""
+    return axes < len(AXES) and polarisation != "survey" and not isotropic
 
 
-def needed(axes: int, polarisation: str) -> tuple[str, ...]:
+def needed(axes: int, polarisation: str, *, isotropic: bool = False) -> tuple[str, ...]:
     """The kinds that must stand in the budget of each channel of a band of so many axes.
 
     Where a survey stands for the axes that are missing, what it leaves open is one of them.
     """
     left_out = set() if axes > 1 else {"cross_axis"}
-    if axes == len(AXES) or is_component(axes, polarisation):
+    if isotropic or axes == len(AXES) or is_component(axes, polarisation):
         left_out.add("polarisation")
     return tuple(kind for kind in ASSUMED_DB if kind not in left_out)
 

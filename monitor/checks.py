@@ -61,7 +61,7 @@ def findings(
     yield from _installed(site, file)
     yield from _as_found(site, file)
     yield from _temperature(site, chain)
-    yield from _channels(site, chain)
+    yield from _channels(site, file, chain)
     if signalwords.trusted(site, file, front):
         yield Finding("calibration", signalwords.NOTHING_AVERAGED)
     for text, ok in signalwords.told(site, file, front):
@@ -175,16 +175,19 @@ def _temperature(site: Site, chain: Chain) -> Iterator[Finding]:
         )
 
 
-def _channels(site: Site, chain: Chain) -> Iterator[Finding]:
+def _channels(site: Site, file: CalibrationFile, chain: Chain) -> Iterator[Finding]:
     axes = Counter(channel.band for channel in site.channels)
+    whole = {c.band for c in site.channels if calfile.isotropic(file, c)}
     for name, band in site.bands.items():
-        few = is_component(axes[name], band.polarisation)
+        few = is_component(axes[name], band.polarisation, isotropic=name in whole)
         text = f"{name}: {frequency_text(band.low_hz)} to {frequency_text(band.high_hz)}"
         if few:
             rest = "; a component only, a lower bound: nothing will conform"
         else:
             rest = "" if axes[name] == 3 else "; a survey stands for the others"
-        yield Finding("band", f"{text}, {axes[name]} of 3 axes{rest}", not few)
+        seen = f"{axes[name]} of 3 axes{rest}"
+        seen = "an isotropic probe: the whole field" if name in whole else seen
+        yield Finding("band", f"{text}, {seen}", not few)
         outside = OUTSIDE_TEXTS.get(band.outside)
         yield Finding(
             "band.outside",

@@ -7,7 +7,7 @@ from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 from pathlib import Path
 
-from monitor import calparts, checks
+from monitor import calfile, calparts, checks
 from monitor.calparts import CalibrationFile
 from monitor.changed import names_of, not_as_calibrated, swapped
 from monitor.config import Site
@@ -20,6 +20,7 @@ from monitor.record.reader import Record
 from monitor.record.uses import Drift
 
 Made = Callable[[CalibrationFile], Chain]
+Say = Callable[[str], None]
 WRONG = (CalibrationError, ConfigError, DeviceError)
 """What a calibration file can be refused with."""
 
@@ -46,13 +47,18 @@ class Before:
         return [file for file in self.files if name in (file.certificate.id, _identity(file))]
 
 
-def in_force(site: Site, made: Made, utc_ns: int | None) -> InForce:
+def unsaid(line: str) -> None:
+    """A Say where nobody listens."""
+
+
+def in_force(site: Site, made: Made, utc_ns: int | None, say: Say = unsaid) -> InForce:
     """The site's calibration file; where it is not to be used, the last one that was.
 
     A box with a record goes on measuring whatever becomes of the file: on the calibration that
     its record holds, as if overdue, so that data are kept and nothing conforms. A first start
     has none to go on with and refuses. made: from file to chain, for the channels and the sensor.
-    utc_ns: now, None where nothing has set the clock, for a file that is dated in the future.
+    utc_ns: now, None where nothing has set the clock, for a file that is dated in the future. say:
+    tell a person, one line, that the record's last calibration stands in.
 
     Raises what is wrong with the file (WRONG) where nothing can stand in for it.
     """
@@ -75,6 +81,7 @@ def in_force(site: Site, made: Made, utc_ns: int | None) -> InForce:
             "why": trouble, "stands in": chain.identity, "text": f"{trouble}; measuring on",
         }  # fmt: skip
         events.append(Event(0, "fault", "calibration file", why))
+        say(f"{trouble}; measuring on by {_last(file)}")
     lines = not_as_calibrated(site.installed, file) + swapped(file, before.files)
     if lines:
         bits |= Flag.ELEMENT_CHANGED
@@ -82,6 +89,19 @@ def in_force(site: Site, made: Made, utc_ns: int | None) -> InForce:
             Event(0, "calibration", "element changed", {"what": lines, "text": "; ".join(lines)})
         )
     return InForce(chain, Standing(int(bits), names_of(file)), tuple(events))
+
+
+def would_go_on(site: Site) -> str:
+    """What a run would do without the site's calibration file, '' where it would not start."""
+    before = before_of(site.record_path)
+    found = _last_good(before, lambda file: calfile.chain(file, site.channels, site.bands))
+    return "" if found is None else f"a run would go on by {_last(found[0])}"
+
+
+def _last(file: CalibrationFile) -> str:
+    return (
+        f"the record's last calibration, {file.certificate.id!r}, as if overdue: nothing conforms"
+    )
 
 
 def _drift(site: Site, file: CalibrationFile, before: Before) -> Iterator[Event]:

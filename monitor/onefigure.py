@@ -11,7 +11,7 @@ import numpy as np
 
 from monitor import calterms
 from monitor.calelements import PICKUPS, Element
-from monitor.calfile import antenna_of, budget_of, detector_of
+from monitor.calfile import antenna_of, budget_of, detector_of, isotropic
 from monitor.calparts import CalibrationFile, Certificate, axes_of, elements_of
 from monitor.config import Channel
 from monitor.core.averaging_law import UNDECLARED
@@ -136,7 +136,8 @@ def _budget(
         if line.curve and line.axis in ("", channel.axis):
             _covers(line.where, repr(line.name), line.curve, frequency_hz)
     written = budget_of(file, channel, frequency_hz, frequency_hz)
-    kinds = calterms.needed(len(axes_of(file)), "undeclared")
+    whole = isotropic(file, channel)
+    kinds = calterms.needed(len(axes_of(file)), "undeclared", isotropic=whole)
     assumed = calterms.assumed(written, kinds)
     return written + assumed, int(Flag.ASSUMED_TERMS) if assumed else 0
 
@@ -153,7 +154,7 @@ def _covers(where: Table, name: str, curve: FrequencyTable, frequency_hz: float)
 
 def _circumstances(file: CalibrationFile, channel: Channel, asked: Asked, now_utc_ns: int) -> int:
     """Flags of the calibration, the time and the temperature; one axis is a component."""
-    bits = Flag.COMPONENT_ONLY
+    bits = Flag(0) if isotropic(file, channel) else Flag.COMPONENT_ONLY
     if file.invented:
         bits |= Flag.INVENTED_CALIBRATION
     now = np.array([now_utc_ns], np.int64)

@@ -29,7 +29,7 @@ from monitor.core.rows import Event
 from monitor.core.silence import KEY as SILENCE
 from monitor.core.station import Station, station
 from monitor.daemon import RECORD, Daemon
-from monitor.inforce import before_of, in_force
+from monitor.inforce import Say, before_of, in_force, unsaid
 from monitor.listening import heard, left_alone, named
 from monitor.receiver import refuse_other_gain
 from monitor.record import connect
@@ -186,12 +186,12 @@ def listen(site: Site, seconds: float) -> list[Finding]:
         front.close()
 
 
-def daemon_for(site: Site, *, history_s: float | None = None) -> Daemon:
+def daemon_for(site: Site, *, history_s: float | None = None, say: Say = unsaid) -> Daemon:
     """Everything opened and put together; the record is made where it is missing."""
     clock = SystemClock()
     settings = sensor_settings(site)
     utc_ns = None if clock.uncertainty_ns() is None else clock.utc_ns()
-    force = in_force(site, lambda file: _made(file, site, settings), utc_ns)
+    force = in_force(site, lambda file: _made(file, site, settings), utc_ns, say)
     chain = force.chain
     here = station_for(site, chain)
     # A box in service waits for a device that is away, and says so; a first start needs it.

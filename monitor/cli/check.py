@@ -4,11 +4,12 @@ from __future__ import annotations
 
 import click
 
-from monitor.checks import findings
+from monitor.checks import findings, refuse_future
 from monitor.cli.levels import Within
 from monitor.cli.output import print_json
 from monitor.clock import SystemClock
-from monitor.config import default_site_path, load_site
+from monitor.config import Site, default_site_path, load_site
+from monitor.inforce import WRONG, would_go_on
 
 
 @click.command("check")
@@ -31,7 +32,12 @@ def command(site_file: str | None, listen_s: float, as_json: bool) -> None:
     # Late: a wrong site file needs no front end to say so.
     from monitor import wiring
 
-    found = list(findings(site, SystemClock().utc_ns(), wiring.check, wiring.averaging_of))
+    now_utc_ns = SystemClock().utc_ns()
+    try:
+        found = list(findings(site, now_utc_ns, wiring.check, wiring.averaging_of))
+    except WRONG:
+        _refuse_calibration(site, now_utc_ns)
+        raise
     if listen_s and site.sensor_kind not in wiring.RECORDED:
         found += wiring.listen(site, listen_s)
     if as_json:
@@ -42,3 +48,13 @@ def command(site_file: str | None, listen_s: float, as_json: bool) -> None:
     width = max(len(finding.where) for finding in found)
     for finding in found:
         click.echo(f"{'ok  ' if finding.ok else 'note'}  {finding.where:{width}}  {finding.text}")
+
+
+def _refuse_calibration(site: Site, now_utc_ns: int) -> None:
+    """What is wrong with the calibration file, if that is at fault, and what a run would do."""
+    try:
+        refuse_future(site, now_utc_ns)
+    except WRONG as error:
+        instead = would_go_on(site)
+        if instead:
+            raise type(error)(f"{error}; {instead}") from error

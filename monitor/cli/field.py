@@ -35,6 +35,7 @@ CAUTION = (
     "One axis at one moment: a component of the field, not an average; no statement about any"
     " limit follows from it."
 )
+CAUTION_WHOLE = "One moment, not an average; no statement about any limit follows from it."
 
 
 @click.command("field")
@@ -163,7 +164,8 @@ def _lines(asked: Asked, found: Figure) -> list[str]:
         head.append(_step("for its temperature, in what follows", taken))
     head += _on_the_way(found)
     head += [_step(link.element, "", link) for link in others if link.gain_db is None]
-    return [*head, *_result(found), "", *_remarks(asked, found), CAUTION]
+    caution = CAUTION if found.flags & Flag.COMPONENT_ONLY else CAUTION_WHOLE
+    return [*head, *_result(found), "", *_remarks(asked, found), caution]
 
 
 def _on_the_way(found: Figure) -> list[str]:
@@ -249,6 +251,8 @@ def _remarks(asked: Asked, found: Figure) -> list[str]:
     outside = words(found.flags & int(OUTSIDE_BUDGET))
     if outside:
         said.append(f"Note: the stated uncertainty does not cover this: {', '.join(outside)}")
+    if not found.flags & Flag.COMPONENT_ONLY:
+        return said
     whole = "more than this" if found.flags & UPPER_BOUND else "this much or more"
     may = "may be" if found.flags & UPPER_BOUND else "is"
     return [*said, f"Note: fewer than three axes: the whole field {may} {whole}"]

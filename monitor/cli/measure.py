@@ -34,7 +34,9 @@ def measure(site: Site, exit_at_end: bool, history_s: float | None) -> None:
 
     signal.signal(signal.SIGTERM, on_signal)
     signal.signal(signal.SIGINT, on_signal)
-    daemon = wiring.daemon_for(site, history_s=history_s)
+    daemon = wiring.daemon_for(
+        site, history_s=history_s, say=lambda line: click.echo(line, err=True)
+    )
     server = control.Server(site.control_path, daemon.answer)
     try:
         daemon.run(stop, exit_at_end)

@@ -217,7 +217,12 @@ def test_a_drift_that_does_not_cover_the_band_is_a_mistake_in_the_file(site: Sit
     with pytest.raises(CalibrationError, match=r"as_found.table: covers 1 GHz to 2 GHz"):
         begin(site, narrow, 0)
     begin(site, OLD, 0)
-    (fault,) = begin(site, narrow, MINUTE).events
+    force = begin(site, narrow, MINUTE)
+    (fault,) = force.events
+    said: list[str] = []
+    in_force(site, lambda f: calfile.chain(f, site.channels, site.bands), None, said.append)
+    assert len(said) == 1
+    assert "measuring on by the record's last calibration, 'roof-1, autumn'" in said[0]
     assert (fault.kind, fault.body["stands in"]) == (
         "fault", hashlib.sha256(OLD.encode()).hexdigest(),
     )  # fmt: skip

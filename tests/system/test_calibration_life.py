@@ -51,15 +51,22 @@ def last_flags(desk: Desk) -> int:
 
 @pytest.mark.parametrize("spoiled", ["[calibration]\nid = ", None, "number in Kelvin"])
 def test_a_box_with_a_record_measures_on_without_a_calibration_file(
-    desk: Desk, spoiled: str | None
+    desk: Desk, spoiled: str | None, capfd: pytest.CaptureFixture[str]
 ) -> None:
     run(desk)
     assert not last_flags(desk) & Flag.CALIBRATION_OVERDUE
     good = desk.folder / "calibration.toml"
     whole = good.read_text()
     good.unlink() if spoiled is None else good.write_text(spoiled)
+    capfd.readouterr()
     now, came = run(desk)
     assert came > 20
+    assert capfd.readouterr().err.count("measuring on by the record's last calibration") == 1
+    checked = fieldsill("check", "--site", desk.folder / "site.toml", "--listen", "0")
+    assert checked.returncode in (2, 3)
+    assert "a run would go on by the record's last calibration" in checked.stderr
+    assert "as if overdue: nothing conforms" in checked.stderr
+    assert checked.stderr.count("\n") == 1
     assert "calibration overdue" in now["flags"]
     assert "conforms" not in {row["verdict"] for row in now["exposures"]}
     assert last_flags(desk) & Flag.CALIBRATION_OVERDUE
@@ -87,6 +94,7 @@ def test_a_first_start_without_a_calibration_file_refuses(desk: Desk) -> None:
         done = fieldsill(command, "--site", desk.folder / "site.toml")
         assert done.returncode == 3, command
         assert "calibration.toml" in done.stderr
+        assert "go on by" not in done.stderr
     assert not (desk.disk / "record.db").exists()
 
 
