@@ -159,6 +159,11 @@ class Client:
         if self.streaming:
             self._send(command(CENTRE, centre_hz))
 
+    def gain(self, gain_db: float) -> None:
+        """Another gain, for this stream only: a later one begins at the radio's own."""
+        if self.streaming:
+            self._send(command(GAIN, round(gain_db * 10)))
+
     def well(self) -> None:
         """The stream has proved good: the next trouble is tried again soon."""
         self._back_off_s = BACK_OFF_S

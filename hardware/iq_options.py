@@ -25,6 +25,7 @@ DWELL_S = 0.2
 SETTLE_S = 0.25
 """Our choice: four buffers of 64 ms (IQ.md) may be under way when the receiver is tuned anew."""
 EVIDENCE_MB = 64.0
+LEAST_CHECK_H = 0.05
 SPAN_SHARE = 0.8
 """Share of the rate that can be used (IQ.md: 75 to 80 %)."""
 AUTOMATIC = (
@@ -127,6 +128,7 @@ def settings_from(table: Table) -> Settings:
     centre_hz = table.number("centre_hz", None, 1.0, 2.0**32 - 1.0)
     places = _places(table, bands, rate_hz, fft, span_hz, centre_hz)
     least_s = 2 * fft / rate_hz
+    check_h, check_db = _check(table, radio.gain_db)
     scheme = Scheme(
         channels=len(bands),
         tunes=places,
@@ -134,6 +136,8 @@ def settings_from(table: Table) -> Settings:
         interval_s=_whole(table.number("interval_s", INTERVAL_S, least_s, 3600.0), fft / rate_hz),
         dwell_s=_whole(table.number("dwell_s", DWELL_S, least_s, 3600.0), fft / rate_hz),
         settle_s=table.number("settle_s", SETTLE_S, 0.1, 60.0),
+        check_h=check_h,
+        check_db=check_db,
     )
     return Settings(
         radio,
@@ -207,10 +211,30 @@ def _gain(table: Table) -> float:
         raise table.error("gain_db", AUTOMATIC)
     if table.any("automatic_gain", False) is not False:
         raise table.error("automatic_gain", AUTOMATIC)
-    gain_db = table.number("gain_db", low=-30.0, high=100.0)
+    return _tenths(table, "gain_db")
+
+
+def _tenths(table: Table, key: str) -> float:
+    gain_db = table.number(key, low=-30.0, high=100.0)
     if abs(gain_db * 10 - round(gain_db * 10)) > 1e-6:
-        raise table.error("gain_db", f"{gain_db:g} is finer than a tenth of a dB")
+        raise table.error(key, f"{gain_db:g} is finer than a tenth of a dB")
     return gain_db
+
+
+def _check(table: Table, gain_db: float) -> tuple[float, float]:
+    """Hours between checks of the gain, 0 for none, and the gain that is stepped to."""
+    every_h = table.number("gain_check_h", 0.0, 0.0, 8784.0)
+    if not every_h:
+        table.any("gain_check_db", None)
+        return 0.0, gain_db
+    if every_h < LEAST_CHECK_H:
+        raise table.error("gain_check_h", f"{every_h:g} is below {LEAST_CHECK_H:g}; 0 is never")
+    other_db = _tenths(table, "gain_check_db")
+    if not 3.0 <= abs(other_db - gain_db) <= 20.0:
+        raise table.error(
+            "gain_check_db", f"{other_db:g} must be 3 to 20 dB below or above gain_db, {gain_db:g}"
+        )
+    return every_h, other_db
 
 
 def _bands(table: Table) -> tuple[tuple[float, float], ...]:

@@ -11,6 +11,7 @@ import numpy as np
 from hardware.iq_client import Client, Radio
 from hardware.iq_count import SampleClock, real_rate_hz
 from hardware.iq_floor import Floors
+from hardware.iq_gain_check import STRETCH_S, Check, GainCheck
 from hardware.iq_levels import Levels, counts
 from hardware.iq_picture import Picture
 from hardware.iq_plan import Tune
@@ -22,6 +23,7 @@ from monitor.core.readings import NS_PER_S
 class Scheme:
     """How long is measured. interval_s: of one reading where one place of the tuner shows all;
     dwell_s: at each place where there are several; settle_s: what is left out after tuning.
+    check_h: how often the gain is stepped on purpose, 0 for never; check_db: the gain stepped to.
     """
 
     channels: int
@@ -30,6 +32,8 @@ class Scheme:
     interval_s: float
     dwell_s: float
     settle_s: float
+    check_h: float = 0.0
+    check_db: float = 0.0
 
     @property
     def swept(self) -> bool:
@@ -88,6 +92,8 @@ class Receiver:
         ]
         self._floors = Floors(self._rate_hz, scheme.tunes, scheme.fft, self._need)
         self.client = Client(radio, scheme.tunes[0].centre_hz, now_ns)
+        self._check = gain_check(scheme, radio, now_ns(), self._draws)
+        self._gain_db = radio.gain_db
         self._generation = 0
         self._settled_ns = 0
         self._clock: SampleClock | None = None
@@ -96,6 +102,7 @@ class Receiver:
         self._sums = np.zeros(scheme.channels)
         self._upto_ns = now_ns()
         self.counters = {"samples": 0, "readings": 0, "lost_samples": 0, "clipped_components": 0}
+        self.counters |= dict.fromkeys(("check_readings", "gain_checks", "gain_checks_broken"), 0)
         self._begin_round(now_ns())
 
     @property
@@ -158,19 +165,37 @@ class Receiver:
 
     def _restart(self, now_ns: int) -> None:
         """Whatever was begun does not join on to what comes: leave it."""
-        self._levels[self._order[0]].drop()
+        settle = self._check is not None and self._check.active
+        if self._check is not None and settle:
+            self._check.give_up(now_ns)
+            self.counters["gain_checks_broken"] += 1
+            self.client.gain(self._gain_db)
+        self._leave()
+        self._begin_round(now_ns, settle)
+
+    def _leave(self) -> None:
+        for level in self._levels:
+            level.drop()
         self._floors.leave()
         if self._ring is not None:
             self._ring.cut()
-        self._begin_round(now_ns)
 
-    def _begin_round(self, now_ns: int) -> None:
+    def checked(self) -> list[Check]:
+        """What checks of the gain found, since the last call."""
+        if self._check is None:
+            return []
+        done, self._check.done = self._check.done, []
+        return done
+
+    def _begin_round(self, now_ns: int, settle: bool = False) -> None:
         self._order = list(range(len(self._scheme.tunes)))
         self._draws.shuffle(self._order)
         self._sums[:] = 0.0
         self._clipped = 0
         self._start_ns = -1
         self._tune(now_ns)
+        if settle:
+            self._from_ns = max(self._from_ns, now_ns + round(self._scheme.settle_s * NS_PER_S))
 
     def _tune(self, now_ns: int) -> None:
         """Go to the first place of the order; where there is one only, no sample is left out."""
@@ -192,17 +217,23 @@ class Receiver:
                 return found
             if self._done == 0 and self._start_ns < 0:
                 self._start_ns = max(clock.time_ns(first + at), self._upto_ns)
-            place, part = self._order[0], raw[2 * at : 2 * (at + n)]
-            self._levels[place].add(part)
-            self._floors.offer(place, part, clock.time_ns(first + at))
-            if self._ring is not None:
-                self._ring.add(part, clock.time_ns(first + at), place, first + at)
-            if self._picture is not None:
-                self._picture.add(place, part, clock.time_ns(first + at))
+            part = raw[2 * at : 2 * (at + n)]
+            self._levels[self._order[0]].add(part)
+            if self._check is None or not self._check.active:
+                self._show(part, clock.time_ns(first + at), first + at)
             self._done += n
             at += n
             if self._done == self._need:
                 found += self._dwelt(clock.time_ns(first + at))
+
+    def _show(self, raw: memoryview, at_ns: int, sample: int) -> None:
+        """Samples at the gain that is set, with time and number, to all that looks at them."""
+        place = self._order[0]
+        self._floors.offer(place, raw, at_ns)
+        if self._ring is not None:
+            self._ring.add(raw, at_ns, place, sample)
+        if self._picture is not None:
+            self._picture.add(place, raw, at_ns)
 
     def _dwelt(self, end_ns: int) -> Sequence[Reading]:
         """A dwell is over: on to the next place, or the round is a reading."""
@@ -219,8 +250,31 @@ class Receiver:
             self._tune(self._now_ns())
             return ()
         self._upto_ns = max(end_ns, self._start_ns + 1)
+        if self._check is not None and self._check.active:
+            self._checking(self._check)
+            return ()
         self.counters["readings"] += 1
         read = tuple(int(count) for count in counts(self._sums))
         reading = Reading(self._start_ns, self._upto_ns, read, self._clipped)
+        if self._check is not None and self._check.due(self._now_ns()):
+            self._check.begin(self._now_ns())
         self._begin_round(self._now_ns())
         return (reading,)
+
+    def _checking(self, check: GainCheck) -> None:
+        """A round belongs to a check and is no reading: on with the check, or back to work."""
+        self.counters["check_readings"] += 1
+        gain_db = check.take(self._sums, self.floors)
+        self.counters["gain_checks"] += not check.active
+        if gain_db is not None:
+            self.client.gain(gain_db)
+            self._leave()
+        self._begin_round(self._now_ns(), settle=gain_db is not None)
+
+
+def gain_check(scheme: Scheme, radio: Radio, now_ns: int, draws: Random) -> GainCheck | None:
+    """The receiver's check of its gain, where one is asked for."""
+    if not scheme.check_h:
+        return None
+    readings = 1 if scheme.swept else max(1, round(STRETCH_S / scheme.reading_s))
+    return GainCheck(scheme.check_h, radio.gain_db, scheme.check_db, readings, now_ns, draws)

@@ -185,6 +185,7 @@ class IqStream:
         self.keeps = settings.evidence_bytes > 0
         self._kept: list[Mapping[str, object]] = []
         self._shown = Shown()
+        self._checked: list[Mapping[str, object]] = []
         self._upto_ns = boot_ns()
         self._told: dict[str, object] = {}
         self._counters: dict[str, int] = {}
@@ -197,6 +198,9 @@ class IqStream:
         flags: list[int] = []
         for line in self._worker.lines(timeout_s):
             said = json.loads(line)
+            if "checked" in said:
+                self._checked.append(said["checked"])
+                continue
             if "upto" not in said:
                 self._apart(said)
                 continue
@@ -254,6 +258,11 @@ class IqStream:
         """What became of that, since the last call."""
         kept, self._kept = self._kept, []
         return kept
+
+    def checked(self) -> list[Mapping[str, object]]:
+        """What checks of the gain found, since the last call; see monitor.gain_watch."""
+        checked, self._checked = self._checked, []
+        return checked
 
     def close(self) -> None:
         """End the process."""

@@ -42,6 +42,7 @@ def settings_text(
         "tunes": tunes,
         "scheme": [
             scheme.channels, scheme.fft, scheme.interval_s, scheme.dwell_s, scheme.settle_s,
+            scheme.check_h, scheme.check_db,
         ],
         "seed": seed,
         "evidence": evidence_bytes,
@@ -71,8 +72,8 @@ def work_of(text: str, now_ns: Callable[[], int]) -> Work:
         Tune(centre_hz, tuple(Part(*part) for part in parts), tuple((a, b) for a, b in spurs))
         for centre_hz, parts, spurs in own["tunes"]
     )
-    channels, fft, interval_s, dwell_s, settle_s = own["scheme"]
-    scheme = Scheme(channels, tunes, fft, interval_s, dwell_s, settle_s)
+    channels, *rest = own["scheme"]
+    scheme = Scheme(channels, tunes, *rest)
     radio, rate_hz = Radio(*own["radio"]), real_rate_hz(own["radio"][2])
     ring = ring_for(rate_hz, scheme.round_s) if own["evidence"] else None
     picture = Picture(rate_hz, tunes, Random(own["seed"]))
@@ -155,25 +156,21 @@ def run(work: Work, now_ns: Callable[[], int], source: int, sink: int) -> None:
         for picture in work.picture.due(now_ns()):
             speaker.say(json.dumps(picture, separators=(",", ":")).encode() + b"\n")
         asked = listener.requests()
+        untold += [{"checked": one} for one in receiver.checked()]
         if work.keeper is not None:
-            untold = _kept(work.keeper, asked, now_ns(), untold, speaker)
+            untold += _kept(work.keeper, asked, now_ns())
+        while untold and speaker.say(json.dumps(untold[0]).encode() + b"\n"):
+            untold = untold[1:]
 
 
 def _kept(
-    keeper: Keeper,
-    asked: Sequence[dict[str, object]],
-    now_ns: int,
-    untold: list[dict[str, object]],
-    speaker: Speaker,
+    keeper: Keeper, asked: Sequence[dict[str, object]], now_ns: int
 ) -> list[dict[str, object]]:
-    """Serve the keeper; what became of a request is said until it is heard."""
+    """Serve the keeper; what became of requests."""
     for request in asked:
         keeper.ask(request)
     keeper.turn(now_ns)
-    untold = untold + keeper.said()
-    while untold and speaker.say(json.dumps(untold[0]).encode() + b"\n"):
-        untold = untold[1:]
-    return untold
+    return keeper.said()
 
 
 def _boot_ns() -> int:

@@ -18,6 +18,7 @@ from monitor.core.rows import Event
 from monitor.core.station import Station
 from monitor.evidence import evidence_of
 from monitor.fixes import Clock, Fixes
+from monitor.gain_watch import GainWatch
 from monitor.marking import NOTHING, Standing, marked
 from monitor.noise_watch import NoiseWatch
 from monitor.record.background import WriterThread
@@ -58,6 +59,7 @@ class Daemon:
         self._clock, self._state, self._desk = clock, state, desk
         self._history_ns = None if history_s is None else round(history_s * NS_PER_S)
         self._standing = standing
+        self._gain = GainWatch(front, site.channels, site.bands, here.chain)
         self._noise = NoiseWatch(here, [c.name for c in site.channels], desk.raised())
         self._bulk_ns = state.front_ns
         self._evidence = evidence_of(front, site, here)
@@ -133,6 +135,7 @@ class Daemon:
         if self._state.hearing.last_ns != heard_ns:
             self._heard_ns = self._clock.boot_ns()
         out.events += self._noise.look(out.blocks, self._status)
+        out.events += self._gain.look(self._state.front_ns, self._desk.raised())
         for event in out.events:
             self._desk.apply(event)
         self._keep_evidence(out.events)

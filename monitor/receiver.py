@@ -15,6 +15,12 @@ SAME_DB = 0.05
 """Gains are set in tenths of a dB."""
 
 
+def gain_named(name: str, gain_db: float) -> bool:
+    """Whether a step's name is this gain: '19.7' or '19.7 dB'."""
+    found = _DB.fullmatch(name)
+    return found is not None and abs(float(found[1]) - gain_db) <= SAME_DB
+
+
 def refuse_other_gain(site: Site, file: CalibrationFile, gain_db: float) -> None:
     """ConfigError unless every channel is calibrated in dBFS, at the gain that is set.
 
@@ -31,8 +37,7 @@ def refuse_other_gain(site: Site, file: CalibrationFile, gain_db: float) -> None
         name = channel.gain or source.steps[0].gain
         if not name:
             continue
-        found = _DB.fullmatch(name)
-        if found is None or abs(float(found[1]) - gain_db) > SAME_DB:
+        if not gain_named(name, gain_db):
             key = f"channel[{i}].gain" if channel.gain else "sensor.gain_db"
             raise ConfigError(
                 f"{site.path.name}: {key}: calibrated is gain step {name!r}, but sensor.gain_db "

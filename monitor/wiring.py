@@ -21,6 +21,7 @@ from monitor.core.averaging_law import Averaging
 from monitor.core.calibration import Chain
 from monitor.core.errors import ConfigError
 from monitor.core.exposure import least_coefficient, scope_coefficients
+from monitor.core.gain_check import KEY as SUSPECTED
 from monitor.core.judgement import INSTRUMENT_KEYS
 from monitor.core.limits import LimitSet, Scope, ratio_per_e2, scopes
 from monitor.core.noise_floor import KEYS
@@ -241,7 +242,13 @@ def _first_events(
     events = [Event(at_ns, "start", "daemon", body | {"chain": run.chain})]
     if found.trouble:
         events.append(Event(at_ns, "fault", "windows begin empty", {"why": found.trouble}))
-    watched = {watch.key for watch in here.watches} | {SILENCE, RECORD, *INSTRUMENT_KEYS, *KEYS}
+    watched = {watch.key for watch in here.watches} | {
+        SILENCE,
+        RECORD,
+        *INSTRUMENT_KEYS,
+        *KEYS,
+        SUSPECTED,
+    }
     gone: dict[str, object] = {"raised": False, "why": "no longer watched"}
     return events + [
         Event(at_ns, "alarm", key, gone) for key in sorted(found.desk.raised() - watched)

@@ -139,6 +139,7 @@ INSTRUMENT_TEXTS = {
     "record": "the record cannot be written",
     "receiver noise high": "the receiver's noise is above its calibration",
     "receiver noise low": "the receiver's noise is below its calibration",
+    "receiver suspected": "a level does not move as the receiver's gain does",
     "signals vanished": "all signals that were always there are gone",
 }
 """What the alarms about the monitor itself say, by key."""

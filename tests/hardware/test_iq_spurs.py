@@ -10,7 +10,7 @@ import pytest
 from hardware import settings_for
 from hardware.iq_count import real_rate_hz
 from hardware.iq_levels import Levels
-from hardware.iq_worker import receiver_of, settings_text
+from hardware.iq_worker import settings_text, work_of
 from monitor.core.errors import ConfigError
 from simulators.iq_receiver import GAINS_DB, Receiver, Settings
 from simulators.iq_signals import Air, Front, Signal, Spur
@@ -50,7 +50,7 @@ def test_the_receivers_process_is_told_of_spurs(tmp_path):
     settings = settings_for("iq_stream", OPTIONS, tmp_path).without([(868.348e6, 868.352e6)])
     text = settings_text(settings.radio, settings.scheme)
     assert json.loads(text)["tunes"][0][2] == [list(settings.scheme.tunes[0].spurs[0])]
-    receiver, _ = receiver_of(text, lambda: 0)
+    receiver = work_of(text, lambda: 0).receiver
     receiver.close()
 
 
