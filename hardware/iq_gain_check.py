@@ -2,13 +2,16 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from random import Random
 
 import numpy as np
 from numpy.typing import NDArray
 
-from hardware.iq_levels import counts
+from hardware.iq_levels import DATATYPE, counts
+from hardware.iq_plan import Tune
 from monitor.core.gain_check import PAIRS, both_db, moved, stretch_db
+from monitor.core.image import Image
 from monitor.core.readings import NS_PER_S
 
 NS_PER_H = 3600 * NS_PER_S
@@ -17,18 +20,20 @@ EARLIEST_NS = 60 * NS_PER_S
 AGAIN_NS = 600 * NS_PER_S
 """A check that broke off is tried again after so long."""
 STRETCH_S = 1.0
+LOOK_SAMPLES = 8192
 Check = dict[str, object]
 
 
 class GainCheck:
     """When a check is due and what it found. every_h: one at random in each such period.
 
-    gain_db, other_db: the gain that is set and the one that is stepped to; readings: of a stretch.
+    gain_db, other_db: the gain that is set and the one that is stepped to; readings: of a stretch;
+    tunes, images: what is looked at for images at each place of the tuner.
     """
 
     def __init__(
         self, every_h: float, gain_db: float, other_db: float, readings: int, now_ns: int,
-        draws: Random,
+        draws: Random, tunes: Sequence[Tune] = (), images: Sequence[Image] = (),
     ) -> None:  # fmt: skip
         self._period_ns = round(every_h * NS_PER_H)
         self._gains = (gain_db, other_db)
@@ -38,6 +43,7 @@ class GainCheck:
         self._due_ns = max(now_ns + EARLIEST_NS, self._drawn())
         self._levels: list[NDArray[np.float64]] = []
         self._powers: list[NDArray[np.float64]] = []
+        self._tunes, self._images = tunes, images
         self.active = False
         self.done: list[Check] = []
 
@@ -52,6 +58,12 @@ class GainCheck:
             self._began_ns += self._period_ns
         self._due_ns = self._drawn()
         self._levels, self._powers, self.active = [], [], True
+
+    def show(self, place: int, raw: memoryview) -> None:
+        """Samples of the check: those at the gain that is set are looked at for images, one piece
+        of LOOK_SAMPLES at the most of each that comes."""
+        if self._images and len(self._levels) % 2 == 0:
+            self._images[place].add(raw[: 2 * LOOK_SAMPLES], DATATYPE)
 
     def take(self, powers: NDArray[np.float64], floors: tuple[int, ...]) -> float | None:
         """A reading (c,), 1.0 = 0 dBFS. The gain to be set now, None to leave it.
@@ -73,6 +85,20 @@ class GainCheck:
         self.active = False
         self._due_ns = min(self._due_ns, now_ns + AGAIN_NS)
 
+    def _image_shares(self) -> list[float | None]:
+        """Per channel; None where it is not known."""
+        sums: dict[int, list[float]] = {}
+        for tune, image in zip(self._tunes, self._images):
+            for part, mirrored, power in zip(tune.parts, *image.powers()):
+                known = sums.setdefault(part.channel, [0.0, 0.0])
+                known[0] += float(mirrored)
+                known[1] += float(power)
+        shares = [
+            image / power if power > 0.0 else None
+            for image, power in (sums[channel] for channel in sorted(sums))
+        ]
+        return [None if share is None else round(share, 4) for share in shares]
+
     def _drawn(self) -> int:
         return self._began_ns + round(self._draws.random() * self._period_ns)
 
@@ -87,6 +113,7 @@ class GainCheck:
                 "levels": counts(10.0 ** (own_db / 10.0)).tolist(),
                 "other_levels": counts(10.0 ** (other_db / 10.0)).tolist(),
                 "floors": list(floors),
+                "image_shares": self._image_shares(),
                 "moved_db": [round(x, 3) for x in found.db.tolist()],
                 "u_db": [round(x, 3) for x in found.u_db.tolist()],
             }

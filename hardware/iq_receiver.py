@@ -12,10 +12,11 @@ from hardware.iq_client import Client, Radio
 from hardware.iq_count import SampleClock, real_rate_hz
 from hardware.iq_floor import Floors
 from hardware.iq_gain_check import STRETCH_S, Check, GainCheck
-from hardware.iq_levels import Levels, counts
+from hardware.iq_levels import Levels, counts, spike_hz
 from hardware.iq_picture import Picture
 from hardware.iq_plan import Tune
 from hardware.iq_ring import Ring
+from monitor.core.image import Image
 from monitor.core.readings import NS_PER_S
 
 
@@ -219,7 +220,9 @@ class Receiver:
                 self._start_ns = max(clock.time_ns(first + at), self._upto_ns)
             part = raw[2 * at : 2 * (at + n)]
             self._levels[self._order[0]].add(part)
-            if self._check is None or not self._check.active:
+            if self._check is not None and self._check.active:
+                self._check.show(self._order[0], part)
+            else:
                 self._show(part, clock.time_ns(first + at), first + at)
             self._done += n
             at += n
@@ -277,4 +280,10 @@ def gain_check(scheme: Scheme, radio: Radio, now_ns: int, draws: Random) -> Gain
     if not scheme.check_h:
         return None
     readings = 1 if scheme.swept else max(1, round(STRETCH_S / scheme.reading_s))
-    return GainCheck(scheme.check_h, radio.gain_db, scheme.check_db, readings, now_ns, draws)
+    rate_hz = real_rate_hz(radio.rate_hz)
+    spike = spike_hz(rate_hz, scheme.fft)
+    images = [Image(rate_hz, tune.bands, scheme.fft, spike) for tune in scheme.tunes]
+    return GainCheck(
+        scheme.check_h, radio.gain_db, scheme.check_db, readings, now_ns, draws, scheme.tunes,
+        images,
+    )  # fmt: skip

@@ -13,6 +13,7 @@ from monitor.config import Band, Channel
 from monitor.core.calibration import Chain
 from monitor.core.errors import CalibrationError, ConfigError
 from monitor.core.gain_check import KEY, KIND, Found, judged
+from monitor.core.image import NOTABLE
 from monitor.core.law import ScaleLaw
 from monitor.core.readings import MISSING
 from monitor.core.rows import Event
@@ -48,29 +49,41 @@ class GainWatch:
                 f"the gain {one.step_db:+.1f} dB: {one.said}"
                 for channel, one in zip(self._channels, found)
             ]
-            events.append(Event(at_ns, KIND, "", self._body(said, found, "; ".join(texts))))
-            bad = [(c.name, one) for c, one in zip(self._channels, found) if one.suspected]
+            shares = said.get("image_shares") or [None] * len(found)
+            body = self._body(said, found, shares, "; ".join(texts))
+            events.append(Event(at_ns, KIND, "", body))
+            bad = self._suspicions(found, shares)
             known = any(one.said == "as the gain" for one in found)
-            if bad or (known and KEY in raised):
-                text = "; ".join(
-                    f"{name} moved {one.moved_db:+.1f} dB where the gain moved {one.step_db:+.1f}: "
-                    f"{WHY[one.said]}"
-                    for name, one in bad
-                )
-                if bool(bad) != (KEY in raised):
-                    body: dict[str, object] = {"raised": bool(bad), "text": text}
-                    events.append(Event(at_ns, "alarm", KEY, body))
-                    raised = raised | {KEY} if bad else raised - {KEY}
+            if bool(bad) != (KEY in raised) and (bad or known):
+                told: dict[str, object] = {"raised": bool(bad), "text": "; ".join(bad)}
+                events.append(Event(at_ns, "alarm", KEY, told))
+                raised = raised | {KEY} if bad else raised - {KEY}
         return events
 
-    def _body(self, said: Said, found: Sequence[Found], text: str) -> dict[str, object]:
+    def _suspicions(self, found: Sequence[Found], shares: Sequence[float | None]) -> list[str]:
+        texts = [
+            f"{channel.name} moved {one.moved_db:+.1f} dB where the gain moved {one.step_db:+.1f}: "
+            f"{WHY[one.said]}"
+            for channel, one in zip(self._channels, found)
+            if one.suspected
+        ]
+        return texts + [
+            f"{channel.name}: {share:.0%} of it is the image of what lies on the other side of the "
+            "centre; move centre_hz"
+            for channel, share in zip(self._channels, shares)
+            if share is not None and share >= NOTABLE
+        ]
+
+    def _body(
+        self, said: Said, found: Sequence[Found], shares: Sequence[float | None], text: str
+    ) -> dict[str, object]:
         own = {key: said[key] for key in ("gain_db", "other_db")}
         bands = [
             {
                 "channel": channel.name, "moved_db": one.moved_db, "u_db": one.u_db,
-                "step_db": one.step_db, "said": one.said,
+                "step_db": one.step_db, "said": one.said, "image_share": share,
             }
-            for channel, one in zip(self._channels, found)
+            for channel, one, share in zip(self._channels, found, shares)
         ]  # fmt: skip
         return own | {"channels": bands, "text": text}
 

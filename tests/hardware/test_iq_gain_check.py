@@ -73,6 +73,8 @@ def test_signals_products_and_own_lines_move_each_in_their_way(tmp_path, monkeyp
     # 0.2 dB: the noise that is left beside the weakest
     assert found["moved_db"] == pytest.approx([-7.2, -21.6, 0.0], abs=0.25)
     assert max(found["u_db"]) < 0.2
+    assert max(share or 0.0 for share in found["image_shares"]) < 0.01
+    assert len(found["image_shares"]) == 3
     assert gain == 19.7
     levels = np.array([reading.counts for reading in readings])
     assert np.ptp(levels, axis=0).max() < 700, "no reading may be of the other gain"

@@ -71,7 +71,7 @@ def test_a_check_that_finds_nothing_is_recorded_with_its_figures(tmp_path):
     assert (event.kind, event.boot_ns) == (KIND, 5)
     assert event.body["channels"][1] == {
         "channel": "upper", "moved_db": -6.0, "u_db": 0.1, "step_db": pytest.approx(-7.2),
-        "said": "as the gain",
+        "said": "as the gain", "image_share": None,
     }  # fmt: skip
     assert event.body["text"].startswith("lower moved -7.2 dB (+-0.1), the gain -7.2 dB: as the")
 
@@ -91,6 +91,16 @@ def test_a_level_that_moves_otherwise_is_an_alarm_until_a_check_clears_it(tmp_pa
     assert told(one.look(7, frozenset({KEY}))) == [(KIND, "", None)]
     front.said = [said([-7.2, -7.2])]
     assert told(one.look(8, frozenset({KEY}))) == [(KIND, "", None), ("alarm", KEY, False)]
+
+
+def test_an_image_is_suspected_from_a_fifth_of_the_level(tmp_path):
+    front, one = watch(tmp_path)
+    front.said = [said([-7.2, -7.2]) | {"image_shares": [0.19, None]}]
+    assert told(one.look(5, frozenset())) == [(KIND, "", None)]
+    front.said = [said([-7.2, -7.2]) | {"image_shares": [0.02, 0.21]}]
+    events = one.look(5, frozenset())
+    assert told(events) == [(KIND, "", None), ("alarm", KEY, True)]
+    assert events[1].body["text"].startswith("upper: 21% of it is the image of what lies on the")
 
 
 def test_calibrated_steps_say_how_far_it_must_move(tmp_path):
