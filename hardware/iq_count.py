@@ -27,6 +27,11 @@ def real_rate_hz(asked_hz: int) -> float:
     return CRYSTAL_HZ * (1 << 22) / ratio
 
 
+def trial_s(rate_hz: float) -> float:
+    """How long samples are counted before the first reading: TRIAL_S or eight buffers."""
+    return max(TRIAL_S, 8 * BUFFER_SAMPLES / rate_hz)
+
+
 @dataclass(slots=True)
 class Stretch:
     """A stretch of the stream that is being judged: when it began, what came early and late.
@@ -56,8 +61,7 @@ class SampleClock:
         self._ns_per_sample = NS_PER_S / rate_hz
         self._buffer_ns = BUFFER_SAMPLES * self._ns_per_sample
         self._base_ns: float | None = None
-        trial_ns = max(TRIAL_S * NS_PER_S, 8 * self._buffer_ns)
-        self._stretch = self._begun(now_ns, int(trial_ns))
+        self._stretch = self._begun(now_ns, int(trial_s(rate_hz) * NS_PER_S))
         self._surplus_ns = 0.0
         self._short = True
         self.samples = 0

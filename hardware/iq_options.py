@@ -8,7 +8,7 @@ from pathlib import Path
 from typing import ClassVar
 
 from hardware.iq_client import Radio, check_server
-from hardware.iq_count import RATES_HZ
+from hardware.iq_count import RATES_HZ, trial_s
 from hardware.iq_keep import recording_bytes
 from hardware.iq_levels import COUNTS_PER_DB, Levels, spike_hz
 from hardware.iq_plan import Tune, fixed_tune, tunes
@@ -25,6 +25,8 @@ DWELL_S = 0.2
 SETTLE_S = 0.25
 """Our choice: four buffers of 64 ms (IQ.md) may be under way when the receiver is tuned anew."""
 EVIDENCE_MB = 64.0
+PROCESS_S = 2.0
+"""Our choice: a small machine loads numpy within it, and the server sends its header."""
 LEAST_CHECK_H = 0.05
 SPAN_SHARE = 0.8
 """Share of the rate that can be used (IQ.md: 75 to 80 %)."""
@@ -71,6 +73,11 @@ class Settings:
         return self.scheme.round_s
 
     @property
+    def first_s(self) -> float:
+        """How long the first reading may take: a process starts, a rate is proved, a round."""
+        return PROCESS_S + trial_s(self.radio.rate_hz) + self.scheme.settle_s + self.round_s
+
+    @property
     def averaging(self) -> Averaging:
         """A reading is the mean power of its interval or dwell."""
         return Averaging("power", self.scheme.reading_s, sparse=self.scheme.swept)
@@ -114,9 +121,7 @@ class Settings:
 
 def settings_from(table: Table) -> Settings:
     """Settings from the options; ConfigError about each wrong key. No server is asked."""
-    host = table.text("host")
-    if not host.strip():
-        raise table.error("host", "is empty; name the machine that the receiver is plugged into")
+    host = _host(table)
     port = table.whole("port", PORT, 1, 65_535)
     rate_hz = _rate(table)
     radio = Radio(host, port, rate_hz, _gain(table), table.whole("ppm", 0, -1000, 1000))
@@ -146,6 +151,18 @@ def settings_from(table: Table) -> Settings:
         thermometer=_thermometer(table),
         evidence_bytes=_evidence(table, rate_hz),
     )
+
+
+def _host(table: Table) -> str:
+    """A name or address that the system can be asked about; it is told in the code of names."""
+    host = table.text("host")
+    if not host.strip():
+        raise table.error("host", "is empty; name the machine that the receiver is plugged into")
+    try:
+        host.encode("idna")
+    except UnicodeError:
+        raise table.error("host", f"{host!r} is no name of a machine; correct it") from None
+    return host
 
 
 def _thermometer(table: Table) -> Path | None:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Sequence
 
 import numpy as np
@@ -15,6 +16,12 @@ from monitor.marking import device_flag
 
 SLICE_S = 0.5
 WHERE = "sensor"
+LISTEN_S = 3.0
+
+
+def long_enough(settings: object) -> float:
+    """Whole seconds in which a sensor with these settings gives a reading, LISTEN_S at least."""
+    return max(LISTEN_S, math.ceil(getattr(settings, "first_s", 0.0)))
 
 
 def left_alone(site: Site) -> Finding | None:

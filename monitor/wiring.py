@@ -31,7 +31,7 @@ from monitor.core.silence import KEY as SILENCE
 from monitor.core.station import Station, station
 from monitor.daemon import RECORD, Daemon
 from monitor.inforce import Say, before_of, in_force, unsaid
-from monitor.listening import heard, left_alone, named
+from monitor.listening import heard, left_alone, long_enough, named
 from monitor.receiver import refuse_other_gain
 from monitor.record import connect
 from monitor.record.background import WriterThread
@@ -168,15 +168,18 @@ def check(site: Site) -> list[Finding]:
     return found
 
 
-def listen(site: Site, seconds: float) -> list[Finding]:
+def listen(site: Site, seconds: float | None) -> list[Finding]:
     """What the sensor's line gives within that time, and whether it is the calibrated device.
 
-    The line is let go afterwards.
+    seconds: None for as long as a first reading may take. The
+    line is let go afterwards.
     """
     alone = left_alone(site)
     if alone is not None:
         return [alone]
     clock, settings = SystemClock(), sensor_settings(site)
+    if seconds is None:
+        seconds = long_enough(settings)
     front = open_front_end(
         settings, len(site.channels), clock.boot_ns, clock.utc_ns, site.simulated
     )

@@ -18,12 +18,10 @@ from monitor.inforce import WRONG, would_go_on
     "--listen",
     "listen_s",
     type=Within(0.0, 600.0),
-    default=3.0,
-    show_default=True,
-    help="Seconds to listen to a serial line; 0: not at all.",
+    help="Seconds to listen to the sensor, 0: not at all; default: until a reading may be there.",
 )
 @click.option("--json", "as_json", is_flag=True, help="One JSON document.")
-def command(site_file: str | None, listen_s: float, as_json: bool) -> None:
+def command(site_file: str | None, listen_s: float | None, as_json: bool) -> None:
     """Read the site file and all that it names; say what fits and what cannot be judged.
 
     Ends with 0 where the site can run, with 2 or 3 and one line where it cannot.
@@ -38,7 +36,7 @@ def command(site_file: str | None, listen_s: float, as_json: bool) -> None:
     except WRONG:
         _refuse_calibration(site, now_utc_ns)
         raise
-    if listen_s and site.sensor_kind not in wiring.RECORDED:
+    if listen_s != 0.0 and site.sensor_kind not in wiring.RECORDED:
         found += wiring.listen(site, listen_s)
     if as_json:
         rows = [{"where": f.where, "text": f.text, "ok": f.ok} for f in found]

@@ -16,6 +16,7 @@ from hardware.iq_stream import SILENT_S
 from monitor.core.errors import ConfigError
 from monitor.core.flags import Flag
 from monitor.core.readings import empty_batch, joined
+from monitor.listening import long_enough
 from tests.hardware.iq_servers import Clock, Server, closes, streams, tone
 
 BANDS = [[868.0e6, 868.2e6], [868.4e6, 868.6e6]]
@@ -187,6 +188,8 @@ def test_no_sample_comes_over_the_pipe(at):
         ({"automatic_gain": True}, "1.9 dB within one second"),
         ({"gain_db": 19.75}, "finer than a tenth"),
         ({"host": " "}, "sensor.host"),
+        ({"host": "mast..lan"}, "sensor.host: 'mast..lan' is no name of a machine"),
+        ({"host": "m" * 64}, "is no name of a machine"),  # RFC 1035, 2.3.4: a label has 63
         ({"port": 0}, "sensor.port"),
         ({"ppm": 0.5}, "sensor.ppm"),
         ({"centre_hz": 868.0e6}, "sensor.centre_hz: band 868.4 to 868.6 MHz is outside the span"),
@@ -204,6 +207,20 @@ def test_wrong_options_are_one_line(tmp_path, options, words):
         settings_for("iq_stream", OPTIONS | options, tmp_path)
     assert words in str(caught.value)
     assert "\n" not in str(caught.value)
+
+
+def test_a_check_listens_until_the_first_reading_of_places_in_turn(at, tmp_path):
+    """Source: by hand; a start of 2 s, eight buffers of 131 072 samples at 1 MS/s, settling, and
+    a round of two places."""
+    far = {"bands": [BANDS[0], [900e6, 900.2e6]], "dwell_s": 0.5, "settle_s": 0.3}
+    _, front = at(streams(), **far)
+    settings = settings_for("iq_stream", OPTIONS | far, tmp_path)
+    expected = 2.0 + 8 * 0.131072 + 0.3 + 2 * (0.3 + 2 * 0.5)
+    assert settings.first_s == pytest.approx(expected, abs=0.01)
+    assert long_enough(settings) == 6.0
+    assert long_enough(object()) == 3.0
+    end = time.monotonic() + long_enough(settings)
+    assert until(front, lambda: time.monotonic() > end, 30.0).times_ns.size
 
 
 def test_what_a_reading_averages_is_declared(tmp_path):
