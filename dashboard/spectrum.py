@@ -88,7 +88,7 @@ def page(found: Document | None, station: Station) -> dict[str, Any]:
                     (css, draw(one, document["bands"], frame))
                     for css, frame in (("wide", WIDE), ("narrow", NARROW))
                 ],
-                "summary": summary(one),
+                "summary": summary(one, swept=len(document["places"]) > 1),
                 "piece": f"{words.figure(1e3 * one['piece_s'], 1)} ms",
                 "outside": outside_words(one),
             }
@@ -242,12 +242,18 @@ def outside_words(place: Document) -> str:
     )
 
 
-def summary(place: Document) -> str:
-    """Of when a drawing is, and how much of the time it shows."""
+def summary(place: Document, swept: bool) -> str:
+    """Of when a drawing is, and how much of the time it shows; swept: there are other places."""
     part = place["looked_s"] / place["seconds"] if place["seconds"] else 0.0
+    looked = "Less than 1 %" if 0.0 < part < 0.01 else words.share(part)
+    rest = (
+        "; the figures below hold what was measured while the receiver was tuned here, no more."
+        if swept
+        else ", but it is in the figures below."
+    )
     age = place["age_s"]
     old = f", {words.duration(age)} ago" if age >= 10.0 else ""
     return (
-        f"Over {place['seconds']:.1f} s{old}. {words.share(part)} of that time was looked at: "
-        "what came in between is not in the drawing, but it is in the figures below."
+        f"Over {place['seconds']:.1f} s{old}. {looked} of that time was looked at: "
+        f"what came in between is not in the drawing{rest}"
     )

@@ -13,23 +13,25 @@ from hardware.iq_levels import counts as counts_of
 MOST_READINGS = 10_000
 """Without a spectrum to go with, older readings are forgotten."""
 
+_Reading = tuple[int, int, Sequence[int], int]
+
 
 class Shown:
     """Gathers readings until a spectrum comes; view may be read from any thread.
 
     view: "places", the newest spectrum of each place of the tuner as iq_picture.py tells it;
-    "readings", their number, the boot times of the first and last, and of each channel the mean
+    "readings", their number, the boot times of their begin and end, and of each channel the mean
     power and the strongest reading, in counts, with the flags of all; None before there are any.
     """
 
     def __init__(self) -> None:
-        self._readings: list[tuple[int, Sequence[int], int]] = []
+        self._readings: list[_Reading] = []
         self._places: dict[int, Mapping[str, Any]] = {}
         self.view: Mapping[str, Any] = {"places": [], "readings": None}
 
-    def note(self, at_ns: int, counts: Sequence[int], flags: int) -> None:
-        """A reading came."""
-        self._readings.append((at_ns, counts, flags))
+    def note(self, start_ns: int, end_ns: int, counts: Sequence[int], flags: int) -> None:
+        """A reading came, of what was heard from start_ns to end_ns (boot time)."""
+        self._readings.append((start_ns, end_ns, counts, flags))
         del self._readings[:-MOST_READINGS]
 
     def take(self, picture: Mapping[str, Any]) -> None:
@@ -43,13 +45,13 @@ class Shown:
         self.view = {"places": places, "readings": readings}
 
 
-def _summed(readings: Sequence[tuple[int, Sequence[int], int]]) -> dict[str, object]:
-    powers = 10.0 ** (np.array([one[1] for one in readings]) / (10.0 * COUNTS_PER_DB))
+def _summed(readings: Sequence[_Reading]) -> dict[str, object]:
+    powers = 10.0 ** (np.array([one[2] for one in readings]) / (10.0 * COUNTS_PER_DB))
     return {
         "n": len(readings),
         "start_ns": readings[0][0],
-        "end_ns": readings[-1][0],
+        "end_ns": readings[-1][1],
         "mean": counts_of(powers.mean(axis=0)).tolist(),
-        "flags": int(np.bitwise_or.reduce([one[2] for one in readings])),
+        "flags": int(np.bitwise_or.reduce([one[3] for one in readings])),
         "max": counts_of(powers.max(axis=0)).tolist(),
     }

@@ -210,7 +210,7 @@ class IqStream:
                 times.append(start_ns)
                 counts.append(said["counts"])
                 flags.append(self._bits | (int(Flag.CLIPPED) if said["clipped"] else 0))
-                self._shown.note(start_ns, counts[-1], flags[-1])
+                self._shown.note(start_ns, said["upto"], counts[-1], flags[-1])
             self._upto_ns = max(self._upto_ns, said["upto"])
         if self._worker.problem:  # whatever comes from a process yet to start is later
             self._upto_ns = max(self._upto_ns, self._boot_ns())

@@ -52,7 +52,7 @@ def document(shown: Mapping[str, Any] | None, view: View, here: Station, site: S
 
 
 def _seconds(readings: Mapping[str, Any] | None) -> float | None:
-    """From the first of the readings to the last."""
+    """From the begin of the first reading to the end of the last."""
     return None if readings is None else (readings["end_ns"] - readings["start_ns"]) / NS_PER_S
 
 

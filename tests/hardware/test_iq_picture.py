@@ -94,13 +94,13 @@ def test_readings_are_shown_with_the_spectrum_that_came_after_them():
     """Source: the mean of 0 dB and 10 log 3 dB is 10 log 2 dB, by hand."""
     shown = Shown()
     assert shown.view == {"places": [], "readings": None}
-    shown.note(5, [0, -1000], 1)
-    shown.note(7, [round(1e4 * np.log10(3)), -1000], 4)
+    shown.note(5, 7, [0, -1000], 1)
+    shown.note(7, 9, [round(1e4 * np.log10(3)), -1000], 4)
     before = shown.view
     shown.take({"place": 1, "mean": []})
     assert before["readings"] is None
     found = shown.view["readings"]
-    assert (found["n"], found["start_ns"], found["end_ns"], found["flags"]) == (2, 5, 7, 5)
+    assert (found["n"], found["start_ns"], found["end_ns"], found["flags"]) == (2, 5, 9, 5)
     assert found["mean"] == [round(1e4 * np.log10(2)), -1000]
     assert found["max"] == [round(1e4 * np.log10(3)), -1000]
     shown.take({"place": 0, "mean": [1]})
