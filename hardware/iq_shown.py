@@ -9,6 +9,7 @@ import numpy as np
 
 from hardware.iq_levels import COUNTS_PER_DB
 from hardware.iq_levels import counts as counts_of
+from monitor.core.quantities import average_power
 
 MOST_READINGS = 10_000
 """Without a spectrum to go with, older readings are forgotten."""
@@ -51,7 +52,7 @@ def _summed(readings: Sequence[_Reading]) -> dict[str, object]:
         "n": len(readings),
         "start_ns": readings[0][0],
         "end_ns": readings[-1][1],
-        "mean": counts_of(powers.mean(axis=0)).tolist(),
+        "mean": counts_of(average_power(powers)).tolist(),
         "flags": int(np.bitwise_or.reduce([one[3] for one in readings])),
         "max": counts_of(powers.max(axis=0)).tolist(),
     }

@@ -20,6 +20,11 @@ PORT_OHM = 50.0
 Real = NDArray[np.float64]
 
 
+def average_power(powers: Real) -> Real:
+    """Of readings (n, c) of equal length: (c,), in their unit."""
+    return np.asarray(powers.mean(axis=0))
+
+
 @overload
 def w_from_dbm(p_dbm: float) -> float: ...
 @overload
