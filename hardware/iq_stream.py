@@ -189,6 +189,8 @@ class IqStream:
         self._upto_ns = boot_ns()
         self._told: dict[str, object] = {}
         self._counters: dict[str, int] = {}
+        self._before: dict[str, int] = {}  # of processes that have ended
+        self._starts = 0
         self._thermometer = Thermometer(settings.thermometer, boot_ns)
 
     def read(self, timeout_s: float) -> Batch:
@@ -204,7 +206,8 @@ class IqStream:
             if "upto" not in said:
                 self._apart(said)
                 continue
-            self._told, self._counters = said, said["counters"]
+            self._told = said
+            self._counted(said["counters"])
             start_ns = said.get("at", 0)
             if start_ns >= self._upto_ns:
                 times.append(start_ns)
@@ -235,9 +238,21 @@ class IqStream:
             connected=not problem,
             text=f"{problem}; trying again" if problem else text,
             temperature_c=self._thermometer.celsius(),
-            counters=self._counters | self._worker.counters,
+            counters=self._sums() | self._worker.counters,
             floors=() if problem else tuple(self._told.get("floors", ())),  # type: ignore[arg-type]
         )
+
+    def _counted(self, counters: dict[str, int]) -> None:
+        """A process counts from nothing: what the one before it had counted is kept."""
+        starts = self._worker.counters["worker_starts"]
+        if starts != self._starts:
+            self._before, self._starts = self._sums(), starts
+        self._counters = counters
+
+    def _sums(self) -> dict[str, int]:
+        return self._before | {
+            key: n + self._before.get(key, 0) for key, n in self._counters.items()
+        }
 
     def _apart(self, said: Mapping[str, Any]) -> None:
         """What is no reading."""

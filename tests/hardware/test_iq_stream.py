@@ -100,9 +100,13 @@ def test_a_process_that_dies_is_started_anew(at):
     os.kill(child_of(front), signal.SIGKILL)
     until(front, lambda: not front.status().connected, 2.0)
     assert "ended with -9; trying again" in front.status().text
+    counted = front.status().counters
+    assert counted["connected"] == 1
     until(front, lambda: front.status().connected)
     counters = front.status().counters
     assert (counters["worker_starts"], counters["worker_ended"]) == (2, 1)
+    assert counters["connected"] == 2  # what the first process counted is not forgotten
+    assert counters["samples"] > counted["samples"] > 0
 
 
 def test_a_process_that_hangs_is_noticed_in_time_and_started_anew(at):
