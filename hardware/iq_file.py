@@ -83,11 +83,18 @@ class Settings:
         utc_ns: Callable[[], int],
         simulated: bool,
     ) -> FrontEnd:
-        """The front end; ConfigError unless there is one band for each channel."""
+        """The front end; ConfigError unless there is one band for each channel, and where simulated
+        samples are to pass for real ones.
+        """
         if len(self.bands) != channels:
             raise ConfigError(
                 f"sensor.bands: {len(self.bands)} bands for {channels} channels;"
                 " give one [low, high] for each channel"
+            )
+        if self.form.simulated and not simulated:
+            raise ConfigError(
+                f"sensor.file: {self.file} holds simulated samples, its metadata say;"
+                " write simulated = true under [site]"
             )
         return IqFile(self, boot_ns, simulated)
 

@@ -185,6 +185,7 @@ def _document(
         "total_power_dbfs": _dbfs(powers.total_power),
         "clipped_fraction": measured.clipped,
         "samples": powers.samples,
+        "simulated": form.simulated,
         "duration_s": powers.samples / rate_hz if rate_hz else None,
         "segments": powers.segments,
         "datatype": form.datatype,
@@ -214,6 +215,8 @@ def _notes(measured: Measured, form: IqFormat) -> list[str]:
 
 def _print(path: Path, document: dict[str, object]) -> None:
     duration, centre = document["duration_s"], document["centre_hz"]
+    if document["simulated"]:
+        click.echo("SIMULATED: these figures are invented")
     length = "length unknown" if duration is None else f"{duration:.6g} s"
     click.echo(f"{path}: {document['datatype']}, {document['samples']} samples, {length}")
     if centre is not None:

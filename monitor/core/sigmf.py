@@ -12,6 +12,7 @@ from monitor.core.spectrum import bytes_per_sample, datatype_of
 META = ".sigmf-meta"
 DATA = ".sigmf-data"
 ARCHIVE = ".sigmf"
+SIMULATED = "fieldsill:simulated"
 SCALE = "capture_details:acq_scale_factor"
 """Of an extension. Taken as what stored values are multiplied by (our reading of its name)."""
 
@@ -23,6 +24,7 @@ class IqFormat:
     header_bytes, trailing_bytes: not samples, before and after them. length_bytes: of the samples
     where others follow that do not belong to them. start: recording time of the first sample as it
     was written. scale: what a stored value is multiplied by, so that 1.0 is full scale.
+    simulated: whether our own word in the metadata says that nothing was measured.
     """
 
     datatype: str
@@ -33,6 +35,7 @@ class IqFormat:
     start: str | None = None
     length_bytes: int | None = None
     scale: float = 1.0
+    simulated: bool = False
 
     def span(self, size: int) -> tuple[int, int]:
         """(first, behind the last) byte of the samples in a file of size bytes."""
@@ -72,6 +75,7 @@ def format_from_sigmf(document: object, where: str, capture: int | None = None) 
         start if isinstance(start, str) else None,
         None if part is None else part * width,
         _scale(first.table, datatype, where),
+        general.get(SIMULATED, False) is not False,
     )
 
 

@@ -176,6 +176,17 @@ def test_for_people(capsys: pytest.CaptureFixture[str], tmp_path: Path) -> None:
     assert "say nothing about a field strength" in out
 
 
+def test_a_simulated_recording_is_called_so(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path
+) -> None:
+    meta = sigmf(tmp_path, **{"fieldsill:simulated": True})
+    assert run(capsys, ["iq", meta]).out.startswith("SIMULATED: these figures are invented\n")
+    assert run(capsys, ["iq", meta, "--json"]).document["simulated"] is True
+    meta = sigmf(tmp_path, **{"fieldsill:simulated": False})
+    assert "SIMULATED" not in run(capsys, ["iq", meta]).out
+    assert run(capsys, ["iq", meta, "--json"]).document["simulated"] is False
+
+
 def test_silence_has_no_level(capsys: pytest.CaptureFixture[str], tmp_path: Path) -> None:
     path = tmp_path / "a.cs8"
     path.write_bytes(bytes(4096))

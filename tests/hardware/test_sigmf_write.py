@@ -5,13 +5,18 @@ from __future__ import annotations
 import hashlib
 import json
 import re
+import time
+from dataclasses import replace
 
 import numpy as np
 import pytest
 
+from hardware import open_front_end, settings_for
 from hardware.iq_budget import make_room, next_name, recordings
 from hardware.sigmf import find
 from hardware.sigmf_write import About, Capture, Mark, write
+from monitor.core.errors import ConfigError
+from monitor.core.flags import Flag
 
 UTC_NS = 1_764_608_400_000_000_000
 ABOUT = About("cu8", 1e6, False, "why", "receiver", "program")
@@ -130,3 +135,19 @@ def test_what_is_larger_than_the_budget_empties_the_folder_and_no_more(tmp_path)
     there = filled(tmp_path, 2)
     assert make_room(tmp_path, 10, 20) == there
     assert list(tmp_path.iterdir()) == []
+
+
+def test_simulated_samples_do_not_pass_for_real_ones(tmp_path):
+    raw = [bytes([128, 127]) * 200_000]
+    write(tmp_path, "a", replace(ABOUT, simulated=True), CAPTURES[:1], [], raw)
+    options = {"file": "a.sigmf-meta", "bands": [[-1e5, 1e5]]}
+    settings = settings_for("iq_file", options, tmp_path)
+    clocks = (time.monotonic_ns, time.time_ns)
+    with pytest.raises(ConfigError, match="write simulated = true") as caught:
+        open_front_end(settings, 1, *clocks, False)
+    assert "\n" not in str(caught.value)
+    front = open_front_end(settings, 1, *clocks, True)
+    flags = front.read(0.1).flags
+    front.close()
+    assert flags.size > 0
+    assert (flags & int(Flag.SIMULATED) != 0).all()
