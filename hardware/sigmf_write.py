@@ -15,6 +15,7 @@ from datetime import UTC, datetime, timedelta
 from pathlib import Path
 from typing import BinaryIO
 
+from monitor.core.readings import NS_PER_S
 from monitor.core.sigmf import DATA, META
 
 VERSION = "1.2.0"
@@ -80,6 +81,7 @@ def document(
     Simulated samples are called so where any reader shows it, and in a word of our own.
     """
     said = f"SIMULATED, not measured. {about.description}" if about.simulated else about.description
+    there = sorted(captures, key=lambda one: one.start)
     texts = {"description": said, "hw": about.hardware, "recorder": about.recorder}
     return {
         "global": {
@@ -93,13 +95,19 @@ def document(
             f"{OWN}:simulated": about.simulated,
             **{f"{OWN}:{key}": value for key, value in about.own.items()},
         },
-        "captures": [_capture(one) for one in sorted(captures, key=lambda one: one.start)],
+        "captures": [_capture(one, _index(one, there[0], about.rate_hz)) for one in there],
         "annotations": [_annotation(one) for one in sorted(marks, key=lambda one: one.start)],
     }
 
 
-def _capture(one: Capture) -> dict[str, object]:
+def _index(one: Capture, first: Capture, rate_hz: float) -> int:
+    """Number of a capture's first sample, counted through the gaps: a reader sees them by it."""
+    return first.start + round((one.boot_ns - first.boot_ns) * rate_hz / NS_PER_S)
+
+
+def _capture(one: Capture, index: int) -> dict[str, object]:
     found: dict[str, object] = {"core:sample_start": one.start, "core:frequency": one.centre_hz}
+    found["core:global_index"] = index
     if one.utc_ns is not None:
         moment = _EPOCH + timedelta(microseconds=one.utc_ns // 1000)
         found["core:datetime"] = f"{moment:%Y-%m-%dT%H:%M:%S.%f}Z"

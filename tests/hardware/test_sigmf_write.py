@@ -77,7 +77,12 @@ def test_an_unknown_time_is_left_out_and_simulated_samples_are_called_so(tmp_pat
     assert document["global"]["fieldsill:simulated"] is True
     assert "core:hw" not in document["global"]
     assert document["captures"] == [
-        {"core:sample_start": 0, "core:frequency": 868e6, "fieldsill:boot_ns": 5}
+        {
+            "core:sample_start": 0,
+            "core:frequency": 868e6,
+            "core:global_index": 0,
+            "fieldsill:boot_ns": 5,
+        }
     ]
 
 
@@ -151,3 +156,13 @@ def test_simulated_samples_do_not_pass_for_real_ones(tmp_path):
     front.close()
     assert flags.size > 0
     assert (flags & int(Flag.SIMULATED) != 0).all()
+
+
+def test_a_gap_at_one_centre_is_seen_by_a_reader(tmp_path):
+    """Source: by hand; half a second at 1 MS/s is 500 000 samples."""
+    captures = [Capture(0, 868e6, 0, None), Capture(100, 868e6, 500_000_000, None)]
+    write(tmp_path, "a", ABOUT, captures, [], RAW)
+    document = json.loads((tmp_path / "a.sigmf-meta").read_text("utf-8"))
+    assert [one["core:global_index"] for one in document["captures"]] == [0, 500_000]
+    with pytest.raises(ConfigError, match="number 1 does not join on"):
+        find(tmp_path / "a.sigmf-meta")
