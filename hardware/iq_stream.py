@@ -234,11 +234,14 @@ class IqStream:
         text = f"{radio.name}, {radio.rate_hz / 1e6:g} million samples a second"
         text += f", {self._told['told']}" if self._told.get("told") else ""
         text += f", {len(scheme.tunes)} places of the tuner in turn" if scheme.swept else ""
+        counters = self._sums() | self._worker.counters
+        lost = counters.get("lost_samples", 0)
+        text += f", {lost} samples lost so far" if lost else ""  # a text that changes is an event
         return DeviceStatus(
             connected=not problem,
             text=f"{problem}; trying again" if problem else text,
             temperature_c=self._thermometer.celsius(),
-            counters=self._sums() | self._worker.counters,
+            counters=counters,
             floors=() if problem else tuple(self._told.get("floors", ())),  # type: ignore[arg-type]
         )
 

@@ -13,11 +13,15 @@ EVERY_S = 1.0
 SPAN_DC = (-1000, 2000)
 """Tenths of a degree; what lies outside is no temperature of a receiver (our choice)."""
 
+MOST_CHARACTERS = 32
+"""A device that never ends is no thermometer."""
+
 
 def tenths_of(path: Path) -> int:
     """Tenths of a degree Celsius; MISSING where the file cannot be read or holds no such number."""
     try:
-        tenths = round(int(path.read_text(encoding="ascii")) / 100)
+        with path.open(encoding="ascii") as file:
+            tenths = round(int(file.read(MOST_CHARACTERS)) / 100)
     except (OSError, ValueError):
         return MISSING
     return tenths if SPAN_DC[0] <= tenths <= SPAN_DC[1] else MISSING

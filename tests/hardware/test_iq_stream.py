@@ -88,6 +88,14 @@ def test_readings_come_through_with_their_times_and_marks(at):
     assert not front.owns_clock
 
 
+def test_a_loss_is_told_in_the_text_that_events_are_made_of(at):
+    _, front = at(streams(), clock=boot_ns)
+    assert "lost" not in front.status().text
+    front._counted({"lost_samples": 600_000})  # noqa: SLF001 - a true one takes twelve seconds
+    front._worker.problem = ""  # noqa: SLF001
+    assert "600000 samples lost so far" in front.status().text
+
+
 def test_clipping_is_flagged(at):
     _, front = at(streams(make=heard(150e3, 1.0)), clock=boot_ns)
     batch = until(front, lambda: front.status().counters.get("readings", 0) >= 2)

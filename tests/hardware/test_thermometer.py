@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from pathlib import Path
+
 import pytest
 
 from hardware import settings_for
@@ -50,3 +52,7 @@ def test_a_path_that_leads_nowhere_is_refused(tmp_path):
     settings = settings_for("iq_stream", OPTIONS | {"temperature_file": str(path)}, tmp_path)
     with pytest.raises(DeviceError, match="sensor.temperature_file: .*none holds no thousandths"):
         settings.check_device()
+
+
+def test_a_device_that_never_ends_is_no_thermometer() -> None:
+    assert tenths_of(Path("/dev/zero")) == MISSING
