@@ -23,7 +23,7 @@ run:
 	@sh hardware/setup.sh run $(ARGS)
 
 test: lint
-	$(BIN)/python -m pytest $(ARGS)
+	$(BIN)/python -m tests $(ARGS)
 
 lint: tools
 	$(BIN)/ruff check .
