@@ -9,13 +9,14 @@ figures are invented.
 from __future__ import annotations
 
 import math
-import tomllib
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 
 import numpy as np
 from numpy.typing import NDArray
+
+from simulators import shipped
 
 AIR = Path(__file__).parent / "data" / "air"
 KINDS = ("carrier", "noise", "tdd", "pulses")
@@ -124,25 +125,12 @@ class Air:
 
 def available() -> list[str]:
     """Names of the airs that are shipped."""
-    return sorted(path.stem for path in AIR.glob("*.toml"))
+    return shipped.available(AIR)
 
 
 def load(name_or_path: str | Path) -> Air:
     """A shipped air by its name, or one from a .toml file. Raises ValueError with one line."""
-    path = Path(name_or_path)
-    if path.suffix != ".toml":
-        path = AIR / f"{name_or_path}.toml"
-        if not path.is_file():
-            known = ", ".join(available())
-            raise ValueError(f"no air {name_or_path!r}; there are {known}, or name a .toml file")
-    try:
-        return read(tomllib.loads(path.read_text(encoding="utf-8")))
-    except OSError as error:
-        raise ValueError(f"{path}: {error.strerror}") from error
-    except tomllib.TOMLDecodeError as error:
-        raise ValueError(f"{path}: {error}") from error
-    except (KeyError, TypeError, ValueError) as error:
-        raise ValueError(f"{path}: {error!r} is missing or wrong") from error
+    return shipped.load(AIR, name_or_path, "air", read)
 
 
 def read(table: Row) -> Air:

@@ -8,7 +8,6 @@ or only its idle share; one in time-division duplex is on for its duty of the ti
 
 from __future__ import annotations
 
-import tomllib
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from functools import lru_cache
@@ -17,7 +16,7 @@ from pathlib import Path
 import numpy as np
 from numpy.typing import NDArray
 
-from simulators import climate, draws
+from simulators import climate, draws, shipped
 from simulators.climate import Climate
 
 SCENES = Path(__file__).parent / "data" / "scenes"
@@ -102,26 +101,12 @@ class Truth:
 
 def available() -> list[str]:
     """Names of the scenes that are shipped."""
-    return sorted(path.stem for path in SCENES.glob("*.toml"))
+    return shipped.available(SCENES)
 
 
 def load(name_or_path: str | Path) -> Scene:
     """A shipped scene by its name, or one from a .toml file. Raises ValueError with one line."""
-    path = Path(name_or_path)
-    if path.suffix != ".toml":
-        path = SCENES / f"{name_or_path}.toml"
-        if not path.is_file():
-            known = ", ".join(available())
-            raise ValueError(f"no scene {name_or_path!r}; there are {known}, or name a .toml file")
-    try:
-        with path.open("rb") as handle:
-            return _scene(tomllib.load(handle))
-    except OSError as error:
-        raise ValueError(f"{path}: {error.strerror}") from error
-    except tomllib.TOMLDecodeError as error:
-        raise ValueError(f"{path}: {error}") from error
-    except (KeyError, TypeError, ValueError) as error:
-        raise ValueError(f"{path}: {error!r} is missing or wrong") from error
+    return shipped.load(SCENES, name_or_path, "scene", _scene)
 
 
 def _scene(table: Mapping[str, object]) -> Scene:
